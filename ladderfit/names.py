@@ -1,0 +1,99 @@
+"""Each parameter's name, unit, symbol, digits and default prior.
+
+Groups and hosts are written ``NAME[GROUP]``, for example ``modulus[Tavin]``.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from ladderfit.priors import HalfNormal, LogNormal, Normal, Prior
+
+
+@dataclass(frozen=True)
+class Parameter:
+    """What is known about a parameter before any data.
+
+    Attributes
+    ----------
+    name : str
+        As in summary.json and in the ladder file's ``[priors]``.
+    unit : str
+        Unit of its draws, FITS style.
+    symbol : str
+        For figures, in matplotlib's mathtext.
+    words : str
+        For sentences.
+    digits : int
+        Decimals worth printing.
+    prior : Prior or None
+        Used where the ladder file states none; None for derived numbers.
+    """
+
+    name: str
+    unit: str
+    symbol: str
+    words: str
+    digits: int
+    prior: Prior | None
+
+
+_ALL = (
+    Parameter("slope", "mag/dex", r"$b$", "slope of the relation", 3, Normal(-3.3, 0.5)),
+    Parameter("zero_point", "mag", r"$M_0$", "zero point at the pivot", 3, Normal(-5.9, 2.0)),
+    Parameter("metallicity", "mag/dex", r"$Z$", "metallicity term", 3, Normal(-0.2, 0.5)),
+    Parameter("scatter", "mag", r"$t$", "intrinsic scatter of the relation", 3, HalfNormal(0.3)),
+    Parameter(
+        "parallax_offset", "mas", r"$\varpi_0$", "residual parallax offset", 4, Normal(0.0, 0.02)
+    ),
+    Parameter(
+        "peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)
+    ),
+    Parameter("peak_scatter", "mag", r"$t_\mathrm{SN}$", "supernova scatter", 3, HalfNormal(0.3)),
+    Parameter(
+        "hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)
+    ),
+    Parameter(
+        "velocity_constant", "km/s", r"$v_0$", "velocity at zero distance", 1, Normal(0.0, 1000.0)
+    ),
+    Parameter("velocity_scatter", "km/s", r"$s_v$", "velocity scatter", 1, HalfNormal(500.0)),
+    Parameter("modulus", "mag", r"$\mu$", "distance modulus", 3, None),
+)
+
+PARAMETERS: dict[str, Parameter] = {parameter.name: parameter for parameter in _ALL}
+HEADLINE = tuple(p.name for p in _ALL if p.prior is not None)
+
+
+def with_group(name: str, group: str) -> str:
+    """``NAME[GROUP]``."""
+    return f"{name}[{group}]"
+
+
+def base_name(name: str) -> str:
+    """The name without its group."""
+    return name.split("[", 1)[0]
+
+
+def group_of(name: str) -> str | None:
+    """The group or host in ``NAME[GROUP]``, or None."""
+    return name.split("[", 1)[1].removesuffix("]") if "[" in name else None
+
+
+def parameter(name: str) -> Parameter:
+    """Look a parameter up by its name, with or without a group.
+
+    Raises
+    ------
+    KeyError
+        If no parameter has this name.
+    """
+    return PARAMETERS[base_name(name)]
+
+
+def label(name: str, *, unit: bool = True) -> str:
+    """Symbol, group and unit as a figure prints them."""
+    known, group = parameter(name), group_of(name)
+    symbol = known.symbol
+    if group is not None:
+        symbol = f"{symbol} {group}"
+    return f"{symbol} [{known.unit}]" if unit else symbol

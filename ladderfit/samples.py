@@ -1,0 +1,139 @@
+"""The arrays a fit sees, after every cut: numbers only, read-only.
+
+Hosts are integers into `Ladder.hosts`; names stay outside the arithmetic and
+are carried along only to label results.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+import numpy.typing as npt
+
+FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.int64]
+TextArray = npt.NDArray[np.str_]
+
+
+@dataclass(frozen=True)
+class StarSample:
+    """Cepheids that take part, sorted by host.
+
+    Attributes
+    ----------
+    star : array of str, shape (n,)
+        Names.
+    host : array of int, shape (n,)
+        Index into the ladder's hosts; -1 throughout for parallax stars.
+    log_period : array, shape (n,)
+        log10 of the period in days.
+    magnitude, variance : array, shape (n,)
+        Magnitude or Wesenheit index [mag] and its measurement variance [mag^2].
+    metallicity : array, shape (n,)
+        On the scale of the choices [dex]; NaN throughout where there is no such term.
+    parallax, parallax_error : array, shape (n,), or None
+        In mas; None for Cepheids in galaxies.
+    row : array of int, shape (n,)
+        Row in the table, counted from 1.
+    """
+
+    star: TextArray
+    host: IntArray
+    log_period: FloatArray
+    magnitude: FloatArray
+    variance: FloatArray
+    metallicity: FloatArray
+    row: IntArray
+    parallax: FloatArray | None = None
+    parallax_error: FloatArray | None = None
+
+    def __len__(self) -> int:
+        """Number of stars."""
+        return len(self.star)
+
+
+@dataclass(frozen=True)
+class PeakSample:
+    """Supernovae in hosts: `magnitude` is the standardised peak [mag], `variance` its own."""
+
+    name: TextArray
+    host: IntArray
+    magnitude: FloatArray
+    variance: FloatArray
+    row: IntArray
+
+    def __len__(self) -> int:
+        """Number of supernovae."""
+        return len(self.name)
+
+
+@dataclass(frozen=True)
+class FlowSample:
+    """Supernovae that follow the expansion.
+
+    Attributes
+    ----------
+    redshift, redshift_heliocentric : array, shape (n,)
+        Redshift in the frame of the background radiation, and as observed
+        (equal to it where the table gives none).
+    magnitude, variance : array, shape (n,)
+        Standardised peak [mag] and its variance [mag^2], without peculiar velocities.
+    """
+
+    name: TextArray
+    redshift: FloatArray
+    redshift_heliocentric: FloatArray
+    magnitude: FloatArray
+    variance: FloatArray
+    row: IntArray
+
+    def __len__(self) -> int:
+        """Number of supernovae."""
+        return len(self.name)
+
+
+@dataclass(frozen=True)
+class VelocitySample:
+    """Objects with a distance [Mpc] and a velocity [km/s]."""
+
+    name: TextArray
+    distance: FloatArray
+    velocity: FloatArray
+    row: IntArray
+
+    def __len__(self) -> int:
+        """Number of objects."""
+        return len(self.name)
+
+
+@dataclass(frozen=True)
+class Kept:
+    """How many rows of a table take part, and why the others do not.
+
+    Attributes
+    ----------
+    total, kept : int
+        Rows in the table; rows that take part.
+    reasons : mapping of str to int
+        Rows left out, by reason; each row counts once, under the first that applies.
+    """
+
+    total: int
+    kept: int
+    reasons: Mapping[str, int] = field(default_factory=dict)
+
+    def __str__(self) -> str:
+        """For example ``1,204 of 1,486 kept (270 outside the period range; 12 overtone)``."""
+        text = f"{self.kept:,} of {self.total:,} kept"
+        if self.reasons:
+            text += f" ({'; '.join(f'{n:,} {reason}' for reason, n in self.reasons.items())})"
+        return text
+
+
+def frozen(values: npt.ArrayLike, kind: type = np.float64) -> npt.NDArray[np.generic]:
+    """A read-only contiguous copy of an array."""
+    array = np.array(values, dtype=kind, order="C")
+    array.setflags(write=False)
+    return array
