@@ -1,0 +1,45 @@
+"""Calibrate the cosmic distance ladder.
+
+Public names are imported on first use, so that ``import ladderfit`` is light::
+
+    import ladderfit as lf
+
+    ladder = lf.read_ladder("sample.toml")
+    result = lf.draw(ladder, seed=1)
+    print(result.summary())
+"""
+
+from __future__ import annotations
+
+import importlib
+from importlib import metadata
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from ladderfit.ladder import Ladder, build_ladder, read_ladder
+    from ladderfit.result import Result
+    from ladderfit.sampling.run import draw
+    from ladderfit.store import read_result
+
+_HOME = {
+    "Ladder": "ladderfit.ladder",
+    "build_ladder": "ladderfit.ladder",
+    "read_ladder": "ladderfit.ladder",
+    "Result": "ladderfit.result",
+    "draw": "ladderfit.sampling.run",
+    "read_result": "ladderfit.store",
+}
+
+__all__ = ["Ladder", "build_ladder", "read_ladder", "Result", "draw", "read_result"]
+
+
+def __getattr__(name: str) -> Any:
+    if name == "__version__":
+        return metadata.version("ladderfit")
+    if name in _HOME:
+        return getattr(importlib.import_module(_HOME[name]), name)
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted([*__all__, "__version__"])
