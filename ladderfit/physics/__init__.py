@@ -1,0 +1,1 @@
+"""Physics: redshift, photometry, selection; arrays in, arrays out."""
