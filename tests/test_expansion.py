@@ -8,12 +8,8 @@ from astropy.cosmology import FlatLambdaCDM
 from hypothesis import given
 from hypothesis import strategies as st
 
-from ladderfit.physics.expansion import (
-    SPEED_OF_LIGHT,
-    distance_term,
-    peculiar_variance,
-    series,
-)
+from ladderfit.physics.expansion import distance_term, peculiar_variance, series
+from ladderfit.units import LIGHT_SPEED
 
 Z = np.linspace(0.001, 0.15, 60)
 
@@ -36,7 +32,7 @@ def test_series_is_good_to_seven_parts_in_ten_thousand(matter: float) -> None:
 
 def test_a_wrong_deceleration_is_noticed() -> None:
     exact = FlatLambdaCDM(H0=70.0, Om0=0.3).luminosity_distance(Z).value
-    wrong = SPEED_OF_LIGHT * Z / 70.0 * series(Z, q0=0.5, j0=1.0)
+    wrong = LIGHT_SPEED * Z / 70.0 * series(Z, q0=0.5, j0=1.0)
     assert np.max(np.abs(wrong / exact - 1.0)) > 0.05
 
 
@@ -48,7 +44,7 @@ def test_series_by_hand() -> None:
 def test_nearby_limit_is_the_linear_law() -> None:
     # At z -> 0 a galaxy at c z = 700 km/s and H0 = 70 km/s/Mpc is 10 Mpc away: 30 mag.
     z = 1e-9
-    shift = 5.0 * np.log10(700.0 / SPEED_OF_LIGHT / z)
+    shift = 5.0 * np.log10(700.0 / LIGHT_SPEED / z)
     term = distance_term(z, z) + shift - 5.0 * np.log10(70.0)
     assert term == pytest.approx(30.0, abs=1e-7)
 
@@ -62,8 +58,8 @@ def test_the_heliocentric_redshift_only_dims(z: float, dz: float, q0: float, j0:
 def test_peculiar_variance_against_the_complete_first_order() -> None:
     cosmology = FlatLambdaCDM(H0=70.0, Om0=0.3)
     reach = cosmology.H(Z).value * cosmology.luminosity_distance(Z).value
-    complete = 5.0 / np.log(10.0) * ((1.0 + Z) ** 2 * SPEED_OF_LIGHT / reach - 1.0)
-    complete *= 250.0 / SPEED_OF_LIGHT
+    complete = 5.0 / np.log(10.0) * ((1.0 + Z) ** 2 * LIGHT_SPEED / reach - 1.0)
+    complete *= 250.0 / LIGHT_SPEED
     ratio = complete / np.sqrt(peculiar_variance(Z, 250.0))
     assert np.all((ratio > 0.95) & (ratio < 1.0))
     assert ratio[Z < 0.05].min() > 0.985

@@ -14,9 +14,10 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from ladderfit.units import LIGHT_SPEED
+
 FloatArray = npt.NDArray[np.float64]
 
-SPEED_OF_LIGHT = 299_792.458  # km/s, exact
 MODULUS_OF_MEGAPARSEC = 25.0  # mag: 5 log10(1 Mpc / 10 pc)
 _MAG_PER_EFOLD = 5.0 / float(np.log(10.0))
 
@@ -68,7 +69,7 @@ def distance_term(
     """
     z = np.asarray(redshift, dtype=float)
     dimming = (1.0 + np.asarray(redshift_heliocentric, dtype=float)) / (1.0 + z)
-    velocity = SPEED_OF_LIGHT * z * series(z, q0, j0)
+    velocity = LIGHT_SPEED * z * series(z, q0, j0)
     return np.asarray(MODULUS_OF_MEGAPARSEC + 5.0 * np.log10(dimming * velocity))
 
 
@@ -92,4 +93,4 @@ def peculiar_variance(redshift: npt.ArrayLike, dispersion: float) -> FloatArray:
         In mag^2.
     """
     z = np.asarray(redshift, dtype=float)
-    return np.asarray((_MAG_PER_EFOLD * dispersion / (SPEED_OF_LIGHT * z)) ** 2)
+    return np.asarray((_MAG_PER_EFOLD * dispersion / (LIGHT_SPEED * z)) ** 2)
