@@ -10,6 +10,7 @@ from pathlib import Path
 
 import numpy as np
 
+from ladderfit.files import write_text_atomically
 from ladderfit.mock.plan import Host, Mock, Plan
 from ladderfit.mock.survey import simulate
 from ladderfit.mock.tables import ecsv, truth_toml
@@ -132,7 +133,7 @@ def write_sample(folder: Path) -> None:
     """Write the sample's files into a folder, which is made if need be."""
     folder.mkdir(parents=True, exist_ok=True)
     for name, text in sample_files().items():
-        (folder / name).write_text(text, encoding="utf-8", newline="\n")
+        write_text_atomically(folder / name, text)
 
 
 def _ladder_text(plan: Plan, mock: Mock) -> str:

@@ -1,0 +1,238 @@
+"""The layout: what lies where, and one direction of imports."""
+
+from __future__ import annotations
+
+import ast
+import subprocess
+import sys
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+# Lowest layer first: a module imports only from modules before it.  A package
+# stands after its own modules.  A new module must be given its place here.
+ORDER = """
+    errors rounding
+    units files shipped priors names schema choices samples
+    physics.photometry physics.zero_point physics.distance_priors physics.selection
+    physics.expansion physics.overtones physics
+    table_files tables covariances relations ladder_file ladder
+    kernels.quadrature kernels.reduced kernels.arrow kernels
+    posterior.split posterior.frame posterior.cepheids posterior.parallaxes
+    posterior.supernovae posterior.joint posterior
+    diagnostics result store
+    sampling.mode sampling.proposal sampling.direct sampling.ensemble sampling.chain_file
+    sampling.run sampling
+    classical residuals influence anchors sweep alternatives review distances compare
+    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.again
+    mock mock.__main__
+    coverage
+    plots.theme plots.relation plots.corner plots.moduli plots.hubble plots
+    report
+    workbench.state workbench.axis workbench.choices_panel workbench.canvas workbench.screen
+    workbench
+    launcher cli __main__
+""".split()
+
+TOP_LEVEL = {
+    "README.md",
+    "DEVELOPERS.md",
+    "pyproject.toml",
+    "LICENSE",
+    "ladderfit",
+    "notebooks",
+    "tests",
+    "sample_data",
+}
+LONGEST_FILE = 400
+PLOTTING = ("plots", "workbench.canvas")
+WIDGETS = ("workbench",)
+BLIND = ("mock",)  # must not know how a fit is made
+FIT = ("relations", "kernels", "posterior")
+
+
+def belongs(module: str, places: tuple[str, ...]) -> bool:
+    return any(module == place or module.startswith(f"{place}.") for place in places)
+
+
+def module_name(relative: Path) -> str:
+    """`posterior/joint.py` is posterior.joint, `posterior/__init__.py` is posterior."""
+    parts = [*relative.parent.parts, relative.stem]
+    return ".".join(part for part in parts if part != "__init__")
+
+
+def sources(package: Path) -> dict[str, str]:
+    return {
+        module_name(path.relative_to(package)): path.read_text(encoding="utf-8")
+        for path in sorted(package.rglob("*.py"))
+    }
+
+
+def imported(tree: ast.AST, known: set[str]) -> Iterator[tuple[int, str]]:
+    """Line and full name of everything imported anywhere; known modules resolved."""
+    for node in ast.walk(tree):
+        if isinstance(node, ast.Import):
+            yield from ((node.lineno, alias.name) for alias in node.names)
+        elif isinstance(node, ast.ImportFrom):
+            base = "." * node.level + (node.module or "")
+            for alias in node.names:
+                deeper = f"{base}.{alias.name}"
+                resolved = deeper.removeprefix("ladderfit.") in known
+                yield node.lineno, deeper if resolved else base
+
+
+def import_faults(code: dict[str, str], order: list[str]) -> list[str]:
+    """What breaks the rules of import, one line each."""
+    faults = [
+        f"{module}: has no place in the order" for module in code if module not in [*order, ""]
+    ]
+    place = {module: index for index, module in enumerate(order)}
+    for module, text in code.items():
+        for line, name in imported(ast.parse(text), set(order)):
+            where = f"{module or 'ladderfit'}:{line} imports {name}"
+            top = name.split(".")[0]
+            if name.startswith("."):
+                faults.append(f"{where}: relative")
+            elif top in ("matplotlib", "corner") and not belongs(module, PLOTTING):
+                faults.append(f"{where}: only in {', '.join(PLOTTING)}")
+            elif top in ("ipywidgets", "ipympl", "anywidget") and not belongs(module, WIDGETS):
+                faults.append(f"{where}: only in {', '.join(WIDGETS)}")
+            elif top == "ladderfit":
+                target = name.removeprefix("ladderfit").removeprefix(".")
+                if target not in place:
+                    faults.append(f"{where}: not a module")
+                elif belongs(module, BLIND) and belongs(target, FIT):
+                    faults.append(f"{where}: the simulator must not know the fit")
+                elif module in place and place[target] >= place[module]:
+                    faults.append(f"{where}: against the direction")
+    return faults
+
+
+def unsafe_calls(text: str) -> list[str]:
+    """Ways to run code from data."""
+    found = []
+    for node in ast.walk(ast.parse(text)):
+        if isinstance(node, ast.Import | ast.ImportFrom):
+            names = [alias.name for alias in node.names] + [getattr(node, "module", None) or ""]
+            risky = {"pickle", "cPickle", "dill", "cloudpickle", "joblib", "marshal", "shelve"}
+            found += [
+                f"line {node.lineno}: {name}" for name in names if name.split(".")[0] in risky
+            ]
+        elif isinstance(node, ast.Call):
+            called = ast.unparse(node.func)
+            pickled = any(
+                word.arg == "allow_pickle"
+                and not (isinstance(word.value, ast.Constant) and word.value.value is False)
+                for word in node.keywords
+            )
+            if called in ("eval", "exec") or called.endswith((".eval", "yaml.load", "read_pickle")):
+                found.append(f"line {node.lineno}: {called}")
+            elif pickled:
+                found.append(f"line {node.lineno}: allow_pickle")
+    return found
+
+
+@pytest.fixture(scope="module")
+def code(repository: Path) -> dict[str, str]:
+    return sources(repository / "ladderfit")
+
+
+def test_one_direction_of_imports(code: dict[str, str]) -> None:
+    faults = import_faults(code, ORDER)
+    assert not faults, "\n".join(faults)
+
+
+@pytest.mark.parametrize(
+    ("module", "line", "complaint"),
+    [
+        ("errors", "from ladderfit.cli import main", "against the direction"),
+        ("posterior.split", "from ladderfit.posterior import joint", "against the direction"),
+        ("result", "def f():\n    import ladderfit.store", "against the direction"),
+        ("tables", "from .errors import Problem", "relative"),
+        ("ladder", "import matplotlib.pyplot as plt", "only in plots"),
+        ("plots.theme", "import ipywidgets", "only in workbench"),
+        ("mock.survey", "from ladderfit.relations import design_matrix", "must not know"),
+        ("mock.survey", "from ladderfit.posterior import joint", "must not know"),
+        ("surprise", "import numpy", "no place in the order"),
+        ("cli", "from ladderfit.gone import thing", "not a module"),
+    ],
+)
+def test_faulty_imports_are_found(module: str, line: str, complaint: str) -> None:
+    """Negative controls."""
+    (fault,) = import_faults({module: line}, ORDER)
+    assert complaint in fault
+
+
+def test_order_names_each_module_once() -> None:
+    assert len(ORDER) == len(set(ORDER))
+
+
+def test_no_code_from_data(code: dict[str, str]) -> None:
+    faults = [f"{module}: {call}" for module, text in code.items() for call in unsafe_calls(text)]
+    assert not faults, "\n".join(faults)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        "import pickle",
+        "from pickle import loads",
+        "eval('1')",
+        "frame.eval('a + b')",
+        "np.load(path, allow_pickle=True)",
+        "yaml.load(text)",
+        "pd.read_pickle(path)",
+    ],
+)
+def test_code_from_data_is_found(line: str) -> None:
+    """Negative controls."""
+    assert unsafe_calls(line)
+    assert not unsafe_calls("np.load(path, allow_pickle=False)")
+
+
+def test_files_are_short(repository: Path) -> None:
+    paths = [*(repository / "ladderfit").rglob("*.py"), *(repository / "tests").rglob("*.py")]
+    lengths = {
+        str(path.relative_to(repository)): len(path.read_text(encoding="utf-8").splitlines())
+        for path in paths
+    }
+    long = {name: length for name, length in lengths.items() if length > LONGEST_FILE}
+    assert not long, f"over {LONGEST_FILE} lines: {long}"
+
+
+def test_top_level(repository: Path) -> None:
+    listed = subprocess.run(
+        ["git", "ls-files"], cwd=repository, capture_output=True, text=True, check=True
+    ).stdout.splitlines()
+    visible = {name.split("/")[0] for name in listed if not name.startswith(".")}
+    assert visible <= TOP_LEVEL
+    assert visible >= TOP_LEVEL - {"notebooks"}
+
+
+def test_integration_runs_the_line_of_the_readme(repository: Path) -> None:
+    readme = (repository / "README.md").read_text(encoding="utf-8").splitlines()
+    script = (repository / ".ci" / "run").read_text(encoding="utf-8").splitlines()
+    (line,) = (text.strip() for text in readme if text.strip().endswith("bin/pytest"))
+    assert line in script
+    assert (repository / ".ci" / "run").stat().st_mode & 0o100
+
+
+def test_the_package_is_light_until_used() -> None:
+    probe = (
+        "import sys, ladderfit; heavy = {'numpy', 'pandas', 'astropy', 'matplotlib'} & "
+        "set(sys.modules); sys.exit(' '.join(sorted(heavy)) or 0)"
+    )
+    done = subprocess.run(
+        [sys.executable, "-c", probe], capture_output=True, text=True, check=False
+    )
+    assert done.returncode == 0, done.stderr
+
+
+def test_public_names_exist() -> None:
+    import ladderfit
+
+    missing = [name for name in dir(ladderfit) if not hasattr(ladderfit, name)]
+    assert not missing
+    with pytest.raises(AttributeError, match="no attribute 'galaxy'"):
+        _ = ladderfit.galaxy
