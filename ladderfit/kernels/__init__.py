@@ -1,0 +1,1 @@
+"""Arithmetic on plain arrays: no names, no units, no files."""

@@ -1,0 +1,109 @@
+"""What the data determine, before anything is drawn.
+
+The information of all data rows (parallax stars in linear order), without the
+default priors, is searched for directions it leaves free.  A zero point, modulus,
+peak magnitude or Hubble constant with a part in such a direction is undetermined:
+its posterior would only repeat a default prior.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import numpy.typing as npt
+
+from ladderfit.errors import Problem, UndeterminedError
+from ladderfit.names import base_name, parameter, with_group
+from ladderfit.posterior.joint import Posterior
+from ladderfit.priors import Fixed
+
+FloatArray = npt.NDArray[np.float64]
+
+_SCALE = ("zero_point", "peak_magnitude", "hubble_constant", "modulus")
+_TYPICAL = {"scatter": 0.1, "peak_scatter": 0.1, "velocity_scatter": 100.0}
+_FREE = 1e-9  # relative information below which a direction counts as free
+
+
+def undetermined(posterior: Posterior) -> tuple[str, ...]:
+    """Names of coefficients and moduli that neither data nor stated priors determine."""
+    information, names, forms = _information(posterior)
+    size = np.sqrt(np.diag(information))
+    scale = np.where(size > 0.0, size, 1.0)
+    values, vectors = np.linalg.eigh(information / np.outer(scale, scale))
+    free = vectors[:, values < _FREE * max(float(values.max(initial=0.0)), 1e-300)]
+    free = free / scale[:, None]
+    part = np.abs(forms @ free).max(axis=1, initial=0.0)
+    whole = np.abs(forms) @ np.abs(free).max(axis=1, initial=0.0) if free.size else part
+    loose = part > 1e-6 * np.maximum(whole, 1e-300)
+    return tuple(name for name, is_loose in zip(names, loose, strict=True) if is_loose)
+
+
+def check_determined(posterior: Posterior) -> None:
+    """Raise if the distance scale is undetermined.
+
+    Raises
+    ------
+    UndeterminedError
+        Naming what is undetermined and what would determine it.
+    """
+    loose = [name for name in undetermined(posterior) if base_name(name) in _SCALE]
+    if not loose:
+        return
+    words = list(dict.fromkeys(parameter(name).words for name in loose))
+    moduli = sum(base_name(name) == "modulus" for name in loose)
+    listed = ", ".join(
+        f"{word} ({moduli} host{'s' if moduli > 1 else ''})" if word == "distance modulus" else word
+        for word in words
+    )
+    ladder = posterior.ladder
+    anchored = bool(ladder.geometric) or ladder.parallax_stars is not None
+    found = "no anchor for these" if anchored else "no anchor in use"
+    priors = [name for name in dict.fromkeys(map(base_name, loose)) if name != "modulus"]
+    example = f"priors.{priors[0]}" if priors else "priors.zero_point"
+    raise UndeterminedError(
+        Problem(
+            found=f"{found}, so undetermined: {listed}",
+            expected="at least one anchor (a geometric modulus or parallaxes) that they rest on",
+            remedy=f"set an anchor's use = true, add one, or state a prior of your own ({example})",
+            key="anchors",
+            file=None if ladder.path is None else str(ladder.path),
+        )
+    )
+
+
+def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], FloatArray]:
+    """Information of (coefficients, locals), with names and linear forms of the parameters."""
+    parts, frame, ladder = posterior.split, posterior.frame, posterior.ladder
+    k, hosts = len(parts.coefficients), frame.hosts
+    information = np.zeros((k + hosts, k + hosts))
+    for block, scatter in posterior.blocks:
+        extra = _TYPICAL.get(scatter or "", 0.0) ** 2
+        sums = block.moments(np.array([extra]))
+        information[:k, :k] += sums.square[0, :-1, :-1]
+        information[k:, :k] += sums.cross[0, :, :-1]
+        information[k:, k:] += np.diag(sums.local[0])
+    for anchor in ladder.geometric:
+        form = np.zeros(k + hosts)
+        form[:k], form[k + anchor.host] = -frame.centroid[anchor.host], 1.0
+        information += np.outer(form, form) / anchor.error**2
+    if posterior.parallaxes is not None:
+        design = posterior.parallaxes.design
+        information[: design.shape[1], : design.shape[1]] += _parallax_information(posterior)
+    for place, name in enumerate(parts.coefficients):
+        prior = ladder.choices.prior(name)
+        if ladder.choices.states_prior(name):
+            sd = 1e-6 if isinstance(prior, Fixed) else max(prior.sd, 1e-6)
+            information[place, place] += 1.0 / sd**2
+    information[:k, k:] = information[k:, :k].T
+    forms = np.eye(k + hosts)
+    forms[k:, :k] = -frame.centroid
+    names = (*parts.coefficients, *(with_group("modulus", host) for host in ladder.hosts))
+    return information, names, forms
+
+
+def _parallax_information(posterior: Posterior) -> FloatArray:
+    terms = posterior.parallaxes
+    if terms is None:
+        return np.zeros((0, 0))
+    signal = np.maximum(terms.parallax / terms.parallax_error, 0.1)
+    variance = terms.variance + 0.1**2 + (5.0 / np.log(10.0) / signal) ** 2
+    return np.asarray((terms.design / variance[:, None]).T @ terms.design)

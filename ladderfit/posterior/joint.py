@@ -1,0 +1,211 @@
+"""The joint posterior of a ladder: log density of phi, and exact draws of theta given phi."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from ladderfit.kernels.arrow import Moments, Rows, Solution, condition, rows, solve
+from ladderfit.ladder import Ladder
+from ladderfit.names import with_group
+from ladderfit.posterior.frame import Frame, frame_and_stars
+from ladderfit.posterior.parallaxes import (
+    ParallaxTerms,
+    log_modulus_norm,
+    parallax_terms,
+    tilt_of,
+)
+from ladderfit.posterior.split import Split, split
+from ladderfit.posterior.supernovae import ladder_rows
+
+FloatArray = npt.NDArray[np.float64]
+
+_CHUNK = 2_000_000  # elements of a (draws, rows) array held at once
+
+
+@dataclass(frozen=True, eq=False)
+class Posterior:
+    """The posterior of one ladder, ready to be evaluated; build with `posterior`.
+
+    Attributes
+    ----------
+    ladder : Ladder
+    split : Split
+        What is in phi and what in theta.
+    frame : Frame
+        How host moduli are eliminated.
+    blocks : tuple of (Rows, str or None)
+        Data rows, each with the scatter that widens it.
+    constant : Moments
+        Anchors and priors: the part that depends on no scatter; batch of one.
+    parallaxes : ParallaxTerms or None
+    """
+
+    ladder: Ladder
+    split: Split
+    frame: Frame
+    blocks: tuple[tuple[Rows, str | None], ...]
+    constant: Moments
+    parallaxes: ParallaxTerms | None
+
+    @property
+    def dimension(self) -> int:
+        """Number of coordinates of phi."""
+        return len(self.split.phi)
+
+    def log_density(self, z: FloatArray) -> FloatArray:
+        """Log posterior density of phi, theta and star moduli integrated out.
+
+        Parameters
+        ----------
+        z : array, shape (b, d)
+            Coordinates of phi.
+
+        Returns
+        -------
+        array, shape (b,)
+            Normalised but for the evidence; minus infinity outside the priors.
+        """
+        parts = [self._log_density(part)[0] for part in self._chunks(z)]
+        return np.concatenate(parts) if parts else np.empty(0)
+
+    def draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
+        """Exact draws of everything given phi, in the parameters' own units.
+
+        Parameters
+        ----------
+        z : array, shape (b, d)
+            Draws of phi, in coordinates.
+        rng : numpy Generator
+
+        Returns
+        -------
+        dict
+            One array of shape (b,) per parameter and host modulus.
+        """
+        pieces = [self._draw(part, rng) for part in self._chunks(z)]
+        return {name: np.concatenate([piece[name] for piece in pieces]) for name in pieces[0]}
+
+    def _chunks(self, z: FloatArray) -> list[FloatArray]:
+        longest = max([len(block.variance) for block, _ in self.blocks], default=1)
+        size = max(1, _CHUNK // max(longest, 1))
+        return [z[start : start + size] for start in range(0, len(z), size)]
+
+    def _log_density(self, z: FloatArray) -> tuple[FloatArray, Solution]:
+        solution = solve(self.moments(z))
+        total = solution.log_evidence + self.split.log_prior(z)
+        if self.parallaxes is not None:
+            total = total + self.log_parallaxes(z).sum(axis=1)
+        return np.where(np.isnan(total), -np.inf, total), solution
+
+    def log_parallaxes(self, z: FloatArray) -> FloatArray:
+        """Log density of each parallax star, shape (b, n)."""
+        if self.parallaxes is None:
+            return np.empty((len(z), 0))
+        coefficients = self.relation_values(z)
+        scatter = self.split.value("scatter", z)
+        offset = self.split.value("parallax_offset", z)
+        return self.parallaxes.log_density(coefficients, scatter, offset)
+
+    def relation_values(self, z: FloatArray) -> FloatArray:
+        """The relation's coefficients where parallax stars put them in phi, shape (b, k)."""
+        width = 0 if self.parallaxes is None else self.parallaxes.design.shape[1]
+        known = self.split.known_values(z)
+        places = np.searchsorted(self.split.known, np.arange(width))
+        return known[:, places]
+
+    def moments(self, z: FloatArray) -> Moments:
+        """Sums of all rows at the scatters of `z`, known coefficients moved to the left."""
+        total = self.constant
+        for block, scatter in self.blocks:
+            extra = np.zeros(len(z)) if scatter is None else self.split.value(scatter, z) ** 2
+            total = total + block.moments(extra)
+        if total is self.constant:
+            total = total + _no_moments(len(z), self.frame.hosts, len(self.split.coefficients))
+        return condition(total, self.split.known, self.split.known_values(z))
+
+    def _draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
+        solution = solve(self.moments(z))
+        theta, local = solution.draw(rng)
+        coefficients = np.empty((len(z), len(self.split.coefficients)))
+        coefficients[:, self.split.known] = self.split.known_values(z)
+        free = np.setdiff1d(np.arange(coefficients.shape[1]), self.split.known)
+        coefficients[:, free] = theta
+        draws: dict[str, FloatArray] = {}
+        for place, name in enumerate(self.split.coefficients):
+            value = coefficients[:, place]
+            draws[name] = 10.0 ** (0.2 * value) if name in self.split.logarithmic else value
+        for name in (*self.split.phi_names, *self.split.fixed):
+            draws.setdefault(name, self.split.value(name, z))
+        moduli = self.frame.modulus(local, coefficients)
+        for place, host in enumerate(self.ladder.hosts):
+            draws[with_group("modulus", host)] = moduli[:, place]
+        return draws
+
+    def coordinates(self, values: Mapping[str, float]) -> FloatArray:
+        """Coordinates of phi at the given parameter values, shape (d,)."""
+        return np.array([c.coordinate(values[c.name]) for c in self.split.phi])
+
+
+def posterior(ladder: Ladder) -> Posterior:
+    """Assemble the posterior of a ladder."""
+    parts = split(ladder)
+    names = parts.coefficients
+    frame, stars = frame_and_stars(ladder, len(names))
+    blocks: list[tuple[Rows, str | None]] = [] if stars is None else [(stars, "scatter")]
+    blocks += ladder_rows(ladder, frame, names)
+    constant = _anchors(ladder, frame, names) + _theta_prior(parts, frame) + _distances(
+        ladder, frame
+    )
+    return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
+
+
+def _no_moments(batch: int, hosts: int, width: int) -> Moments:
+    return Moments(
+        np.zeros((batch, hosts)),
+        np.zeros((batch, hosts, width + 1)),
+        np.zeros((batch, width + 1, width + 1)),
+        np.zeros(batch),
+    )
+
+
+def _anchors(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Moments:
+    anchors = ladder.geometric
+    host = np.array([anchor.host for anchor in anchors], dtype=int)
+    modulus = np.array([anchor.modulus for anchor in anchors], dtype=float)
+    variance = np.array([anchor.error**2 for anchor in anchors], dtype=float)
+    columns = np.zeros((len(anchors), len(names)))
+    return frame.modulus_rows(host, columns, modulus, variance).moments(np.zeros(1))
+
+
+def _theta_prior(parts: Split, frame: Frame) -> Moments:
+    columns = np.zeros((len(parts.theta), len(parts.coefficients)))
+    for row, name in enumerate(parts.theta):
+        columns[row, parts.coefficients.index(name)] = 1.0
+    mean = np.array([prior.mean for prior in parts.theta_prior], dtype=float)
+    variance = np.array([prior.deviation**2 for prior in parts.theta_prior], dtype=float)
+    nowhere = np.full(len(parts.theta), -1)
+    return rows(nowhere, columns, mean, variance, frame.hosts).moments(np.zeros(1))
+
+
+def _distances(ladder: Ladder, frame: Frame) -> Moments:
+    """The prior of the moduli, exp(tilt mu) from 0 to the largest modulus.
+
+    The closed form integrates over the whole line; moduli within the bounds by
+    many of their errors make the difference nil.
+    """
+    width = frame.centroid.shape[1]
+    prior = ladder.choices.hosts.distance_prior
+    tilt, hosts = tilt_of(prior), frame.hosts
+    empty = _no_moments(1, hosts, width)
+    cross, square = empty.cross, empty.square
+    cross[:, :, -1] = tilt
+    pull = -tilt * frame.centroid.sum(axis=0)
+    square[:, :-1, -1] = square[:, -1, :-1] = pull
+    constant = np.array([tilt * frame.origin.sum() - hosts * log_modulus_norm(prior)])
+    return Moments(empty.local, cross, square, constant)
+
+

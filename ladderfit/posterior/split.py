@@ -1,0 +1,244 @@
+"""Which parameters enter non-linearly (phi) and which are Gaussian given those (theta).
+
+phi holds the scatters, the parallax offset, the relation's coefficients where
+parallax stars are present, and every coefficient whose prior is not normal.
+theta holds all other coefficients and the host moduli.  This file alone decides.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+import numpy.typing as npt
+
+from ladderfit.choices import Choices
+from ladderfit.ladder import Ladder
+from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
+from ladderfit.relations import coefficient_names
+
+FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.int64]
+
+Kind = Literal["plain", "folded", "bounded", "logarithmic"]
+
+_MAG = float(0.2 * np.log(10.0))
+
+
+@dataclass(frozen=True)
+class Coordinate:
+    """One direction of phi: a parameter seen through a map that makes its range the real line.
+
+    ``plain`` is the parameter itself; ``folded`` its absolute value, for
+    scatters; ``bounded`` the logit between the prior's bounds; ``logarithmic``
+    5 log10 of it.
+    """
+
+    name: str
+    prior: Prior
+    kind: Kind
+
+    def natural(self, z: FloatArray) -> FloatArray:
+        """The parameter at coordinate `z`, any shape."""
+        if self.kind == "folded":
+            return np.abs(z)
+        if self.kind == "bounded":
+            low, high = self.prior.bounds
+            return low + (high - low) / (1.0 + np.exp(-np.clip(z, -700.0, 700.0)))
+        if self.kind == "logarithmic":
+            return np.asarray(10.0 ** (0.2 * z))
+        return z
+
+    def coordinate(self, value: float) -> float:
+        """The coordinate of a parameter's value (for starting points)."""
+        if self.kind == "bounded":
+            low, high = self.prior.bounds
+            part = float(np.clip((value - low) / (high - low), 1e-6, 1.0 - 1e-6))
+            return float(np.log(part / (1.0 - part)))
+        if self.kind == "logarithmic":
+            return 5.0 * float(np.log10(value))
+        return value
+
+    def log_prior(self, z: FloatArray) -> FloatArray:
+        """Log of the prior density in the coordinate, Jacobian included.
+
+        A folded coordinate has the density of the parameter at |z|, so that its
+        positive half alone is normalised.
+        """
+        density = self.prior.log_density(self.natural(z))
+        if self.kind == "bounded":
+            low, high = self.prior.bounds
+            size = np.abs(z)
+            density = density + np.log(high - low) - size - 2.0 * np.log1p(np.exp(-size))
+        elif self.kind == "logarithmic":
+            density = density + _MAG * z + np.log(_MAG)
+        return np.asarray(density)
+
+    @property
+    def start(self) -> float:
+        """A starting point."""
+        return self.coordinate(self.prior.centre)
+
+    @property
+    def scale(self) -> float:
+        """A width of the prior in the coordinate."""
+        if self.kind == "bounded":
+            return 2.0
+        if self.kind == "logarithmic":
+            return (
+                self.prior.deviation
+                if isinstance(self.prior, LogNormal)
+                else self.prior.sd / self.prior.centre / _MAG
+            )
+        return self.prior.sd
+
+
+@dataclass(frozen=True)
+class Split:
+    """Names and places of all parameters.
+
+    Attributes
+    ----------
+    coefficients : tuple of str
+        Every linear coefficient, in the order of the system's columns.
+    logarithmic : frozenset of str
+        Coefficients that stand for 5 log10 of their parameter.
+    phi : tuple of Coordinate
+    fixed : mapping of str to float
+        Parameters held at a known value.
+    theta : tuple of str
+        Coefficients that are integrated in closed form.
+    theta_prior : tuple of Normal
+        Their priors, on the coefficient.
+    """
+
+    coefficients: tuple[str, ...]
+    logarithmic: frozenset[str]
+    phi: tuple[Coordinate, ...]
+    fixed: dict[str, float]
+    theta: tuple[str, ...]
+    theta_prior: tuple[Normal, ...]
+    known: IntArray = field(repr=False)
+
+    @property
+    def phi_names(self) -> tuple[str, ...]:
+        """Names of the parameters in phi."""
+        return tuple(coordinate.name for coordinate in self.phi)
+
+    def value(self, name: str, z: FloatArray) -> FloatArray:
+        """A parameter of phi, or a fixed one, in its own unit; `z` has shape (b, d), result (b,)."""
+        if name in self.fixed:
+            return np.full(len(z), self.fixed[name])
+        place = self.phi_names.index(name)
+        return self.phi[place].natural(z[:, place])
+
+    def known_values(self, z: FloatArray) -> FloatArray:
+        """Values of the coefficients that phi or a fixed prior gives, shape (b, len(known))."""
+        columns = []
+        for index in self.known:
+            name = self.coefficients[index]
+            value = self.value(name, z)
+            columns.append(5.0 * np.log10(value) if name in self.logarithmic else value)
+        return np.stack(columns, axis=1) if columns else np.empty((len(z), 0))
+
+    def log_prior(self, z: FloatArray) -> FloatArray:
+        """Log prior density of phi in its coordinates, shape (b,)."""
+        total = np.zeros(len(z))
+        for place, coordinate in enumerate(self.phi):
+            total = total + coordinate.log_prior(z[:, place])
+        return total
+
+
+def split(ladder: Ladder) -> Split:
+    """Sort a ladder's parameters into phi, theta and fixed ones."""
+    choices = ladder.choices
+    relation = coefficient_names(choices.relation) if _has_relation(ladder) else ()
+    beyond = _expansion_coefficients(ladder)
+    logarithmic = frozenset({"hubble_constant"} if ladder.velocities is None else ())
+    coefficients = (*relation, *beyond)
+    fixed: dict[str, float] = {}
+    phi: list[Coordinate] = []
+    theta: list[str] = []
+    theta_prior: list[Normal] = []
+    for name in coefficients:
+        prior = choices.prior(name)
+        linear = _linear(prior, name in logarithmic)
+        if isinstance(prior, Fixed):
+            fixed[name] = prior.value
+        elif linear is None or (name in relation and ladder.parallax_stars is not None):
+            phi.append(_coordinate(name, prior, name in logarithmic))
+        else:
+            theta.append(name)
+            theta_prior.append(linear)
+    for name in _others(ladder):
+        prior = choices.prior(name)
+        if isinstance(prior, Fixed):
+            fixed[name] = prior.value
+        else:
+            phi.append(_coordinate(name, prior, logarithmic=False))
+    known = np.array([i for i, name in enumerate(coefficients) if name not in theta], dtype=int)
+    return Split(
+        coefficients, logarithmic, tuple(phi), fixed, tuple(theta), tuple(theta_prior), known
+    )
+
+
+def parameter_names(ladder: Ladder) -> tuple[str, ...]:
+    """Every parameter of the posterior but the host moduli, fixed ones included."""
+    parts = split(ladder)
+    return (*parts.coefficients, *(name for name in _others(ladder)))
+
+
+def _has_relation(ladder: Ladder) -> bool:
+    return ladder.cepheids is not None or ladder.parallax_stars is not None
+
+
+def _expansion_coefficients(ladder: Ladder) -> tuple[str, ...]:
+    if ladder.velocities is not None:
+        constant = ladder.choices.expansion is not None and (
+            ladder.choices.expansion.velocity_constant
+        )
+        peak = ("peak_magnitude",) if ladder.peaks is not None else ()
+        return (*peak, "hubble_constant", *(("velocity_constant",) if constant else ()))
+    names = []
+    if ladder.peaks is not None or ladder.flow is not None or has_intercept(ladder.choices):
+        names.append("peak_magnitude")
+    if ladder.flow is not None or has_intercept(ladder.choices):
+        names.append("hubble_constant")
+    return tuple(names)
+
+
+def has_intercept(choices: Choices) -> bool:
+    """Whether a published intercept stands for the expansion."""
+    return choices.expansion is not None and choices.expansion.intercept is not None
+
+
+def _others(ladder: Ladder) -> tuple[str, ...]:
+    names = []
+    if _has_relation(ladder):
+        names.append("scatter")
+    if ladder.parallax_stars is not None:
+        names.append("parallax_offset")
+    if ladder.peaks is not None or ladder.flow is not None:
+        names.append("peak_scatter")
+    if ladder.velocities is not None:
+        names.append("velocity_scatter")
+    return tuple(names)
+
+
+def _linear(prior: Prior, logarithmic: bool) -> Normal | None:
+    """The normal prior on the coefficient, if there is one."""
+    if logarithmic:
+        return prior.in_magnitudes() if isinstance(prior, LogNormal) else None
+    return prior if isinstance(prior, Normal) else None
+
+
+def _coordinate(name: str, prior: Prior, logarithmic: bool) -> Coordinate:
+    kind: Kind = "plain"
+    if isinstance(prior, HalfNormal):
+        kind = "folded"
+    elif isinstance(prior, Uniform):
+        kind = "bounded"
+    elif logarithmic or isinstance(prior, LogNormal):
+        kind = "logarithmic"
+    return Coordinate(name, prior, kind)

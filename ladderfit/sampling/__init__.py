@@ -1,0 +1,1 @@
+"""Drawing the posterior: independent draws (`direct`), and what belongs to it."""

@@ -1,0 +1,253 @@
+"""`direct`: independent draws of phi by importance sampling round the mode.
+
+The mode and its curvature give a Student-t, slightly widened and mixed with a
+wider one; draws from it are weighted, the weights' tail is Pareto-smoothed, and
+the weights are resampled away.  Where the first proposal is poor it is adapted
+to what was found.  The Pareto k says whether the result may be trusted, and the
+mean weight is the evidence.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from ladderfit.diagnostics import TRUSTED_K, smoothed_weights, weights_ess
+from ladderfit.errors import SamplingError
+from ladderfit.sampling.mode import LogDensity, Mode, find_mode
+from ladderfit.sampling.proposal import Proposal, component
+
+FloatArray = npt.NDArray[np.float64]
+Progress = Callable[[str, float], None]
+
+_FREEDOM = 6.0
+_PILOT = 600
+_ROUNDS = 3
+_GOOD_EFFICIENCY = 0.5
+_GOOD_K = 0.5
+_OVERSAMPLE = 1.5
+_MODE_DISTANCE = 5.0
+_MODE_MASS = 1e-4
+
+
+@dataclass(frozen=True)
+class Target:
+    """A log density and where to look for it.
+
+    Attributes
+    ----------
+    log_density : callable
+        Maps shape (b, d) to (b,).
+    start, scale : array, shape (d,)
+        A starting point, and the width of the prior in each coordinate.
+    folded : array of bool, shape (d,)
+        Coordinates of which only the size counts.
+    """
+
+    log_density: LogDensity
+    start: FloatArray
+    scale: FloatArray
+    folded: npt.NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class DirectDraws:
+    """Independent, equally weighted draws.
+
+    Attributes
+    ----------
+    z : array, shape (n, d)
+    pareto_k : float
+        Of the weights before resampling.
+    efficiency : float
+        Effective draws per proposal.
+    ess : float
+        Effective number of the `n` draws.
+    log_evidence, log_evidence_error : float
+    modes : tuple of Mode
+        Every separate mode found, by mass.
+    """
+
+    z: FloatArray
+    pareto_k: float
+    efficiency: float
+    ess: float
+    log_evidence: float
+    log_evidence_error: float
+    modes: tuple[Mode, ...]
+
+    @property
+    def trusted(self) -> bool:
+        """Whether the weights are light enough."""
+        return self.pareto_k <= TRUSTED_K
+
+
+def draw_direct(
+    target: Target, draws: int, rng: np.random.Generator, progress: Progress | None = None
+) -> DirectDraws:
+    """Draw from `target`.
+
+    Parameters
+    ----------
+    target : Target
+    draws : int
+        How many draws to return.
+    rng : numpy Generator
+    progress : callable, optional
+        Told the stage and the fraction done.
+
+    Raises
+    ------
+    SamplingError
+        If no starting point has a finite density.
+    """
+    tell = progress if progress is not None else _silent
+    if len(target.start) == 0:
+        return _nothing_to_draw(target, draws)
+    tell("finding the mode", 0.0)
+    modes = find_modes(target, rng)
+    tell("drawing", 0.2)
+    proposal = _first_proposal(modes, target.folded)
+    for round_ in range(_ROUNDS):
+        z, log_weight = _weigh(target, proposal, _PILOT, rng)
+        weights, k = smoothed_weights(log_weight)
+        efficiency = weights_ess(weights) / len(z)
+        if (efficiency > _GOOD_EFFICIENCY and k < _GOOD_K) or round_ == _ROUNDS - 1:
+            break
+        proposal = _adapted(proposal, z, weights, target.folded)
+    pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
+    z, log_weight = _weigh(target, proposal, pool, rng)
+    tell("drawing", 1.0)
+    return _resampled(z, log_weight, draws, rng, modes)
+
+
+def find_modes(target: Target, rng: np.random.Generator, others: int = 2) -> tuple[Mode, ...]:
+    """The modes reached from the start and from `others` dispersed points, by mass."""
+    spread = 0.7 * target.scale * rng.standard_normal((others, len(target.start)))
+    starts = [target.start, *(target.start + spread)]
+    finite = np.isfinite(target.log_density(np.array(starts)))
+    if not finite.any():
+        raise SamplingError(
+            "the posterior has no finite density at any starting point; "
+            "check the priors' bounds against the data"
+        )
+    found = [
+        find_mode(target.log_density, start, 0.3 * target.scale)
+        for start, usable in zip(starts, finite, strict=True)
+        if usable
+    ]
+    folded = [_fold(mode, target.folded) for mode in found]
+    folded.sort(key=lambda mode: -mode.log_mass)
+    kept = [folded[0]]
+    for mode in folded[1:]:
+        light = mode.log_mass < folded[0].log_mass + np.log(_MODE_MASS)
+        if not light and all(_apart(mode, other) for other in kept):
+            kept.append(mode)
+    return tuple(kept)
+
+
+def _nothing_to_draw(target: Target, draws: int) -> DirectDraws:
+    """All is in theta: the density of the empty phi is the evidence, exactly."""
+    z = np.empty((draws, 0))
+    return DirectDraws(z, 0.0, 1.0, float(draws), float(target.log_density(z[:1])[0]), 0.0, ())
+
+
+def _silent(stage: str, fraction: float) -> None:
+    del stage, fraction
+
+
+def _fold(mode: Mode, folded: npt.NDArray[np.bool_]) -> Mode:
+    sign = np.where(folded & (mode.point < 0.0), -1.0, 1.0)
+    covariance = mode.covariance * np.outer(sign, sign)
+    return Mode(mode.point * sign, mode.log_density, covariance, mode.converged)
+
+
+def _apart(mode: Mode, other: Mode) -> bool:
+    gap = mode.point - other.point
+    distance = np.sqrt(
+        min(gap @ np.linalg.solve(m.covariance, gap) for m in (mode, other))
+    )
+    return bool(distance > _MODE_DISTANCE)
+
+
+def _first_proposal(modes: tuple[Mode, ...], folded: npt.NDArray[np.bool_]) -> Proposal:
+    mass = np.array([mode.log_mass for mode in modes])
+    share = np.maximum(np.exp(mass - mass.max()), 0.05)
+    components = []
+    for mode, part in zip(modes, share / share.sum(), strict=True):
+        for widen, portion in ((1.05, 0.9), (2.0, 0.1)):
+            components.append(
+                component(
+                    mode.point,
+                    mode.covariance,
+                    widen=widen,
+                    freedom=_FREEDOM,
+                    share=float(part * portion),
+                )
+            )
+    return Proposal(tuple(components), folded)
+
+
+def _weigh(
+    target: Target, proposal: Proposal, size: int, rng: np.random.Generator
+) -> tuple[FloatArray, FloatArray]:
+    z = proposal.draw(rng, size)
+    return z, target.log_density(z) - proposal.log_density(z)
+
+
+def _adapted(
+    proposal: Proposal, z: FloatArray, weights: FloatArray, folded: npt.NDArray[np.bool_]
+) -> Proposal:
+    """Add a component with the weighted mean and covariance, mirrored where draws reach zero."""
+    centre = weights @ z
+    width = np.sqrt(np.maximum(weights @ (z - centre) ** 2, 1e-300))
+    mirrored = folded & (centre < 2.0 * width)
+    centre = np.where(mirrored, 0.0, centre)
+    gap = z - centre
+    covariance = (gap * weights[:, None]).T @ gap
+    covariance[mirrored] = np.where(np.eye(len(centre))[mirrored] > 0, covariance[mirrored], 0.0)
+    covariance[:, mirrored] = covariance[mirrored].T
+    covariance += np.diag(1e-12 + 1e-6 * np.diag(covariance))
+    fresh = (
+        component(centre, covariance, widen=1.1, freedom=_FREEDOM, share=0.6),
+        component(centre, covariance, widen=2.0, freedom=_FREEDOM, share=0.1),
+    )
+    old = tuple(
+        component(c.centre, c.factor @ c.factor.T, widen=1.0, freedom=c.freedom, share=0.3 * c.share)
+        for c in proposal.components
+    )
+    return Proposal((*fresh, *old), proposal.folded)
+
+
+def _resampled(
+    z: FloatArray,
+    log_weight: FloatArray,
+    draws: int,
+    rng: np.random.Generator,
+    modes: tuple[Mode, ...],
+) -> DirectDraws:
+    """Resample the weights away (systematic resampling, Kitagawa 1996) and take stock."""
+    weights, k = smoothed_weights(log_weight)
+    pool_ess = weights_ess(weights)
+    top = float(np.max(log_weight))
+    if not np.isfinite(top):
+        raise SamplingError("no draw has a finite density; check the priors against the data")
+    ratio = np.exp(log_weight - top)
+    mean = float(ratio.mean())
+    relative_error = float(ratio.std() / (mean * np.sqrt(len(ratio))))
+    points = (rng.uniform() + np.arange(draws)) / draws
+    chosen = np.minimum(np.searchsorted(np.cumsum(weights), points), len(z) - 1)
+    count = np.bincount(chosen, minlength=len(z))
+    kish = draws**2 / float(np.sum(count.astype(float) ** 2))
+    return DirectDraws(
+        z=rng.permutation(z[chosen]),
+        pareto_k=k,
+        efficiency=pool_ess / len(z),
+        ess=min(kish, pool_ess),
+        log_evidence=top + float(np.log(mean)),
+        log_evidence_error=relative_error,
+        modes=modes,
+    )
