@@ -1,0 +1,64 @@
+"""The main job: draw the posterior of a ladder and leave a result folder, whole or not at all."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from ladderfit.errors import InputError, Problem
+from ladderfit.files import new_folder
+from ladderfit.ladder import Ladder
+from ladderfit.plots import save_figures
+from ladderfit.result import Result
+from ladderfit.sampling.run import Progress, draw
+from ladderfit.store import write_result
+
+
+def calibrate(
+    ladder: Ladder,
+    folder: str | Path,
+    *,
+    seed: int | None = None,
+    draws: int | None = None,
+    progress: Progress | None = None,
+) -> Result:
+    """Draw the posterior and write numbers, draws, choices and figures into a new folder.
+
+    Parameters
+    ----------
+    ladder : Ladder
+    folder : str or Path
+        Must not exist.  It appears once everything in it is written.
+    seed, draws : int, optional
+        In place of the ladder's own.
+    progress : callable, optional
+        Called with a stage in words and the fraction of it that is done.
+
+    Returns
+    -------
+    Result
+
+    Raises
+    ------
+    InputError
+        If the folder exists or cannot be written, or the ladder cannot be fitted.
+    SamplingError
+        If the posterior could not be drawn.
+    """
+    folder = Path(folder)
+    try:
+        with new_folder(folder) as temporary:
+            result = draw(ladder, seed=seed, draws=draws, progress=progress)
+            if progress is not None:
+                progress("writing numbers and figures", 0.0)
+            write_result(result, temporary)
+            save_figures(result, temporary / "figures")
+    except OSError as error:
+        raise InputError(
+            Problem(
+                found=f"a place that cannot be written ({error.strerror or error})",
+                expected="a folder in which a result can be laid",
+                remedy="name another place with --out",
+                file=str(folder),
+            )
+        ) from error
+    return result

@@ -1,0 +1,193 @@
+"""The command line: parses, calls, prints.
+
+Exit codes: 0 done, 1 the posterior could not be drawn, 2 bad input, 130 interrupted.
+"""
+
+from __future__ import annotations
+
+import argparse
+import contextlib
+import os
+import sys
+from collections.abc import Callable, Iterator, Sequence
+from pathlib import Path
+from typing import NoReturn, TextIO
+
+from ladderfit.errors import EXIT_BAD_INPUT, InputError, LadderfitError
+
+EXIT_FAILED = 1
+EXIT_INTERRUPTED = 130
+_PLAIN = str.maketrans({"±": "+/-", "\N{MINUS SIGN}": "-", "×": "x"})
+
+_ABOUT = "Calibrate the cosmic distance ladder by one joint Bayesian fit."
+_AFTER = """\
+examples:
+  ladderfit calibrate                        fit the sample that comes along
+  ladderfit calibrate my.toml --out first    fit your own ladder
+  ladderfit mock my.toml --out again         simulate data like yours, with known truth
+"""
+
+
+class _Parser(argparse.ArgumentParser):
+    """A parser that complains in one line."""
+
+    def error(self, message: str) -> NoReturn:
+        self.exit(EXIT_BAD_INPUT, f"{self.prog}: {message}; see {self.prog} --help\n")
+
+
+class _Version(argparse.Action):
+    """Look the version up only when it is asked for."""
+
+    def __call__(self, parser: argparse.ArgumentParser, *_: object, **__: object) -> NoReturn:
+        from importlib.metadata import version
+
+        print(f"ladderfit {version('ladderfit')}")
+        parser.exit()
+
+
+def parser() -> argparse.ArgumentParser:
+    """Every command and option."""
+    top = _Parser(
+        prog="ladderfit",
+        description=_ABOUT,
+        epilog=_AFTER,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    top.add_argument("--version", action=_Version, nargs=0, help="print the version and exit")
+    commands = top.add_subparsers(title="commands", metavar="COMMAND", dest="command")
+    _add_calibrate(commands.add_parser)
+    _add_mock(commands.add_parser)
+    return top
+
+
+def _add_calibrate(add: Callable[..., argparse.ArgumentParser]) -> None:
+    words = "fit a ladder: numbers, draws and figures in a new folder"
+    command = add(
+        "calibrate",
+        help=words,
+        description=f"{words[0].upper()}{words[1:]}, and a summary on standard output.",
+    )
+    command.add_argument(
+        "file", nargs="?", metavar="FILE", help="the ladder file; without it, the sample"
+    )
+    command.add_argument(
+        "--out",
+        metavar="DIR",
+        help="the folder to make; without it, the first free name NAME-01, NAME-02, ... here",
+    )
+    command.add_argument(
+        "--seed", type=int, metavar="N", help="seed in place of the ladder's sampling.seed"
+    )
+    command.add_argument(
+        "--draws", type=int, metavar="N", help="number in place of the ladder's sampling.draws"
+    )
+    command.set_defaults(run=_calibrate)
+
+
+def _add_mock(add: Callable[..., argparse.ArgumentParser]) -> None:
+    words = "simulate tables like those of a ladder file, with known truth"
+    command = add("mock", help=words, description=f"{words[0].upper()}{words[1:]}.")
+    command.add_argument("file", metavar="FILE", help="the ladder file to follow")
+    command.add_argument("--out", metavar="DIR", required=True, help="the folder to make")
+    command.add_argument("--seed", type=int, default=1, metavar="N", help="seed (default: 1)")
+    command.set_defaults(run=_mock)
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        In place of the process's own.
+
+    Returns
+    -------
+    int
+        The exit code.
+
+    Raises
+    ------
+    SystemExit
+        After ``--help``, ``--version`` and arguments that cannot be understood.
+    """
+    top = parser()
+    chosen = top.parse_args(arguments)
+    if chosen.command is None:
+        top.print_help()
+        return 0
+    try:
+        return int(chosen.run(chosen))
+    except InputError as error:
+        for problem in error.problems:
+            _say(f"ladderfit: {problem}", sys.stderr)
+        return EXIT_BAD_INPUT
+    except LadderfitError as error:
+        _say(f"ladderfit: {' '.join(str(error).split())}", sys.stderr)
+        return EXIT_FAILED
+    except KeyboardInterrupt:
+        _say("ladderfit: interrupted; no folder was made", sys.stderr)
+        return EXIT_INTERRUPTED
+    except BrokenPipeError:  # the reader of a pipe has gone; what was asked for is done
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
+
+
+def _calibrate(chosen: argparse.Namespace) -> int:
+    from ladderfit.calibration import calibrate
+    from ladderfit.files import first_free
+    from ladderfit.ladder import read_ladder
+    from ladderfit.shipped import sample_ladder
+    from ladderfit.wording import summary_text
+
+    path = sample_ladder() if chosen.file is None else Path(chosen.file)
+    ladder = read_ladder(path)
+    stated = {"sampling.seed": chosen.seed, "sampling.draws": chosen.draws}
+    ladder = ladder.change({key: value for key, value in stated.items() if value is not None})
+    folder = first_free(Path(path.stem)) if chosen.out is None else Path(chosen.out)
+    with progress_on(sys.stderr) as report:
+        result = calibrate(ladder, folder, progress=report)
+    _say(f"{summary_text(result)}\n\nWritten to {folder}", sys.stdout)
+    return 0
+
+
+def _mock(chosen: argparse.Namespace) -> int:
+    from ladderfit.mock import write_mock
+
+    folder = Path(chosen.out)
+    write_mock(Path(chosen.file), folder, chosen.seed)
+    _say(f"Written to {folder}", sys.stdout)
+    return 0
+
+
+@contextlib.contextmanager
+def progress_on(stream: TextIO) -> Iterator[Callable[[str, float], None] | None]:
+    """Show progress on one line of a terminal and clear it at the end; None elsewhere."""
+    if not stream.isatty():
+        yield None
+        return
+    shown = ""
+
+    def report(stage: str, fraction: float) -> None:
+        nonlocal shown
+        line = f"{stage} {100 * fraction:3.0f} %" if fraction > 0.0 else f"{stage} ..."
+        if line != shown:
+            stream.write(f"\r{line.ljust(len(shown))}")
+            stream.flush()
+            shown = line
+
+    try:
+        yield report
+    finally:
+        stream.write(f"\r{' ' * len(shown)}\r")
+        stream.flush()
+
+
+def _say(text: str, stream: TextIO) -> None:
+    """Print, in plain letters where the stream knows no others."""
+    encoding = stream.encoding or "ascii"
+    try:
+        text.encode(encoding)
+    except UnicodeEncodeError:
+        text = text.translate(_PLAIN).encode(encoding, "replace").decode(encoding)
+    print(text, file=stream, flush=True)

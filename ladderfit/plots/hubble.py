@@ -1,0 +1,248 @@
+"""The last rungs: supernovae in hosts, the expansion, and what is left over."""
+
+from __future__ import annotations
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from ladderfit.names import parameter
+from ladderfit.plots.theme import (
+    CHANCES,
+    LIGHT,
+    Accent,
+    Theme,
+    brighter_up,
+    figure_of,
+    new_figure,
+    plain_log_axis,
+    series_of_ticks,
+    symmetric,
+)
+from ladderfit.residuals import (
+    Residuals,
+    at_mean,
+    flow_model,
+    flow_residuals,
+    peak_residuals,
+    velocity_residuals,
+)
+from ladderfit.result import Result
+from ladderfit.rounding import PROBABILITIES, Interval
+from ladderfit.samples import FloatArray
+
+
+def _points(axes: Axes, data: Residuals, y: FloatArray, accent: Accent, *, bars: bool) -> None:
+    many = len(data) > 60
+    axes.errorbar(
+        data.x,
+        y,
+        yerr=data.sd if bars else None,
+        linestyle="none",
+        marker=accent.marker,
+        markersize=2.4 if many else 3.5,
+        markeredgewidth=0.0,
+        elinewidth=0.45 if many else 0.8,
+        color=accent.colour,
+    )
+
+
+def _line(axes: Axes, x: FloatArray, y: FloatArray, theme: Theme) -> None:
+    axes.plot(x, y, color=theme.ink, linewidth=1.0, zorder=2.6)
+
+
+def _numbers(axes: Axes, result: Result, names: tuple[str, ...], *, left: bool) -> None:
+    words = [
+        f"{parameter(name).symbol} = {Interval.of(result.draws[name])} {parameter(name).unit}"
+        for name in names
+        if name in result.draws
+    ]
+    axes.text(
+        0.03 if left else 0.97,
+        0.04,
+        "\n".join(words),
+        transform=axes.transAxes,
+        ha="left" if left else "right",
+        va="bottom",
+        fontsize=7.5,
+        linespacing=1.5,
+    )
+
+
+def _left_over(axes: Axes, data: Residuals, accent: Accent, theme: Theme) -> None:
+    axes.axhline(0.0, color=theme.ink, linewidth=0.8)
+    _points(axes, data, data.residual, accent, bars=True)
+    symmetric(axes, np.abs(data.residual) + data.sd, data.sd)
+
+
+def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
+    """Peak magnitudes of supernovae in hosts against the hosts' moduli.
+
+    Parameters
+    ----------
+    result : Result
+        With supernovae in hosts.
+    axes : Axes
+        Drawn into.
+    theme : Theme
+
+    Returns
+    -------
+    Figure
+        The figure that holds `axes`.
+    """
+    data = peak_residuals(result)
+    if data is None:
+        raise ValueError("the ladder has no supernovae in hosts")
+    _points(axes, data, data.data, theme.accent(2), bars=True)
+    x = np.array([np.min(data.x) - 0.2, np.max(data.x) + 0.2])
+    _line(axes, x, x + at_mean(result, "peak_magnitude"), theme)
+    axes.set_xlim(x[0], x[1])
+    brighter_up(axes)
+    axes.set_title(f"{len(data)} supernovae in hosts")
+    axes.set_ylabel("Peak magnitude [mag]")
+    _numbers(axes, result, ("peak_magnitude", "peak_scatter"), left=True)
+    return figure_of(axes)
+
+
+def flow_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
+    """Peak magnitudes of supernovae in the expansion against redshift.
+
+    Parameters
+    ----------
+    result : Result
+        With supernovae in the expansion.
+    axes : Axes
+        Drawn into.
+    theme : Theme
+
+    Returns
+    -------
+    Figure
+        The figure that holds `axes`.
+    """
+    data = flow_residuals(result)
+    if data is None:
+        raise ValueError("the ladder has no supernovae in the expansion")
+    _points(axes, data, data.data, theme.accent(0), bars=len(data) <= 60)
+    low, high = float(np.min(data.x)) / 1.06, float(np.max(data.x)) * 1.06
+    z = np.geomspace(low, high, 80)
+    _line(axes, z, flow_model(result, z), theme)
+    plain_log_axis(axes, series_of_ticks(low, high))
+    axes.set_xlim(low, high)
+    brighter_up(axes)
+    axes.set_title(f"{len(data)} supernovae in the expansion")
+    alone = () if result.ladder.peaks is not None else ("peak_scatter",)
+    _numbers(axes, result, ("hubble_constant", *alone), left=True)
+    return figure_of(axes)
+
+
+def velocity_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
+    """Velocities against distances, and the linear law with its band.
+
+    Parameters
+    ----------
+    result : Result
+        With velocities.
+    axes : Axes
+        Drawn into.
+    theme : Theme
+
+    Returns
+    -------
+    Figure
+        The figure that holds `axes`.
+    """
+    data = velocity_residuals(result)
+    if data is None:
+        raise ValueError("the ladder has no velocities")
+    x = np.linspace(min(0.0, float(np.min(data.x))), 1.05 * float(np.max(data.x)), 60)
+    draws = result.draws["hubble_constant"][:, None] * x[None, :]
+    if "velocity_constant" in result.draws:
+        draws = draws + result.draws["velocity_constant"][:, None]
+    for chance, strength in zip(reversed(PROBABILITIES), (0.12, 0.28), strict=True):
+        low, high = np.quantile(draws, [0.5 - 0.5 * chance, 0.5 + 0.5 * chance], axis=0)
+        inner = chance == PROBABILITIES[0]
+        axes.fill_between(
+            x,
+            low,
+            high,
+            color=theme.tint(theme.ink, strength),
+            linewidth=0,
+            label=f"line, {CHANCES} bands" if inner else None,
+        )
+    _line(axes, x, draws.mean(axis=0), theme)
+    _points(axes, data, data.data, theme.accent(0), bars=False)
+    axes.set_xlim(x[0], x[-1])
+    axes.set_title(f"{len(data)} objects")
+    axes.set_ylabel("Velocity [km/s]")
+    axes.legend(loc="upper left")
+    _numbers(
+        axes,
+        result,
+        ("hubble_constant", "velocity_constant", "velocity_scatter"),
+        left=False,
+    )
+    return figure_of(axes)
+
+
+def _velocity_figure(result: Result, data: Residuals, theme: Theme) -> Figure:
+    figure = new_figure(5.0, 5.5)
+    top, bottom = figure.subplots(2, 1, sharex=True, height_ratios=[3, 1])
+    velocity_panel(result, top, theme=theme)
+    _left_over(bottom, data, theme.accent(0), theme)
+    bottom.set_ylabel("Residual\n[km/s]")
+    bottom.set_xlabel("Distance [Mpc]")
+    figure.align_ylabels()
+    return figure
+
+
+def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
+    """Supernovae in hosts and in the expansion, or velocities against distances.
+
+    Parameters
+    ----------
+    result : Result
+    theme : Theme
+
+    Returns
+    -------
+    Figure or None
+        None where the ladder has neither supernovae nor velocities.
+    """
+    velocities = velocity_residuals(result)
+    peaks, flow = peak_residuals(result), flow_residuals(result)
+    with theme.applied():
+        if velocities is not None:
+            return _velocity_figure(result, velocities, theme)
+        columns = [
+            (data, index, words, panel)
+            for data, index, words, panel in (
+                (peaks, 2, "Distance modulus of the host [mag]", peak_panel),
+                (flow, 0, "Redshift", flow_panel),
+            )
+            if data is not None
+        ]
+        if not columns:
+            return None
+        both = len(columns) == 2
+        figure = new_figure(4.6, 7.0 if both else 5.0)
+        grid = figure.subplots(
+            2,
+            len(columns),
+            sharex="col",
+            sharey="row",
+            height_ratios=[2.4, 1],
+            width_ratios=[1, 1.5] if both else [1],
+            squeeze=False,
+        )
+        for column, (data, index, words, panel) in enumerate(columns):
+            panel(result, grid[0, column], theme=theme)
+            _left_over(grid[1, column], data, theme.accent(index), theme)
+            grid[1, column].set_xlabel(words)
+        reach = max(float(np.max(np.abs(data.residual) + data.sd)) for data, _, _, _ in columns)
+        grid[1, 0].set_ylim(1.08 * reach, -1.08 * reach)
+        grid[0, 0].set_ylabel("Peak magnitude [mag]")
+        grid[1, 0].set_ylabel("Residual\n[mag]")
+        figure.align_ylabels(list(grid[:, 0]))
+    return figure
