@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from typing import Any, Literal, Self
 
 from ladderfit import schema
-from ladderfit.errors import Problem, nearest, raise_if
+from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.names import PARAMETERS, base_name, parameter
 from ladderfit.priors import Prior
 from ladderfit.schema import choice
@@ -140,6 +140,13 @@ class Magnitude:
         return (self.band,) if self.band is not None else ()
 
     @property
+    def identity(self) -> str:
+        """What the magnitude is, whichever columns it is made of."""
+        if self.wesenheit is None:
+            return f"the band {self.band}"
+        return f"an index on {self.wesenheit.band} with the ratio {self.wesenheit.ratio:g}"
+
+    @property
     def label(self) -> str:
         """For axes and summaries."""
         if self.wesenheit is None:
@@ -245,9 +252,7 @@ class Parallaxes:
     )
     magnitude: Magnitude | None = choice("its own bands and columns", default=None)
     corrected: bool = choice("whether the zero-point recipe is already applied", default=True)
-    distance_prior: DistancePrior = choice(
-        "prior of a star's distance", default="flat in modulus"
-    )
+    distance_prior: DistancePrior = choice("prior of a star's distance", default="flat in modulus")
     periods: Range = choice("shortest and longest period [d]", default=(0.0, float("inf")))
     overtones: Literal["drop"] = choice("what to do with overtone pulsators", default="drop")
     set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
@@ -285,9 +290,7 @@ class Anchors:
 class Hosts:
     """What is assumed of the galaxies' distances."""
 
-    distance_prior: DistancePrior = choice(
-        "prior of a host's distance", default="flat in modulus"
-    )
+    distance_prior: DistancePrior = choice("prior of a host's distance", default="flat in modulus")
 
 
 @dataclass(frozen=True)
@@ -453,7 +456,12 @@ class Choices:
         mapping = self.to_mapping()
         for key, value in changes.items():
             mapping = schema.with_value(mapping, key, schema.written(value))
-        return type(self).from_mapping(mapping)
+        try:
+            return type(self).from_mapping(mapping)
+        except InputError as error:
+            known = schema.flat(self.to_mapping())
+            faults = (_with_nearest_key(p, changes, known) for p in error.problems)
+            raise InputError(dict.fromkeys(faults)) from None
 
     def value(self, key: str) -> Any:
         """The value under a dotted key, as a ladder file writes it.
@@ -475,7 +483,9 @@ class Choices:
         mine, theirs = schema.flat(self.to_mapping()), schema.flat(other.to_mapping())
         keys = [*mine, *(key for key in theirs if key not in mine)]
         return {
-            key: (theirs.get(key), mine.get(key)) for key in keys if mine.get(key) != theirs.get(key)
+            key: (theirs.get(key), mine.get(key))
+            for key in keys
+            if mine.get(key) != theirs.get(key)
         }
 
     def prior(self, name: str) -> Prior:
@@ -517,6 +527,15 @@ class Choices:
                 remedy="add [anchors.parallaxes.magnitude]",
                 key="anchors.parallaxes.magnitude",
             )
+        if stars is not None and stars.magnitude is not None and self.cepheids is not None:
+            theirs, ours = stars.magnitude.identity, self.cepheids.magnitude.identity
+            if theirs != ours:
+                yield Problem(
+                    found=f"{theirs}, where the Cepheids have {ours}",
+                    expected="the same magnitude for both, as they share one zero point",
+                    remedy="give both sections the same band, or the same index and ratio",
+                    key="anchors.parallaxes.magnitude",
+                )
         if self.relation.metallicity != "none":
             for section, key in ((self.cepheids, "cepheids"), (stars, "anchors.parallaxes")):
                 if section is not None and "metallicity" not in section.columns:
@@ -535,6 +554,24 @@ class Choices:
             )
 
 
+def _with_nearest_key(
+    problem: Problem, changes: Mapping[str, Any], known: Mapping[str, Any]
+) -> Problem:
+    """Where a change reached into a section that is not there, offer the nearest known key."""
+    if problem.found != "nothing" or problem.key is None:
+        return problem
+    section = schema.split(problem.key)[:-1]
+    for key in changes:
+        if key not in known and schema.split(key)[:-1] == section:
+            return Problem(
+                found="a key of something that is not there",
+                expected="a known key, or all keys of a new entry",
+                remedy=nearest(key, known),
+                key=key,
+            )
+    return problem
+
+
 def _alternative_faults(plain: Mapping[str, Any], alternatives: Any) -> Iterator[Problem]:
     if not isinstance(alternatives, Mapping):
         yield Problem(
@@ -544,9 +581,7 @@ def _alternative_faults(plain: Mapping[str, Any], alternatives: Any) -> Iterator
     for key, values in alternatives.items():
         place = schema.join("alternatives", key)
         if not isinstance(values, list | tuple) or not values:
-            yield Problem(
-                repr(values), "a list of values to try", "write [value, ...]", key=place
-            )
+            yield Problem(repr(values), "a list of values to try", "write [value, ...]", key=place)
             continue
         for value in values:
             faults: list[Problem] = []

@@ -13,6 +13,8 @@ import types
 from collections.abc import Mapping
 from typing import Any, Literal, TypeVar, Union, get_args, get_origin, get_type_hints
 
+import numpy as np
+
 from ladderfit.errors import Problem, nearest
 from ladderfit.priors import EXPECTED, Prior, read_prior
 
@@ -22,7 +24,7 @@ _WORDS: dict[Any, str] = {
     str: "text in quotes",
     bool: "true or false",
     int: "a whole number",
-    float: "a number",
+    float: "a finite number",
     Prior: EXPECTED,
 }
 
@@ -38,22 +40,25 @@ def key_of(field: dataclasses.Field[Any]) -> str:
 
 
 def join(prefix: str, key: str) -> str:
-    """A dotted key; parts that hold a dot or nothing are quoted."""
-    part = f'"{key}"' if "." in key or not key or '"' in key else key
+    """A dotted key; a part that holds a dot, a quote or nothing is quoted, inner quotes doubled."""
+    quoted = "." in key or not key or '"' in key
+    part = '"' + key.replace('"', '""') + '"' if quoted else key
     return f"{prefix}.{part}" if prefix else part
 
 
 def split(dotted: str) -> list[str]:
     """The parts of a dotted key; the inverse of `join`."""
-    parts, part, quoted = [], "", False
+    parts, part, quoted, previous = [], "", False, ""
     for character in dotted:
         if character == '"':
+            part += '"' if previous == '"' and not quoted else ""
             quoted = not quoted
         elif character == "." and not quoted:
             parts.append(part)
             part = ""
         else:
             part += character
+        previous = character
     return [*parts, part]
 
 
@@ -70,6 +75,8 @@ def read(kind: type[T], value: Any, problems: list[Problem], key: str = "") -> T
 
 def written(value: Any) -> Any:
     """The inverse of `read`: plain dicts, lists and scalars; None is left out."""
+    if isinstance(value, np.generic | np.ndarray):
+        return value.tolist()
     if isinstance(value, Prior):
         return value.written()
     if dataclasses.is_dataclass(value) and not isinstance(value, type):
@@ -120,9 +127,7 @@ def _problem(key: str, value: Any, expected: str, remedy: str) -> Problem:
     )
 
 
-def _read(
-    kind: Any, value: Any, problems: list[Problem], key: str, words: str, remedy: str
-) -> Any:
+def _read(kind: Any, value: Any, problems: list[Problem], key: str, words: str, remedy: str) -> Any:
     origin = get_origin(kind)
     if origin in (Union, types.UnionType):
         return _read_union(get_args(kind), value, problems, key, words, remedy)
@@ -156,7 +161,7 @@ def _read_scalar(
     kind: Any, value: Any, problems: list[Problem], key: str, words: str, remedy: str
 ) -> Any:
     if kind is float and isinstance(value, int | float) and not isinstance(value, bool):
-        if not math.isnan(value):
+        if math.isfinite(value):
             return float(value)
     elif kind is int and isinstance(value, int) and not isinstance(value, bool):
         return value
@@ -178,9 +183,15 @@ def _read_tuple(
     each = [kinds[0]] * len(value) if open_ended else kinds
     before = len(problems)
     items = tuple(
-        _read(k, v, problems, key, words, remedy) for k, v in zip(each, value, strict=True)
+        v if k is float and _infinite(v) else _read(k, v, problems, key, words, remedy)
+        for k, v in zip(each, value, strict=True)
     )
     return items if len(problems) == before else None
+
+
+def _infinite(value: Any) -> bool:
+    """Whether a value is an infinite number: fine as a bound, nowhere else."""
+    return isinstance(value, float) and math.isinf(value)
 
 
 def _read_mapping(

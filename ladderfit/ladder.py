@@ -1,0 +1,244 @@
+"""The Ladder: tables and choices, checked against each other and frozen."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from pathlib import Path
+from typing import Any
+
+from ladderfit import schema
+from ladderfit.assembly import IN_MEMORY, SECTIONS, Assembly, Parts, Source
+from ladderfit.choices import Choices
+from ladderfit.errors import InputError, Problem, nearest, raise_if
+from ladderfit.ladder_file import as_written, read_choices
+from ladderfit.samples import FlowSample, Kept, PeakSample, StarSample, VelocitySample
+from ladderfit.select_stars import CepheidSelection
+from ladderfit.select_supernovae import PeakSelection
+from ladderfit.table_memory import table_in_memory
+from ladderfit.tables import DataTable
+
+__all__ = ["AnchorInUse", "Ladder", "Source", "build_ladder", "read_ladder"]
+
+
+@dataclass(frozen=True)
+class AnchorInUse:
+    """A geometric anchor that takes part: index and name of its host, modulus and error [mag]."""
+
+    host: int
+    name: str
+    modulus: float
+    error: float
+
+
+@dataclass(frozen=True, eq=False)
+class Ladder:
+    """Tables and choices of one calibration, checked; a change returns a copy.
+
+    Attributes
+    ----------
+    choices : Choices
+        Every choice.
+    path : Path or None
+        The ladder file, if it was read from one.
+    hosts : tuple of str
+        Hosts that take part: those of kept Cepheids by first appearance, then
+        those with an anchor and a supernova only.
+    cepheids, parallax_stars, peaks, flow, velocities : samples or None
+        The rows that take part; None where a section is absent or not in use.
+    geometric : tuple of AnchorInUse
+        Anchors in use whose host takes part.
+    kept : mapping of str to Kept
+        By section: how many rows take part, and why the others do not.
+    notes : tuple of str
+        What a reader should know about the cuts, in plain sentences.
+    sources : mapping of str to Source
+        By section: where its table came from.
+    """
+
+    choices: Choices
+    path: Path | None
+    hosts: tuple[str, ...]
+    cepheids: StarSample | None
+    parallax_stars: StarSample | None
+    peaks: PeakSample | None
+    flow: FlowSample | None
+    velocities: VelocitySample | None
+    geometric: tuple[AnchorInUse, ...]
+    kept: Mapping[str, Kept]
+    notes: tuple[str, ...]
+    sources: Mapping[str, Source]
+    _parts: Parts = field(repr=False)
+
+    def change(self, changes: Mapping[str, Any]) -> Ladder:
+        """A copy with choices changed; samples of untouched sections are the same objects.
+
+        Parameters
+        ----------
+        changes : mapping of str to value
+            By dotted key, such as ``{"cepheids.periods": [10, 100]}``; None removes a key.
+
+        Raises
+        ------
+        InputError
+            If a key is unknown, a value does not fit, or the tables do not fit the result.
+        """
+        return _assemble(self.choices.change(changes), self.path, self._parts)
+
+    def difference(self, other: Ladder) -> str:
+        """How the choices differ, one line per key: ``KEY: other's -> this one's``.
+
+        A line per table says so where the names agree and the contents do not.
+        Empty where nothing differs.
+        """
+        lines = [
+            f"{key}: {as_written(before)} -> {as_written(after)}"
+            for key, (before, after) in self.choices.difference(other.choices).items()
+        ]
+        for section, mine in self.sources.items():
+            theirs = other.sources.get(section)
+            if theirs and theirs.path == mine.path and theirs.sha256 != mine.sha256:
+                lines.append(
+                    f"{section}.table: the contents differ "
+                    f"(SHA-256 {theirs.sha256[:12]} -> {mine.sha256[:12]})"
+                )
+        return "\n".join(lines)
+
+
+def read_ladder(path: str | Path) -> Ladder:
+    """Read a ladder file and its tables.
+
+    Raises
+    ------
+    InputError
+        With one problem for each thing found wrong in the file or a table.
+    """
+    path = Path(path)
+    choices = read_choices(path)
+    try:
+        return _assemble(choices, path, Parts(path.parent, {}, {}))
+    except InputError as error:
+        named = (p if p.file else replace(p, file=str(path)) for p in error.problems)
+        raise InputError(named) from error.__cause__
+
+
+def build_ladder(
+    choices: Mapping[str, Any],
+    tables: Mapping[str, Any] | None = None,
+    base: str | Path | None = None,
+) -> Ladder:
+    """Build a ladder from a nested mapping and tables in memory.
+
+    Parameters
+    ----------
+    choices : mapping
+        As in a ladder file; `table` may be left out where `tables` has the section.
+    tables : mapping of str to table, optional
+        By section ("cepheids", "anchors.parallaxes", "supernovae", "expansion"): a
+        pandas DataFrame, an astropy Table or QTable, or a mapping of arrays.
+    base : path, optional
+        Folder that paths of other tables are relative to; the current one by default.
+
+    Raises
+    ------
+    InputError
+        With one problem for each thing found wrong.
+    """
+    plain = schema.written(choices)
+    problems: list[Problem] = []
+    given: dict[tuple[str, str], DataTable] = {}
+    for section, value in (tables or {}).items():
+        entry = _entry(plain, section) if section in SECTIONS else None
+        if entry is None:
+            problems.append(_stray_table(section))
+            continue
+        if not isinstance(entry.get("table"), str):
+            plain = schema.with_value(plain, f"{section}.table", IN_MEMORY)
+        try:
+            written = entry.get("table", IN_MEMORY)
+            given[section, str(written)] = table_in_memory(value, section)
+        except InputError as error:
+            problems.extend(error.problems)
+    raise_if(problems)
+    folder = Path() if base is None else Path(base)
+    return _assemble(Choices.from_mapping(plain), None, Parts(folder, given, {}))
+
+
+def _entry(plain: Mapping[str, Any], section: str) -> Mapping[str, Any] | None:
+    entry: Any = plain
+    for part in section.split("."):
+        entry = entry.get(part) if isinstance(entry, Mapping) else None
+    return entry if isinstance(entry, Mapping) else None
+
+
+def _stray_table(section: str) -> Problem:
+    known = section in SECTIONS
+    return Problem(
+        found=f"a table for {section!r}" + (", which the choices do not have" if known else ""),
+        expected="tables for sections of the choices, among " + ", ".join(SECTIONS),
+        remedy="add the section to the choices" if known else nearest(section, SECTIONS),
+    )
+
+
+def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
+    assembly = Assembly(choices, before)
+    cepheids = assembly.cepheids()
+    parallaxes = assembly.parallaxes()
+    peaks = assembly.peaks(cepheids)
+    expansion = assembly.expansion()
+    raise_if(assembly.problems)
+    hosts = peaks.hosts if peaks else cepheids.hosts if cepheids else ()
+    seen = {*(cepheids.seen if cepheids else ()), *(peaks.seen if peaks else ())}
+    geometric, notes = _anchors_in_use(choices, hosts, seen)
+    selections = dict(zip(SECTIONS, (cepheids, parallaxes, peaks, expansion), strict=True))
+    return Ladder(
+        choices=choices,
+        path=path,
+        hosts=hosts,
+        cepheids=cepheids.sample if cepheids else None,
+        parallax_stars=parallaxes.sample if parallaxes else None,
+        peaks=peaks.sample if peaks else None,
+        flow=expansion.flow if expansion else None,
+        velocities=expansion.velocities if expansion else None,
+        geometric=geometric,
+        kept={key: selection.kept for key, selection in selections.items() if selection},
+        notes=(*_lost_hosts(cepheids, peaks), *(peaks.notes if peaks else ()), *notes),
+        sources=assembly.sources,
+        _parts=Parts(before.base, assembly.tables, assembly.made),
+    )
+
+
+def _anchors_in_use(
+    choices: Choices, hosts: tuple[str, ...], seen: set[str]
+) -> tuple[tuple[AnchorInUse, ...], list[str]]:
+    problems: list[Problem] = []
+    notes: list[str] = []
+    used: list[AnchorInUse] = []
+    index = {host: number for number, host in enumerate(hosts)}
+    for name, anchor in choices.anchors.geometric.items():
+        if not anchor.use:
+            continue
+        if name in index:
+            used.append(AnchorInUse(index[name], name, anchor.modulus, anchor.error))
+        elif name in seen:
+            notes.append(f"{name}: nothing is left of it after the cuts; its anchor is left out")
+        else:
+            problems.append(
+                Problem(
+                    found="a galaxy that is in no table",
+                    expected="a host of the Cepheids or the supernovae",
+                    remedy=f"{nearest(name, seen)} or set use = false",
+                    key=schema.join("anchors.geometric", name),
+                )
+            )
+    raise_if(problems)
+    return tuple(used), notes
+
+
+def _lost_hosts(cepheids: CepheidSelection | None, peaks: PeakSelection | None) -> list[str]:
+    """Hosts of the Cepheid table that no cut left a star, unless a supernova's note says so."""
+    if cepheids is None:
+        return []
+    told = {note.split(":", 1)[0] for note in peaks.notes} if peaks else set()
+    lost = [host for host in cepheids.seen if host not in {*cepheids.hosts, *told}]
+    return [f"{host}: no Cepheid left after the cuts" for host in lost]

@@ -1,0 +1,185 @@
+"""From tables of supernovae, or of distances and velocities, to samples."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from ladderfit.choices import Expansion, Supernovae
+from ladderfit.errors import Problem, nearest, raise_if
+from ladderfit.rows import Rows, floats, integers, names
+from ladderfit.samples import FlowSample, Kept, PeakSample, VelocitySample
+from ladderfit.select_stars import CepheidSelection
+from ladderfit.tables import DISTANCE, MAGNITUDE, REDSHIFT, VELOCITY, DataTable, Texts, shown
+
+_KINDS = {
+    "peak": MAGNITUDE,
+    "peak_error": MAGNITUDE,
+    "redshift": REDSHIFT,
+    "redshift_heliocentric": REDSHIFT,
+    "distance": DISTANCE,
+    "velocity": VELOCITY,
+}
+
+
+@dataclass(frozen=True, eq=False)
+class PeakSelection:
+    """Kept supernovae; `hosts` is the ladder's list, `notes` say what was set aside."""
+
+    sample: PeakSample
+    hosts: tuple[str, ...]
+    seen: tuple[str, ...]
+    kept: Kept
+    notes: tuple[str, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class ExpansionSelection:
+    """Kept objects of the expansion: one of the two samples."""
+
+    flow: FlowSample | None
+    velocities: VelocitySample | None
+    kept: Kept
+
+
+def select_peaks(
+    table: DataTable,
+    section: Supernovae,
+    cepheids: CepheidSelection | None,
+    anchors: Mapping[str, bool],
+) -> PeakSelection:
+    """The supernovae whose host has a Cepheid or an anchor in use.
+
+    Parameters
+    ----------
+    table : DataTable
+        Their table.
+    section : Supernovae
+        Their choices.
+    cepheids : CepheidSelection or None
+        The Cepheids that take part.
+    anchors : mapping of str to bool
+        Every geometric anchor, and whether it is in use.
+
+    Raises
+    ------
+    InputError
+        If the table does not fit the choices, a host is unknown, or nothing is left.
+    """
+    rows, columns = Rows(table, "supernovae"), section.columns
+    raise_if(rows.faults(columns, _KINDS))
+    name, host = table.texts(columns["name"]), table.texts(columns["host"])
+    rows.set_aside(section.set_aside, name, "name", host)
+    rows.need(name, "name")
+    rows.need(host, "host")
+    peak = rows.number("peak", columns["peak"], MAGNITUDE)
+    error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
+    same = {"name": name.values, "host": host.values, "peak": peak}
+    rows.unique("the supernova", same, columns["name"])
+    known = {*(cepheids.seen if cepheids else ()), *anchors}
+    _unknown_hosts(rows, host, known, columns["host"])
+    usable = {*(cepheids.hosts if cepheids else ()), *(a for a, use in anchors.items() if use)}
+    stranded = ~np.array([cell in usable for cell in host.values], bool)
+    notes = _notes_on(host.values[stranded & rows.open], cepheids)
+    rows.leave_out(stranded, "in a host without Cepheid or anchor in use", "table")
+    left, kept = rows.finish("supernova in a host with a Cepheid or an anchor in use")
+    hosts = list(
+        dict.fromkeys([*(cepheids.hosts if cepheids else ()), *map(str, host.values[left])])
+    )
+    index = {label: number for number, label in enumerate(hosts)}
+    sample = PeakSample(
+        name=names(name.values[left]),
+        host=integers([index[cell] for cell in host.values[left]]),
+        magnitude=floats(peak[left]),
+        variance=floats(error[left] ** 2),
+        row=integers(left + 1),
+    )
+    seen = tuple(map(str, pd.unique(host.values[~host.missing])))
+    return PeakSelection(sample, tuple(hosts), seen, kept, notes)
+
+
+def _unknown_hosts(rows: Rows, host: Texts, known: set[str], column: str) -> None:
+    unknown = np.array([cell not in known for cell in host.values], bool)
+    for label in dict.fromkeys(host.values[unknown & rows.judged & ~host.missing]):
+        row = int(np.flatnonzero((host.values == label) & rows.judged)[0]) + 1
+        rows.problems.append(
+            Problem(
+                found=f"the unknown host {shown(label)}",
+                expected="a host of the Cepheids, or one with a geometric anchor",
+                remedy=nearest(label, known) if known else "add Cepheids or an anchor",
+                file=rows.table.name,
+                row=row,
+                column=column,
+            )
+        )
+
+
+def _notes_on(hosts: Iterable[str], cepheids: CepheidSelection | None) -> tuple[str, ...]:
+    counts = pd.Series(list(hosts), dtype=object).value_counts(sort=False)
+    notes = []
+    for host, count in counts.items():
+        seen = cepheids is not None and host in cepheids.seen
+        reason = "no Cepheid left after the cuts" if seen else "no Cepheid and no anchor in use"
+        words = "its supernova is" if count == 1 else f"its {count} supernovae are"
+        notes.append(f"{host}: {reason}; {words} set aside")
+    return tuple(notes)
+
+
+def select_expansion(table: DataTable, section: Expansion) -> ExpansionSelection:
+    """The objects of the expansion that take part, in the order of their table.
+
+    Raises
+    ------
+    InputError
+        If the table does not fit the choices, or nothing is left.
+    """
+    rows, columns = Rows(table, "expansion"), section.columns
+    raise_if(rows.faults(columns, _KINDS))
+    name = table.texts(columns["name"])
+    rows.set_aside(section.set_aside, name, "name")
+    rows.need(name, "name")
+    return _velocities(rows, name, columns) if section.linear else _flow(rows, name, section)
+
+
+def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> ExpansionSelection:
+    distance = rows.number("distance", columns["distance"], DISTANCE, above=0.0)
+    velocity = rows.number("velocity", columns["velocity"], VELOCITY)
+    same = {"name": name.values, "distance": distance, "velocity": velocity}
+    rows.unique("the object", same, columns["name"])
+    left, kept = rows.finish("object with a distance and a velocity")
+    sample = VelocitySample(
+        name=names(name.values[left]),
+        distance=floats(distance[left]),
+        velocity=floats(velocity[left]),
+        row=integers(left + 1),
+    )
+    return ExpansionSelection(None, sample, kept)
+
+
+def _flow(rows: Rows, name: Texts, section: Expansion) -> ExpansionSelection:
+    columns = section.columns
+    redshift = rows.number("redshift", columns["redshift"], REDSHIFT, above=0.0)
+    observed = redshift
+    if "redshift_heliocentric" in columns:
+        observed = rows.number(
+            "redshift_heliocentric", columns["redshift_heliocentric"], REDSHIFT, above=-1.0
+        )
+    peak = rows.number("peak", columns["peak"], MAGNITUDE)
+    error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
+    same = {"name": name.values, "redshift": redshift, "peak": peak}
+    rows.unique("the supernova", same, columns["name"])
+    low, high = section.redshifts
+    rows.leave_out((redshift < low) | (redshift > high), "outside the redshift range", "redshifts")
+    left, kept = rows.finish("supernova in the redshift range")
+    sample = FlowSample(
+        name=names(name.values[left]),
+        redshift=floats(redshift[left]),
+        redshift_heliocentric=floats(observed[left]),
+        magnitude=floats(peak[left]),
+        variance=floats(error[left] ** 2),
+        row=integers(left + 1),
+    )
+    return ExpansionSelection(sample, None, kept)
