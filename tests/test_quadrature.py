@@ -1,12 +1,15 @@
-"""The integral over a parallax star's modulus against a dense grid."""
+"""The integral over a parallax star's modulus: dense grid, plain reference, compiled kernel."""
 
 from __future__ import annotations
 
 import numpy as np
 import pytest
+from oracle_quadrature import log_parallax_integral as plain
 from oracles import log_parallax_integral as dense
 
-from ladderfit.kernels.quadrature import K, log_parallax_integral
+from ladderfit.kernels.quadrature import K, log_parallax_integrals
+
+VOLUME = 0.6 * np.log(10.0)
 
 
 def draw_cases(rng, n):
@@ -22,18 +25,37 @@ def draw_cases(rng, n):
     return modulus + off, variance, parallax, error
 
 
-@pytest.mark.parametrize("tilt", [0.0, 0.6 * np.log(10.0)])
-def test_agrees_with_a_dense_grid(tilt):
+def compiled(a, v, parallax, error, tilt=0.0):
+    zero = np.zeros(1)
+    a, v, parallax, error = (np.atleast_1d(np.asarray(x, float)) for x in (a, v, parallax, error))
+    return log_parallax_integrals(a[None, :], v, zero, parallax, zero, error, tilt)[0]
+
+
+@pytest.mark.parametrize("tilt", [0.0, VOLUME])
+def test_both_agree_with_a_dense_grid(tilt):
     """To 1e-6 + 1e-12 |log p| for 2,000 draws."""
     cases = draw_cases(np.random.default_rng(3), 1000)
-    found = log_parallax_integral(*cases, tilt)
-    assert np.isfinite(found).all()
-    worst = 0.0
-    for place, (a, v, p, s) in enumerate(zip(*cases, strict=True)):
-        expected = dense(a, v, p, s, lambda mu: tilt * mu, points=20_001)
-        allowed = 1e-6 + 1e-12 * abs(expected)
-        worst = max(worst, abs(found[place] - expected) / allowed)
-    assert worst < 1.0
+    slow, fast = plain(*cases, tilt), compiled(*cases, tilt)
+    assert np.isfinite(fast).all()
+    expected = np.array(
+        [
+            dense(a, v, p, s, lambda mu: tilt * mu, points=20_001)
+            for a, v, p, s in zip(*cases, strict=True)
+        ]
+    )
+    allowed = 1e-6 + 1e-12 * np.abs(expected)
+    assert np.max(np.abs(slow - expected) / allowed) < 1.0
+    assert np.max(np.abs(fast - expected) / allowed) < 1.0
+
+
+@pytest.mark.parametrize("tilt", [0.0, VOLUME])
+@pytest.mark.parametrize("seed", [1, 2])
+def test_compiled_agrees_with_plain(tilt, seed):
+    """20,000 draws each, to a fifth of what is asked."""
+    cases = draw_cases(np.random.default_rng(seed), 20_000)
+    expected = plain(*cases, tilt)
+    allowed = 2e-7 + 1e-12 * np.abs(expected)
+    assert np.max(np.abs(compiled(*cases, tilt) - expected) / allowed) < 1.0
 
 
 def test_dense_grid_itself_is_converged():
@@ -46,17 +68,13 @@ def test_dense_grid_itself_is_converged():
 
 def test_a_parallax_without_information_leaves_a_constant():
     """With a huge error the integral over mu of the magnitude's Gaussian is 1."""
-    found = log_parallax_integral(
-        np.array([11.0]), np.array([0.01]), np.array([0.3]), np.array([1e6])
-    )
-    assert found[0] == pytest.approx(-np.log(1e6) - 0.5 * np.log(2 * np.pi), abs=1e-9)
+    found = compiled(11.0, 0.01, 0.3, 1e6)
+    assert found[0] == pytest.approx(-np.log(1e6) - 0.5 * np.log(2 * np.pi), abs=1e-7)
 
 
 def test_a_sharp_magnitude_leaves_the_parallax_density():
     """With a tiny variance the parallax is simply normal about its photometric value."""
-    found = log_parallax_integral(
-        np.array([11.0]), np.array([1e-12]), np.array([0.6]), np.array([0.02])
-    )
+    found = compiled(11.0, 1e-12, 0.6, 0.02)
     residual = (10.0 ** (2.0 - 2.2) - 0.6) / 0.02
     expected = -0.5 * residual**2 - np.log(0.02) - 0.5 * np.log(2 * np.pi)
     assert found[0] == pytest.approx(expected, abs=1e-4)
@@ -64,14 +82,25 @@ def test_a_sharp_magnitude_leaves_the_parallax_density():
 
 def test_a_sharp_parallax_leaves_the_magnitude_density():
     """Change of variables: N(a | mu(plx), v) times d mu / d plx."""
-    found = log_parallax_integral(
-        np.array([5.2]), np.array([0.04]), np.array([10.0]), np.array([1e-5])
-    )
+    found = compiled(5.2, 0.04, 10.0, 1e-5)
     expected = -0.5 * 0.2**2 / 0.04 - 0.5 * np.log(2 * np.pi * 0.04) - np.log(K * 10.0)
     assert found[0] == pytest.approx(expected, abs=1e-5)
 
 
 def test_far_from_any_agreement_it_stays_finite():
-    a = np.array([-20.0, 0.0, 40.0, 11.0])
-    found = log_parallax_integral(a, np.full(4, 1e-4), np.array([0.5, -3.0, 50.0, -50.0]), np.full(4, 0.01))
-    assert np.isfinite(found).all()
+    a, parallax = np.array([-20.0, 0.0, 40.0, 11.0]), np.array([0.5, -3.0, 50.0, -50.0])
+    for scatter in (0.01, 1.0):
+        found = compiled(a, np.full(4, scatter**2), parallax, np.full(4, 0.01))
+        assert np.isfinite(found).all()
+
+
+def test_the_same_numbers_on_one_thread_and_on_two(monkeypatch):
+    rng = np.random.default_rng(1)
+    a, v, parallax, error = draw_cases(rng, 60)
+    many = a + rng.normal(size=(800, 60)) * 0.1
+    extra, offset = rng.uniform(0.0, 0.1, 800), rng.normal(size=800) * 0.01
+    found = []
+    for threads in ("1", "2"):
+        monkeypatch.setenv("LADDERFIT_THREADS", threads)
+        found.append(log_parallax_integrals(many, v, extra, parallax, offset, error))
+    np.testing.assert_array_equal(*found)

@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.choices import LARGEST_MODULUS, DistancePrior
-from ladderfit.kernels.quadrature import log_parallax_integral
+from ladderfit.kernels.quadrature import log_parallax_integrals
 from ladderfit.ladder import Ladder
 from ladderfit.relations import design_matrix
 
@@ -54,10 +54,14 @@ class ParallaxTerms:
     ) -> FloatArray:
         """Per star, shape (b, n); `coefficients` has shape (b, k), the others (b,)."""
         distance_like = self.magnitude - coefficients @ self.design.T
-        variance = self.variance + (scatter**2)[:, None]
-        parallax = self.parallax - offset[:, None]
-        integral = log_parallax_integral(
-            distance_like, variance, parallax, self.parallax_error, tilt_of(self.prior)
+        integral = log_parallax_integrals(
+            distance_like,
+            self.variance,
+            scatter**2,
+            self.parallax,
+            offset,
+            self.parallax_error,
+            tilt_of(self.prior),
         )
         return integral - log_modulus_norm(self.prior)
 
