@@ -17,19 +17,19 @@ ORDER = """
     units files shipped priors names schema choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
-    table_files tables covariances relations ladder_file ladder
-    kernels.quadrature kernels.reduced kernels.arrow kernels
+    tables table_files rows selecting covariances relations ladder_file ladder
+    kernels.compiling kernels.quadrature kernels.reduced kernels.arrow kernels
     posterior.split posterior.frame posterior.cepheids posterior.parallaxes
-    posterior.supernovae posterior.joint posterior
-    diagnostics result store
+    posterior.supernovae posterior.joint posterior.determined posterior
+    diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.ensemble sampling.chain_file
     sampling.run sampling
     classical residuals influence anchors sweep alternatives review distances compare
-    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.again
-    mock mock.__main__
+    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.redraw
+    mock.folder mock mock.__main__
     coverage
-    plots.theme plots.relation plots.corner plots.moduli plots.hubble plots
-    report
+    plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
+    report calibration
     workbench.state workbench.axis workbench.choices_panel workbench.canvas workbench.screen
     workbench
     launcher cli __main__

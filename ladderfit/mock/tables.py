@@ -26,6 +26,15 @@ def number_column(
     )
 
 
+def digits_column(
+    name: str, values: npt.ArrayLike, digits: int, unit: str | None, words: str
+) -> MaskedColumn:
+    """Column of numbers rounded to so many significant digits."""
+    form = f".{digits}g"
+    rounded = [float(format(value, form)) for value in np.asarray(values, float).tolist()]
+    return MaskedColumn(rounded, name=name, unit=unit, format=form, description=words)
+
+
 def text_column(
     name: str, values: Sequence[str] | npt.NDArray[np.str_], words: str
 ) -> MaskedColumn:
@@ -67,11 +76,14 @@ def truth_toml(truth: Mapping[str, float], seed: int, remark: str) -> str:
 
 def _cells(column: MaskedColumn) -> list[str]:
     missing = np.ma.getmaskarray(column)
-    values = np.ma.getdata(column)
     form = column.format or ""
-    texts = [format(value, form) for value in values.tolist()]
-    quoted = [f'"{text}"' if " " in text or text == "" else text for text in texts]
-    return ['""' if gone else text for text, gone in zip(quoted, missing, strict=True)]
+    texts = [_quoted(format(value, form)) for value in np.ma.getdata(column).tolist()]
+    return ['""' if gone else text for text, gone in zip(texts, missing, strict=True)]
+
+
+def _quoted(text: str) -> str:
+    plain = text and text.isprintable() and not set(text) & set(' "#,')
+    return text if plain else '"' + text.replace('"', '""') + '"'
 
 
 def _escaped(words: str) -> str:

@@ -1,0 +1,308 @@
+"""The measured quantities of an existing ladder, drawn again from given true values.
+
+Stars, periods, metallicities, stated errors, hosts and redshifts stay; magnitudes,
+parallaxes, anchor moduli, peaks and velocities are simulated one object at a
+time.  Magnitudes and indices become one column, W.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from astropy.table import MaskedColumn, Table
+
+from ladderfit.errors import InputError, Problem
+from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.mock.peaks import peak_in_flow
+from ladderfit.mock.tables import digits_column, text_column
+from ladderfit.names import with_group
+from ladderfit.samples import FloatArray, FlowSample, PeakSample, StarSample, VelocitySample
+
+_MAGNITUDE = {"bands": {"W": "W"}, "errors": {"W": "e_W"}, "band": "W"}
+_COLUMNS = {
+    "cepheids": {"star": "ID", "host": "Galaxy", "period": "P"},
+    "anchors.parallaxes": {
+        "star": "ID",
+        "period": "P",
+        "parallax": "plx",
+        "parallax_error": "e_plx",
+    },
+    "supernovae": {"name": "SN", "host": "Galaxy", "peak": "mB", "peak_error": "e_mB"},
+    "expansion": {
+        "name": "SN",
+        "redshift": "zcmb",
+        "redshift_heliocentric": "zhel",
+        "peak": "mB",
+        "peak_error": "e_mB",
+    },
+}
+_MARGIN = 0.5  # mag, beyond the nearest and the farthest parallax star
+
+Rng = np.random.Generator
+
+
+@dataclass(frozen=True)
+class Redrawn:
+    """A simulated ladder on its way: choices as a nested mapping, tables by section."""
+
+    choices: Mapping[str, Any]
+    tables: Mapping[str, Table]
+
+
+def mock_from_ladder(
+    ladder: Ladder,
+    truth: Mapping[str, float],
+    rng: Rng,
+    parallax_moduli: tuple[float, float] | None = None,
+) -> Ladder:
+    """A ladder like the given one, with its data drawn from known truth.
+
+    Parameters
+    ----------
+    ladder : Ladder
+        Gives the objects, their exact properties, their errors and all choices.
+    truth : mapping of str to float
+        A true value for every parameter by name, host moduli included.
+    rng : Generator
+        Source of randomness.
+    parallax_moduli : pair of float, optional
+        Range [mag] of the parallax stars' true moduli, which follow the distance
+        prior of the choices inside it, whatever else is known of the star; by
+        default the range of the given stars and half a magnitude on either side.
+
+    Returns
+    -------
+    Ladder
+        Without alternatives and objects set aside.
+
+    Raises
+    ------
+    InputError
+        If a parameter has no true value.
+    """
+    drawn = redraw(ladder, truth, rng, parallax_moduli)
+    return build_ladder(drawn.choices, drawn.tables)
+
+
+def redraw(
+    ladder: Ladder,
+    truth: Mapping[str, float],
+    rng: Rng,
+    parallax_moduli: tuple[float, float] | None = None,
+) -> Redrawn:
+    """Choices and tables of `mock_from_ladder`, before they are put together."""
+    lacking = [name for name in needed(ladder) if name not in truth]
+    if lacking:
+        raise InputError(
+            Problem("no true value", f"one for {name}", "add it to the truth") for name in lacking
+        )
+    of_hosts, of_stars, of_peaks, of_flow, of_anchors = rng.spawn(5)
+    tables: dict[str, Table] = {}
+    if ladder.cepheids is not None:
+        tables["cepheids"] = _cepheids(ladder, ladder.cepheids, truth, of_hosts)
+    if ladder.parallax_stars is not None:
+        tables["anchors.parallaxes"] = _parallax_stars(
+            ladder, ladder.parallax_stars, truth, of_stars, parallax_moduli
+        )
+    if ladder.peaks is not None:
+        tables["supernovae"] = _peaks(ladder, ladder.peaks, truth, of_peaks)
+    if ladder.flow is not None:
+        tables["expansion"] = _flow(ladder, ladder.flow, truth, of_flow)
+    if ladder.velocities is not None:
+        tables["expansion"] = _velocities(ladder.velocities, truth, of_flow)
+    return Redrawn(_choices(ladder, truth, of_anchors), tables)
+
+
+def needed(ladder: Ladder) -> tuple[str, ...]:
+    """Names of the parameters that need a true value."""
+    expansion = ladder.choices.expansion
+    linear = expansion is not None and expansion.linear
+    names: list[str] = []
+    if ladder.cepheids is not None or ladder.parallax_stars is not None:
+        names += ["slope", "zero_point", "scatter"]
+        names += ["metallicity"] if ladder.choices.relation.metallicity != "none" else []
+    names += ["parallax_offset"] if ladder.parallax_stars is not None else []
+    if ladder.peaks is not None or (expansion is not None and not linear):
+        names += ["peak_magnitude", "peak_scatter"]
+    names += ["hubble_constant"] if expansion is not None else []
+    if expansion is not None and linear:
+        names += ["velocity_scatter"]
+        names += ["velocity_constant"] if expansion.velocity_constant else []
+    return (*names, *(with_group("modulus", host) for host in ladder.hosts))
+
+
+def absolute(ladder: Ladder, stars: StarSample, truth: Mapping[str, float]) -> FloatArray:
+    """Mean absolute magnitude of each star [mag], shape (n,), by the true relation."""
+    relation = ladder.choices.relation
+    dex = stars.log_period - np.log10(relation.pivot)
+    mean = truth["zero_point"] + truth["slope"] * dex
+    if relation.metallicity != "none":
+        mean = mean + truth["metallicity"] * (stars.metallicity - relation.metallicity.reference)
+    return np.asarray(mean)
+
+
+def _host_moduli(ladder: Ladder, truth: Mapping[str, float]) -> FloatArray:
+    return np.array([truth[with_group("modulus", host)] for host in ladder.hosts])
+
+
+def _measured(mean: FloatArray, scatter: float, error: FloatArray, rng: Rng) -> FloatArray:
+    """Each object's own deviation, and then its measurement."""
+    own = mean + scatter * rng.normal(size=len(mean))
+    return np.asarray(own + error * rng.normal(size=len(mean)))
+
+
+def _star_columns(
+    ladder: Ladder, stars: StarSample, modulus: FloatArray, truth: Mapping[str, float], rng: Rng
+) -> list[MaskedColumn]:
+    error = np.sqrt(stars.variance)
+    mean = modulus + absolute(ladder, stars, truth)
+    measured = _measured(mean, truth["scatter"], error, rng)
+    columns = [
+        text_column("ID", stars.star, "star"),
+        digits_column("P", 10.0**stars.log_period, 10, "d", "period of pulsation"),
+        digits_column("W", measured, 8, "mag", "magnitude of the relation, simulated"),
+        digits_column("e_W", error, 8, "mag", "error of W"),
+    ]
+    if ladder.choices.relation.metallicity != "none":
+        columns.append(digits_column("OH", stars.metallicity, 8, "dex", "metallicity"))
+    return columns
+
+
+def _cepheids(ladder: Ladder, stars: StarSample, truth: Mapping[str, float], rng: Rng) -> Table:
+    modulus = _host_moduli(ladder, truth)[stars.host]
+    columns = _star_columns(ladder, stars, modulus, truth, rng)
+    galaxy = [ladder.hosts[number] for number in stars.host]
+    return Table([columns[0], text_column("Galaxy", galaxy, "host galaxy"), *columns[1:]])
+
+
+def _parallax_stars(
+    ladder: Ladder,
+    stars: StarSample,
+    truth: Mapping[str, float],
+    rng: Rng,
+    moduli: tuple[float, float] | None,
+) -> Table:
+    section = ladder.choices.anchors.parallaxes
+    if section is None or stars.parallax_error is None:  # a ladder with such stars has both
+        raise AssertionError
+    if moduli is None:
+        near = stars.magnitude - absolute(ladder, stars, truth)
+        moduli = (float(near.min()) - _MARGIN, float(near.max()) + _MARGIN)
+    modulus = _true_moduli(section.distance_prior, moduli, len(stars), rng)
+    columns = _star_columns(ladder, stars, modulus, truth, rng)
+    true = 10.0 ** (2.0 - 0.2 * modulus) + truth["parallax_offset"]
+    measured = true + stars.parallax_error * rng.normal(size=len(stars))
+    columns += [
+        digits_column("plx", measured, 8, "mas", "parallax, simulated"),
+        digits_column("e_plx", stars.parallax_error, 8, "mas", "error of plx"),
+    ]
+    return Table(columns)
+
+
+def _true_moduli(prior: str, ends: tuple[float, float], size: int, rng: Rng) -> FloatArray:
+    """Moduli between two ends, by the distance prior: flat, or as the volume grows."""
+    if prior == "flat in modulus":
+        return rng.uniform(*ends, size)
+    smallest = 10.0 ** (0.6 * (ends[0] - ends[1]))
+    return np.asarray(ends[1] + np.log10(rng.uniform(smallest, 1.0, size)) / 0.6)
+
+
+def _peaks(ladder: Ladder, peaks: PeakSample, truth: Mapping[str, float], rng: Rng) -> Table:
+    mean = _host_moduli(ladder, truth)[peaks.host] + truth["peak_magnitude"]
+    error = np.sqrt(peaks.variance)
+    galaxy = [ladder.hosts[number] for number in peaks.host]
+    return Table(
+        [
+            text_column("SN", peaks.name, "supernova"),
+            text_column("Galaxy", galaxy, "host galaxy"),
+            *_peak_columns(_measured(mean, truth["peak_scatter"], error, rng), error),
+        ]
+    )
+
+
+def _flow(ladder: Ladder, flow: FlowSample, truth: Mapping[str, float], rng: Rng) -> Table:
+    expansion = ladder.choices.expansion
+    if expansion is None:  # a ladder with a flow has one
+        raise AssertionError
+    law = (truth["peak_magnitude"], truth["hubble_constant"], expansion.q0, expansion.j0)
+    velocity = expansion.peculiar_velocity * rng.normal(size=len(flow))
+    mean = peak_in_flow(law, flow.redshift, flow.redshift_heliocentric, velocity)
+    error = np.sqrt(flow.variance)
+    return Table(
+        [
+            text_column("SN", flow.name, "supernova"),
+            digits_column("zcmb", flow.redshift, 10, None, "redshift, background at rest"),
+            digits_column("zhel", flow.redshift_heliocentric, 10, None, "redshift, Sun at rest"),
+            *_peak_columns(_measured(mean, truth["peak_scatter"], error, rng), error),
+        ]
+    )
+
+
+def _peak_columns(measured: FloatArray, error: FloatArray) -> list[MaskedColumn]:
+    return [
+        digits_column("mB", measured, 8, "mag", "standardised peak magnitude, simulated"),
+        digits_column("e_mB", error, 8, "mag", "error of mB, without the common scatter"),
+    ]
+
+
+def _velocities(sample: VelocitySample, truth: Mapping[str, float], rng: Rng) -> Table:
+    mean = truth["hubble_constant"] * sample.distance + truth.get("velocity_constant", 0.0)
+    measured = mean + truth["velocity_scatter"] * rng.normal(size=len(sample))
+    return Table(
+        [
+            text_column("name", sample.name, "object"),
+            digits_column("distance", sample.distance, 10, "Mpc", "distance"),
+            digits_column("velocity", measured, 8, "km / s", "velocity, simulated"),
+        ]
+    )
+
+
+def _choices(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:
+    """The ladder's choices, made to fit the new tables; anchors measured again."""
+    plain = ladder.choices.to_mapping()
+    plain.pop("alternatives", None)
+    for section in ("cepheids", "supernovae", "expansion"):
+        if section in plain:
+            plain[section] = _fitted(plain[section], _COLUMNS[section])
+    if ladder.velocities is not None:
+        plain["expansion"]["columns"] = {role: role for role in ("name", "distance", "velocity")}
+    metallic = ladder.choices.relation.metallicity != "none"
+    if "cepheids" in plain:
+        plain["cepheids"]["magnitude"] = _MAGNITUDE
+        plain["cepheids"]["columns"] |= {"metallicity": "OH"} if metallic else {}
+    plain["anchors"] = _anchors(ladder, truth, rng)
+    published = plain.get("expansion", {}).get("intercept")
+    if published is not None:
+        true = float(np.log10(truth["hubble_constant"])) - 0.2 * truth["peak_magnitude"] - 5.0
+        value = true + published["error"] * float(rng.normal())
+        plain["expansion"]["intercept"] = {**published, "value": value}
+        plain["expansion"]["columns"] = {}
+    return plain
+
+
+def _fitted(section: Mapping[str, Any], columns: Mapping[str, str]) -> dict[str, Any]:
+    """A section without its table and what was set aside, its columns named anew."""
+    kept = {key: value for key, value in section.items() if key not in ("table", "set_aside")}
+    return kept | {"columns": dict(columns)}
+
+
+def _anchors(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:
+    plain: dict[str, Any] = ladder.choices.to_mapping().get("anchors", {})
+    used = {anchor.name for anchor in ladder.geometric}
+    geometric = {}
+    for host, anchor in plain.get("geometric", {}).items():
+        if host in used:
+            true = truth[with_group("modulus", host)]
+            value = round(true + anchor["error"] * float(rng.normal()), 6)
+            geometric[host] = {**anchor, "modulus": value}
+    anchors: dict[str, Any] = {"geometric": geometric} if geometric else {}
+    if ladder.parallax_stars is not None:
+        stars = _fitted(plain["parallaxes"], _COLUMNS["anchors.parallaxes"])
+        stars["magnitude"] = _MAGNITUDE
+        if ladder.choices.relation.metallicity != "none":
+            stars["columns"]["metallicity"] = "OH"
+        anchors["parallaxes"] = stars
+    return anchors
