@@ -17,8 +17,9 @@ ORDER = """
     units files shipped priors names schema choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
-    tables table_files rows selecting covariances relations ladder_file ladder
-    kernels.compiling kernels.quadrature kernels.reduced kernels.arrow kernels
+    tables table_memory table_files rows select_stars select_supernovae covariances
+    relations ladder_file assembly ladder
+    kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
     posterior.split posterior.frame posterior.cepheids posterior.parallaxes
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
@@ -69,8 +70,12 @@ def sources(package: Path) -> dict[str, str]:
     }
 
 
-def imported(tree: ast.AST, known: set[str]) -> Iterator[tuple[int, str]]:
-    """Line and full name of everything imported anywhere; known modules resolved."""
+def imported(tree: ast.AST, known: set[str]) -> list[tuple[int, str]]:
+    """Line and full name of everything imported anywhere, each once; known modules resolved."""
+    return list(dict.fromkeys(all_imported(tree, known)))
+
+
+def all_imported(tree: ast.AST, known: set[str]) -> Iterator[tuple[int, str]]:
     for node in ast.walk(tree):
         if isinstance(node, ast.Import):
             yield from ((node.lineno, alias.name) for alias in node.names)
