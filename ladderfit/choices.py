@@ -46,7 +46,7 @@ def _column_faults(
                 found="an unknown role",
                 expected="one of " + ", ".join(known),
                 remedy=nearest(role, known),
-                key=f"columns.{role}",
+                key=schema.join("columns", role),
             )
     for role in required:
         if role not in columns:
@@ -54,7 +54,7 @@ def _column_faults(
                 found="nothing",
                 expected=f"the name of the column that holds the {role.replace('_', ' ')}",
                 remedy=f'add {role} = "..." to columns',
-                key=f"columns.{role}",
+                key=schema.join("columns", role),
             )
 
 

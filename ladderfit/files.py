@@ -175,11 +175,25 @@ def _abandoned(path: Path) -> bool:
     try:
         os.kill(int(holder[0]), 0)
     except ProcessLookupError:
-        path.unlink(missing_ok=True)
-        return True
+        return _move_away(path, holder)
     except OSError:
         return False
     return False
+
+
+def _move_away(path: Path, holder: list[str]) -> bool:
+    """Remove a lock if it is still that of `holder`; two who try cannot both succeed."""
+    aside = path.with_name(f".{path.name}.{os.getpid()}.{time.monotonic_ns()}")
+    try:
+        path.rename(aside)
+    except FileNotFoundError:
+        return True
+    still = _holder(aside) == holder
+    if not still:
+        with contextlib.suppress(FileExistsError):
+            os.link(aside, path)
+    aside.unlink()
+    return still
 
 
 def _who_holds(path: Path) -> str:

@@ -8,7 +8,7 @@ not a cut removes it later.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from typing import Any
 
 import numpy as np
@@ -42,7 +42,11 @@ class Rows:
         self._keys: dict[str, tuple[str, ...]] = {}
 
     def faults(
-        self, columns: Mapping[str, str], kinds: Mapping[str, Kind], key: str | None = None
+        self,
+        columns: Mapping[str, str],
+        kinds: Mapping[str, Kind],
+        key: str | None = None,
+        words: Callable[[str], str] = str,
     ) -> list[Problem]:
         """Columns that are not there, or not in the right kind of unit, one problem each.
 
@@ -54,11 +58,13 @@ class Rows:
             What the numbers of a role measure; a role without one holds text.
         key : str, optional
             Dotted key under which `columns` stands.
+        words : callable, optional
+            What a role is called in messages.
         """
         place = key or f"{self.key}.columns"
         found = []
         for role, name in columns.items():
-            fault = self.table.column_problem(role, name, f"{place}.{role}")
+            fault = self.table.column_problem(words(role), name, f"{place}.{role}")
             if fault is None and role in kinds:
                 fault = self.table.unit_problem(name, kinds[role])
             if fault is not None:
@@ -190,6 +196,8 @@ class Rows:
         if not left.size:
             keys = dict.fromkeys(key for reason in self._reasons for key in self._keys[reason])
             blamed = " and ".join(f"{self.key}.{key}" for key in keys) or self.key
+            most = max(self._reasons, key=lambda reason: self._reasons[reason])
+            at = f"{self.key}.{self._keys[most][0]}" if self._keys[most] else self.key
             counts = "; ".join(f"{n:,} {reason}" for reason, n in self._reasons.items())
             raise_if(
                 [
@@ -198,7 +206,7 @@ class Rows:
                         expected=f"at least one {words}",
                         remedy=f"widen or correct {blamed}",
                         file=self.table.name,
-                        key=blamed,
+                        key=at,
                     )
                 ]
             )

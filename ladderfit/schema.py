@@ -279,6 +279,6 @@ def _read_section(
     check = getattr(section, "check", None)
     if check is not None:
         for fault in check():
-            inner = join(key, fault.key) if fault.key and key else (fault.key or key or None)
+            inner = f"{key}.{fault.key}" if fault.key and key else (fault.key or key or None)
             problems.append(dataclasses.replace(fault, key=inner))
     return section if len(problems) == before else None

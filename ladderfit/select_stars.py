@@ -142,13 +142,15 @@ def _require_stars(rows: Rows, columns: Mapping[str, str], magnitude: Magnitude,
     problems: list[Problem] = []
     used = {name: magnitude.bands[name] for name in magnitude.used}
     errors = {name: magnitude.errors[name] for name in _error_names(magnitude)}
-    for named, kinds, place in (
-        (columns, _KINDS, None),
-        (used, dict.fromkeys(used, MAGNITUDE), f"{key}.bands"),
-        (errors, dict.fromkeys(errors, MAGNITUDE), f"{key}.errors"),
-    ):
-        problems.extend(rows.faults(named, kinds, place))
+    problems.extend(rows.faults(columns, _KINDS))
+    problems.extend(rows.faults(used, dict.fromkeys(used, MAGNITUDE), f"{key}.bands"))
+    measured = dict.fromkeys(errors, MAGNITUDE)
+    problems.extend(rows.faults(errors, measured, f"{key}.errors", _error_words))
     raise_if(problems)
+
+
+def _error_words(name: str) -> str:
+    return "total error" if name == "total" else f"error of {name}"
 
 
 def _star_values(
@@ -168,7 +170,7 @@ def _star_values(
     weights = _magnitude_weights(magnitude)
     bands = {name: rows.number(name, magnitude.bands[name], MAGNITUDE) for name in weights}
     errors = {
-        name: rows.number(f"error of {name}", magnitude.errors[name], MAGNITUDE, above=0.0)
+        name: rows.number(_error_words(name), magnitude.errors[name], MAGNITUDE, above=0.0)
         for name in _error_names(magnitude)
     }
     values["magnitude"] = combine(weights, bands)
