@@ -46,13 +46,9 @@ _ALL = (
     Parameter(
         "parallax_offset", "mas", r"$\varpi_0$", "residual parallax offset", 4, Normal(0.0, 0.02)
     ),
-    Parameter(
-        "peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)
-    ),
+    Parameter("peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)),
     Parameter("peak_scatter", "mag", r"$t_\mathrm{SN}$", "supernova scatter", 3, HalfNormal(0.3)),
-    Parameter(
-        "hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)
-    ),
+    Parameter("hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)),
     Parameter(
         "velocity_constant", "km/s", r"$v_0$", "velocity at zero distance", 1, Normal(0.0, 1000.0)
     ),

@@ -87,8 +87,7 @@ class Result:
         """
         if self.source is None:
             raise LadderfitError(
-                "the tables behind this result are missing or changed; "
-                "only its numbers can be used"
+                "the tables behind this result are missing or changed; only its numbers can be used"
             )
         return self.source
 

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -132,8 +133,8 @@ class Kept:
         return text
 
 
-def frozen(values: npt.ArrayLike, kind: type = np.float64) -> npt.NDArray[np.generic]:
+def frozen(values: npt.ArrayLike, kind: type = np.float64) -> npt.NDArray[Any]:
     """A read-only contiguous copy of an array."""
-    array = np.array(values, dtype=kind, order="C")
+    array: npt.NDArray[Any] = np.array(values, dtype=kind, order="C")
     array.setflags(write=False)
     return array

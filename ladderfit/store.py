@@ -169,7 +169,9 @@ def _summary(result: Result) -> dict[str, Any]:
         for name, row in table.iterrows()
     }
     moduli = {
-        str(group_of(name)): entry for name, entry in entries.items() if base_name(name) == "modulus"
+        str(group_of(name)): entry
+        for name, entry in entries.items()
+        if base_name(name) == "modulus"
     }
     found = result.diagnostics
     return {

@@ -77,9 +77,7 @@ class _Integrand:
 
     def take(self, chosen: npt.NDArray[np.intp]) -> _Integrand:
         """The same for some of the pairs."""
-        return _Integrand(
-            self.a[chosen], self.root[chosen], self.plx[chosen], self.err[chosen]
-        )
+        return _Integrand(self.a[chosen], self.root[chosen], self.plx[chosen], self.err[chosen])
 
     def range(self) -> tuple[FloatArray, FloatArray]:
         """From beyond the outer peaks of the two factors, in y."""

@@ -26,7 +26,9 @@ def test_a_correlated_normal_and_its_evidence():
     mean = rng.normal(size=5)
     density = multivariate_normal(mean, covariance)
     found = draw_direct(
-        target(lambda z: np.atleast_1d(density.logpdf(z)) + 7.0, 5, scale=3.0), 4000, np.random.default_rng(2)
+        target(lambda z: np.atleast_1d(density.logpdf(z)) + 7.0, 5, scale=3.0),
+        4000,
+        np.random.default_rng(2),
     )
     error = np.sqrt(np.diag(covariance) / found.ess)
     assert np.all(np.abs(found.z.mean(axis=0) - mean) < 4.0 * error)
@@ -71,15 +73,15 @@ def test_two_modes_are_both_drawn_and_reported():
 def test_heavy_tails_are_called_heavy():
     """A Cauchy-like target under a lighter proposal: the Pareto k has to say so."""
     density = multivariate_t(np.zeros(6), np.eye(6), df=1)
-    found = draw_direct(target(lambda z: np.atleast_1d(density.logpdf(z)), 6), 4000, np.random.default_rng(1))
+    found = draw_direct(
+        target(lambda z: np.atleast_1d(density.logpdf(z)), 6), 4000, np.random.default_rng(1)
+    )
     assert not found.trusted
 
 
 def test_no_finite_density_is_an_error_in_words():
     with pytest.raises(SamplingError, match="no finite density"):
-        draw_direct(
-            target(lambda z: np.full(len(z), -np.inf), 2), 100, np.random.default_rng(1)
-        )
+        draw_direct(target(lambda z: np.full(len(z), -np.inf), 2), 100, np.random.default_rng(1))
 
 
 def test_same_seed_same_draws_other_seed_other_draws():

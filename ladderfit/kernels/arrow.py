@@ -7,20 +7,25 @@ since variances and the known part of g differ from draw to draw.
 
 The data column y is treated as one more column of X: `cross` and `square` hold
 products with [X, y], so that a coefficient that becomes known is moved to the
-left-hand side by a contraction (`condition`).
+left-hand side by a contraction.
 """
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 
 import numpy as np
 import numpy.typing as npt
 
+from ladderfit.kernels.compiling import compiled, in_halves
+
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
-LOG_2PI = float(np.log(2.0 * np.pi))
+LOG_2PI = math.log(2.0 * math.pi)
+
+_CHUNK = 4_000_000  # elements of a (draws, rows) array held at once
 
 
 @dataclass(frozen=True)
@@ -53,6 +58,25 @@ class Moments:
             self.constant + other.constant,
         )
 
+    def repeated(self, batch: int) -> Moments:
+        """A writable copy with the first entry repeated `batch` times."""
+        return Moments(
+            np.repeat(self.local[:1], batch, axis=0),
+            np.repeat(self.cross[:1], batch, axis=0),
+            np.repeat(self.square[:1], batch, axis=0),
+            np.repeat(self.constant[:1], batch, axis=0),
+        )
+
+
+def no_moments(batch: int, hosts: int, width: int) -> Moments:
+    """Moments of no rows, for `width` coefficients."""
+    return Moments(
+        np.zeros((batch, hosts)),
+        np.zeros((batch, hosts, width + 1)),
+        np.zeros((batch, width + 1, width + 1)),
+        np.zeros(batch),
+    )
+
 
 @dataclass(frozen=True)
 class Rows:
@@ -78,22 +102,30 @@ class Rows:
 
     def moments(self, extra: FloatArray) -> Moments:
         """Sum the rows up, with `extra` (shape (b,)) added to every variance."""
+        total = no_moments(len(extra), self.hosts, self.columns.shape[1] - 1)
+        self.add_to(total, extra)
+        return total
+
+    def add_to(self, total: Moments, extra: FloatArray) -> None:
+        """Add the rows' sums to `total`, in place."""
+        chunk = max(1, _CHUNK // max(len(self.variance), 1))
+        for start in range(0, len(extra), chunk):
+            self._add_part(total, slice(start, start + chunk), extra[start : start + chunk])
+
+    def _add_part(self, total: Moments, part: slice, extra: FloatArray) -> None:
         variance = self.variance + extra[:, None]
         weight = 1.0 / variance
-        batch, width = len(extra), self.columns.shape[1]
-        local = np.zeros((batch, self.hosts))
-        cross = np.zeros((batch, self.hosts, width))
         for host, start, stop in self.slices:
-            part = weight[:, start:stop]
-            local[:, host] = part.sum(axis=1)
-            cross[:, host] = part @ self.columns[start:stop]
-        square = np.empty((batch, width, width))
-        upper = np.triu_indices(width)
+            here = weight[:, start:stop]
+            total.local[part, host] += here.sum(axis=1)
+            total.cross[part, host] += here @ self.columns[start:stop]
+        upper = np.triu_indices(self.columns.shape[1])
         sums = weight @ self.products
-        square[:, upper[0], upper[1]] = sums
-        square[:, upper[1], upper[0]] = sums
-        constant = -0.5 * (np.log(variance).sum(axis=1) + len(self.variance) * LOG_2PI)
-        return Moments(local, cross, square, constant)
+        square = np.empty((len(extra), *total.square.shape[1:]))
+        square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = sums
+        total.square[part] += square
+        np.log(variance, out=variance)
+        total.constant[part] -= 0.5 * (variance.sum(axis=1) + len(self.variance) * LOG_2PI)
 
 
 def rows(
@@ -124,43 +156,6 @@ def rows(
     return Rows(full, variance[order].astype(float), hosts, slices, products)
 
 
-def condition(moments: Moments, known: IntArray, values: FloatArray) -> Moments:
-    """Move coefficients with known values to the left-hand side.
-
-    Parameters
-    ----------
-    moments : Moments
-        With k coefficients.
-    known : array of int, shape (j,)
-        Which coefficients are known.
-    values : array, shape (b, j)
-        Their values.
-
-    Returns
-    -------
-    Moments
-        With k - j coefficients, in the old order.
-    """
-    if len(known) == 0:
-        return moments
-    width = moments.square.shape[-1]
-    free = np.setdiff1d(np.arange(width - 1), known)
-    cross, square = moments.cross, moments.square
-    data = cross[:, :, -1] - np.einsum("bhj,bj->bh", cross[:, :, known], values)
-    linear = square[:, :, -1] - np.einsum("bkj,bj->bk", square[:, :, known], values)
-    total = linear[:, -1] - np.einsum("bj,bj->b", linear[:, known], values)
-    small = np.empty((len(values), len(free) + 1, len(free) + 1))
-    small[:, :-1, :-1] = square[:, free[:, None], free]
-    small[:, :-1, -1] = small[:, -1, :-1] = linear[:, free]
-    small[:, -1, -1] = total
-    return Moments(
-        moments.local,
-        np.concatenate([cross[:, :, free], data[:, :, None]], axis=2),
-        small,
-        moments.constant,
-    )
-
-
 @dataclass(frozen=True)
 class Solution:
     """The Gaussian posterior of globals and locals, given the moments.
@@ -168,47 +163,169 @@ class Solution:
     Attributes
     ----------
     log_evidence : array, shape (b,)
-        Log of the integral over globals and locals.
-    mean : array, shape (b, k)
-        Mean of the globals.
-    factor : array, shape (b, k, k)
-        Lower Cholesky factor of the globals' precision.
+        Log of the integral over globals and locals; minus infinity where the
+        globals' precision is not positive definite.
+    mean : array, shape (b, f)
+        Mean of the free globals.
+    factor : array, shape (b, f, f)
+        Lower Cholesky factor of their precision.
+    coefficients : array, shape (b, k)
+        All globals: known values, and the mean of the free ones.
     """
 
     log_evidence: FloatArray
     mean: FloatArray
     factor: FloatArray
+    coefficients: FloatArray
+    free: IntArray
     moments: Moments
 
     def draw(self, rng: np.random.Generator) -> tuple[FloatArray, FloatArray]:
-        """One draw per batch entry: globals, shape (b, k), and locals, shape (b, h)."""
-        batch, k = self.mean.shape
-        noise = rng.standard_normal((batch, k, 1))
-        globals_ = self.mean + np.linalg.solve(np.swapaxes(self.factor, 1, 2), noise)[..., 0]
+        """One draw per batch entry: all globals, shape (b, k), and locals, shape (b, h)."""
+        noise = rng.standard_normal((*self.mean.shape, 1))
+        globals_ = self.coefficients.copy()
+        globals_[:, self.free] += np.linalg.solve(np.swapaxes(self.factor, 1, 2), noise)[..., 0]
         cross, local = self.moments.cross, self.moments.local
-        centre = (cross[:, :, -1] - np.einsum("bhk,bk->bh", cross[:, :, :-1], globals_)) / local
+        expected = np.einsum("bhk,bk->bh", cross[:, :, :-1], globals_)
+        centre = (cross[:, :, -1] - expected) / local
         return globals_, centre + rng.standard_normal(local.shape) / np.sqrt(local)
 
 
-def solve(moments: Moments) -> Solution:
-    """Eliminate the locals, factor the globals, and integrate both out.
+def solve(
+    moments: Moments, known: IntArray | None = None, values: FloatArray | None = None
+) -> Solution:
+    """Eliminate the locals, factor the free globals, and integrate both out.
 
-    Every host needs at least one row of its own, and the globals' precision has
-    to be positive definite (which proper priors ensure).
+    Parameters
+    ----------
+    moments : Moments
+        Of k coefficients.
+    known : array of int, shape (j,), optional
+        Coefficients whose values are known.
+    values : array, shape (b, j), optional
+        Their values.
+
+    Notes
+    -----
+    Every host needs at least one row of its own, and the free globals' precision
+    has to be positive definite (which proper priors ensure).
     """
-    local, cross = moments.local, moments.cross
-    scaled = cross / np.sqrt(local)[:, :, None]
-    reduced = moments.square - np.swapaxes(scaled, 1, 2) @ scaled
-    batch, k, hosts = len(reduced), reduced.shape[-1] - 1, local.shape[1]
-    factor = np.linalg.cholesky(reduced[:, :-1, :-1]) if k else np.empty((batch, 0, 0))
-    rotated = np.linalg.solve(factor, reduced[:, :-1, -1:])[..., 0]
-    mean = np.linalg.solve(np.swapaxes(factor, 1, 2), rotated[..., None])[..., 0]
-    chi2 = reduced[:, -1, -1] - np.einsum("bk,bk->b", rotated, rotated)
-    log_evidence = (
-        moments.constant
-        - 0.5 * chi2
-        - 0.5 * np.log(local).sum(axis=1)
-        - np.log(np.diagonal(factor, axis1=1, axis2=2)).sum(axis=1)
-        + 0.5 * (k + hosts) * LOG_2PI
-    )
-    return Solution(log_evidence, mean, factor, moments)
+    batch, width = len(moments.constant), moments.square.shape[-1]
+    known = np.empty(0, dtype=np.int64) if known is None else known.astype(np.int64)
+    values = np.empty((batch, 0)) if values is None else np.ascontiguousarray(values)
+    free = np.setdiff1d(np.arange(width - 1), known)
+    log_evidence = np.empty(batch)
+    mean = np.empty((batch, len(free)))
+    factor = np.zeros((batch, len(free), len(free)))
+
+    def part(start: int, stop: int) -> None:
+        chosen = slice(start, stop)
+        _eliminate(
+            moments.local[chosen],
+            moments.cross[chosen],
+            moments.square[chosen],
+            moments.constant[chosen],
+            known,
+            values[chosen],
+            free,
+            log_evidence[chosen],
+            mean[chosen],
+            factor[chosen],
+        )
+
+    in_halves(part, batch, work=batch * (moments.local.shape[1] + 4) * width)
+    coefficients = np.empty((batch, width - 1))
+    coefficients[:, known], coefficients[:, free] = values, mean
+    return Solution(log_evidence, mean, factor, coefficients, free, moments)
+
+
+@compiled
+def _eliminate(
+    local: FloatArray,
+    cross: FloatArray,
+    square: FloatArray,
+    constant: FloatArray,
+    known: IntArray,
+    values: FloatArray,
+    free: IntArray,
+    log_evidence: FloatArray,
+    mean: FloatArray,
+    factor: FloatArray,
+) -> None:
+    batch, hosts = local.shape
+    k, y = len(free), square.shape[1] - 1
+    work = np.empty((k + 1, k + 1))
+    column = np.empty(k + 1)
+    for draw in range(batch):
+        _move_known(square[draw], known, values[draw], free, work)
+        logs = 0.0
+        for host in range(hosts):
+            weight = local[draw, host]
+            logs += math.log(weight)
+            here = cross[draw, host]
+            data = here[y]
+            for j in range(len(known)):
+                data -= here[known[j]] * values[draw, j]
+            for i in range(k):
+                column[i] = here[free[i]]
+            column[k] = data
+            for i in range(k + 1):
+                part = column[i] / weight
+                for j in range(i + 1):
+                    work[i, j] -= part * column[j]
+        log_pivots = _cholesky(work, k)
+        log_evidence[draw] = (
+            constant[draw]
+            - 0.5 * work[k, k]
+            - 0.5 * logs
+            - log_pivots
+            + 0.5 * (k + hosts) * LOG_2PI
+        )
+        if math.isnan(log_evidence[draw]):
+            log_evidence[draw] = -math.inf
+        for i in range(k - 1, -1, -1):
+            value = work[k, i]
+            for j in range(i + 1, k):
+                value -= work[j, i] * mean[draw, j]
+            mean[draw, i] = value / work[i, i]
+            factor[draw, i, : i + 1] = work[i, : i + 1]
+
+
+@compiled
+def _move_known(
+    square: FloatArray, known: IntArray, values: FloatArray, free: IntArray, work: FloatArray
+) -> None:
+    """Lower triangle of the products of [free columns, y less the known part]."""
+    k, y = len(free), square.shape[0] - 1
+    for i in range(k):
+        for j in range(i + 1):
+            work[i, j] = square[free[i], free[j]]
+        linear = square[free[i], y]
+        for j in range(len(known)):
+            linear -= square[free[i], known[j]] * values[j]
+        work[k, i] = linear
+    total = square[y, y]
+    for i in range(len(known)):
+        total -= 2.0 * square[known[i], y] * values[i]
+        for j in range(len(known)):
+            total += values[i] * square[known[i], known[j]] * values[j]
+    work[k, k] = total
+
+
+@compiled
+def _cholesky(work: FloatArray, k: int) -> float:
+    """Factor the leading k by k part in place; the last row becomes L^-1 b and chi squared."""
+    log_pivots = 0.0
+    for i in range(k + 1):
+        for j in range(min(i + 1, k)):
+            value = work[i, j]
+            for m in range(j):
+                value -= work[i, m] * work[j, m]
+            if i == j:
+                work[i, i] = math.sqrt(value) if value > 0.0 else math.nan
+                log_pivots += math.log(work[i, i])
+            else:
+                work[i, j] = value / work[j, j]
+    for m in range(k):
+        work[k, k] -= work[k, m] * work[k, m]
+    return log_pivots

@@ -22,8 +22,8 @@ _POOL = ThreadPoolExecutor(2, thread_name_prefix="ladderfit")
 
 def compiled(function: F) -> F:
     """Compile with numba, cached between processes, without the interpreter's lock."""
-    result: F = numba.njit(cache=True, nogil=True, error_model="numpy")(function)
-    return result
+    wrap: Callable[[F], F] = numba.njit(cache=True, nogil=True, error_model="numpy")
+    return wrap(function)
 
 
 def threads() -> int:

@@ -1,1 +1,1 @@
-"""The joint posterior: what enters non-linearly (phi), and all that is Gaussian given it (theta)."""
+"""The joint posterior: phi, which enters non-linearly, and theta, Gaussian given phi."""

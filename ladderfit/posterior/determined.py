@@ -13,7 +13,7 @@ import numpy.typing as npt
 
 from ladderfit.errors import Problem, UndeterminedError
 from ladderfit.names import base_name, parameter, with_group
-from ladderfit.posterior.joint import Posterior
+from ladderfit.posterior.joint import Posterior, data_rows
 from ladderfit.priors import Fixed
 
 FloatArray = npt.NDArray[np.float64]
@@ -75,7 +75,7 @@ def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], Flo
     parts, frame, ladder = posterior.split, posterior.frame, posterior.ladder
     k, hosts = len(parts.coefficients), frame.hosts
     information = np.zeros((k + hosts, k + hosts))
-    for block, scatter in posterior.blocks:
+    for block, scatter in data_rows(ladder, frame, parts.coefficients):
         extra = _TYPICAL.get(scatter or "", 0.0) ** 2
         sums = block.moments(np.array([extra]))
         information[:k, :k] += sums.square[0, :-1, :-1]

@@ -21,6 +21,7 @@ import numpy.typing as npt
 from ladderfit.kernels.arrow import Rows, rows
 from ladderfit.ladder import Ladder
 from ladderfit.relations import design_matrix
+from ladderfit.samples import StarSample
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -55,24 +56,37 @@ class Frame:
         )
 
 
-def frame_and_stars(ladder: Ladder, width: int) -> tuple[Frame, Rows | None]:
-    """The frame, and the Cepheids' rows in it, for a system with `width` coefficients."""
+def host_frame(ladder: Ladder, width: int) -> Frame:
+    """The frame for a system with `width` coefficients."""
     hosts = len(ladder.hosts)
     origin, centroid = np.zeros(hosts), np.zeros((hosts, width))
     for anchor in ladder.geometric:
         origin[anchor.host] = anchor.modulus
     stars = ladder.cepheids
     if stars is None:
-        return Frame(origin, centroid), None
+        return Frame(origin, centroid)
+    columns = _columns(ladder, stars, width)
+    count = np.bincount(stars.host, minlength=hosts)
+    inhabited = count > 0
+    for place in range(width):
+        sums = np.bincount(stars.host, weights=columns[:, place], minlength=hosts)
+        centroid[inhabited, place] = sums[inhabited] / count[inhabited]
+    total = np.bincount(stars.host, weights=stars.magnitude, minlength=hosts)
+    origin[inhabited] = total[inhabited] / count[inhabited]
+    return Frame(origin, centroid)
+
+
+def star_rows(ladder: Ladder, frame: Frame) -> Rows:
+    """The Cepheids' rows m = mu[host] + columns . g + e."""
+    stars = ladder.cepheids
+    if stars is None:
+        raise TypeError("no Cepheids")
+    columns = _columns(ladder, stars, frame.centroid.shape[1])
+    return frame.modulus_rows(stars.host, columns, stars.magnitude, stars.variance)
+
+
+def _columns(ladder: Ladder, stars: StarSample, width: int) -> FloatArray:
     design = design_matrix(ladder.choices.relation, stars)
     columns = np.zeros((len(stars), width))
     columns[:, : design.shape[1]] = design
-    count = np.bincount(stars.host, minlength=hosts)
-    inhabited = count > 0
-    sums = np.zeros((hosts, width))
-    np.add.at(sums, stars.host, columns)
-    centroid[inhabited] = sums[inhabited] / count[inhabited, None]
-    total = np.bincount(stars.host, weights=stars.magnitude, minlength=hosts)
-    origin[inhabited] = total[inhabited] / count[inhabited]
-    frame = Frame(origin, centroid)
-    return frame, frame.modulus_rows(stars.host, columns, stars.magnitude, stars.variance)
+    return columns

@@ -8,10 +8,11 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from ladderfit.kernels.arrow import Moments, Rows, Solution, condition, rows, solve
+from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
+from ladderfit.kernels.reduced import ReducedRows, reduced
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
-from ladderfit.posterior.frame import Frame, frame_and_stars
+from ladderfit.posterior.frame import Frame, host_frame, star_rows
 from ladderfit.posterior.parallaxes import (
     ParallaxTerms,
     log_modulus_norm,
@@ -23,7 +24,10 @@ from ladderfit.posterior.supernovae import ladder_rows
 
 FloatArray = npt.NDArray[np.float64]
 
-_CHUNK = 2_000_000  # elements of a (draws, rows) array held at once
+_CHUNK = 20_000  # draws held at once
+_FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
+
+Block = tuple[Rows | ReducedRows, str]
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,17 +41,17 @@ class Posterior:
         What is in phi and what in theta.
     frame : Frame
         How host moduli are eliminated.
-    blocks : tuple of (Rows, str or None)
-        Data rows, each with the scatter that widens it.
+    blocks : tuple of (Rows or ReducedRows, str)
+        Data rows, each with the name of the scatter that widens it.
     constant : Moments
-        Anchors and priors: the part that depends on no scatter; batch of one.
+        Anchors, priors and rows of fixed variance; batch of one.
     parallaxes : ParallaxTerms or None
     """
 
     ladder: Ladder
     split: Split
     frame: Frame
-    blocks: tuple[tuple[Rows, str | None], ...]
+    blocks: tuple[Block, ...]
     constant: Moments
     parallaxes: ParallaxTerms | None
 
@@ -69,7 +73,7 @@ class Posterior:
         array, shape (b,)
             Normalised but for the evidence; minus infinity outside the priors.
         """
-        parts = [self._log_density(part)[0] for part in self._chunks(z)]
+        parts = [self._log_density(part) for part in _chunks(z)]
         return np.concatenate(parts) if parts else np.empty(0)
 
     def draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
@@ -86,20 +90,36 @@ class Posterior:
         dict
             One array of shape (b,) per parameter and host modulus.
         """
-        pieces = [self._draw(part, rng) for part in self._chunks(z)]
+        pieces = [self._draw(part, rng) for part in _chunks(z)]
         return {name: np.concatenate([piece[name] for piece in pieces]) for name in pieces[0]}
 
-    def _chunks(self, z: FloatArray) -> list[FloatArray]:
-        longest = max([len(block.variance) for block, _ in self.blocks], default=1)
-        size = max(1, _CHUNK // max(longest, 1))
-        return [z[start : start + size] for start in range(0, len(z), size)]
+    def focus(self, low: FloatArray, high: FloatArray) -> None:
+        """Tabulate star sums more finely where scatters lie between two points of phi.
 
-    def _log_density(self, z: FloatArray) -> tuple[FloatArray, Solution]:
-        solution = solve(self.moments(z))
-        total = solution.log_evidence + self.split.log_prior(z)
+        Parameters
+        ----------
+        low, high : array, shape (d,)
+            Corners of the box in coordinates; folded ones may straddle zero.
+        """
+        for block, scatter in self.blocks:
+            if isinstance(block, ReducedRows) and scatter in self.split.phi_names:
+                ends = self.split.value(scatter, np.stack([low, high]))
+                place = self.split.phi_names.index(scatter)
+                bottom = 0.0 if low[place] * high[place] <= 0.0 else float(ends.min())
+                block.focus(bottom**2, float(ends.max()) ** 2)
+
+    def solution(self, z: FloatArray) -> Solution:
+        """Theta and the evidence of all rows, given phi."""
+        total = self.constant.repeated(len(z))
+        for block, scatter in self.blocks:
+            block.add_to(total, self.split.value(scatter, z) ** 2)
+        return solve(total, self.split.known, self.split.known_values(z))
+
+    def _log_density(self, z: FloatArray) -> FloatArray:
+        total = self.solution(z).log_evidence + self.split.log_prior(z)
         if self.parallaxes is not None:
             total = total + self.log_parallaxes(z).sum(axis=1)
-        return np.where(np.isnan(total), -np.inf, total), solution
+        return np.where(np.isnan(total), -np.inf, total)
 
     def log_parallaxes(self, z: FloatArray) -> FloatArray:
         """Log density of each parallax star, shape (b, n)."""
@@ -117,23 +137,8 @@ class Posterior:
         places = np.searchsorted(self.split.known, np.arange(width))
         return known[:, places]
 
-    def moments(self, z: FloatArray) -> Moments:
-        """Sums of all rows at the scatters of `z`, known coefficients moved to the left."""
-        total = self.constant
-        for block, scatter in self.blocks:
-            extra = np.zeros(len(z)) if scatter is None else self.split.value(scatter, z) ** 2
-            total = total + block.moments(extra)
-        if total is self.constant:
-            total = total + _no_moments(len(z), self.frame.hosts, len(self.split.coefficients))
-        return condition(total, self.split.known, self.split.known_values(z))
-
     def _draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
-        solution = solve(self.moments(z))
-        theta, local = solution.draw(rng)
-        coefficients = np.empty((len(z), len(self.split.coefficients)))
-        coefficients[:, self.split.known] = self.split.known_values(z)
-        free = np.setdiff1d(np.arange(coefficients.shape[1]), self.split.known)
-        coefficients[:, free] = theta
+        coefficients, local = self.solution(z).draw(rng)
         draws: dict[str, FloatArray] = {}
         for place, name in enumerate(self.split.coefficients):
             value = coefficients[:, place]
@@ -154,22 +159,36 @@ def posterior(ladder: Ladder) -> Posterior:
     """Assemble the posterior of a ladder."""
     parts = split(ladder)
     names = parts.coefficients
-    frame, stars = frame_and_stars(ladder, len(names))
-    blocks: list[tuple[Rows, str | None]] = [] if stars is None else [(stars, "scatter")]
-    blocks += ladder_rows(ladder, frame, names)
-    constant = _anchors(ladder, frame, names) + _theta_prior(parts, frame) + _distances(
-        ladder, frame
+    frame = host_frame(ladder, len(names))
+    constant = (
+        _anchors(ladder, frame, names) + _theta_prior(parts, frame) + _distances(ladder, frame)
     )
+    blocks: list[Block] = []
+    for block, scatter in data_rows(ladder, frame, names):
+        if scatter is None or scatter in parts.fixed:
+            known = 0.0 if scatter is None else parts.fixed[scatter]
+            constant = constant + block.moments(np.array([known**2]))
+        else:
+            blocks.append((reduced(block, _largest(ladder, scatter)), scatter))
     return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
 
 
-def _no_moments(batch: int, hosts: int, width: int) -> Moments:
-    return Moments(
-        np.zeros((batch, hosts)),
-        np.zeros((batch, hosts, width + 1)),
-        np.zeros((batch, width + 1, width + 1)),
-        np.zeros(batch),
-    )
+def data_rows(
+    ladder: Ladder, frame: Frame, names: tuple[str, ...]
+) -> list[tuple[Rows, str | None]]:
+    """All rows of data, each with the name of the scatter that widens it, if any."""
+    stars = [] if ladder.cepheids is None else [(star_rows(ladder, frame), "scatter")]
+    return [*stars, *ladder_rows(ladder, frame, names)]
+
+
+def _chunks(z: FloatArray) -> list[FloatArray]:
+    return [z[start : start + _CHUNK] for start in range(0, len(z), _CHUNK)]
+
+
+def _largest(ladder: Ladder, scatter: str) -> float:
+    """A variance that the scatter's prior makes very unlikely to be exceeded."""
+    prior = ladder.choices.prior(scatter)
+    return min(prior.bounds[1], prior.centre + _FARTHEST * prior.sd) ** 2
 
 
 def _anchors(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Moments:
@@ -200,12 +219,10 @@ def _distances(ladder: Ladder, frame: Frame) -> Moments:
     width = frame.centroid.shape[1]
     prior = ladder.choices.hosts.distance_prior
     tilt, hosts = tilt_of(prior), frame.hosts
-    empty = _no_moments(1, hosts, width)
+    empty = no_moments(1, hosts, width)
     cross, square = empty.cross, empty.square
     cross[:, :, -1] = tilt
     pull = -tilt * frame.centroid.sum(axis=0)
     square[:, :-1, -1] = square[:, -1, :-1] = pull
     constant = np.array([tilt * frame.origin.sum() - hosts * log_modulus_norm(prior)])
     return Moments(empty.local, cross, square, constant)
-
-

@@ -127,7 +127,7 @@ class Split:
         return tuple(coordinate.name for coordinate in self.phi)
 
     def value(self, name: str, z: FloatArray) -> FloatArray:
-        """A parameter of phi, or a fixed one, in its own unit; `z` has shape (b, d), result (b,)."""
+        """A parameter of phi, or a fixed one, in its unit, shape (b,); `z` has shape (b, d)."""
         if name in self.fixed:
             return np.full(len(z), self.fixed[name])
         place = self.phi_names.index(name)

@@ -30,13 +30,9 @@ def peak_rows(peaks: PeakSample, frame: Frame, names: tuple[str, ...]) -> Rows:
     return frame.modulus_rows(peaks.host, columns, peaks.magnitude, peaks.variance)
 
 
-def flow_rows(
-    flow: FlowSample, expansion: Expansion, hosts: int, names: tuple[str, ...]
-) -> Rows:
+def flow_rows(flow: FlowSample, expansion: Expansion, hosts: int, names: tuple[str, ...]) -> Rows:
     """m - distance term = M - 5 log10 H0 + e, peculiar velocities in the variance."""
-    term = distance_term(
-        flow.redshift, flow.redshift_heliocentric, expansion.q0, expansion.j0
-    )
+    term = distance_term(flow.redshift, flow.redshift_heliocentric, expansion.q0, expansion.j0)
     variance = flow.variance + peculiar_variance(flow.redshift, expansion.peculiar_velocity)
     columns = _columns(len(flow), names, peak_magnitude=1.0, hubble_constant=-1.0)
     nowhere = np.full(len(flow), -1)

@@ -18,7 +18,7 @@ import numpy.typing as npt
 from ladderfit.diagnostics import TRUSTED_K, smoothed_weights, weights_ess
 from ladderfit.errors import SamplingError
 from ladderfit.sampling.mode import LogDensity, Mode, find_mode
-from ladderfit.sampling.proposal import Proposal, component
+from ladderfit.sampling.proposal import Component, Proposal, component
 
 FloatArray = npt.NDArray[np.float64]
 Progress = Callable[[str, float], None]
@@ -29,6 +29,7 @@ _ROUNDS = 3
 _GOOD_EFFICIENCY = 0.5
 _GOOD_K = 0.5
 _OVERSAMPLE = 1.5
+_BOX = 12.0  # widths round the mode
 _MODE_DISTANCE = 5.0
 _MODE_MASS = 1e-4
 
@@ -45,12 +46,15 @@ class Target:
         A starting point, and the width of the prior in each coordinate.
     folded : array of bool, shape (d,)
         Coordinates of which only the size counts.
+    focus : callable, optional
+        Told the corners of the box in which nearly all draws will lie.
     """
 
     log_density: LogDensity
     start: FloatArray
     scale: FloatArray
     folded: npt.NDArray[np.bool_]
+    focus: Callable[[FloatArray, FloatArray], None] | None = None
 
 
 @dataclass(frozen=True)
@@ -109,6 +113,9 @@ def draw_direct(
         return _nothing_to_draw(target, draws)
     tell("finding the mode", 0.0)
     modes = find_modes(target, rng)
+    if target.focus is not None and len(modes) == 1:
+        reach = _BOX * np.sqrt(np.diag(modes[0].covariance))
+        target.focus(modes[0].point - reach, modes[0].point + reach)
     tell("drawing", 0.2)
     proposal = _first_proposal(modes, target.folded)
     for round_ in range(_ROUNDS):
@@ -167,9 +174,7 @@ def _fold(mode: Mode, folded: npt.NDArray[np.bool_]) -> Mode:
 
 def _apart(mode: Mode, other: Mode) -> bool:
     gap = mode.point - other.point
-    distance = np.sqrt(
-        min(gap @ np.linalg.solve(m.covariance, gap) for m in (mode, other))
-    )
+    distance = np.sqrt(min(gap @ np.linalg.solve(m.covariance, gap) for m in (mode, other)))
     return bool(distance > _MODE_DISTANCE)
 
 
@@ -216,7 +221,7 @@ def _adapted(
         component(centre, covariance, widen=2.0, freedom=_FREEDOM, share=0.1),
     )
     old = tuple(
-        component(c.centre, c.factor @ c.factor.T, widen=1.0, freedom=c.freedom, share=0.3 * c.share)
+        Component(c.centre, c.factor, freedom=c.freedom, share=0.3 * c.share)
         for c in proposal.components
     )
     return Proposal((*fresh, *old), proposal.folded)

@@ -7,6 +7,7 @@ overshoot nor stall on a curvature of the wrong sign.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -42,7 +43,8 @@ class Mode:
     def log_mass(self) -> float:
         """Log of the integral in the Gaussian approximation."""
         _, logdet = np.linalg.slogdet(self.covariance)
-        return self.log_density + 0.5 * (float(logdet) + len(self.point) * np.log(2.0 * np.pi))
+        constant = len(self.point) * math.log(2.0 * math.pi)
+        return self.log_density + 0.5 * (float(logdet) + constant)
 
 
 def find_mode(
@@ -67,7 +69,8 @@ def find_mode(
         gradient, hessian = derivatives(log_density, point, _DIFFERENCE * width)
         covariance = _covariance(hessian, width)
         step = covariance @ gradient
-        length = float(np.sqrt(max(step @ np.linalg.solve(covariance, step), 0.0)))
+        square = float(step @ np.linalg.solve(covariance, step))
+        length = math.sqrt(max(square, 0.0))
         fan = point + _FAN[:, None] * step
         values = log_density(fan)
         best = int(np.argmax(values))
