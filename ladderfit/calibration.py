@@ -4,12 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from ladderfit.errors import InputError, Problem
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
 from ladderfit.plots import save_figures
 from ladderfit.result import Result
-from ladderfit.sampling.run import Progress, draw
+from ladderfit.sampling.direct import Progress
+from ladderfit.sampling.run import draw
 from ladderfit.store import write_result
 
 
@@ -40,25 +40,16 @@ def calibrate(
     Raises
     ------
     InputError
-        If the folder exists or cannot be written, or the ladder cannot be fitted.
+        If the folder exists, or the ladder leaves something undetermined.
+    OSError
+        If the folder cannot be written.
     SamplingError
         If the posterior could not be drawn.
     """
-    folder = Path(folder)
-    try:
-        with new_folder(folder) as temporary:
-            result = draw(ladder, seed=seed, draws=draws, progress=progress)
-            if progress is not None:
-                progress("writing numbers and figures", 0.0)
-            write_result(result, temporary)
-            save_figures(result, temporary / "figures")
-    except OSError as error:
-        raise InputError(
-            Problem(
-                found=f"a place that cannot be written ({error.strerror or error})",
-                expected="a folder in which a result can be laid",
-                remedy="name another place with --out",
-                file=str(folder),
-            )
-        ) from error
+    with new_folder(folder) as temporary:
+        result = draw(ladder, seed=seed, draws=draws, progress=progress)
+        if progress is not None:
+            progress("writing numbers and figures", 0.0)
+        write_result(result, temporary)
+        save_figures(result, temporary / "figures")
     return result

@@ -13,7 +13,7 @@ from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 from typing import NoReturn, TextIO
 
-from ladderfit.errors import EXIT_BAD_INPUT, InputError, LadderfitError
+from ladderfit.errors import EXIT_BAD_INPUT, InputError, LadderfitError, Problem
 
 EXIT_FAILED = 1
 EXIT_INTERRUPTED = 130
@@ -76,7 +76,7 @@ def _add_calibrate(add: Callable[..., argparse.ArgumentParser]) -> None:
         help="the folder to make; without it, the first free name NAME-01, NAME-02, ... here",
     )
     command.add_argument(
-        "--seed", type=int, metavar="N", help="seed in place of the ladder's sampling.seed"
+        "--seed", type=_seed, metavar="N", help="seed in place of the ladder's sampling.seed"
     )
     command.add_argument(
         "--draws", type=int, metavar="N", help="number in place of the ladder's sampling.draws"
@@ -89,8 +89,14 @@ def _add_mock(add: Callable[..., argparse.ArgumentParser]) -> None:
     command = add("mock", help=words, description=f"{words[0].upper()}{words[1:]}.")
     command.add_argument("file", metavar="FILE", help="the ladder file to follow")
     command.add_argument("--out", metavar="DIR", required=True, help="the folder to make")
-    command.add_argument("--seed", type=int, default=1, metavar="N", help="seed (default: 1)")
+    command.add_argument("--seed", type=_seed, default=1, metavar="N", help="seed (default: 1)")
     command.set_defaults(run=_mock)
+
+
+def _seed(text: str) -> int:
+    if not text.isdecimal():
+        raise argparse.ArgumentTypeError(f"found {text!r}, expected a whole number from 0 up")
+    return int(text)
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -128,9 +134,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except KeyboardInterrupt:
         _say("ladderfit: interrupted; no folder was made", sys.stderr)
         return EXIT_INTERRUPTED
-    except BrokenPipeError:  # the reader of a pipe has gone; what was asked for is done
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return 0
+    except OSError as error:
+        _say(f"ladderfit: {_no_place(error)}", sys.stderr)
+        return EXIT_BAD_INPUT
 
 
 def _calibrate(chosen: argparse.Namespace) -> int:
@@ -154,9 +160,8 @@ def _calibrate(chosen: argparse.Namespace) -> int:
 def _mock(chosen: argparse.Namespace) -> int:
     from ladderfit.mock import write_mock
 
-    folder = Path(chosen.out)
-    write_mock(Path(chosen.file), folder, chosen.seed)
-    _say(f"Written to {folder}", sys.stdout)
+    written = write_mock(Path(chosen.file), Path(chosen.out), chosen.seed)
+    _say(f"Written to {written.parent}; fit it with: ladderfit calibrate {written}", sys.stdout)
     return 0
 
 
@@ -190,4 +195,16 @@ def _say(text: str, stream: TextIO) -> None:
         text.encode(encoding)
     except UnicodeEncodeError:
         text = text.translate(_PLAIN).encode(encoding, "replace").decode(encoding)
-    print(text, file=stream, flush=True)
+    try:
+        print(text, file=stream, flush=True)
+    except BrokenPipeError:  # whoever read a pipe has gone; what was asked for is done
+        os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
+
+
+def _no_place(error: OSError) -> Problem:
+    return Problem(
+        found=(error.strerror or str(error)).lower(),
+        expected="a place that can be written",
+        remedy="choose another one with --out, or make room",
+        file=None if error.filename is None else str(error.filename),
+    )

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+import textwrap
 from collections.abc import Iterable, Sequence
 
 from ladderfit.diagnostics import TRUSTED_K
@@ -9,8 +11,9 @@ from ladderfit.ladder import Ladder
 from ladderfit.names import base_name, group_of, parameter
 from ladderfit.priors import Fixed, LogNormal, Prior
 from ladderfit.result import Result
-from ladderfit.rounding import Interval, rounded
+from ladderfit.rounding import Interval, rounded, to_place
 
+_LINE = 98
 _MOST_MODULI = 60
 _GOOD_K = 0.5
 _TABLES = {
@@ -49,21 +52,23 @@ def summary_text(result: Result) -> str:
 
 def data_rows(ladder: Ladder) -> list[tuple[str, ...]]:
     """What takes part: rows kept per table, anchors, notes on the input."""
-    rows = [(_TABLES.get(key, key), printable(str(kept))) for key, kept in ladder.kept.items()]
+    rows: list[tuple[str, ...]] = [
+        (_TABLES.get(key, key), printable(str(kept))) for key, kept in ladder.kept.items()
+    ]
     rows += [
-        ("anchor", f"{printable(a.name)}, modulus {rounded(a.modulus, a.error)} mag by geometry")
+        ("anchor", f"{printable(a.name)}, modulus {a.modulus:g} ± {a.error:g} mag by geometry")
         for a in ladder.geometric
     ]
     expansion = ladder.choices.expansion
     if expansion is not None and expansion.intercept is not None:
         published = expansion.intercept
-        rows.append(("expansion", f"intercept {rounded(published.value, published.error)}"))
+        rows.append(("expansion", f"intercept {published.value:g} ± {published.error:g}"))
     return rows + [("note", printable(note)) for note in ladder.notes]
 
 
 def headline_rows(result: Result) -> list[tuple[str, ...]]:
     """One row per headline parameter: words, name, rounded numbers, unit."""
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for name in result.headline:
         known, interval = parameter(name), Interval.of(result.draws[name])
         group = group_of(name)
@@ -91,10 +96,10 @@ def modulus_lines(result: Result) -> list[str]:
 
 def prior_rows(result: Result) -> list[tuple[str, ...]]:
     """Each headline parameter's prior, whether it was chosen, and what it means."""
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for name in result.headline:
         prior = result.choices.prior(name)
-        origin = "from the ladder file" if result.choices.states_prior(name) else "default"
+        origin = "chosen" if result.choices.states_prior(name) else "default"
         rows.append((printable(name), f"{prior} {parameter(name).unit}", origin + _meaning(prior)))
     where = f"{result.choices.hosts.distance_prior}"
     if any(base_name(name) == "modulus" for name in result.draws):
@@ -108,7 +113,7 @@ def prior_rows(result: Result) -> list[tuple[str, ...]]:
 def _meaning(prior: Prior) -> str:
     if isinstance(prior, LogNormal):
         width = _PER_MAG * prior.deviation
-        return f"; median and width in mag: normal in 5 log10, {width:.0%} wide".replace("%", " %")
+        return f"; normal in 5 log10 (median, width in mag): {100 * width:.0f} % wide"
     if isinstance(prior, Fixed):
         return "; not fitted"
     return ""
@@ -118,14 +123,13 @@ def trust_lines(result: Result) -> list[str]:
     """Effective draws, Pareto k in words, evidence, and every warning."""
     found = result.diagnostics
     lines = []
-    known = {name: ess for name, ess in found.ess.items() if ess == ess}  # noqa: PLR0124
+    known = {name: ess for name, ess in found.ess.items() if math.isfinite(ess)}
     if known:
         worst = min(known, key=lambda name: known[name])
-        lines.append(
-            f"at least {known[worst]:,.0f} effective draws ({printable(worst)} the fewest)"
-        )
+        whose = f", fewest for {printable(worst)}" if len(set(known.values())) > 1 else ""
+        lines.append(f"{known[worst]:,.0f} effective draws{whose}")
     if found.pareto_k is not None:
-        lines.append(f"Pareto k = {found.pareto_k:.2f}: {pareto_words(found.pareto_k)}")
+        lines.append(f"Pareto k = {to_place(found.pareto_k, -2)}: {pareto_words(found.pareto_k)}")
     if found.log_evidence is not None:
         evidence = rounded(found.log_evidence, found.log_evidence_error or 0.0)
         lines.append(f"log evidence {evidence}, to compare only where the data are identical")
@@ -157,12 +161,16 @@ def _paragraph(heading: str, lines: Sequence[str]) -> str:
 
 
 def _aligned(rows: Iterable[Sequence[str]]) -> list[str]:
-    """Columns of equal width, two blanks apart."""
+    """Columns of equal width, two blanks apart; a long last cell goes on below itself."""
     table = [tuple(row) for row in rows]
-    widths = (
-        [max(len(row[column]) for row in table) for column in range(len(table[0]))] if table else []
-    )
-    return [
-        "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip()
-        for row in table
-    ]
+    if not table:
+        return []
+    widths = [max(len(row[column]) for row in table) for column in range(len(table[0]))]
+    indent = sum(widths[:-1]) + 2 * (len(widths) - 1)
+    lines = []
+    for row in table:
+        start = "".join(f"{cell:{width}}  " for cell, width in zip(row, widths, strict=False))
+        wrapped = textwrap.wrap(row[-1], max(_LINE - indent, 30)) or [""]
+        lines.append((start[:indent] + wrapped[0]).rstrip())
+        lines += [" " * indent + more for more in wrapped[1:]]
+    return lines

@@ -71,6 +71,7 @@ def save_figures(result: Result, folder: Path, *, theme: Theme = LIGHT) -> list[
                 path = folder / f"{name}{suffix}"
                 figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
                 written.append(path)
+                figure.set_layout_engine("none")  # laid out once, for all files
         figure.clear()
     return written
 

@@ -153,7 +153,7 @@ def corner_figure(
         return None
     size = len(chosen)
     with theme.applied():
-        side = max(3.0, min(1.15 * size + 0.8, 11.0))
+        side = max(3.0, min(0.95 * size + 0.9, 10.0))
         figure = new_figure(side, side)
         grid = figure.subplots(size, size, squeeze=False)
         for row, up in enumerate(chosen):

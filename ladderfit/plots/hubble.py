@@ -32,7 +32,9 @@ from ladderfit.rounding import PROBABILITIES, Interval
 from ladderfit.samples import FloatArray
 
 
-def _points(axes: Axes, data: Residuals, y: FloatArray, accent: Accent, *, bars: bool) -> None:
+def _points(
+    axes: Axes, data: Residuals, y: FloatArray, accent: Accent, theme: Theme, *, bars: bool
+) -> None:
     many = len(data) > 60
     axes.errorbar(
         data.x,
@@ -42,7 +44,8 @@ def _points(axes: Axes, data: Residuals, y: FloatArray, accent: Accent, *, bars:
         marker=accent.marker,
         markersize=2.4 if many else 3.5,
         markeredgewidth=0.0,
-        elinewidth=0.45 if many else 0.8,
+        elinewidth=0.8,
+        ecolor=theme.tint(accent.colour, 0.45) if many else accent.colour,
         color=accent.colour,
     )
 
@@ -71,7 +74,7 @@ def _numbers(axes: Axes, result: Result, names: tuple[str, ...], *, left: bool) 
 
 def _left_over(axes: Axes, data: Residuals, accent: Accent, theme: Theme) -> None:
     axes.axhline(0.0, color=theme.ink, linewidth=0.8)
-    _points(axes, data, data.residual, accent, bars=True)
+    _points(axes, data, data.residual, accent, theme, bars=True)
     symmetric(axes, np.abs(data.residual) + data.sd, data.sd)
 
 
@@ -94,7 +97,7 @@ def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     data = peak_residuals(result)
     if data is None:
         raise ValueError("the ladder has no supernovae in hosts")
-    _points(axes, data, data.data, theme.accent(2), bars=True)
+    _points(axes, data, data.data, theme.accent(2), theme, bars=True)
     x = np.array([np.min(data.x) - 0.2, np.max(data.x) + 0.2])
     _line(axes, x, x + at_mean(result, "peak_magnitude"), theme)
     axes.set_xlim(x[0], x[1])
@@ -124,7 +127,7 @@ def flow_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     data = flow_residuals(result)
     if data is None:
         raise ValueError("the ladder has no supernovae in the expansion")
-    _points(axes, data, data.data, theme.accent(0), bars=len(data) <= 60)
+    _points(axes, data, data.data, theme.accent(0), theme, bars=len(data) <= 60)
     low, high = float(np.min(data.x)) / 1.06, float(np.max(data.x)) * 1.06
     z = np.geomspace(low, high, 80)
     _line(axes, z, flow_model(result, z), theme)
@@ -172,7 +175,7 @@ def velocity_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
             label=f"line, {CHANCES} bands" if inner else None,
         )
     _line(axes, x, draws.mean(axis=0), theme)
-    _points(axes, data, data.data, theme.accent(0), bars=False)
+    _points(axes, data, data.data, theme.accent(0), theme, bars=False)
     axes.set_xlim(x[0], x[-1])
     axes.set_title(f"{len(data)} objects")
     axes.set_ylabel("Velocity [km/s]")
@@ -231,7 +234,6 @@ def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
             2,
             len(columns),
             sharex="col",
-            sharey="row",
             height_ratios=[2.4, 1],
             width_ratios=[1, 1.5] if both else [1],
             squeeze=False,
@@ -241,7 +243,10 @@ def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
             _left_over(grid[1, column], data, theme.accent(index), theme)
             grid[1, column].set_xlabel(words)
         reach = max(float(np.max(np.abs(data.residual) + data.sd)) for data, _, _, _ in columns)
-        grid[1, 0].set_ylim(1.08 * reach, -1.08 * reach)
+        for axes in grid[1]:
+            axes.set_ylim(1.08 * reach, -1.08 * reach)
+        if both:
+            grid[1, 1].tick_params(labelleft=False)
         grid[0, 0].set_ylabel("Peak magnitude [mag]")
         grid[1, 0].set_ylabel("Residual\n[mag]")
         figure.align_ylabels(list(grid[:, 0]))

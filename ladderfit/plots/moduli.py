@@ -126,10 +126,10 @@ def difference_panel(entries: list[HostModulus], axes: Axes, *, theme: Theme = L
     axes.axvline(0.0, color=theme.ink, linewidth=0.8)
     _marks(axes, [entry.geometric for entry in entries], "its geometric value", 1, -0.14, theme)
     _marks(axes, [entry.supernovae for entry in entries], "its supernovae", 2, 0.14, theme)
-    axes.set_xlabel("Minus the posterior mean [mag]")
+    axes.set_xlabel("Value minus posterior mean [mag]")
+    axes.set_yticks(rows)
     axes.tick_params(axis="y", length=0, labelleft=False)
     axes.set_ylim(len(entries) - 0.4, -0.6)
-    axes.legend(loc="lower center", bbox_to_anchor=(0.5, 1.0), ncols=3, columnspacing=1.0)
     return figure_of(axes)
 
 
@@ -178,8 +178,9 @@ def moduli_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
         return None
     with theme.applied():
         figure = new_figure(1.1 + 0.2 * max(len(entries), 3))
-        left, gap, right = figure.subplots(1, 3, width_ratios=[1.0, 0.42, 1.25])
+        left, gap, right = figure.subplots(1, 3, width_ratios=[1.0, 0.34, 1.6])
         gap.set_axis_off()
         modulus_panel(entries, left, theme=theme)
         difference_panel(entries, right, theme=theme)
+        figure.legend(*right.get_legend_handles_labels(), loc="outside upper right", ncols=3)
     return figure

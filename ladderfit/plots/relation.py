@@ -35,7 +35,9 @@ from ladderfit.samples import FloatArray
 
 PERIOD_TICKS = (1, 2, 3, 5, 7, 10, 20, 30, 50, 70, 100, 200)
 _MOST_ACCENTED = 3
-_FEW_STARS = 150  # up to here every star has an error bar
+_FEW_STARS = 150  # up to here every star has an error bar and lies over the line
+_MANY_STARS = 2000  # from here dots are pixels, also in a PDF
+_OVER, _UNDER = 3.2, 2.1  # the line and its bands lie between
 
 
 @dataclass(frozen=True)
@@ -47,16 +49,16 @@ class Group:
     accented: bool
 
 
-def groups(result: Result) -> list[Group]:
-    """Hosts to tell apart: the anchors, or all where there are few; the others as one."""
+def groups(result: Result, most: int = _MOST_ACCENTED) -> list[Group]:
+    """Hosts to tell apart: up to `most` anchors, or all hosts if so few; the others as one."""
     ladder = result.ladder
     stars = ladder.cepheids
     if stars is None:
         return []
     present = [int(host) for host in np.unique(stars.host)]
     anchors = {anchor.host for anchor in ladder.geometric}
-    named = [host for host in present if host in anchors][:_MOST_ACCENTED]
-    if len(present) <= _MOST_ACCENTED:
+    named = [host for host in present if host in anchors][:most]
+    if len(present) <= most:
         named = present
     others = tuple(host for host in present if host not in named)
     listed = [Group((host,), ladder.hosts[host], accented=True) for host in named]
@@ -71,22 +73,26 @@ def groups(result: Result) -> list[Group]:
 def _draw_groups(
     axes: Axes, result: Result, stars: HostResiduals, y: FloatArray, theme: Theme
 ) -> None:
+    few = len(stars) <= _FEW_STARS
     accents = iter(theme.accents)
     for group in groups(result):
         chosen = np.isin(stars.host, group.hosts)
         accent = (
             next(accents) if group.accented else Accent(theme.tint(theme.muted, 0.55), ".", "-")
         )
-        axes.plot(
+        axes.errorbar(
             10.0 ** stars.x[chosen],
             y[chosen],
+            yerr=stars.sd[chosen] if few else None,
             linestyle="none",
             color=accent.colour,
+            elinewidth=0.6,
             marker=accent.marker,
             markersize=2.8,
             markeredgewidth=0.0,
             label=f"{group.words} ({int(np.sum(chosen)):,} stars)",
-            rasterized=len(stars) > 2000,
+            rasterized=len(stars) > _MANY_STARS,
+            zorder=_OVER if few else _UNDER,
         )
 
 
@@ -159,7 +165,7 @@ def _draw_parallax_stars(axes: Axes, result: Result, theme: Theme) -> None:
         elinewidth=0.7,
         color=accent.colour,
         label=f"parallax stars ({shown})",
-        zorder=2.2,
+        zorder=_OVER if len(stars) <= _FEW_STARS else _UNDER,
     )
 
 
@@ -196,7 +202,7 @@ def relation_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
     if relation.metallicity != "none":
         at = f"\nat {relation.metallicity.scale} = {relation.metallicity.reference:g}"
     axes.set_ylabel(f"Absolute magnitude [mag]{at}")
-    axes.legend(loc="upper left")
+    axes.legend(loc="upper left", markerscale=1.5)
     _numbers(axes, result)
     return figure_of(axes)
 
@@ -228,15 +234,17 @@ def residual_panel(
         mean,
         yerr=error,
         linestyle="none",
-        marker="_",
-        markersize=9,
-        markeredgewidth=1.3,
-        elinewidth=1.3,
+        marker="o",
+        markersize=4.5,
+        markerfacecolor=theme.paper,
+        markeredgewidth=1.1,
+        elinewidth=1.1,
         color=theme.ink,
-        zorder=3.0,
+        zorder=3.4,
         label="means in bins of period",
     )
-    symmetric(axes, stars.residual, stars.sd)
+    bars = stars.sd if len(stars) <= _FEW_STARS else 0.0
+    symmetric(axes, np.abs(stars.residual) + bars, stars.sd)
     brighter_up(axes)
     axes.set_ylabel("Residual\n[mag]")
     handles, labels = axes.get_legend_handles_labels()

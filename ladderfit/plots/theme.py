@@ -164,11 +164,11 @@ def plain_log_axis(axes: Axes, ticks: Sequence[float], *, which: str = "x") -> N
 
 
 def series_of_ticks(low: float, high: float) -> list[float]:
-    """Round numbers (1, 2, 5, 10, ...) from the last below `low` to the first above `high`."""
+    """Round numbers between two positive bounds: 1, 2, 3, 5, 7, 10, ..."""
     first = int(np.floor(np.log10(low))) - 1
     last = int(np.ceil(np.log10(high))) + 1
-    ticks = [base * 10.0**power for power in range(first, last + 1) for base in (1, 2, 5)]
-    return [tick for tick in ticks if low * 0.999 <= tick <= high * 1.001]
+    ticks = [base * 10.0**power for power in range(first, last + 1) for base in (1, 2, 3, 5, 7)]
+    return [tick for tick in ticks if low <= tick <= high]
 
 
 def figure_of(axes: Axes) -> Figure:
