@@ -22,7 +22,18 @@ LARGEST_MODULUS = 50.0  # mag; "flat in modulus" and "uniform in volume" hold fr
 
 Columns = Mapping[str, str]
 Range = tuple[float, float]
+PeriodRatio = Literal["Feast & Catchpole 1997", "Alcock et al. 1995"]
 DistancePrior = Literal["flat in modulus", "uniform in volume"]
+
+_STAR_ROLES = (
+    "period",
+    "log_period",
+    "period_error",
+    "metallicity",
+    "metallicity_error",
+    "mode",
+    "system",
+)
 
 
 def _range_faults(key: str, low_high: Range, unit: str, *, above_zero: bool) -> Iterator[Problem]:
@@ -187,16 +198,24 @@ class Cepheids:
     """Cepheids in galaxies."""
 
     table: str = choice("the table of Cepheids, a path relative to this file")
-    columns: Columns = choice("column of each role: star, host, period, metallicity, mode")
+    columns: Columns = choice(
+        "column of each role: star (rows are numbered without), host, period, metallicity, mode"
+    )
     magnitude: Magnitude = choice("which magnitude the relation is for")
     periods: Range = choice("shortest and longest period [d]", default=(0.0, float("inf")))
-    overtones: Literal["drop"] = choice("what to do with overtone pulsators", default="drop")
+    overtones: Literal["drop", "offset", "convert"] = choice(
+        "drop overtone pulsators, give them an offset, or convert their periods", default="drop"
+    )
+    conversion: PeriodRatio = choice(
+        "the published period ratio that converts overtone periods",
+        default="Feast & Catchpole 1997",
+    )
     set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
 
     def check(self) -> Iterator[Problem]:
         """Roles and ranges."""
         yield from _column_faults(
-            self.columns, ("star", "host"), ("period", "log_period", "metallicity", "mode")
+            self.columns, ("host",), ("star", "period", "log_period", "metallicity", "mode")
         )
         yield from _period_faults(self.columns)
         yield from _range_faults("periods", self.periods, " in days", above_zero=True)
@@ -204,23 +223,88 @@ class Cepheids:
 
 @dataclass(frozen=True)
 class Metallicity:
-    """The metallicity term: on which scale, and relative to which value."""
+    """The metallicity term: on which scale, relative to which value, and its errors.
+
+    Where the table has metallicity errors, ``errors`` says how they are met:
+    ``population`` integrates every star's true metallicity over a Gaussian
+    population per host; ``in the variance`` only widens the magnitude's error,
+    which dilutes the term and is meant for comparing; ``ignored`` leaves them out.
+    """
 
     reference: float = choice("the metallicity at which the zero point is stated [dex]")
     scale: str = choice('the scale, such as "12+log(O/H)" or "[Fe/H]"')
+    errors: Literal["population", "in the variance", "ignored"] = choice(
+        "how errors of the metallicity are met", default="population"
+    )
+
+
+@dataclass(frozen=True)
+class Group:
+    """A named group of stars: those that meet every criterion given.
+
+    Attributes
+    ----------
+    hosts : tuple of str
+        Stars in these hosts; with `parallax_stars`, also the parallax stars.
+    mode : str or None
+        Stars of this pulsation mode.
+    system : str or None
+        Stars of this photometric system, as the tables name it.
+    """
+
+    hosts: tuple[str, ...] = choice("hosts whose stars belong to it", default=())
+    parallax_stars: bool = choice("whether the parallax stars belong to it", default=False)
+    mode: Literal["fundamental", "overtone"] | None = choice("a pulsation mode", default=None)
+    system: str | None = choice("a photometric system", default=None)
+
+    def check(self) -> Iterator[Problem]:
+        """At least one criterion."""
+        if not (self.hosts or self.parallax_stars or self.mode or self.system):
+            yield Problem(
+                found="no criterion",
+                expected="hosts, parallax_stars, mode or system",
+                remedy="say which stars belong to the group",
+            )
 
 
 @dataclass(frozen=True)
 class Relation:
-    """Which terms the period-luminosity relation has."""
+    """Which terms the period-luminosity relation has.
+
+    `scatter`, `zero_points` and `slopes` list the groups (of ``[groups]``) that
+    have a scatter of their own, or an offset of their own in zero point or slope.
+    """
 
     pivot: float = choice("the period at which the zero point is stated [d]", default=10.0)
     metallicity: Metallicity | Literal["none"] = choice("the metallicity term", default="none")
+    break_: float | Literal["none"] = choice(
+        "the period beyond which the slope is another [d]", default="none"
+    )
+    curvature: bool = choice("whether there is a quadratic term", default=False)
+    slope_metallicity: bool = choice("whether the slope varies with metallicity", default=False)
+    scatter: Literal["common"] | tuple[str, ...] = choice(
+        'groups with a scatter of their own, or "common"', default="common"
+    )
+    zero_points: tuple[str, ...] = choice("groups with a zero-point offset", default=())
+    slopes: tuple[str, ...] = choice("groups with a slope offset", default=())
+
+    @property
+    def scatter_groups(self) -> tuple[str, ...]:
+        """Groups with a scatter of their own; a star gets that of the first it belongs to."""
+        return () if self.scatter == "common" else self.scatter
 
     def check(self) -> Iterator[Problem]:
-        """The pivot is a period."""
-        if not 0.0 < self.pivot < float("inf"):
-            yield Problem(f"{self.pivot:g}", "a period in days", "write 10.0, say", key="pivot")
+        """Periods are periods; a term needs those it builds on."""
+        for key, period in (("pivot", self.pivot), ("break", self.break_)):
+            if not isinstance(period, str) and not 0.0 < period < float("inf"):
+                yield Problem(f"{period:g}", "a period in days", "write 10.0, say", key=key)
+        if self.slope_metallicity and self.metallicity == "none":
+            yield Problem(
+                found="a slope that varies with metallicity, but no metallicity term",
+                expected="both or none",
+                remedy="add relation.metallicity",
+                key="slope_metallicity",
+            )
 
 
 @dataclass(frozen=True)
@@ -254,7 +338,13 @@ class Parallaxes:
     corrected: bool = choice("whether the zero-point recipe is already applied", default=True)
     distance_prior: DistancePrior = choice("prior of a star's distance", default="flat in modulus")
     periods: Range = choice("shortest and longest period [d]", default=(0.0, float("inf")))
-    overtones: Literal["drop"] = choice("what to do with overtone pulsators", default="drop")
+    overtones: Literal["drop", "offset", "convert"] = choice(
+        "drop overtone pulsators, give them an offset, or convert their periods", default="drop"
+    )
+    conversion: PeriodRatio = choice(
+        "the published period ratio that converts overtone periods",
+        default="Feast & Catchpole 1997",
+    )
     set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
     use: bool = choice("whether the parallaxes take part", default=True)
 
@@ -262,8 +352,8 @@ class Parallaxes:
         """Roles and ranges."""
         yield from _column_faults(
             self.columns,
-            ("star", "parallax", "parallax_error"),
-            ("period", "log_period", "metallicity", "mode"),
+            ("parallax", "parallax_error"),
+            ("star", "period", "log_period", "metallicity", "mode"),
         )
         yield from _period_faults(self.columns)
         yield from _range_faults("periods", self.periods, " in days", above_zero=True)
@@ -277,13 +367,49 @@ class Parallaxes:
 
 
 @dataclass(frozen=True)
+class SharedError:
+    """One error that several geometric anchors have in common.
+
+    An anchor's modulus contains the same unknown shift times its loading; `error`
+    is the shift's standard deviation, beyond the anchors' own errors.
+    """
+
+    error: float = choice("standard deviation of the common shift [mag]")
+    loads: Mapping[str, float] = choice("anchors that share it, with their loadings")
+
+    def check(self) -> Iterator[Problem]:
+        """A positive error and at least one anchor."""
+        if not 0.0 < self.error < float("inf"):
+            yield Problem(
+                f"{self.error:g}", "an error above 0 mag", "give the standard error", key="error"
+            )
+        if not self.loads:
+            yield Problem("no anchor", "anchors and loadings", "write {NAME = 1.0}", key="loads")
+
+
+@dataclass(frozen=True)
 class Anchors:
     """What fixes the scale."""
 
     geometric: Mapping[str, GeometricAnchor] = choice(
         "hosts with geometric distances", default_factory=dict
     )
+    shared_errors: Mapping[str, SharedError] = choice(
+        "errors that geometric anchors share", default_factory=dict
+    )
     parallaxes: Parallaxes | None = choice("stars with parallaxes", default=None)
+
+    def check(self) -> Iterator[Problem]:
+        """Shared errors load on anchors that exist."""
+        for name, shared in self.shared_errors.items():
+            for anchor in shared.loads:
+                if anchor not in self.geometric:
+                    yield Problem(
+                        found=f"the anchor {anchor!r}, which is not among the geometric ones",
+                        expected="names of geometric anchors",
+                        remedy=nearest(anchor, self.geometric),
+                        key=f"shared_errors.{name}.loads",
+                    )
 
 
 @dataclass(frozen=True)
@@ -411,6 +537,7 @@ class Choices:
     title: str = choice("a title", default="")
     cepheids: Cepheids | None = choice("Cepheids in galaxies", default=None)
     relation: Relation = choice("the relation", default_factory=Relation)
+    groups: Mapping[str, Group] = choice("named groups of stars", default_factory=dict)
     anchors: Anchors = choice("what fixes the scale", default_factory=Anchors)
     hosts: Hosts = choice("the galaxies", default_factory=Hosts)
     supernovae: Supernovae | None = choice("supernovae in hosts", default=None)
@@ -519,6 +646,15 @@ class Choices:
                     remedy=nearest(name, known),
                     key=schema.join("priors", name),
                 )
+        for key in ("scatter_groups", "zero_points", "slopes"):
+            for group in getattr(self.relation, key):
+                if group not in self.groups:
+                    yield Problem(
+                        found=f"the group {group!r}, which [groups] does not define",
+                        expected="names of groups",
+                        remedy=nearest(group, self.groups),
+                        key=f"relation.{key.removesuffix('_groups')}",
+                    )
         stars = self.anchors.parallaxes
         if stars is not None and stars.magnitude is None and self.cepheids is None:
             yield Problem(

@@ -9,7 +9,6 @@ not a cut removes it later.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Mapping
-from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -17,8 +16,11 @@ import pandas as pd
 
 from ladderfit.choices import SetAside
 from ladderfit.errors import Problem, nearest, raise_if
-from ladderfit.samples import FloatArray, IntArray, Kept, TextArray
-from ladderfit.tables import BoolArray, DataTable, Kind, Texts, and_more, shown
+from ladderfit.kinds import Kind
+from ladderfit.samples import FloatArray, IntArray, Kept
+from ladderfit.tables import BoolArray, DataTable, Texts, and_more, shown
+
+LONGEST_NAME = 200
 
 
 class Rows:
@@ -85,17 +87,16 @@ class Rows:
             if wanted is None:
                 self._entry_problem(number, "an entry of another kind", f"{role} = NAME", "")
                 continue
-            hit = names.values == wanted
+            hit = names.equal(wanted)
             if entry.host is not None and hosts is not None:
-                hit = hit & (hosts.values == entry.host)
+                hit = hit & hosts.equal(entry.host)
             if not hit.any():
-                known = {str(name) for name in names.values}
                 found = f"{wanted!r}" + (f" in {entry.host!r}" if entry.host else "")
                 self._entry_problem(
-                    number, found, f"a {role} of this table", nearest_few(wanted, known)
+                    number, found, f"a {role} of this table", nearest_few(wanted, names.known)
                 )
-            elif role == "star" and hosts is not None and len(set(hosts.values[hit])) > 1:
-                hosts_hit = ", ".join(sorted({str(host) for host in hosts.values[hit]}))
+            elif role == "star" and hosts is not None and len(set(hosts.codes[hit])) > 1:
+                hosts_hit = ", ".join(sorted(set(hosts.labels[hosts.codes[hit]])))
                 self._entry_problem(
                     number, f"{wanted!r}, which is in {hosts_hit}", "one star", "add host = NAME"
                 )
@@ -122,8 +123,20 @@ class Rows:
             self._keys[reason] = keys
         self.open = self.open & ~mask
 
-    def need(self, texts: Texts, role: str) -> None:
-        """Leave out rows where a text is missing."""
+    def need(self, texts: Texts, role: str, column: str | None) -> None:
+        """Leave out rows where a text is missing; an endless one is a problem."""
+        row, length = texts.longest
+        if length > LONGEST_NAME:
+            self.problems.append(
+                Problem(
+                    found=f"a {role} of {length:,} characters",
+                    expected=f"at most {LONGEST_NAME}",
+                    remedy="name the right column, or correct the cell",
+                    file=self.table.name,
+                    row=row + 1,
+                    column=column,
+                )
+            )
         self.leave_out(texts.missing & self.judged, f"missing {role}")
 
     def number(self, role: str, name: str, kind: Kind, *, above: float | None = None) -> FloatArray:
@@ -153,35 +166,41 @@ class Rows:
         self.leave_out(numbers.missing & self.judged, f"missing {role.replace('_', ' ')}")
         return numbers.values
 
-    def unique(self, words: str, columns: Mapping[str, npt.NDArray[Any]], name: str) -> None:
-        """Rows equal in all `columns` are a problem; `name` is the column to point at."""
-        frame = pd.DataFrame(dict(columns))[self.judged & self._complete(columns)]
+    def unique(
+        self,
+        words: str,
+        columns: Mapping[str, Texts | FloatArray],
+        name: str | None,
+        remedy: str = "remove or rename one of the two, or set it aside",
+    ) -> None:
+        """Rows equal in all `columns` are a problem; `name` is the column to blame."""
+        cells = {
+            role: values.codes if isinstance(values, Texts) else values
+            for role, values in columns.items()
+        }
+        complete = [
+            ~values.missing if isinstance(values, Texts) else ~np.isnan(values)
+            for values in columns.values()
+        ]
+        frame = pd.DataFrame(cells)[np.logical_and.reduce([self.judged, *complete])]
         repeated = frame.duplicated().to_numpy()
         if not repeated.any():
             return
         second = int(frame.index[np.flatnonzero(repeated)[0]])
         same = (frame == frame.loc[second]).all(axis=1)
         first = int(frame.index[np.flatnonzero(same.to_numpy())[0]])
-        label = next(iter(columns.values()))[second]
+        label = next(values for values in columns.values() if isinstance(values, Texts))
         self.problems.append(
             Problem(
-                found=f"{words} {shown(str(label))} again, first in row {first + 1}"
+                found=f"{words} {shown(label.cell(second))} again, first in row {first + 1}"
                 + and_more(int(repeated.sum()) - 1),
                 expected="each once",
-                remedy="remove or rename one of the two, or set it aside",
+                remedy=remedy,
                 file=self.table.name,
                 row=second + 1,
                 column=name,
             )
         )
-
-    @staticmethod
-    def _complete(columns: Mapping[str, npt.NDArray[Any]]) -> BoolArray:
-        complete = [
-            ~np.isnan(values) if values.dtype.kind == "f" else values != ""
-            for values in columns.values()
-        ]
-        return np.asarray(np.logical_and.reduce(complete), bool)
 
     def finish(self, words: str) -> tuple[IntArray, Kept]:
         """The rows left (from 0), and the account of those left out.
@@ -213,7 +232,7 @@ class Rows:
         return left, Kept(self.table.rows, int(left.size), dict(self._reasons))
 
 
-def nearest_few(word: str, known: set[str]) -> str:
+def nearest_few(word: str, known: list[str]) -> str:
     """Like `nearest`, but never lists more than a handful of names."""
     if len(known) <= 12:
         return nearest(word, known)
@@ -231,12 +250,5 @@ def floats(values: npt.ArrayLike) -> FloatArray:
 def integers(values: npt.ArrayLike) -> IntArray:
     """A read-only copy, as integers."""
     array = np.array(values, dtype=np.int64)
-    array.setflags(write=False)
-    return array
-
-
-def names(values: npt.ArrayLike) -> TextArray:
-    """A read-only copy, as text."""
-    array = np.array(values, dtype=np.str_)
     array.setflags(write=False)
     return array

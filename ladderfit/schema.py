@@ -8,6 +8,7 @@ does not fit becomes a `Problem` under its dotted key; nothing is guessed.
 from __future__ import annotations
 
 import dataclasses
+import functools
 import math
 import types
 from collections.abc import Mapping
@@ -233,6 +234,11 @@ def _read_union(
     return None
 
 
+@functools.cache
+def _hints(kind: type) -> dict[str, Any]:
+    return get_type_hints(kind)
+
+
 def _read_section(
     kind: Any, value: Any, problems: list[Problem], key: str, words: str, remedy: str
 ) -> Any:
@@ -240,7 +246,7 @@ def _read_section(
         problems.append(_problem(key, value, f"a table: {words or 'its keys'}", remedy))
         return None
     before = len(problems)
-    hints = get_type_hints(kind)
+    hints = _hints(kind)
     fields = {key_of(field): field for field in dataclasses.fields(kind)}
     for name in value:
         if name not in fields:

@@ -11,25 +11,19 @@ import pandas as pd
 
 from ladderfit.choices import Cepheids, Magnitude, Parallaxes, Range
 from ladderfit.errors import Problem, raise_if
+from ladderfit.kinds import LOG_PERIOD, MAGNITUDE, METALLICITY, PARALLAX, PERIOD
 from ladderfit.physics.photometry import combine, combine_variance, index_weights
-from ladderfit.rows import Rows, floats, integers, names
+from ladderfit.rows import Rows, floats, integers
 from ladderfit.samples import FloatArray, IntArray, Kept, StarSample
-from ladderfit.tables import (
-    LOG_PERIOD,
-    MAGNITUDE,
-    METALLICITY,
-    PARALLAX,
-    PERIOD,
-    BoolArray,
-    DataTable,
-    Texts,
-    and_more,
-    shown,
-)
+from ladderfit.tables import BoolArray, DataTable, Texts, and_more, shown
 
 FUNDAMENTAL = frozenset({"f", "fu", "fundamental", "0"})
 OVERTONE = frozenset({"1o", "fo", "o", "overtone", "first overtone", "1"})
 
+_SAME_NAME = (
+    "remove, rename or set aside one of the two; "
+    "or leave columns.star out, where the stars have no names of their own"
+)
 _KINDS = {
     "period": PERIOD,
     "log_period": LOG_PERIOD,
@@ -77,19 +71,19 @@ def select_cepheids(table: DataTable, section: Cepheids, *, metallicity: bool) -
     rows = Rows(table, "cepheids")
     columns = _star_columns(section.columns, metallicity=metallicity)
     _require_stars(rows, columns, section.magnitude, "cepheids.magnitude")
-    star, host = table.texts(columns["star"]), table.texts(columns["host"])
+    star, host = _star_names(table, columns), table.texts(columns["host"])
     rows.set_aside(section.set_aside, star, "star", host)
-    rows.need(star, "star")
-    rows.need(host, "host")
-    rows.unique("the star", {"star": star.values, "host": host.values}, columns["star"])
+    rows.need(star, "star", columns.get("star"))
+    rows.need(host, "host", columns["host"])
+    rows.unique("the star", {"star": star, "host": host}, columns.get("star"), _SAME_NAME)
     values = _star_values(rows, columns, section.magnitude)
     _cut_stars(rows, columns, values, section.periods)
     left, kept = rows.finish("Cepheid")
-    codes, hosts = pd.factorize(host.values[left])
+    codes, present = pd.factorize(host.codes[left])
     order = np.argsort(codes, kind="stable")
     sample = _star_sample(star, values, left[order], codes[order])
-    seen = tuple(map(str, pd.unique(host.values[~host.missing])))
-    return CepheidSelection(sample, tuple(map(str, hosts)), seen, kept)
+    hosts = tuple(str(host.labels[code]) for code in present)
+    return CepheidSelection(sample, hosts, tuple(host.known), kept)
 
 
 def select_parallax_stars(
@@ -107,10 +101,10 @@ def select_parallax_stars(
     columns = _star_columns(section.columns, metallicity=metallicity)
     place = "cepheids.magnitude" if section.magnitude is None else f"{key}.magnitude"
     _require_stars(rows, columns, magnitude, place)
-    star = table.texts(columns["star"])
+    star = _star_names(table, columns)
     rows.set_aside(section.set_aside, star, "star")
-    rows.need(star, "star")
-    rows.unique("the star", {"star": star.values}, columns["star"])
+    rows.need(star, "star", columns.get("star"))
+    rows.unique("the star", {"star": star}, columns.get("star"), _SAME_NAME)
     values = _star_values(rows, columns, magnitude)
     values["parallax"] = rows.number("parallax", columns["parallax"], PARALLAX)
     values["parallax_error"] = rows.number(
@@ -121,6 +115,10 @@ def select_parallax_stars(
     return ParallaxSelection(
         _star_sample(star, values, left, np.full(left.size, -1, dtype=np.int64)), kept
     )
+
+
+def _star_names(table: DataTable, columns: Mapping[str, str]) -> Texts:
+    return table.texts(columns["star"]) if "star" in columns else table.row_numbers()
 
 
 def _star_columns(columns: Mapping[str, str], *, metallicity: bool) -> dict[str, str]:
@@ -191,7 +189,7 @@ def _cut_stars(
     if "mode" in columns:
         mode = rows.table.texts(columns["mode"])
         overtone = _overtones(rows, mode, columns["mode"])
-        rows.need(mode, "mode")
+        rows.need(mode, "mode", columns["mode"])
         rows.leave_out(overtone, "overtone", "overtones")
     low, high = periods
     outside = (values["period"] < low) | (values["period"] > high)
@@ -199,14 +197,13 @@ def _cut_stars(
 
 
 def _overtones(rows: Rows, mode: Texts, column: str) -> BoolArray:
-    codes, labels = pd.factorize(mode.values)
-    lowered = [" ".join(str(label).lower().split()) for label in labels]
-    unknown = np.array([x not in FUNDAMENTAL | OVERTONE | {""} for x in lowered], bool)[codes]
+    lowered = [" ".join(str(label).lower().split()) for label in mode.labels]
+    unknown = mode.each([label not in FUNDAMENTAL | OVERTONE | {""} for label in lowered])
     wrong = np.flatnonzero(unknown & rows.judged)
     if wrong.size:
         rows.problems.append(
             Problem(
-                found=f"the mode {shown(mode.values[wrong[0]])}" + and_more(wrong.size - 1),
+                found=f"the mode {shown(mode.cell(wrong[0]))}" + and_more(wrong.size - 1),
                 expected="F, FU, fundamental or 0; or 1O, FO, O, overtone or 1",
                 remedy="correct the label, empty it, or set the star aside",
                 file=rows.table.name,
@@ -214,7 +211,7 @@ def _overtones(rows: Rows, mode: Texts, column: str) -> BoolArray:
                 column=column,
             )
         )
-    return np.array([label in OVERTONE for label in lowered], bool)[codes]
+    return mode.each([label in OVERTONE for label in lowered])
 
 
 def _star_sample(
@@ -225,7 +222,7 @@ def _star_sample(
 
     with_parallax = "parallax" in values
     return StarSample(
-        star=names(star.values[left]),
+        star=star.values[left],
         host=integers(host),
         log_period=taken("log_period"),
         magnitude=taken("magnitude"),

@@ -10,10 +10,11 @@ import pandas as pd
 
 from ladderfit.choices import Expansion, Supernovae
 from ladderfit.errors import Problem, nearest, raise_if
-from ladderfit.rows import Rows, floats, integers, names
+from ladderfit.kinds import DISTANCE, MAGNITUDE, REDSHIFT, VELOCITY
+from ladderfit.rows import Rows, floats, integers
 from ladderfit.samples import FlowSample, Kept, PeakSample, VelocitySample
 from ladderfit.select_stars import CepheidSelection
-from ladderfit.tables import DISTANCE, MAGNITUDE, REDSHIFT, VELOCITY, DataTable, Texts, shown
+from ladderfit.tables import DataTable, Texts, shown
 
 _KINDS = {
     "peak": MAGNITUDE,
@@ -73,45 +74,43 @@ def select_peaks(
     raise_if(rows.faults(columns, _KINDS))
     name, host = table.texts(columns["name"]), table.texts(columns["host"])
     rows.set_aside(section.set_aside, name, "name", host)
-    rows.need(name, "name")
-    rows.need(host, "host")
+    rows.need(name, "name", columns["name"])
+    rows.need(host, "host", columns["host"])
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
     error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
-    same = {"name": name.values, "host": host.values, "peak": peak}
-    rows.unique("the supernova", same, columns["name"])
+    rows.unique("the supernova", {"name": name, "host": host, "peak": peak}, columns["name"])
     known = {*(cepheids.seen if cepheids else ()), *anchors}
     _unknown_hosts(rows, host, known, columns["host"])
     usable = {*(cepheids.hosts if cepheids else ()), *(a for a, use in anchors.items() if use)}
-    stranded = ~np.array([cell in usable for cell in host.values], bool)
-    notes = _notes_on(host.values[stranded & rows.open], cepheids)
+    stranded = host.each([label not in usable for label in host.labels])
+    notes = _notes_on(host.labels[host.codes[stranded & rows.open]], cepheids)
     rows.leave_out(stranded, "in a host without Cepheid or anchor in use", "table")
     left, kept = rows.finish("supernova in a host with a Cepheid or an anchor in use")
-    hosts = list(
-        dict.fromkeys([*(cepheids.hosts if cepheids else ()), *map(str, host.values[left])])
-    )
+    theirs = [str(label) for label in host.labels[host.codes[left]]]
+    hosts = list(dict.fromkeys([*(cepheids.hosts if cepheids else ()), *theirs]))
     index = {label: number for number, label in enumerate(hosts)}
     sample = PeakSample(
-        name=names(name.values[left]),
-        host=integers([index[cell] for cell in host.values[left]]),
+        name=name.values[left],
+        host=integers([index[label] for label in theirs]),
         magnitude=floats(peak[left]),
         variance=floats(error[left] ** 2),
         row=integers(left + 1),
     )
-    seen = tuple(map(str, pd.unique(host.values[~host.missing])))
-    return PeakSelection(sample, tuple(hosts), seen, kept, notes)
+    return PeakSelection(sample, tuple(hosts), tuple(host.known), kept, notes)
 
 
 def _unknown_hosts(rows: Rows, host: Texts, known: set[str], column: str) -> None:
-    unknown = np.array([cell not in known for cell in host.values], bool)
-    for label in dict.fromkeys(host.values[unknown & rows.judged & ~host.missing]):
-        row = int(np.flatnonzero((host.values == label) & rows.judged)[0]) + 1
+    for label in host.known:
+        here = np.flatnonzero(host.equal(label) & rows.judged)
+        if label in known or not here.size:
+            continue
         rows.problems.append(
             Problem(
                 found=f"the unknown host {shown(label)}",
                 expected="a host of the Cepheids, or one with a geometric anchor",
                 remedy=nearest(label, known) if known else "add Cepheids or an anchor",
                 file=rows.table.name,
-                row=row,
+                row=int(here[0]) + 1,
                 column=column,
             )
         )
@@ -140,18 +139,19 @@ def select_expansion(table: DataTable, section: Expansion) -> ExpansionSelection
     raise_if(rows.faults(columns, _KINDS))
     name = table.texts(columns["name"])
     rows.set_aside(section.set_aside, name, "name")
-    rows.need(name, "name")
+    rows.need(name, "name", columns["name"])
     return _velocities(rows, name, columns) if section.linear else _flow(rows, name, section)
 
 
 def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> ExpansionSelection:
     distance = rows.number("distance", columns["distance"], DISTANCE, above=0.0)
     velocity = rows.number("velocity", columns["velocity"], VELOCITY)
-    same = {"name": name.values, "distance": distance, "velocity": velocity}
-    rows.unique("the object", same, columns["name"])
+    rows.unique(
+        "the object", {"name": name, "distance": distance, "velocity": velocity}, columns["name"]
+    )
     left, kept = rows.finish("object with a distance and a velocity")
     sample = VelocitySample(
-        name=names(name.values[left]),
+        name=name.values[left],
         distance=floats(distance[left]),
         velocity=floats(velocity[left]),
         row=integers(left + 1),
@@ -169,13 +169,14 @@ def _flow(rows: Rows, name: Texts, section: Expansion) -> ExpansionSelection:
         )
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
     error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
-    same = {"name": name.values, "redshift": redshift, "peak": peak}
-    rows.unique("the supernova", same, columns["name"])
+    rows.unique(
+        "the supernova", {"name": name, "redshift": redshift, "peak": peak}, columns["name"]
+    )
     low, high = section.redshifts
     rows.leave_out((redshift < low) | (redshift > high), "outside the redshift range", "redshifts")
     left, kept = rows.finish("supernova in the redshift range")
     sample = FlowSample(
-        name=names(name.values[left]),
+        name=name.values[left],
         redshift=floats(redshift[left]),
         redshift_heliocentric=floats(observed[left]),
         magnitude=floats(peak[left]),

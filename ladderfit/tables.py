@@ -9,45 +9,18 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
-import astropy.units as u
 import numpy as np
 import numpy.typing as npt
+import pandas as pd
 
 from ladderfit.errors import Problem, nearest
-from ladderfit.samples import FloatArray, IntArray
+from ladderfit.kinds import Kind, conversion
+from ladderfit.samples import FloatArray, IntArray, TextArray
 
 BoolArray = npt.NDArray[np.bool_]
-
-
-@dataclass(frozen=True)
-class Kind:
-    """What the numbers of a column measure.
-
-    Attributes
-    ----------
-    words : str
-        For messages.
-    unit : str
-        The unit the package works in, and the one meant where a table states none.
-    must_be_stated : bool
-        Whether a format that knows units has to state this one.
-    """
-
-    words: str
-    unit: str
-    must_be_stated: bool = False
-
-
-PERIOD = Kind("a period", "d", must_be_stated=True)
-LOG_PERIOD = Kind("log10 of a period in days", "dex")
-MAGNITUDE = Kind("a magnitude", "mag")
-METALLICITY = Kind("a metallicity", "dex")
-PARALLAX = Kind("a parallax", "mas", must_be_stated=True)
-REDSHIFT = Kind("a redshift", "")
-DISTANCE = Kind("a distance", "Mpc", must_be_stated=True)
-VELOCITY = Kind("a velocity", "km/s", must_be_stated=True)
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,10 +56,52 @@ class Numbers:
 
 @dataclass(frozen=True, eq=False)
 class Texts:
-    """A column as stripped text: `values` of str, shape (n,), and which cells are empty."""
+    """A column as stripped text.
 
-    values: npt.NDArray[np.object_]
+    Attributes
+    ----------
+    labels : array of str, shape (k,)
+        The distinct cells by first appearance; an empty one stands for missing cells.
+    codes : array of int, shape (n,)
+        Each cell's index into `labels`.
+    missing : array of bool, shape (n,)
+        Empty or masked cells.
+    """
+
+    labels: npt.NDArray[np.object_]
+    codes: IntArray
     missing: BoolArray
+
+    def cell(self, row: int) -> str:
+        """The cell of a row (from 0)."""
+        return str(self.labels[self.codes[row]])
+
+    def equal(self, text: str) -> BoolArray:
+        """Which cells hold `text`, shape (n,)."""
+        return self.each(self.labels == text)
+
+    def each(self, by_label: npt.ArrayLike) -> BoolArray:
+        """What is known of each label, laid out over the cells, shape (n,)."""
+        return np.asarray(by_label, bool)[self.codes]
+
+    @cached_property
+    def values(self) -> TextArray:
+        """The cells, shape (n,)."""
+        values = self.labels.astype(np.str_)[self.codes]
+        values.setflags(write=False)
+        return values
+
+    @cached_property
+    def longest(self) -> tuple[int, int]:
+        """Row (from 0) and length of the longest cell."""
+        lengths = np.array([len(label) for label in self.labels])
+        label = int(np.argmax(lengths))
+        return int(np.flatnonzero(self.codes == label)[0]), int(lengths[label])
+
+    @property
+    def known(self) -> list[str]:
+        """The distinct cells that are not missing, by first appearance."""
+        return [str(label) for label in self.labels if label]
 
 
 @dataclass(frozen=True, eq=False)
@@ -146,7 +161,7 @@ class DataTable:
             if not (kind.must_be_stated and self.states_units):
                 return None
             found, remedy = "no unit", f"state the column's unit in the table ({kind.unit}, say)"
-        elif _conversion(unit, kind) is None:
+        elif conversion(unit, kind) is None:
             found = f"the unit {str(unit).strip() or '(none)'!r}"
             remedy = "name the right column, or correct its unit"
         else:
@@ -165,12 +180,21 @@ class DataTable:
         if place not in self._known:
             column = self.columns[name]
             numbers = _numbers(column, typed=self.text)
-            factor, shift = _conversion(column.unit, kind) or (1.0, 0.0)
+            factor, shift = conversion(column.unit, kind) or (1.0, 0.0)
             if (factor, shift) != (1.0, 0.0):
                 scaled = numbers.values * factor + shift
                 numbers = Numbers(scaled, numbers.missing, numbers.faulty, numbers.cells)
             self._known[place] = numbers
         known: Numbers = self._known[place]
+        return known
+
+    def row_numbers(self) -> Texts:
+        """Names for rows that have none of their own: "row 1", "row 2" and so on."""
+        if ("", "text") not in self._known:
+            labels = np.array([f"row {number}" for number in range(1, self.rows + 1)], object)
+            codes = np.arange(self.rows, dtype=np.int64)
+            self._known["", "text"] = Texts(labels, codes, np.zeros(self.rows, bool))
+        known: Texts = self._known["", "text"]
         return known
 
     def texts(self, name: str) -> Texts:
@@ -205,44 +229,6 @@ def shown(cell: str) -> str:
 def and_more(count: int) -> str:
     """``(and 3 more such rows)``, or nothing."""
     return f" (and {count:,} more such row{'s' if count > 1 else ''})" if count else ""
-
-
-def _conversion(unit: Any, kind: Kind) -> tuple[float, float] | None:
-    """Factor and shift from a column's unit to that of `kind`; None if it is of another kind."""
-    if unit is None:
-        return (1.0, 0.0)
-    if kind.unit == "mag":
-        return _magnitudes(unit)
-    if kind.unit == "dex":
-        return _dex(unit, logarithm_of=u.d if kind is LOG_PERIOD else None)
-    if isinstance(unit, u.UnitBase) and not isinstance(unit, u.UnrecognizedUnit):
-        target = u.Unit(kind.unit) if kind.unit else u.dimensionless_unscaled
-        if unit.is_equivalent(target):
-            return (float(unit.to(target)), 0.0)
-    return None
-
-
-def _magnitudes(unit: Any) -> tuple[float, float] | None:
-    """Magnitudes of whatever system; dex converts to mag but means something else."""
-    if isinstance(unit, u.MagUnit):
-        return (1.0, 0.0)
-    bases = getattr(unit, "bases", [])
-    if len(bases) == 1 and bases[0].name.endswith("mag") and unit.is_equivalent(u.mag):
-        return (float(unit.to(u.mag)), 0.0)
-    return None
-
-
-def _dex(unit: Any, logarithm_of: Any) -> tuple[float, float] | None:
-    if isinstance(unit, u.DexUnit):
-        inside = unit.physical_unit
-        if logarithm_of is not None and inside.is_equivalent(logarithm_of):
-            return (1.0, float(np.log10(inside.to(logarithm_of))))
-        return (1.0, 0.0) if inside == u.dimensionless_unscaled else None
-    if unit == u.dex:
-        return (1.0, 0.0)
-    if isinstance(unit, u.UnitBase) and unit.is_equivalent(u.dimensionless_unscaled):
-        return (float(unit.to(u.dimensionless_unscaled)), 0.0)
-    return None
 
 
 def _numbers(column: Column, *, typed: bool) -> Numbers:
@@ -285,17 +271,19 @@ def _spelt_nan(values: npt.NDArray[Any]) -> BoolArray:
 
 def _texts(column: Column) -> Texts:
     values = np.asarray(column.values)
-    if values.dtype.kind == "S":
-        values = np.char.decode(values, "utf-8", "replace")
-    missing = column.missing.copy()
     cells = np.array(
-        ["" if gone else _cell_text(cell) for cell, gone in zip(values, missing, strict=True)],
+        [
+            "" if gone else _cell_text(cell)
+            for cell, gone in zip(values, column.missing, strict=True)
+        ],
         dtype=object,
     )
-    missing |= cells == ""
-    for array in (cells, missing):
+    codes, labels = pd.factorize(cells)
+    labels = np.asarray(labels, dtype=object)
+    missing = (labels == "")[codes]
+    for array in (codes, labels, missing):
         array.setflags(write=False)
-    return Texts(cells, missing)
+    return Texts(labels, codes, missing)
 
 
 def _cell_text(cell: Any) -> str:

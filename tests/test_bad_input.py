@@ -252,7 +252,8 @@ def test_duplicated_star(workshop: Workshop) -> None:
     workshop.cell("cepheids", 1, "ID", "Q07-026")  # in another host: another star
     assert workshop.complaints() == [
         f"{workshop.file('cepheids.csv')}, row 30, column 'ID': found the star 'Q07-026' again, "
-        "first in row 26; expected each once; remove or rename one of the two, or set it aside"
+        "first in row 26; expected each once; remove, rename or set aside one of the two; "
+        "or leave columns.star out, where the stars have no names of their own"
     ]
 
 
@@ -460,6 +461,14 @@ def test_setting_aside_the_wrong_kind(workshop: Workshop) -> None:
     (line,) = workshop.complaints()
     assert "key supernovae.set_aside: found an entry of another kind (entry 1)" in line
     assert "expected name = NAME" in line
+
+
+def test_an_endless_name(workshop: Workshop) -> None:
+    workshop.cell("cepheids", 6, "ID", "x" * 5000)
+    assert workshop.complaints() == [
+        f"{workshop.file('cepheids.csv')}, row 6, column 'ID': found a star of 5,000 characters; "
+        "expected at most 200; name the right column, or correct the cell"
+    ]
 
 
 def test_every_table_is_judged_at_once(workshop: Workshop) -> None:

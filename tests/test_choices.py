@@ -237,7 +237,7 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
     ),
     (
         {"cepheids.columns": {"star": "ID", "host": "Galaxy", "period": "P", "metalicity": "OH"}},
-        "key cepheids.columns.metalicity: found an unknown role; expected one of star, host, "
+        "key cepheids.columns.metalicity: found an unknown role; expected one of host, star, "
         "period, log_period, metallicity, mode; did you mean 'metallicity'?",
     ),
     (

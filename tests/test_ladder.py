@@ -124,6 +124,18 @@ def test_one_band_and_log_period_and_total_error() -> None:
     assert np.isnan(sample.metallicity).all()
 
 
+def test_stars_without_names_go_by_their_rows() -> None:
+    frame = tables()["cepheids"].drop(columns="ID")
+    plain = choices()
+    del plain["cepheids"]["columns"]["star"]
+    plain["cepheids"]["set_aside"] = [{"star": "row 30", "reason": "blended"}]
+    ladder = build_ladder(plain, {**tables(), "cepheids": frame})
+    assert ladder.kept["cepheids"].reasons == {"set aside by hand": 1}
+    assert ladder.cepheids is not None
+    assert ladder.cepheids.star[0] == "row 1"
+    assert "row 30" not in ladder.cepheids.star
+
+
 def test_linear_law() -> None:
     plain = {"expansion": {"columns": {"name": "n", "distance": "r", "velocity": "v"}}}
     table = {"n": ["a", "b"], "r": [0.5, 2.0], "v": [-10.0, 1000.0]}

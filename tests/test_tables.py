@@ -13,7 +13,7 @@ import pandas as pd
 import pytest
 from astropy.table import MaskedColumn, QTable, Table
 
-from ladderfit import tables as kinds
+from ladderfit import kinds
 from ladderfit.errors import InputError
 from ladderfit.table_files import read_table
 from ladderfit.table_memory import table_in_memory
