@@ -341,10 +341,11 @@ def test_unknown_key(workshop: Workshop) -> None:
     path.write_text(path.read_text().replace("pivot = ", "pivott = "))
     with pytest.raises(InputError) as caught:
         read_ladder(path)
-    assert str(caught.value) == (
-        f"{path}, key relation.pivott: found an unknown key; "
-        "expected one of pivot, metallicity; did you mean 'pivot'?"
+    words = str(caught.value)
+    assert words.startswith(
+        f"{path}, key relation.pivott: found an unknown key; expected one of pivot, metallicity"
     )
+    assert words.endswith("; did you mean 'pivot'?")
 
 
 def test_unknown_section(workshop: Workshop) -> None:

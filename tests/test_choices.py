@@ -187,7 +187,7 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
     ),
     (
         {"cepheids.overtones": "Drop"},
-        "key cepheids.overtones: found 'Drop'; expected one of 'drop'; did you mean 'drop'?",
+        "key cepheids.overtones: found 'Drop'; expected one of 'drop' ... did you mean 'drop'?",
     ),
     (
         {"anchors.geometric.Tavin.use": "no"},
@@ -216,9 +216,8 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
     ),
     (
         {"priors.slop": {"normal": [0.0, 1.0]}},
-        "key priors.slop: found an unknown parameter; expected one of slope, zero_point, "
-        "metallicity, scatter, parallax_offset, peak_magnitude, peak_scatter, hubble_constant, "
-        "velocity_constant, velocity_scatter; did you mean 'slope'?",
+        "key priors.slop: found an unknown parameter; expected one of slope, zero_point, ... "
+        "did you mean 'slope'?",
     ),
     (
         {"priors.slope": {"norml": [0.0, 1.0]}},
@@ -237,8 +236,8 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
     ),
     (
         {"cepheids.columns": {"star": "ID", "host": "Galaxy", "period": "P", "metalicity": "OH"}},
-        "key cepheids.columns.metalicity: found an unknown role; expected one of host, star, "
-        "period, log_period, metallicity, mode; did you mean 'metallicity'?",
+        "key cepheids.columns.metalicity: found an unknown role; expected one of host, star, ... "
+        "did you mean 'metallicity'?",
     ),
     (
         {"cepheids.set_aside": [{"reason": "blended"}]},
@@ -254,7 +253,9 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
 def test_words_of_a_bad_change(wanted: dict[str, Any], words: str) -> None:
     with pytest.raises(InputError) as caught:
         small().change(wanted)
-    assert words in str(caught.value).splitlines()
+    start, _, end = words.partition(" ... ")  # between them a list that may grow
+    lines = str(caught.value).splitlines()
+    assert any(line.startswith(start) and line.endswith(end or start) for line in lines), lines
 
 
 def test_every_problem_is_told_at_once() -> None:
