@@ -42,7 +42,41 @@ _ALL = (
     Parameter("slope", "mag/dex", r"$b$", "slope of the relation", 3, Normal(-3.3, 0.5)),
     Parameter("zero_point", "mag", r"$M_0$", "zero point at the pivot", 3, Normal(-5.9, 2.0)),
     Parameter("metallicity", "mag/dex", r"$Z$", "metallicity term", 3, Normal(-0.2, 0.5)),
+    Parameter("slope_beyond", "mag/dex", r"$b_2$", "slope beyond the break", 3, Normal(-3.3, 0.5)),
+    Parameter("curvature", "mag/dex2", r"$c$", "quadratic term", 3, Normal(0.0, 0.5)),
+    Parameter(
+        "slope_metallicity",
+        "mag/dex2",
+        r"$Z_b$",
+        "change of the slope with metallicity",
+        3,
+        Normal(0.0, 0.5),
+    ),
+    Parameter(
+        "overtone_offset", "mag", r"$M_1$", "offset of overtone pulsators", 3, Normal(-0.5, 0.5)
+    ),
+    Parameter(
+        "zero_point_offset", "mag", r"$\Delta M_0$", "zero-point offset", 3, Normal(0.0, 0.3)
+    ),
+    Parameter("slope_offset", "mag/dex", r"$\Delta b$", "slope offset", 3, Normal(0.0, 0.5)),
     Parameter("scatter", "mag", r"$t$", "intrinsic scatter of the relation", 3, HalfNormal(0.3)),
+    Parameter(
+        "metallicity_spread",
+        "dex",
+        r"$\tau$",
+        "spread of metallicity within a host",
+        3,
+        HalfNormal(0.3),
+    ),
+    Parameter(
+        "parallax_metallicity",
+        "dex",
+        r"$o_\varpi$",
+        "mean metallicity of the parallax stars, less the reference",
+        3,
+        Normal(0.0, 1.0),
+    ),
+    Parameter("shared_error", "", r"$s$", "shared error of anchors", 2, Normal(0.0, 1.0)),
     Parameter(
         "parallax_offset", "mas", r"$\varpi_0$", "residual parallax offset", 4, Normal(0.0, 0.02)
     ),

@@ -16,6 +16,7 @@ import numpy.typing as npt
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 TextArray = npt.NDArray[np.str_]
+BoolArray = npt.NDArray[np.bool_]
 
 
 @dataclass(frozen=True)
@@ -38,6 +39,14 @@ class StarSample:
         In mas; None for Cepheids in galaxies.
     row : array of int, shape (n,)
         Row in the table, counted from 1.
+    overtone : array of bool, shape (n,), or None
+        Which stars pulsate in the first overtone; None where all are fundamental
+        (or their periods converted).
+    system : array of str, shape (n,), or None
+        Photometric system of each star; None where the table names none.
+    log_period_error, metallicity_error : array, shape (n,), or None
+        Errors of log10 period and of the metallicity [dex]; None where they are
+        not given.
     """
 
     star: TextArray
@@ -49,6 +58,10 @@ class StarSample:
     row: IntArray
     parallax: FloatArray | None = None
     parallax_error: FloatArray | None = None
+    overtone: BoolArray | None = None
+    system: TextArray | None = None
+    log_period_error: FloatArray | None = None
+    metallicity_error: FloatArray | None = None
 
     def __len__(self) -> int:
         """Number of stars."""

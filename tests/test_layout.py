@@ -17,10 +17,11 @@ ORDER = """
     units files shipped priors names schema choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
-    tables table_memory table_files rows select_stars select_supernovae covariances
+    kinds tables table_memory table_files rows select_stars select_supernovae covariances
     relations ladder_file assembly ladder
     kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
-    posterior.split posterior.frame posterior.cepheids posterior.parallaxes
+    posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
+    posterior.split
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.ensemble sampling.chain_file

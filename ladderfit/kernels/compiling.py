@@ -10,7 +10,7 @@ from __future__ import annotations
 import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numba
 
@@ -22,8 +22,8 @@ _POOL = ThreadPoolExecutor(2, thread_name_prefix="ladderfit")
 
 def compiled(function: F) -> F:
     """Compile with numba, cached between processes, without the interpreter's lock."""
-    wrap: Callable[[F], F] = numba.njit(cache=True, nogil=True, error_model="numpy")
-    return wrap(function)
+    wrap = numba.njit(cache=True, nogil=True, error_model="numpy")
+    return cast(F, wrap(function))
 
 
 def threads() -> int:

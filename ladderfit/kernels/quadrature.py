@@ -125,7 +125,7 @@ def _stretched(a: float, root: float, plx: float, err: float) -> float:
     if high - low > _WIDEST * unit:
         low, high = _narrowed(low, high, a, root, plx, err, log_scale)
     pulled = max(1.0, 1.0 - 0.35 * unit * plx / err)  # a negative parallax bends more sharply
-    count = max(int(math.ceil((high - low) / (_STEP * unit) * pulled)), 16)
+    count = max(math.ceil((high - low) / (_STEP * unit) * pulled), 16)
     step = (high - low) / count
     peak, total = -math.inf, 0.0
     for node in range(count + 1):
@@ -182,9 +182,7 @@ def _fill(
     result: FloatArray,
     distance_like: FloatArray,
     variance: FloatArray,
-    extra: FloatArray,
     parallax: FloatArray,
-    offset: FloatArray,
     error: FloatArray,
     tilt: float,
 ) -> None:
@@ -192,9 +190,9 @@ def _fill(
         for star in range(result.shape[1]):
             result[draw, star] = _star(
                 distance_like[draw, star],
-                variance[star] + extra[draw],
-                parallax[star] - offset[draw],
-                error[star],
+                variance[draw, star],
+                parallax[draw, star],
+                error[draw, star],
                 tilt,
             )
 
@@ -202,9 +200,7 @@ def _fill(
 def log_parallax_integrals(
     distance_like: FloatArray,
     variance: FloatArray,
-    extra: FloatArray,
     parallax: FloatArray,
-    offset: FloatArray,
     error: FloatArray,
     tilt: float = 0.0,
 ) -> FloatArray:
@@ -214,14 +210,10 @@ def log_parallax_integrals(
     ----------
     distance_like : array, shape (b, n)
         Apparent minus absolute magnitude, a [mag].
-    variance : array, shape (n,)
-        Measurement variance of a [mag^2].
-    extra : array, shape (b,)
-        Intrinsic variance [mag^2]; the sum has to be above zero.
-    parallax, error : array, shape (n,)
-        Parallax and its error [mas].
-    offset : array, shape (b,)
-        To be subtracted from the parallaxes [mas].
+    variance : array, shape (b, n) or what broadcasts to it
+        Measurement plus intrinsic variance of a [mag^2], above zero.
+    parallax, error : array, shape (b, n) or what broadcasts to it
+        Parallax less its offset, and its error [mas].
     tilt : float
         The distance prior is exp(tilt mu), not normalised [1/mag].
 
@@ -231,19 +223,16 @@ def log_parallax_integrals(
         Accurate to about 2e-7 (absolute, in the log); the same on any number of
         threads.
     """
-    result = np.empty(distance_like.shape)
+    shape = distance_like.shape
+    inputs = [
+        np.broadcast_to(np.asarray(values, float), shape)
+        for values in (distance_like, variance, parallax, error)
+    ]
+    result = np.empty(shape)
 
     def part(start: int, stop: int) -> None:
-        _fill(
-            result[start:stop],
-            distance_like[start:stop],
-            variance,
-            extra[start:stop],
-            parallax,
-            offset[start:stop],
-            error,
-            tilt,
-        )
+        a, v, plx, err = (values[start:stop] for values in inputs)
+        _fill(result[start:stop], a, v, plx, err, tilt)
 
     in_halves(part, len(result), work=result.size)
     return result

@@ -13,7 +13,10 @@ import numpy.typing as npt
 
 from ladderfit.errors import Problem, UndeterminedError
 from ladderfit.names import base_name, parameter, with_group
-from ladderfit.posterior.joint import Posterior, data_rows
+from ladderfit.posterior.cepheids import plain_rows
+from ladderfit.posterior.joint import Posterior
+from ladderfit.posterior.parallaxes import ParallaxTerms
+from ladderfit.posterior.supernovae import ladder_rows
 from ladderfit.priors import Fixed
 
 FloatArray = npt.NDArray[np.float64]
@@ -75,8 +78,11 @@ def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], Flo
     parts, frame, ladder = posterior.split, posterior.frame, posterior.ladder
     k, hosts = len(parts.coefficients), frame.hosts
     information = np.zeros((k + hosts, k + hosts))
-    for block, scatter in data_rows(ladder, frame, parts.coefficients):
-        extra = _TYPICAL.get(scatter or "", 0.0) ** 2
+    for block, scatter in [
+        *plain_rows(ladder, frame),
+        *ladder_rows(ladder, frame, parts.coefficients),
+    ]:
+        extra = 0.0 if scatter is None else _TYPICAL[base_name(scatter)] ** 2
         sums = block.moments(np.array([extra]))
         information[:k, :k] += sums.square[0, :-1, :-1]
         information[k:, :k] += sums.cross[0, :, :-1]
@@ -86,13 +92,15 @@ def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], Flo
         form[:k], form[k + anchor.host] = -frame.centroid[anchor.host], 1.0
         information += np.outer(form, form) / anchor.error**2
     if posterior.parallaxes is not None:
-        design = posterior.parallaxes.design
-        information[: design.shape[1], : design.shape[1]] += _parallax_information(posterior)
+        places = [parts.coefficients.index(name) for name in posterior.parallaxes.coefficients]
+        information[np.ix_(places, places)] += _parallax_information(posterior.parallaxes)
     for place, name in enumerate(parts.coefficients):
         prior = ladder.choices.prior(name)
         if ladder.choices.states_prior(name):
             sd = 1e-6 if isinstance(prior, Fixed) else max(prior.sd, 1e-6)
             information[place, place] += 1.0 / sd**2
+    for place, name in enumerate(parts.coefficients):
+        information[place, place] += base_name(name) == "shared_error"
     information[:k, k:] = information[k:, :k].T
     forms = np.eye(k + hosts)
     forms[k:, :k] = -frame.centroid
@@ -100,10 +108,7 @@ def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], Flo
     return information, names, forms
 
 
-def _parallax_information(posterior: Posterior) -> FloatArray:
-    terms = posterior.parallaxes
-    if terms is None:
-        return np.zeros((0, 0))
+def _parallax_information(terms: ParallaxTerms) -> FloatArray:
     signal = np.maximum(terms.parallax / terms.parallax_error, 0.1)
     variance = terms.variance + 0.1**2 + (5.0 / np.log(10.0) / signal) ** 2
     return np.asarray((terms.design / variance[:, None]).T @ terms.design)

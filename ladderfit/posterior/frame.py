@@ -16,15 +16,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
 from ladderfit.kernels.arrow import Rows, rows
 from ladderfit.ladder import Ladder
-from ladderfit.relations import design_matrix
-from ladderfit.samples import StarSample
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.int64]
+from ladderfit.relations import design
+from ladderfit.samples import BoolArray, FloatArray, IntArray, StarSample
 
 
 @dataclass(frozen=True)
@@ -65,7 +61,7 @@ def host_frame(ladder: Ladder, width: int) -> Frame:
     stars = ladder.cepheids
     if stars is None:
         return Frame(origin, centroid)
-    columns = _columns(ladder, stars, width)
+    columns = _wide(ladder, stars, width)
     count = np.bincount(stars.host, minlength=hosts)
     inhabited = count > 0
     for place in range(width):
@@ -76,17 +72,22 @@ def host_frame(ladder: Ladder, width: int) -> Frame:
     return Frame(origin, centroid)
 
 
-def star_rows(ladder: Ladder, frame: Frame) -> Rows:
-    """The Cepheids' rows m = mu[host] + columns . g + e."""
-    stars = ladder.cepheids
-    if stars is None:
-        raise TypeError("no Cepheids")
-    columns = _columns(ladder, stars, frame.centroid.shape[1])
-    return frame.modulus_rows(stars.host, columns, stars.magnitude, stars.variance)
+def star_rows(ladder: Ladder, frame: Frame, stars: StarSample, chosen: BoolArray) -> Rows:
+    """Rows m = mu[host] + columns . g + e of the chosen Cepheids."""
+    columns = _wide(ladder, stars, frame.centroid.shape[1])[chosen]
+    return frame.modulus_rows(
+        stars.host[chosen], columns, stars.magnitude[chosen], stars.variance[chosen]
+    )
 
 
-def _columns(ladder: Ladder, stars: StarSample, width: int) -> FloatArray:
-    design = design_matrix(ladder.choices.relation, stars)
+def star_columns(ladder: Ladder, stars: StarSample) -> tuple[FloatArray, tuple[str, ...]]:
+    """The relation's design columns, shape (n, k), and their names."""
+    columns = design(ladder.choices, stars, ladder.hosts)
+    return np.stack(list(columns.values()), axis=1), tuple(columns)
+
+
+def _wide(ladder: Ladder, stars: StarSample, width: int) -> FloatArray:
+    narrow, _ = star_columns(ladder, stars)
     columns = np.zeros((len(stars), width))
-    columns[:, : design.shape[1]] = design
+    columns[:, : narrow.shape[1]] = narrow
     return columns

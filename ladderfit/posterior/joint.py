@@ -4,15 +4,17 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
-import numpy.typing as npt
 
-from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
+from ladderfit.kernels.arrow import Moments, Solution, no_moments, rows, solve
 from ladderfit.kernels.reduced import ReducedRows, reduced
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
-from ladderfit.posterior.frame import Frame, host_frame, star_rows
+from ladderfit.posterior.cepheids import Block, ScatterBlock, noisy_block, plain_rows
+from ladderfit.posterior.errors_in_inputs import input_errors
+from ladderfit.posterior.frame import Frame, host_frame
 from ladderfit.posterior.parallaxes import (
     ParallaxTerms,
     log_modulus_norm,
@@ -21,13 +23,10 @@ from ladderfit.posterior.parallaxes import (
 )
 from ladderfit.posterior.split import Split, split
 from ladderfit.posterior.supernovae import ladder_rows
-
-FloatArray = npt.NDArray[np.float64]
+from ladderfit.samples import FloatArray
 
 _CHUNK = 20_000  # draws held at once
 _FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
-
-Block = tuple[Rows | ReducedRows, str]
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,8 +40,8 @@ class Posterior:
         What is in phi and what in theta.
     frame : Frame
         How host moduli are eliminated.
-    blocks : tuple of (Rows or ReducedRows, str)
-        Data rows, each with the name of the scatter that widens it.
+    blocks : tuple of Block
+        Data rows whose variances depend on phi.
     constant : Moments
         Anchors, priors and rows of fixed variance; batch of one.
     parallaxes : ParallaxTerms or None
@@ -101,18 +100,18 @@ class Posterior:
         low, high : array, shape (d,)
             Corners of the box in coordinates; folded ones may straddle zero.
         """
-        for block, scatter in self.blocks:
-            if isinstance(block, ReducedRows) and scatter in self.split.phi_names:
-                ends = self.split.value(scatter, np.stack([low, high]))
-                place = self.split.phi_names.index(scatter)
+        for block in self.blocks:
+            if isinstance(block, ScatterBlock) and isinstance(block.rows, ReducedRows):
+                ends = self.split.value(block.scatter, np.stack([low, high]))
+                place = self.split.phi_names.index(block.scatter)
                 bottom = 0.0 if low[place] * high[place] <= 0.0 else float(ends.min())
-                block.focus(bottom**2, float(ends.max()) ** 2)
+                block.rows.focus(bottom**2, float(ends.max()) ** 2)
 
     def solution(self, z: FloatArray) -> Solution:
         """Theta and the evidence of all rows, given phi."""
         total = self.constant.repeated(len(z))
-        for block, scatter in self.blocks:
-            block.add_to(total, self.split.value(scatter, z) ** 2)
+        for block in self.blocks:
+            block.add_to(total, partial(self.split.value, z=z))
         return solve(total, self.split.known, self.split.known_values(z))
 
     def _log_density(self, z: FloatArray) -> FloatArray:
@@ -125,17 +124,7 @@ class Posterior:
         """Log density of each parallax star, shape (b, n)."""
         if self.parallaxes is None:
             return np.empty((len(z), 0))
-        coefficients = self.relation_values(z)
-        scatter = self.split.value("scatter", z)
-        offset = self.split.value("parallax_offset", z)
-        return self.parallaxes.log_density(coefficients, scatter, offset)
-
-    def relation_values(self, z: FloatArray) -> FloatArray:
-        """The relation's coefficients where parallax stars put them in phi, shape (b, k)."""
-        width = 0 if self.parallaxes is None else self.parallaxes.design.shape[1]
-        known = self.split.known_values(z)
-        places = np.searchsorted(self.split.known, np.arange(width))
-        return known[:, places]
+        return self.parallaxes.log_density(partial(self.split.value, z=z))
 
     def _draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
         coefficients, local = self.solution(z).draw(rng)
@@ -160,25 +149,22 @@ def posterior(ladder: Ladder) -> Posterior:
     parts = split(ladder)
     names = parts.coefficients
     frame = host_frame(ladder, len(names))
-    constant = (
-        _anchors(ladder, frame, names) + _theta_prior(parts, frame) + _distances(ladder, frame)
-    )
+    constant = _anchors(ladder, frame, names) + _theta_prior(parts, frame)
+    constant = constant + _distances(ladder, frame)
+    errors = input_errors(ladder, ladder.cepheids)
     blocks: list[Block] = []
-    for block, scatter in data_rows(ladder, frame, names):
+    found = list(ladder_rows(ladder, frame, names))
+    if ladder.cepheids is not None and errors is not None:
+        blocks.append(noisy_block(ladder, frame, ladder.cepheids, errors))
+    else:
+        found += plain_rows(ladder, frame)
+    for rows_, scatter in found:
         if scatter is None or scatter in parts.fixed:
             known = 0.0 if scatter is None else parts.fixed[scatter]
-            constant = constant + block.moments(np.array([known**2]))
+            constant = constant + rows_.moments(np.array([known**2]))
         else:
-            blocks.append((reduced(block, _largest(ladder, scatter)), scatter))
+            blocks.append(ScatterBlock(reduced(rows_, _largest(ladder, scatter)), scatter))
     return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
-
-
-def data_rows(
-    ladder: Ladder, frame: Frame, names: tuple[str, ...]
-) -> list[tuple[Rows, str | None]]:
-    """All rows of data, each with the name of the scatter that widens it, if any."""
-    stars = [] if ladder.cepheids is None else [(star_rows(ladder, frame), "scatter")]
-    return [*stars, *ladder_rows(ladder, frame, names)]
 
 
 def _chunks(z: FloatArray) -> list[FloatArray]:
@@ -192,11 +178,17 @@ def _largest(ladder: Ladder, scatter: str) -> float:
 
 
 def _anchors(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Moments:
+    """Geometric moduli; what several have in common is a coefficient of its own."""
     anchors = ladder.geometric
     host = np.array([anchor.host for anchor in anchors], dtype=int)
     modulus = np.array([anchor.modulus for anchor in anchors], dtype=float)
     variance = np.array([anchor.error**2 for anchor in anchors], dtype=float)
     columns = np.zeros((len(anchors), len(names)))
+    for name, shared in ladder.choices.anchors.shared_errors.items():
+        place = with_group("shared_error", name)
+        if place in names:
+            loads = [shared.loads.get(anchor.name, 0.0) for anchor in anchors]
+            columns[:, names.index(place)] = shared.error * np.array(loads)
     return frame.modulus_rows(host, columns, modulus, variance).moments(np.zeros(1))
 
 

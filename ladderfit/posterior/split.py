@@ -11,15 +11,15 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
-import numpy.typing as npt
 
 from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
+from ladderfit.names import with_group
+from ladderfit.posterior.errors_in_inputs import input_errors, uses_population
+from ladderfit.posterior.parallaxes import active_coefficients
 from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
-from ladderfit.relations import coefficient_names
-
-FloatArray = npt.NDArray[np.float64]
-IntArray = npt.NDArray[np.int64]
+from ladderfit.relations import coefficient_names, scatters
+from ladderfit.samples import FloatArray, IntArray
 
 Kind = Literal["plain", "folded", "bounded", "logarithmic"]
 
@@ -153,59 +153,80 @@ class Split:
 def split(ladder: Ladder) -> Split:
     """Sort a ladder's parameters into phi, theta and fixed ones."""
     choices = ladder.choices
-    relation = coefficient_names(choices.relation) if _has_relation(ladder) else ()
-    beyond = _expansion_coefficients(ladder)
+    coefficients = linear_coefficients(ladder)
     logarithmic = frozenset({"hubble_constant"} if ladder.velocities is None else ())
-    coefficients = (*relation, *beyond)
+    nonlinear = _nonlinear(ladder)
     fixed: dict[str, float] = {}
     phi: list[Coordinate] = []
-    theta: list[str] = []
-    theta_prior: list[Normal] = []
-    for name in coefficients:
+    theta: dict[str, Normal] = {}
+    for name in (*coefficients, *_others(ladder)):
         prior = choices.prior(name)
-        linear = _linear(prior, name in logarithmic)
+        linear = _linear(prior, name in logarithmic) if name in coefficients else None
         if isinstance(prior, Fixed):
             fixed[name] = prior.value
-        elif linear is None or (name in relation and ladder.parallax_stars is not None):
+        elif linear is None or name in nonlinear:
             phi.append(_coordinate(name, prior, name in logarithmic))
         else:
-            theta.append(name)
-            theta_prior.append(linear)
-    for name in _others(ladder):
-        prior = choices.prior(name)
-        if isinstance(prior, Fixed):
-            fixed[name] = prior.value
-        else:
-            phi.append(_coordinate(name, prior, logarithmic=False))
+            theta[name] = linear
     known = np.array([i for i, name in enumerate(coefficients) if name not in theta], dtype=int)
     return Split(
-        coefficients, logarithmic, tuple(phi), fixed, tuple(theta), tuple(theta_prior), known
+        coefficients,
+        logarithmic,
+        tuple(phi),
+        fixed,
+        tuple(theta),
+        tuple(theta.values()),
+        known,
     )
 
 
-def parameter_names(ladder: Ladder) -> tuple[str, ...]:
-    """Every parameter of the posterior but the host moduli, fixed ones included."""
-    parts = split(ladder)
-    return (*parts.coefficients, *(name for name in _others(ladder)))
+def linear_coefficients(ladder: Ladder) -> tuple[str, ...]:
+    """Every linear coefficient: the relation's, the third rung's, shared errors of anchors."""
+    relation = coefficient_names(ladder.choices) if _has_relation(ladder) else ()
+    return (*relation, *_expansion_coefficients(ladder), *_shared(ladder))
 
 
 def _has_relation(ladder: Ladder) -> bool:
     return ladder.cepheids is not None or ladder.parallax_stars is not None
 
 
+def _nonlinear(ladder: Ladder) -> set[str]:
+    """Coefficients on which parallax stars or variances depend."""
+    found: set[str] = set()
+    names = coefficient_names(ladder.choices) if _has_relation(ladder) else ()
+    if ladder.parallax_stars is not None:
+        found.update(active_coefficients(ladder, ladder.parallax_stars))
+    for stars in (ladder.cepheids, ladder.parallax_stars):
+        errors = input_errors(ladder, stars)
+        if errors is not None:
+            found.update(n for n, s in zip(names, errors.sensitive, strict=True) if s)
+    return found
+
+
 def _expansion_coefficients(ladder: Ladder) -> tuple[str, ...]:
+    expansion = ladder.choices.expansion
+    peak = ("peak_magnitude",)
     if ladder.velocities is not None:
-        constant = ladder.choices.expansion is not None and (
-            ladder.choices.expansion.velocity_constant
+        constant = expansion is not None and expansion.velocity_constant
+        return (
+            *(peak if ladder.peaks is not None else ()),
+            "hubble_constant",
+            *(("velocity_constant",) if constant else ()),
         )
-        peak = ("peak_magnitude",) if ladder.peaks is not None else ()
-        return (*peak, "hubble_constant", *(("velocity_constant",) if constant else ()))
-    names = []
-    if ladder.peaks is not None or ladder.flow is not None or has_intercept(ladder.choices):
-        names.append("peak_magnitude")
-    if ladder.flow is not None or has_intercept(ladder.choices):
-        names.append("hubble_constant")
-    return tuple(names)
+    expands = ladder.flow is not None or has_intercept(ladder.choices)
+    return (
+        *(peak if ladder.peaks is not None or expands else ()),
+        *(("hubble_constant",) if expands else ()),
+    )
+
+
+def _shared(ladder: Ladder) -> tuple[str, ...]:
+    used = {anchor.name for anchor in ladder.geometric}
+    return tuple(
+        with_group("shared_error", name)
+        for name, shared in ladder.choices.anchors.shared_errors.items()
+        if used.intersection(shared.loads)
+    )
 
 
 def has_intercept(choices: Choices) -> bool:
@@ -214,10 +235,16 @@ def has_intercept(choices: Choices) -> bool:
 
 
 def _others(ladder: Ladder) -> tuple[str, ...]:
-    names = []
-    if _has_relation(ladder):
-        names.append("scatter")
+    """Parameters that are no coefficients."""
+    names: list[str] = []
+    samples = [s for s in (ladder.cepheids, ladder.parallax_stars) if s is not None]
+    for stars in samples:
+        names += [n for n in scatters(ladder.choices, stars, ladder.hosts)[0] if n not in names]
+    if any(uses_population(ladder, stars) for stars in samples):
+        names.append("metallicity_spread")
     if ladder.parallax_stars is not None:
+        if uses_population(ladder, ladder.parallax_stars):
+            names.append("parallax_metallicity")
         names.append("parallax_offset")
     if ladder.peaks is not None or ladder.flow is not None:
         names.append("peak_scatter")

@@ -3,16 +3,13 @@
 from __future__ import annotations
 
 import numpy as np
-import numpy.typing as npt
 
 from ladderfit.choices import Expansion
 from ladderfit.kernels.arrow import Rows, rows
 from ladderfit.ladder import Ladder
 from ladderfit.physics.expansion import distance_term, peculiar_variance
 from ladderfit.posterior.frame import Frame
-from ladderfit.samples import FlowSample, PeakSample, VelocitySample
-
-FloatArray = npt.NDArray[np.float64]
+from ladderfit.samples import FloatArray, FlowSample, PeakSample, VelocitySample
 
 _SMALLEST_VELOCITY_VARIANCE = 1e-6  # (km/s)^2, so that a vanishing scatter stays finite
 
