@@ -14,7 +14,9 @@ import pytest
 # stands after its own modules.  A new module must be given its place here.
 ORDER = """
     errors rounding
-    units files shipped priors names schema choices samples
+    units files shipped priors names schema
+    choices.columns choices.stars choices.relation choices.anchors choices.third_rung
+    choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
     kinds tables table_memory table_files rows select_stars select_supernovae covariances

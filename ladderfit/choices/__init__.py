@@ -1,0 +1,48 @@
+"""Every choice of a calibration, frozen, with its default and its dotted key.
+
+The dataclasses of this package are the ladder file: section by section, key by
+key.  A field's words appear in messages.  `Choices` is the whole; it is made from
+a nested mapping, given back as one, changed by dotted keys and compared.
+"""
+
+from ladderfit.choices.anchors import (
+    LARGEST_MODULUS,
+    Anchors,
+    DistancePrior,
+    GeometricAnchor,
+    Hosts,
+    Parallaxes,
+    SharedError,
+)
+from ladderfit.choices.columns import Columns, Range, SetAside
+from ladderfit.choices.relation import Group, Metallicity, Relation
+from ladderfit.choices.sampling import Sampling
+from ladderfit.choices.stars import Cepheids, Magnitude, Overtones, PeriodRatio, Wesenheit
+from ladderfit.choices.third_rung import Expansion, Intercept, Supernovae
+from ladderfit.choices.whole import Choices
+
+__all__ = [
+    "LARGEST_MODULUS",
+    "Anchors",
+    "Cepheids",
+    "Choices",
+    "Columns",
+    "DistancePrior",
+    "Expansion",
+    "GeometricAnchor",
+    "Group",
+    "Hosts",
+    "Intercept",
+    "Magnitude",
+    "Metallicity",
+    "Overtones",
+    "Parallaxes",
+    "PeriodRatio",
+    "Range",
+    "Relation",
+    "Sampling",
+    "SetAside",
+    "SharedError",
+    "Supernovae",
+    "Wesenheit",
+]
