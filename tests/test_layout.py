@@ -26,8 +26,8 @@ ORDER = """
     posterior.split
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
-    sampling.mode sampling.proposal sampling.direct sampling.ensemble sampling.chain_file
-    sampling.run sampling
+    sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
+    sampling.chain_file sampling.ensemble sampling.run sampling
     classical residuals influence anchors sweep alternatives review distances compare
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.redraw
     mock.folder mock mock.__main__

@@ -22,6 +22,7 @@ FloatArray = npt.NDArray[np.float64]
 
 _FIRST, _LAST = 9, 257  # nodes; nested Clenshaw-Curtis points: 9, 17, 33, ...
 _TOLERANCE = 1e-7  # of the summed log density, per thousand stars
+_MUCH_WIDER = 4.0
 _FEWEST_ROWS = 64  # below this the exact sums are as cheap
 
 
@@ -52,6 +53,10 @@ class SumTable:
         low, high = np.log(self.low + self.shift), np.log(self.high + self.shift)
         x = (2.0 * np.log(extra + self.shift) - low - high) / (high - low)
         return np.asarray(_chebyshev(x, len(self.coefficients)) @ self.coefficients)
+
+    def covers(self, low: float, high: float) -> bool:
+        """Whether the table holds this range without being much wider."""
+        return self.low <= low and high <= self.high <= _MUCH_WIDER * high
 
     def holds(self, extra: FloatArray) -> npt.NDArray[np.bool_]:
         """Which of the extra variances lie in the range."""
@@ -112,8 +117,9 @@ class ReducedRows:
         return packed
 
     def focus(self, low: float, high: float) -> None:
-        """Add a short table for a range of extra variance where most draws will fall."""
-        self.tables.insert(0, tabulate(self.rows, low, high))
+        """Have a short table for the range of extra variance where most draws will fall."""
+        if not any(table.covers(low, high) for table in self.tables[:-1]):
+            self.tables[:-1] = [tabulate(self.rows, low, high)]
 
 
 def reduced(rows: Rows, largest: float) -> Rows | ReducedRows:

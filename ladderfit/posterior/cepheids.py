@@ -33,10 +33,21 @@ class Block(Protocol):
 
 @dataclass(frozen=True, eq=False)
 class ScatterBlock:
-    """Rows widened by one scatter."""
+    """Rows widened by one scatter, whose square is tabulated up to `largest`."""
 
     rows: Rows | ReducedRows
     scatter: str
+    largest: float = np.inf
+
+    def holds(self, rows: Rows) -> bool:
+        """Whether these are the very same rows."""
+        mine = self.rows.rows if isinstance(self.rows, ReducedRows) else self.rows
+        return (
+            mine.slices == rows.slices
+            and mine.hosts == rows.hosts
+            and np.array_equal(mine.variance, rows.variance)
+            and np.array_equal(mine.columns, rows.columns)
+        )
 
     def add_to(self, total: Moments, values: Values) -> None:
         """Add the sums at the scatter's values to `total`, in place."""

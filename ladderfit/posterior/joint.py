@@ -8,7 +8,7 @@ from functools import partial
 
 import numpy as np
 
-from ladderfit.kernels.arrow import Moments, Solution, no_moments, rows, solve
+from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
 from ladderfit.kernels.reduced import ReducedRows, reduced
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
@@ -144,8 +144,16 @@ class Posterior:
         return np.array([c.coordinate(values[c.name]) for c in self.split.phi])
 
 
-def posterior(ladder: Ladder) -> Posterior:
-    """Assemble the posterior of a ladder."""
+def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
+    """Assemble the posterior of a ladder.
+
+    Parameters
+    ----------
+    ladder : Ladder
+    before : Posterior, optional
+        That of a similar ladder: star sums that the difference does not touch
+        are taken over.
+    """
     parts = split(ladder)
     names = parts.coefficients
     frame = host_frame(ladder, len(names))
@@ -163,8 +171,25 @@ def posterior(ladder: Ladder) -> Posterior:
             known = 0.0 if scatter is None else parts.fixed[scatter]
             constant = constant + rows_.moments(np.array([known**2]))
         else:
-            blocks.append(ScatterBlock(reduced(rows_, _largest(ladder, scatter)), scatter))
+            largest = _largest(ladder, scatter)
+            kept = None if before is None else _kept(before.blocks, rows_, scatter, largest)
+            blocks.append(kept or ScatterBlock(reduced(rows_, largest), scatter, largest))
     return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
+
+
+def _kept(
+    blocks: tuple[Block, ...], rows_: Rows, scatter: str, largest: float
+) -> ScatterBlock | None:
+    """The block of the same rows among those of an earlier posterior."""
+    for block in blocks:
+        if (
+            isinstance(block, ScatterBlock)
+            and block.scatter == scatter
+            and block.largest >= largest
+            and block.holds(rows_)
+        ):
+            return block
+    return None
 
 
 def _chunks(z: FloatArray) -> list[FloatArray]:

@@ -23,15 +23,25 @@ from ladderfit.sampling.proposal import Component, Proposal, component
 FloatArray = npt.NDArray[np.float64]
 Progress = Callable[[str, float], None]
 
-_FREEDOM = 6.0
+_FREEDOM = 12.0
+_WIDEN, _WIDE = 1.03, 2.0  # widths of the two parts of the proposal, in those of the mode
+_WIDE_SHARE = 0.06
 _PILOT = 600
 _ROUNDS = 3
 _GOOD_EFFICIENCY = 0.5
 _GOOD_K = 0.5
-_OVERSAMPLE = 1.5
+_OVERSAMPLE = 1.25
 _BOX = 12.0  # widths round the mode
 _MODE_DISTANCE = 5.0
 _MODE_MASS = 1e-4
+
+
+@dataclass(frozen=True)
+class Near:
+    """A point and widths to start from, shape (d,) each."""
+
+    point: FloatArray
+    width: FloatArray
 
 
 @dataclass(frozen=True)
@@ -48,6 +58,8 @@ class Target:
         Coordinates of which only the size counts.
     focus : callable, optional
         Told the corners of the box in which nearly all draws will lie.
+    near : Near, optional
+        Where a similar density had its mode: then other modes are not looked for.
     """
 
     log_density: LogDensity
@@ -55,6 +67,7 @@ class Target:
     scale: FloatArray
     folded: npt.NDArray[np.bool_]
     focus: Callable[[FloatArray, FloatArray], None] | None = None
+    near: Near | None = None
 
 
 @dataclass(frozen=True)
@@ -133,6 +146,10 @@ def draw_direct(
 
 def find_modes(target: Target, rng: np.random.Generator, others: int = 2) -> tuple[Mode, ...]:
     """The modes reached from the start and from `others` dispersed points, by mass."""
+    if target.near is not None:
+        mode = find_mode(target.log_density, target.near.point, target.near.width)
+        if mode.converged:
+            return (_fold(mode, target.folded),)
     spread = 0.7 * target.scale * rng.standard_normal((others, len(target.start)))
     starts = [target.start, *(target.start + spread)]
     finite = np.isfinite(target.log_density(np.array(starts)))
@@ -183,7 +200,7 @@ def _first_proposal(modes: tuple[Mode, ...], folded: npt.NDArray[np.bool_]) -> P
     share = np.maximum(np.exp(mass - mass.max()), 0.05)
     components = []
     for mode, part in zip(modes, share / share.sum(), strict=True):
-        for widen, portion in ((1.05, 0.9), (2.0, 0.1)):
+        for widen, portion in ((_WIDEN, 1.0 - _WIDE_SHARE), (_WIDE, _WIDE_SHARE)):
             components.append(
                 component(
                     mode.point,
@@ -217,8 +234,8 @@ def _adapted(
     covariance[:, mirrored] = covariance[mirrored].T
     covariance += np.diag(1e-12 + 1e-6 * np.diag(covariance))
     fresh = (
-        component(centre, covariance, widen=1.1, freedom=_FREEDOM, share=0.6),
-        component(centre, covariance, widen=2.0, freedom=_FREEDOM, share=0.1),
+        component(centre, covariance, widen=1.1, freedom=_FREEDOM / 2.0, share=0.6),
+        component(centre, covariance, widen=_WIDE, freedom=_FREEDOM / 2.0, share=0.1),
     )
     old = tuple(
         Component(c.centre, c.factor, freedom=c.freedom, share=0.3 * c.share)

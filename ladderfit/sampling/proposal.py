@@ -87,5 +87,5 @@ def component(
     centre: FloatArray, covariance: FloatArray, *, widen: float, freedom: float, share: float
 ) -> Component:
     """A Student-t with `widen` times the width of the given covariance."""
-    factor: FloatArray = np.linalg.cholesky(widen**2 * covariance)
+    factor = np.asarray(np.linalg.cholesky(widen**2 * covariance), dtype=np.float64)
     return Component(centre, factor, freedom, share)

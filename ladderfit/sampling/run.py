@@ -55,10 +55,18 @@ def draw(
     draws = ladder.choices.sampling.draws if draws is None else draws
     joint = posterior(ladder)
     check_determined(joint)
+    return drawn(joint, target(joint), seed, draws, progress)[0]
+
+
+def drawn(
+    joint: Posterior, aim: Target, seed: int, draws: int, progress: Progress | None = None
+) -> tuple[Result, DirectDraws]:
+    """Draw an assembled posterior; the draws of phi come along."""
     rng = np.random.default_rng(seed)
-    found = draw_direct(target(joint), draws, rng, progress)
+    found = draw_direct(aim, draws, rng, progress)
     values = ordered(joint.draw(found.z, rng))
-    return Result(ladder.choices, values, _diagnostics(joint, found, values, seed), ladder)
+    diagnostics = _diagnostics(joint, found, values, seed)
+    return Result(joint.ladder.choices, values, diagnostics, joint.ladder), found
 
 
 def target(joint: Posterior) -> Target:
@@ -69,6 +77,7 @@ def target(joint: Posterior) -> Target:
         np.array([coordinate.start for coordinate in phi]),
         np.array([coordinate.scale for coordinate in phi]),
         np.array([coordinate.kind == "folded" for coordinate in phi], dtype=bool),
+        joint.focus,
     )
 
 
