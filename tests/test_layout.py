@@ -19,7 +19,7 @@ ORDER = """
     choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
-    kinds tables table_memory table_files rows select_stars select_supernovae covariances
+    kinds tables table_memory table_files rows star_values select_stars select_supernovae covariances
     relations ladder_file assembly ladder
     kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
@@ -27,10 +27,11 @@ ORDER = """
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
-    sampling.chain_file sampling.ensemble sampling.run sampling
+    sampling.ensemble sampling.chain_layout sampling.chain_file sampling.run sampling.warm
+    sampling
     classical residuals influence anchors sweep alternatives review distances compare
-    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.redraw
-    mock.folder mock mock.__main__
+    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.restated
+    mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
     report calibration

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import tomllib
 from pathlib import Path
 
@@ -144,6 +145,42 @@ def test_a_missing_truth_is_named(sample: Ladder) -> None:
     lacking = {name: value for name, value in TRUTH.items() if name != "modulus[Brelin]"}
     with pytest.raises(InputError, match=r"no true value.*modulus\[Brelin\]"):
         mock_from_ladder(sample, lacking, np.random.default_rng(1))
+
+
+@pytest.mark.parametrize(
+    ("changes", "complaint"),
+    [
+        ({"relation.break": 10.0}, "key relation.break: found 10.0"),
+        ({"relation.curvature": True}, "key relation.curvature: found True"),
+        (
+            {"anchors.shared_errors": {"s": {"error": 0.02, "loads": {"Tavin": 1, "Orsell": 1}}}},
+            "key anchors.shared_errors: found a shared error",
+        ),
+    ],
+)
+def test_a_term_the_simulator_does_not_know_is_refused(
+    sample: Ladder, changes: dict[str, object], complaint: str
+) -> None:
+    with pytest.raises(InputError, match=complaint):
+        mock_from_ladder(sample.change(changes), TRUTH, np.random.default_rng(1))
+
+
+@pytest.mark.parametrize(
+    ("part", "complaint"),
+    [
+        ("log_period_error", "found errors of the periods"),
+        ("metallicity_error", "found errors of the metallicity"),
+        ("overtone", "found overtones with an offset"),
+    ],
+)
+def test_stars_the_simulator_does_not_know_are_refused(
+    sample: Ladder, part: str, complaint: str
+) -> None:
+    stars = sample.cepheids
+    assert stars is not None
+    odd = dataclasses.replace(stars, **{part: np.zeros(len(stars))})
+    with pytest.raises(InputError, match=complaint):
+        mock_from_ladder(dataclasses.replace(sample, cepheids=odd), TRUTH, np.random.default_rng(1))
 
 
 def test_plain_truth_is_near_the_data(sample: Ladder) -> None:

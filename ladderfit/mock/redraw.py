@@ -14,31 +14,14 @@ from typing import Any
 import numpy as np
 from astropy.table import MaskedColumn, Table
 
-from ladderfit.errors import InputError, Problem
+from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock.peaks import peak_in_flow
+from ladderfit.mock.restated import beyond, restated
 from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
 from ladderfit.samples import FloatArray, FlowSample, PeakSample, StarSample, VelocitySample
 
-_MAGNITUDE = {"bands": {"W": "W"}, "errors": {"W": "e_W"}, "band": "W"}
-_COLUMNS = {
-    "cepheids": {"star": "ID", "host": "Galaxy", "period": "P"},
-    "anchors.parallaxes": {
-        "star": "ID",
-        "period": "P",
-        "parallax": "plx",
-        "parallax_error": "e_plx",
-    },
-    "supernovae": {"name": "SN", "host": "Galaxy", "peak": "mB", "peak_error": "e_mB"},
-    "expansion": {
-        "name": "SN",
-        "redshift": "zcmb",
-        "redshift_heliocentric": "zhel",
-        "peak": "mB",
-        "peak_error": "e_mB",
-    },
-}
 _MARGIN = 0.5  # mag, beyond the nearest and the farthest parallax star
 
 Rng = np.random.Generator
@@ -81,7 +64,8 @@ def mock_from_ladder(
     Raises
     ------
     InputError
-        If a parameter has no true value.
+        If a parameter has no true value, or the ladder has a term that the
+        simulator does not know.
     """
     drawn = redraw(ladder, truth, rng, parallax_moduli)
     return build_ladder(drawn.choices, drawn.tables)
@@ -94,6 +78,7 @@ def redraw(
     parallax_moduli: tuple[float, float] | None = None,
 ) -> Redrawn:
     """Choices and tables of `mock_from_ladder`, before they are put together."""
+    raise_if(list(beyond(ladder)))
     lacking = [name for name in needed(ladder) if name not in truth]
     if lacking:
         raise InputError(
@@ -113,7 +98,7 @@ def redraw(
         tables["expansion"] = _flow(ladder, ladder.flow, truth, of_flow)
     if ladder.velocities is not None:
         tables["expansion"] = _velocities(ladder.velocities, truth, of_flow)
-    return Redrawn(_choices(ladder, truth, of_anchors), tables)
+    return Redrawn(restated(ladder, truth, of_anchors), tables)
 
 
 def needed(ladder: Ladder) -> tuple[str, ...]:
@@ -258,51 +243,3 @@ def _velocities(sample: VelocitySample, truth: Mapping[str, float], rng: Rng) ->
             digits_column("velocity", measured, 8, "km / s", "velocity, simulated"),
         ]
     )
-
-
-def _choices(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:
-    """The ladder's choices, made to fit the new tables; anchors measured again."""
-    plain = ladder.choices.to_mapping()
-    plain.pop("alternatives", None)
-    for section in ("cepheids", "supernovae", "expansion"):
-        if section in plain:
-            plain[section] = _fitted(plain[section], _COLUMNS[section])
-    if ladder.velocities is not None:
-        plain["expansion"]["columns"] = {role: role for role in ("name", "distance", "velocity")}
-    metallic = ladder.choices.relation.metallicity != "none"
-    if "cepheids" in plain:
-        plain["cepheids"]["magnitude"] = _MAGNITUDE
-        plain["cepheids"]["columns"] |= {"metallicity": "OH"} if metallic else {}
-    plain["anchors"] = _anchors(ladder, truth, rng)
-    published = plain.get("expansion", {}).get("intercept")
-    if published is not None:
-        true = float(np.log10(truth["hubble_constant"])) - 0.2 * truth["peak_magnitude"] - 5.0
-        value = true + published["error"] * float(rng.normal())
-        plain["expansion"]["intercept"] = {**published, "value": value}
-        plain["expansion"]["columns"] = {}
-    return plain
-
-
-def _fitted(section: Mapping[str, Any], columns: Mapping[str, str]) -> dict[str, Any]:
-    """A section without its table and what was set aside, its columns named anew."""
-    kept = {key: value for key, value in section.items() if key not in ("table", "set_aside")}
-    return kept | {"columns": dict(columns)}
-
-
-def _anchors(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:
-    plain: dict[str, Any] = ladder.choices.to_mapping().get("anchors", {})
-    used = {anchor.name for anchor in ladder.geometric}
-    geometric = {}
-    for host, anchor in plain.get("geometric", {}).items():
-        if host in used:
-            true = truth[with_group("modulus", host)]
-            value = round(true + anchor["error"] * float(rng.normal()), 6)
-            geometric[host] = {**anchor, "modulus": value}
-    anchors: dict[str, Any] = {"geometric": geometric} if geometric else {}
-    if ladder.parallax_stars is not None:
-        stars = _fitted(plain["parallaxes"], _COLUMNS["anchors.parallaxes"])
-        stars["magnitude"] = _MAGNITUDE
-        if ladder.choices.relation.metallicity != "none":
-            stars["columns"]["metallicity"] = "OH"
-        anchors["parallaxes"] = stars
-    return anchors
