@@ -19,7 +19,8 @@ ORDER = """
     choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.distance_priors physics.selection
     physics.expansion physics.overtones physics
-    kinds tables table_memory table_files rows star_values select_stars select_supernovae covariances
+    kinds tables table_memory table_files rows star_values select_stars select_supernovae
+    covariances
     relations ladder_file assembly ladder
     kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
