@@ -132,7 +132,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         _say(f"ladderfit: {' '.join(str(error).split())}", sys.stderr)
         return EXIT_FAILED
     except KeyboardInterrupt:
-        _say("ladderfit: interrupted; no folder was made", sys.stderr)
+        _say("ladderfit: interrupted; an unfinished folder is not kept", sys.stderr)
         return EXIT_INTERRUPTED
     except OSError as error:
         _say(f"ladderfit: {_no_place(error)}", sys.stderr)

@@ -15,10 +15,14 @@ import numpy.typing as npt
 
 from ladderfit.names import with_group
 from ladderfit.physics.expansion import distance_term, peculiar_variance
+from ladderfit.posterior.errors_in_inputs import input_errors
+from ladderfit.relations import design, scatters
 from ladderfit.result import Result
 from ladderfit.samples import FloatArray, IntArray, StarSample, TextArray
+from ladderfit.units import LN10, modulus_from_parallax, parallax_from_modulus
 
-_PER_MAG = 0.2 * float(np.log(10.0))
+LINE = ("zero_point", "slope", "slope_beyond", "curvature")  # terms of the period alone
+_PER_MAG = 0.2 * LN10
 
 
 @dataclass(frozen=True)
@@ -77,19 +81,53 @@ def moduli(result: Result) -> FloatArray:
     return np.array([at_mean(result, name) for name in names])
 
 
-def _relation(result: Result, stars: StarSample) -> tuple[FloatArray, FloatArray]:
-    """The line at each star's period, and its metallicity term, both in mag."""
-    relation = result.choices.relation
-    x = stars.log_period - np.log10(relation.pivot)
-    line = at_mean(result, "zero_point") + at_mean(result, "slope") * x
-    if relation.metallicity == "none":
-        return line, np.zeros(len(stars))
-    offset = stars.metallicity - relation.metallicity.reference
-    return line, at_mean(result, "metallicity") * offset
+@dataclass(frozen=True)
+class _Predicted:
+    """Absolute magnitudes: the line, what other terms add, and the variance round both."""
+
+    line: FloatArray
+    terms: FloatArray
+    variance: FloatArray
+
+
+def _predicted(result: Result, stars: StarSample) -> _Predicted:
+    """The relation at the posterior mean, for one sample."""
+    ladder = result.ladder
+    columns = design(result.choices, stars, ladder.hosts)
+    mean = {name: at_mean(result, name) for name in columns}
+    line, terms = np.zeros(len(stars)), np.zeros(len(stars))
+    for name, column in columns.items():
+        (line if name in LINE else terms)[:] += mean[name] * column
+    names, which = scatters(result.choices, stars, ladder.hosts)
+    scatter = np.array([at_mean(result, name) for name in names])
+    variance = stars.variance + scatter[which] ** 2
+    errors = input_errors(ladder, stars)
+    if errors is not None:
+        spread = np.array([at_mean(result, "metallicity_spread")])
+        effect = errors.effect(np.array([list(mean.values())]), spread)
+        variance = variance + effect.variance[0]
+        if effect.pull is not None and effect.weight is not None:
+            off = stars.metallicity - _mean_metallicity(result, stars, effect.weight[0])
+            terms -= effect.pull[0] * off
+    return _Predicted(line, terms, variance)
+
+
+def _mean_metallicity(result: Result, stars: StarSample, weight: FloatArray) -> FloatArray:
+    """The mean of each star's population: its host's weighted mean, or the fitted one."""
+    relation = result.choices.relation.metallicity
+    if stars.parallax is not None and relation != "none":
+        return np.full(len(stars), at_mean(result, "parallax_metallicity") + relation.reference)
+    sums = np.bincount(stars.host, weight * stars.metallicity)
+    with np.errstate(invalid="ignore"):  # hosts without stars are not asked for
+        means = sums / np.bincount(stars.host, weight)
+    return np.asarray(means[stars.host])
 
 
 def line_draws(result: Result, log_period: npt.ArrayLike) -> FloatArray:
-    """Absolute magnitude at the reference metallicity, for every draw.
+    """Absolute magnitude of a fundamental pulsator at the reference metallicity, per draw.
+
+    The line has the terms that depend on the period alone: zero point, slope,
+    slope beyond the break, curvature.
 
     Parameters
     ----------
@@ -103,9 +141,23 @@ def line_draws(result: Result, log_period: npt.ArrayLike) -> FloatArray:
     magnitude : array, shape (n_draws, m)
         In mag.
     """
-    x = np.asarray(log_period, dtype=float) - np.log10(result.choices.relation.pivot)
-    return np.asarray(
-        result.draws["zero_point"][:, None] + result.draws["slope"][:, None] * x[None, :]
+    columns = design(result.choices, _nobody_at(result, np.asarray(log_period, dtype=float)), ())
+    parts = [result.draws[name][:, None] * columns[name] for name in LINE if name in columns]
+    return np.asarray(sum(parts))
+
+
+def _nobody_at(result: Result, log_period: FloatArray) -> StarSample:
+    """Stars of no host at these periods and the reference metallicity."""
+    n, relation = len(log_period), result.choices.relation.metallicity
+    nothing = np.zeros(n)
+    return StarSample(
+        star=np.full(n, ""),
+        host=np.full(n, -1),
+        log_period=log_period,
+        magnitude=nothing,
+        variance=nothing,
+        metallicity=nothing if relation == "none" else np.full(n, relation.reference),
+        row=np.zeros(n, dtype=np.int64),
     )
 
 
@@ -113,18 +165,18 @@ def cepheid_residuals(result: Result) -> HostResiduals | None:
     """Cepheids in galaxies: absolute magnitudes at the reference metallicity.
 
     `x` is log10 of the period in days; `data` is the magnitude minus the host's
-    modulus and the metallicity term, `model` the line; in mag.
+    modulus and all terms but the line's, `model` the line; in mag.
     """
     stars = result.ladder.cepheids
     if stars is None:
         return None
-    line, metals = _relation(result, stars)
+    predicted = _predicted(result, stars)
     return HostResiduals(
         name=stars.star,
         x=stars.log_period,
-        data=stars.magnitude - moduli(result)[stars.host] - metals,
-        model=line,
-        sd=np.sqrt(stars.variance + at_mean(result, "scatter") ** 2),
+        data=stars.magnitude - moduli(result)[stars.host] - predicted.terms,
+        model=predicted.line,
+        sd=np.sqrt(predicted.variance),
         host=stars.host,
     )
 
@@ -140,15 +192,15 @@ def parallax_residuals(result: Result) -> Residuals | None:
     stars = result.ladder.parallax_stars
     if stars is None or stars.parallax is None or stars.parallax_error is None:
         return None
-    line, metals = _relation(result, stars)
-    photometric = 10.0 ** (2.0 - 0.2 * (stars.magnitude - line - metals))
-    spread = stars.variance + at_mean(result, "scatter") ** 2
+    predicted = _predicted(result, stars)
+    modulus = stars.magnitude - predicted.line - predicted.terms
+    photometric = parallax_from_modulus(modulus)
     return Residuals(
         name=stars.star,
         x=stars.log_period,
         data=stars.parallax,
         model=photometric + at_mean(result, "parallax_offset"),
-        sd=np.sqrt(stars.parallax_error**2 + (_PER_MAG * photometric) ** 2 * spread),
+        sd=np.sqrt(stars.parallax_error**2 + (_PER_MAG * photometric) ** 2 * predicted.variance),
     )
 
 
@@ -170,7 +222,7 @@ def parallax_magnitudes(
     -------
     stars : Residuals
         `x` is log10 of the period in days; `data` the magnitude minus the modulus of
-        the parallax (offset removed) and the metallicity term, `model` the line;
+        the parallax (offset removed) and all terms but the line's, `model` the line;
         `sd` to first order; in mag.
     below, above : array
         Distances from `data` to the magnitudes at the parallax minus and plus its
@@ -179,17 +231,16 @@ def parallax_magnitudes(
     stars = result.ladder.parallax_stars
     if stars is None or stars.parallax is None or stars.parallax_error is None:
         return None
-    line, metals = _relation(result, stars)
+    predicted = _predicted(result, stars)
     parallax = stars.parallax - at_mean(result, "parallax_offset")
     good = parallax >= least_signal * stars.parallax_error
     value, error = parallax[good], stars.parallax_error[good]
-    photometric_variance = stars.variance[good] + at_mean(result, "scatter") ** 2
     shown = Residuals(
         name=stars.star[good],
         x=stars.log_period[good],
-        data=(stars.magnitude - metals)[good] + 5.0 * np.log10(value) - 10.0,
-        model=line[good],
-        sd=np.sqrt(photometric_variance + (error / value / _PER_MAG) ** 2),
+        data=(stars.magnitude - predicted.terms)[good] - modulus_from_parallax(value),
+        model=predicted.line[good],
+        sd=np.sqrt(predicted.variance[good] + (error / value / _PER_MAG) ** 2),
     )
     below = -5.0 * np.log10(1.0 - error / value)
     return shown, np.asarray(below), np.asarray(5.0 * np.log10(1.0 + error / value))

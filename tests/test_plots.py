@@ -230,6 +230,15 @@ def test_a_fixed_parameter_has_no_panel() -> None:
         corner.corner_figure(result, ["hubble_constant"])
 
 
+def test_too_many_parameters_leave_room_for_the_first() -> None:
+    result = handmade.result(handmade.ladder())
+    more = {f"zero_point_offset[{name}]": result.draws["slope"] for name in "abc"}
+    crowded = Result(result.choices, {**result.draws, **more}, result.diagnostics)
+    assert len(corner.varying(crowded)) == 11
+    assert corner.shown(crowded) == tuple(handmade.NUMBERS)
+    assert corner.shown(result) == corner.varying(result)
+
+
 def test_contours_speak_of_probability_never_of_sigma(drawn: dict[str, Figure]) -> None:
     everything = " ".join(text.get_text() for figure in drawn.values() for text in words(figure))
     assert "68 % of the probability" in everything

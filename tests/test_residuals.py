@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import builders
 import handmade
 import numpy as np
@@ -9,7 +11,7 @@ import pytest
 
 from ladderfit import residuals
 from ladderfit.ladder import build_ladder
-from ladderfit.result import Result
+from ladderfit.result import Diagnostics, Result
 
 
 @pytest.fixture(scope="module")
@@ -143,3 +145,85 @@ def test_absent_rungs_give_nothing(rung: str, present: set[str]) -> None:
         assert (found is not None) == (kind in present), kind
         if found is not None:
             assert np.all(np.isfinite(found.standardised))
+
+
+def varied(period_error: float = 0.0, metallicity_error: float = 0.0) -> Result:
+    """A broken line, a group with its own zero point and scatter, errors of the inputs [dex]."""
+    choices, tables = builders.choices(), builders.tables()
+    choices["groups"] = {"far": {"hosts": ["Q07"]}}
+    choices["relation"] |= {
+        "break": 20.0,
+        "slope_metallicity": True,
+        "zero_points": ["far"],
+        "scatter": ["far"],
+    }
+    choices["anchors"].pop("parallaxes")
+    tables.pop("anchors.parallaxes")
+    found = build_ladder(choices, tables)
+    stars = found.cepheids
+    assert stars is not None
+    if period_error:
+        stars = replace(stars, log_period_error=np.full(len(stars), period_error))
+    if metallicity_error:
+        stars = replace(stars, metallicity_error=np.full(len(stars), metallicity_error))
+    found = replace(found, cepheids=stars)
+    numbers = {
+        **handmade.NUMBERS,
+        **{f"modulus[{host}]": value for host, value in handmade.MODULI.items()},
+        "slope_beyond": (-2.9, 0.1),
+        "slope_metallicity": (0.3, 0.1),
+        "zero_point_offset[far]": (0.05, 0.01),
+        "scatter[far]": (0.11, 0.01),
+        "metallicity_spread": (0.15, 0.02),
+    }
+    noise = np.random.default_rng(2).normal(size=100)
+    noise -= noise.mean()
+    draws = {name: mean + sd * noise for name, (mean, sd) in numbers.items()}
+    return Result(found.choices, draws, Diagnostics("direct", 1, {}), found)
+
+
+def test_every_term_of_the_relation_by_hand() -> None:
+    result = varied()
+    stars = residuals.cepheid_residuals(result)
+    assert stars is not None
+    table = builders.tables()["cepheids"].set_index("ID")
+    for place in np.flatnonzero(stars.host == result.ladder.hosts.index("Q07")):
+        row = table.loc[stars.name[place]]
+        x, metals = np.log10(row["P"] / 10.0), row["OH"] - 8.69
+        broken = np.log10(2.0)
+        line = -5.9 - 3.3 * min(x, broken) - 2.9 * max(x - broken, 0.0)
+        terms = -0.2 * metals + 0.3 * x * metals + 0.05
+        index = row["Hmag"] - 0.386 * (row["Vmag"] - row["Imag"])
+        assert stars.model[place] == pytest.approx(line, abs=1e-9)
+        assert stars.data[place] == pytest.approx(index - 31.0 - terms, abs=1e-9)
+        measured = 0.05**2 + 0.386**2 * 2 * 0.02**2
+        assert stars.sd[place] == pytest.approx(np.sqrt(measured + 0.11**2))
+    short, long = residuals.line_draws(result, [0.9, 1.7]).mean(axis=0)
+    assert short == pytest.approx(-5.9 + 0.33)
+    assert long == pytest.approx(-5.9 - 3.3 * np.log10(2.0) - 2.9 * (0.7 - np.log10(2.0)))
+
+
+def test_a_period_error_widens_by_the_local_slope() -> None:
+    without, found = (residuals.cepheid_residuals(varied(error)) for error in (0.0, 0.02))
+    assert without is not None
+    assert found is not None
+    assert found.residual == pytest.approx(without.residual)
+    table = builders.tables()["cepheids"].set_index("ID").loc[found.name]
+    slope = np.where(table["P"] > 20.0, -2.9, -3.3) + 0.3 * (table["OH"] - 8.69)
+    expected = without.sd**2 + (slope * 0.02) ** 2
+    assert found.sd**2 == pytest.approx(expected.to_numpy(), rel=1e-6)
+
+
+def test_metallicity_errors_pull_towards_the_host() -> None:
+    without = residuals.cepheid_residuals(varied())
+    found = residuals.cepheid_residuals(varied(metallicity_error=0.15))
+    assert without is not None
+    assert found is not None
+    table = builders.tables()["cepheids"].set_index("ID").loc[found.name]
+    slope = -0.2 + 0.3 * np.log10(table["P"] / 10.0)
+    off = table["OH"] - table.groupby("Galaxy")["OH"].transform("mean")
+    # Errors as large as the spread: half of every deviation is real.
+    expected = without.residual + (0.5 * slope * off).to_numpy()
+    assert found.residual == pytest.approx(expected, abs=1e-7)
+    added = 0.5 * slope**2 * 0.15**2
+    assert found.sd**2 == pytest.approx(without.sd**2 + added.to_numpy(), rel=1e-6)

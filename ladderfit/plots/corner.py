@@ -19,11 +19,28 @@ from ladderfit.samples import FloatArray
 
 _FILLS = (0.75, 0.35)  # strength of the colour, innermost region first
 _CELLS = 90
+_MOST = 10  # parameters that a page can hold
+_FIRST = (
+    "slope",
+    "zero_point",
+    "metallicity",
+    "scatter",
+    "parallax_offset",
+    "peak_magnitude",
+    "peak_scatter",
+    "hubble_constant",
+)
 
 
 def varying(result: Result) -> tuple[str, ...]:
     """The headline parameters that are not fixed."""
     return tuple(name for name in result.headline if np.ptp(result.draws[name]) > 0.0)
+
+
+def shown(result: Result) -> tuple[str, ...]:
+    """What a corner figure shows by default: all that vary, or the first in rank if too many."""
+    every = varying(result)
+    return every if len(every) <= _MOST else tuple(name for name in every if name in _FIRST)
 
 
 def limits(draws: FloatArray, floor: float) -> tuple[float, float]:
@@ -72,8 +89,7 @@ def marginal_panel(result: Result, name: str, axes: Axes, *, theme: Theme = LIGH
     axes.set_ylim(0.0, 1.08 * float(np.max(y)))
     axes.set_yticks([])
     axes.spines["left"].set_visible(False)
-    known = parameter(name)
-    axes.set_title(f"{label(name, unit=False)} [{known.unit}]\n{interval}", fontsize=7.5)
+    axes.set_title(f"{_words(name, ' ')}\n{interval}", fontsize=7.5)
     return figure_of(axes)
 
 
@@ -135,7 +151,7 @@ def corner_figure(
     ----------
     result : Result
     names : sequence of str, optional
-        Which parameters, in which order; those headline parameters that are not fixed by default.
+        Which parameters, in which order; those of `shown` by default.
     theme : Theme
 
     Returns
@@ -148,7 +164,7 @@ def corner_figure(
     KeyError
         If a name is not among the draws.
     """
-    chosen = varying(result) if names is None else tuple(names)
+    chosen = shown(result) if names is None else tuple(names)
     if not chosen:
         return None
     size = len(chosen)
@@ -180,13 +196,14 @@ def _tidy(axes: Axes, across: str, up: str, *, first: bool, last: bool) -> None:
     axes.tick_params(labelbottom=last, labelleft=first, labelsize=6.5)
     axes.tick_params(axis="x", rotation=45)
     if last:
-        axes.set_xlabel(_axis_words(across), fontsize=8)
+        axes.set_xlabel(_words(across), fontsize=8)
     if first:
-        axes.set_ylabel(_axis_words(up), fontsize=8)
+        axes.set_ylabel(_words(up), fontsize=8)
 
 
-def _axis_words(name: str) -> str:
-    return f"{label(name, unit=False)}\n[{parameter(name).unit}]"
+def _words(name: str, between: str = "\n") -> str:
+    unit = parameter(name).unit
+    return label(name, unit=False) + (f"{between}[{unit}]" if unit else "")
 
 
 def _legend(figure: Figure, theme: Theme, *, outside: bool) -> None:

@@ -8,7 +8,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from ladderfit.names import parameter
+from ladderfit.names import base_name, label, parameter
 from ladderfit.plots.theme import (
     CHANCES,
     LIGHT,
@@ -21,6 +21,7 @@ from ladderfit.plots.theme import (
     symmetric,
 )
 from ladderfit.residuals import (
+    LINE,
     HostResiduals,
     Residuals,
     at_mean,
@@ -128,10 +129,10 @@ def _draw_line(axes: Axes, result: Result, log_period: FloatArray, theme: Theme)
 
 def _numbers(axes: Axes, result: Result) -> None:
     lines = []
-    for name in ("slope", "zero_point", "metallicity", "scatter"):
-        if name in result.draws:
-            known, interval = parameter(name), Interval.of(result.draws[name])
-            lines.append(f"{known.symbol} = {interval} {known.unit}")
+    for name in result.headline:
+        if base_name(name) in (*LINE, "metallicity", "scatter"):
+            interval = Interval.of(result.draws[name])
+            lines.append(f"{label(name, unit=False)} = {interval} {parameter(name).unit}")
     axes.text(
         0.985,
         0.04,
@@ -194,7 +195,7 @@ def relation_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
         _draw_groups(axes, result, stars, stars.data, theme)
     _draw_parallax_stars(axes, result, theme)
     low, high = _reach(result)
-    _draw_line(axes, result, np.linspace(low, high, 60), theme)
+    _draw_line(axes, result, np.linspace(low, high, 200), theme)
     _period_axis(axes, low, high)
     brighter_up(axes)
     relation = result.choices.relation
