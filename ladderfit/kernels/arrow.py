@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
+from functools import cache
 
 import numpy as np
 import numpy.typing as npt
@@ -68,6 +69,13 @@ class Moments:
         )
 
 
+@cache
+def upper_triangle(width: int) -> tuple[IntArray, IntArray]:
+    """Row and column indices of the upper triangle of a square matrix, diagonal included."""
+    row, column = np.triu_indices(width)
+    return row, column
+
+
 def no_moments(batch: int, hosts: int, width: int) -> Moments:
     """Moments of no rows, for `width` coefficients."""
     return Moments(
@@ -119,7 +127,7 @@ class Rows:
             here = weight[:, start:stop]
             total.local[part, host] += here.sum(axis=1)
             total.cross[part, host] += here @ self.columns[start:stop]
-        upper = np.triu_indices(self.columns.shape[1])
+        upper = upper_triangle(self.columns.shape[1])
         sums = weight @ self.products
         square = np.empty((len(extra), *total.square.shape[1:]))
         square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = sums
@@ -151,7 +159,7 @@ def rows(
         for start, stop in zip(starts, stops, strict=True)
         if stop > start and host[start] >= 0
     )
-    upper = np.triu_indices(full.shape[1])
+    upper = upper_triangle(full.shape[1])
     products = full[:, upper[0]] * full[:, upper[1]]
     return Rows(full, variance[order].astype(float), hosts, slices, products)
 

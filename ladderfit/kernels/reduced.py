@@ -16,7 +16,7 @@ from dataclasses import dataclass, field
 import numpy as np
 import numpy.typing as npt
 
-from ladderfit.kernels.arrow import Moments, Rows, no_moments, solve
+from ladderfit.kernels.arrow import Moments, Rows, no_moments, solve, upper_triangle
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -83,7 +83,7 @@ class ReducedRows:
         """As `Rows.add_to`; `extra` has shape (b,)."""
         packed = self._sums(extra)
         hosts, width = len(self.rows.slices), self.rows.columns.shape[1]
-        upper = np.triu_indices(width)
+        upper = upper_triangle(width)
         after = 1 + len(upper[0])
         total.constant[:] += packed[:, 0]
         square = np.empty((len(extra), width, width))
@@ -154,7 +154,7 @@ def pack(rows: Rows, moments: Moments) -> FloatArray:
     """All sums of the hosts that occur, as one row per draw."""
     batch = len(moments.constant)
     hosts = [host for host, _, _ in rows.slices]
-    upper = np.triu_indices(moments.square.shape[-1])
+    upper = upper_triangle(moments.square.shape[-1])
     return np.concatenate(
         [
             moments.constant[:, None],
@@ -209,7 +209,7 @@ def _largest_error(rows: Rows, packed: FloatArray, exact: FloatArray) -> float:
 def _log_density(rows: Rows, packed: FloatArray) -> FloatArray:
     """Log density of the rows under unit priors, from packed sums."""
     width, hosts = rows.columns.shape[1], len(rows.slices)
-    upper = np.triu_indices(width)
+    upper = upper_triangle(width)
     after = 1 + len(upper[0])
     square = np.empty((len(packed), width, width))
     square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = packed[:, 1:after]

@@ -139,7 +139,9 @@ def draw_direct(
             break
         proposal = _adapted(proposal, z, weights, target.folded)
     pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
-    z, log_weight = _weigh(target, proposal, pool, rng)
+    if pool > _PILOT:
+        more, log_more = _weigh(target, proposal, pool - _PILOT, rng)
+        z, log_weight = np.concatenate([z, more]), np.concatenate([log_weight, log_more])
     tell("drawing", 1.0)
     return _resampled(z, log_weight, draws, rng, modes)
 
