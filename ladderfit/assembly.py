@@ -152,4 +152,10 @@ class Assembly:
 
 def _rows_of_parallaxes(section: Parallaxes) -> tuple[Any, ...]:
     """What decides which rows take part and what they hold."""
-    return (section.columns, section.periods, section.overtones, section.set_aside)
+    return (
+        section.columns,
+        section.periods,
+        section.overtones,
+        section.conversion,
+        section.set_aside,
+    )

@@ -30,6 +30,8 @@ class Kind:
 
 PERIOD = Kind("a period", "d", must_be_stated=True)
 LOG_PERIOD = Kind("log10 of a period in days", "dex")
+PERIOD_ERROR = Kind("an error of a period", "d", must_be_stated=True)
+LOG_PERIOD_ERROR = Kind("an error of log10 of a period", "dex")
 MAGNITUDE = Kind("a magnitude", "mag")
 METALLICITY = Kind("a metallicity", "dex")
 PARALLAX = Kind("a parallax", "mas", must_be_stated=True)
@@ -45,7 +47,11 @@ def conversion(unit: Any, kind: Kind) -> tuple[float, float] | None:
     if kind.unit == "mag":
         return _magnitudes(unit)
     if kind.unit == "dex":
-        return _dex(unit, logarithm_of=u.d if kind is LOG_PERIOD else None)
+        of_period = kind is LOG_PERIOD or kind is LOG_PERIOD_ERROR
+        factor_shift = _dex(unit, logarithm_of=u.d if of_period else None)
+        if kind is LOG_PERIOD_ERROR and factor_shift is not None:
+            return (factor_shift[0], 0.0)  # another unit shifts the logarithm, not its error
+        return factor_shift
     if isinstance(unit, u.UnitBase) and not isinstance(unit, u.UnrecognizedUnit):
         target = u.Unit(kind.unit) if kind.unit else u.dimensionless_unscaled
         if unit.is_equivalent(target):

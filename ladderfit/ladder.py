@@ -10,6 +10,7 @@ from typing import Any
 from ladderfit import schema
 from ladderfit.assembly import IN_MEMORY, SECTIONS, Assembly, Parts, Source
 from ladderfit.choices import Choices
+from ladderfit.consistency import star_notes, star_problems
 from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.ladder_file import as_written, read_choices
 from ladderfit.samples import FlowSample, Kept, PeakSample, StarSample, VelocitySample
@@ -190,6 +191,8 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
     hosts = peaks.hosts if peaks else cepheids.hosts if cepheids else ()
     seen = {*(cepheids.seen if cepheids else ()), *(peaks.seen if peaks else ())}
     geometric, notes = _anchors_in_use(choices, hosts, seen)
+    samples = [each.sample for each in (cepheids, parallaxes) if each is not None]
+    raise_if(list(star_problems(choices, samples, hosts, seen)))
     selections = dict(zip(SECTIONS, (cepheids, parallaxes, peaks, expansion), strict=True))
     return Ladder(
         choices=choices,
@@ -202,7 +205,14 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
         velocities=expansion.velocities if expansion else None,
         geometric=geometric,
         kept={key: selection.kept for key, selection in selections.items() if selection},
-        notes=(*_lost_hosts(cepheids, peaks), *(peaks.notes if peaks else ()), *notes),
+        notes=(
+            *(f"Cepheids: {note}" for note in (cepheids.notes if cepheids else ())),
+            *(f"parallax stars: {note}" for note in (parallaxes.notes if parallaxes else ())),
+            *_lost_hosts(cepheids, peaks),
+            *(peaks.notes if peaks else ()),
+            *notes,
+            *star_notes(choices, samples),
+        ),
         sources=assembly.sources,
         _parts=Parts(before.base, assembly.tables, assembly.made),
     )

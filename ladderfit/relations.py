@@ -118,8 +118,9 @@ def _group_slopes(choices: Choices, stars: StarInputs) -> Iterator[NamedColumn]:
 
 
 def _overtones(choices: Choices, stars: StarInputs) -> Iterator[NamedColumn]:
-    sections = (choices.cepheids, choices.anchors.parallaxes)
-    if any(section is not None and section.overtones == "offset" for section in sections):
+    cepheids, parallaxes = choices.cepheids, choices.anchors.parallaxes
+    in_use = (cepheids, parallaxes if parallaxes is not None and parallaxes.use else None)
+    if any(section is not None and section.overtones == "offset" for section in in_use):
         yield "overtone_offset", stars.overtone.astype(float)
 
 

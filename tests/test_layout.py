@@ -21,7 +21,7 @@ ORDER = """
     physics.expansion physics.overtones physics
     kinds tables table_memory table_files rows star_values select_stars select_supernovae
     covariances
-    relations ladder_file assembly ladder
+    relations ladder_file assembly consistency ladder
     kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
     posterior.split

@@ -6,15 +6,8 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Literal
 
-from ladderfit.choices.columns import (
-    Columns,
-    Range,
-    SetAside,
-    column_faults,
-    period_faults,
-    range_faults,
-)
-from ladderfit.choices.stars import Magnitude, Overtones, PeriodRatio
+from ladderfit.choices.columns import Columns, Range, SetAside
+from ladderfit.choices.stars import Magnitude, Overtones, PeriodRatio, star_faults
 from ladderfit.errors import Problem, nearest
 from ladderfit.schema import choice
 
@@ -48,7 +41,7 @@ class Parallaxes:
 
     table: str = choice("the table of parallax stars, a path relative to this file")
     columns: Columns = choice(
-        "column of each role: star, period, metallicity, mode, parallax, parallax_error"
+        "column of each role: parallax, parallax_error, and those of other Cepheids but host"
     )
     magnitude: Magnitude | None = choice("its own bands and columns", default=None)
     corrected: bool = choice("whether the zero-point recipe is already applied", default=True)
@@ -66,13 +59,8 @@ class Parallaxes:
 
     def check(self) -> Iterator[Problem]:
         """Roles and ranges."""
-        yield from column_faults(
-            self.columns,
-            ("parallax", "parallax_error"),
-            ("star", "period", "log_period", "metallicity", "mode"),
-        )
-        yield from period_faults(self.columns)
-        yield from range_faults("periods", self.periods, " in days", above_zero=True)
+        required = ("parallax", "parallax_error")
+        yield from star_faults(self.columns, required, self.periods, self.overtones)
         if not self.corrected:
             yield Problem(
                 found="false",

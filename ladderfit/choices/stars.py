@@ -20,6 +20,17 @@ from ladderfit.schema import choice
 PeriodRatio = Literal["Feast & Catchpole 1997", "Alcock et al. 1995"]
 Overtones = Literal["drop", "offset", "convert"]
 
+STAR_ROLES = (
+    "star",
+    "period",
+    "log_period",
+    "period_error",
+    "metallicity",
+    "metallicity_error",
+    "mode",
+    "system",
+)
+
 
 @dataclass(frozen=True)
 class Wesenheit:
@@ -121,7 +132,8 @@ class Cepheids:
 
     table: str = choice("the table of Cepheids, a path relative to this file")
     columns: Columns = choice(
-        "column of each role: star (rows are numbered without), host, period, metallicity, mode"
+        "column of each role: star (rows are numbered without), host, period or log_period, "
+        "period_error, metallicity, metallicity_error, mode, system"
     )
     magnitude: Magnitude = choice("which magnitude the relation is for")
     periods: Range = choice("shortest and longest period [d]", default=(0.0, float("inf")))
@@ -136,8 +148,27 @@ class Cepheids:
 
     def check(self) -> Iterator[Problem]:
         """Roles and ranges."""
-        yield from column_faults(
-            self.columns, ("host",), ("star", "period", "log_period", "metallicity", "mode")
+        yield from star_faults(self.columns, ("host",), self.periods, self.overtones)
+
+
+def star_faults(
+    columns: Columns, required: tuple[str, ...], periods: Range, overtones: Overtones
+) -> Iterator[Problem]:
+    """Problems that any section with a table of Cepheids may have."""
+    yield from column_faults(columns, required, STAR_ROLES)
+    yield from period_faults(columns)
+    yield from range_faults("periods", periods, " in days", above_zero=True)
+    if "metallicity_error" in columns and "metallicity" not in columns:
+        yield Problem(
+            found="a column of metallicity errors, but none of metallicities",
+            expected="both or neither",
+            remedy='add metallicity = "..." to columns, or remove metallicity_error',
+            key="columns",
         )
-        yield from period_faults(self.columns)
-        yield from range_faults("periods", self.periods, " in days", above_zero=True)
+    if overtones != "drop" and "mode" not in columns:
+        yield Problem(
+            found=f"{overtones!r}, but no column that tells overtone pulsators",
+            expected="columns.mode",
+            remedy='name the column, or set overtones = "drop"',
+            key="overtones",
+        )
