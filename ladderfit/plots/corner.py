@@ -10,9 +10,9 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Patch
 from matplotlib.ticker import MaxNLocator
 
-from ladderfit.names import label, parameter
+from ladderfit.names import parameter
 from ladderfit.plots.density import Density
-from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure
+from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, symbol
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval
 from ladderfit.samples import FloatArray
@@ -22,6 +22,8 @@ _CELLS = 90
 _MOST = 10  # parameters that a page can hold
 _FIRST = (
     "slope",
+    "slope_beyond",
+    "curvature",
     "zero_point",
     "metallicity",
     "scatter",
@@ -203,7 +205,7 @@ def _tidy(axes: Axes, across: str, up: str, *, first: bool, last: bool) -> None:
 
 def _words(name: str, between: str = "\n") -> str:
     unit = parameter(name).unit
-    return label(name, unit=False) + (f"{between}[{unit}]" if unit else "")
+    return symbol(name) + (f"{between}[{unit}]" if unit else "")
 
 
 def _legend(figure: Figure, theme: Theme, *, outside: bool) -> None:

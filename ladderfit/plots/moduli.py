@@ -10,7 +10,7 @@ from matplotlib.figure import Figure
 from matplotlib.transforms import blended_transform_factory
 
 from ladderfit.names import with_group
-from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure
+from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, plain
 from ladderfit.residuals import peak_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
@@ -89,7 +89,7 @@ def modulus_panel(entries: list[HostModulus], axes: Axes, *, theme: Theme = LIGH
     beside = blended_transform_factory(axes.transAxes, axes.transData)
     for row, entry in enumerate(entries):
         axes.text(1.03, row, str(entry.interval), transform=beside, va="center", fontsize=7.5)
-    axes.set_yticks(rows, [entry.host for entry in entries])
+    axes.set_yticks(rows, [plain(entry.host) for entry in entries])
     axes.tick_params(axis="y", length=0)
     axes.set_ylim(len(entries) - 0.4, -0.6)
     axes.set_xlabel("Distance modulus [mag]")

@@ -8,7 +8,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from ladderfit.names import base_name, label, parameter
+from ladderfit.names import base_name, parameter
 from ladderfit.plots.theme import (
     CHANCES,
     LIGHT,
@@ -17,7 +17,9 @@ from ladderfit.plots.theme import (
     brighter_up,
     figure_of,
     new_figure,
+    plain,
     plain_log_axis,
+    symbol,
     symmetric,
 )
 from ladderfit.residuals import (
@@ -91,7 +93,7 @@ def _draw_groups(
             marker=accent.marker,
             markersize=2.8,
             markeredgewidth=0.0,
-            label=f"{group.words} ({int(np.sum(chosen)):,} stars)",
+            label=f"{plain(group.words)} ({int(np.sum(chosen)):,} stars)",
             rasterized=len(stars) > _MANY_STARS,
             zorder=_OVER if few else _UNDER,
         )
@@ -132,7 +134,7 @@ def _numbers(axes: Axes, result: Result) -> None:
     for name in result.headline:
         if base_name(name) in (*LINE, "metallicity", "scatter"):
             interval = Interval.of(result.draws[name])
-            lines.append(f"{label(name, unit=False)} = {interval} {parameter(name).unit}")
+            lines.append(f"{symbol(name)} = {interval} {parameter(name).unit}")
     axes.text(
         0.985,
         0.04,
@@ -201,7 +203,7 @@ def relation_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
     relation = result.choices.relation
     at = ""
     if relation.metallicity != "none":
-        at = f"\nat {relation.metallicity.scale} = {relation.metallicity.reference:g}"
+        at = f"\nat {plain(relation.metallicity.scale)} = {relation.metallicity.reference:g}"
     axes.set_ylabel(f"Absolute magnitude [mag]{at}")
     axes.legend(loc="upper left", markerscale=1.5)
     _numbers(axes, result)

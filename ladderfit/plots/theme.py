@@ -20,6 +20,7 @@ from matplotlib.colors import to_hex, to_rgb
 from matplotlib.figure import Figure
 from matplotlib.ticker import FixedLocator, FuncFormatter, NullFormatter
 
+from ladderfit.names import group_of, parameter
 from ladderfit.samples import FloatArray
 
 WIDTH = 7.0  # inches, two columns of a journal
@@ -135,6 +136,17 @@ DARK = Theme(
     grid="#2b323c",
     accents=_accents(("#4f9ddb", "#f4a259", "#c65f9b", "#d9ecc8")),
 )
+
+
+def plain(text: str) -> str:
+    """Text from a table or a ladder file, none of which is read as mathematics."""
+    return text.replace("$", r"\$")
+
+
+def symbol(name: str) -> str:
+    """A parameter's symbol and, after it, its group or host."""
+    group = group_of(name)
+    return parameter(name).symbol + ("" if group is None else f" {plain(group)}")
 
 
 def new_figure(height: float, width: float = WIDTH) -> Figure:
