@@ -229,10 +229,10 @@ def solve(
     def part(start: int, stop: int) -> None:
         chosen = slice(start, stop)
         _eliminate(
-            moments.local[chosen],
-            moments.cross[chosen],
-            moments.square[chosen],
-            moments.constant[chosen],
+            np.ascontiguousarray(moments.local[chosen]),
+            np.ascontiguousarray(moments.cross[chosen]),
+            np.ascontiguousarray(moments.square[chosen]),
+            np.ascontiguousarray(moments.constant[chosen]),
             known,
             values[chosen],
             free,

@@ -10,20 +10,45 @@ from __future__ import annotations
 import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from functools import cache
+from pathlib import Path
 from typing import Any, TypeVar, cast
 
 import numba
 
 F = TypeVar("F", bound=Callable[..., Any])
 
+WORDS_WHEN_COLD = "compiling the kernels (once after installing; takes 5 to 15 s)"
+
 _WORTH_SHARING = 20_000  # elements of work below which a second thread does not pay
-_POOL = ThreadPoolExecutor(2, thread_name_prefix="ladderfit")
+_KERNELS: list[Any] = []
 
 
 def compiled(function: F) -> F:
     """Compile with numba, cached between processes, without the interpreter's lock."""
-    wrap = numba.njit(cache=True, nogil=True, error_model="numpy")
-    return cast(F, wrap(function))
+    kernel = numba.njit(cache=True, nogil=True, error_model="numpy")(function)
+    _KERNELS.append(kernel)
+    return cast(F, kernel)
+
+
+def is_cold() -> bool:
+    """Whether some kernel has neither been compiled in this process nor kept by an earlier one."""
+    return any(not kernel.signatures and not _kept(kernel) for kernel in _KERNELS)
+
+
+def _kept(kernel: Any) -> bool:
+    place = kernel.stats.cache_path
+    if place is None:
+        return False
+    name = f"{kernel.py_func.__module__.rpartition('.')[2]}.{kernel.py_func.__qualname__}"
+    return any(Path(place).glob(f"{name}-*.nbi"))
+
+
+@cache
+def _pool(process: int) -> ThreadPoolExecutor:
+    """One pool of threads per process: a forked child inherits no threads."""
+    del process
+    return ThreadPoolExecutor(1, thread_name_prefix="ladderfit")
 
 
 def threads() -> int:
@@ -38,10 +63,10 @@ def threads() -> int:
 
 def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None:
     """Call ``part(start, stop)`` over a range, in two threads where that pays."""
-    if threads() == 1 or work < _WORTH_SHARING or size < 2:
+    if work < _WORTH_SHARING or size < 2 or threads() == 1:
         part(0, size)
         return
     middle = size // 2
-    other = _POOL.submit(part, middle, size)
+    other = _pool(os.getpid()).submit(part, middle, size)
     part(0, middle)
     other.result()

@@ -224,8 +224,8 @@ def log_parallax_integrals(
         threads.
     """
     shape = distance_like.shape
-    inputs = [
-        np.broadcast_to(np.asarray(values, float), shape)
+    inputs = [  # written out, so that one compiled version serves all
+        np.array(np.broadcast_to(values, shape), dtype=float, order="C")
         for values in (distance_like, variance, parallax, error)
     ]
     result = np.empty(shape)

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Mapping
 
 import numpy as np
 import numpy.typing as npt
 
 from ladderfit.diagnostics import TRUSTED_K
+from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
 from ladderfit.ladder import Ladder
 from ladderfit.names import base_name, parameter
 from ladderfit.posterior.determined import check_determined
@@ -62,11 +64,21 @@ def drawn(
     joint: Posterior, aim: Target, seed: int, draws: int, progress: Progress | None = None
 ) -> tuple[Result, DirectDraws]:
     """Draw an assembled posterior; the draws of phi come along."""
+    if is_cold():
+        announce_compilation(progress)
     rng = np.random.default_rng(seed)
     found = draw_direct(aim, draws, rng, progress)
     values = ordered(joint.draw(found.z, rng))
     diagnostics = _diagnostics(joint, found, values, seed)
     return Result(joint.ladder.choices, values, diagnostics, joint.ladder), found
+
+
+def announce_compilation(progress: Progress | None) -> None:
+    """Say why the first evaluation takes long."""
+    if progress is not None:
+        progress(WORDS_WHEN_COLD, 0.0)
+    else:
+        print(f"ladderfit: {WORDS_WHEN_COLD}", file=sys.stderr)
 
 
 def target(joint: Posterior) -> Target:
