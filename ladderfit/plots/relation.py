@@ -117,6 +117,8 @@ def _draw_line(axes: Axes, result: Result, log_period: FloatArray, theme: Theme)
     axes.plot(period, middle, color=theme.ink, linewidth=1.0, zorder=2.7)
     scatter = at_mean(result, "scatter")
     if scatter > 0.0:
+        grouped = any(base_name(name) == "scatter" for name in result.draws if name != "scatter")
+        whose = "stars in no group" if grouped else "stars"
         for sign in (-1.0, 1.0):
             axes.plot(
                 period,
@@ -125,14 +127,14 @@ def _draw_line(axes: Axes, result: Result, log_period: FloatArray, theme: Theme)
                 linewidth=0.8,
                 linestyle=(0, (2, 2)),
                 zorder=2.6,
-                label="intrinsic scatter (68 % of stars)" if sign > 0 else None,
+                label=f"intrinsic scatter (68 % of {whose})" if sign > 0 else None,
             )
 
 
 def _numbers(axes: Axes, result: Result) -> None:
     lines = []
     for name in result.headline:
-        if base_name(name) in (*LINE, "metallicity", "scatter"):
+        if base_name(name) in (*LINE, "metallicity", "overtone_offset", "scatter"):
             interval = Interval.of(result.draws[name])
             lines.append(f"{symbol(name)} = {interval} {parameter(name).unit}")
     axes.text(
@@ -175,8 +177,9 @@ def _draw_parallax_stars(axes: Axes, result: Result, theme: Theme) -> None:
 def relation_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     """Absolute magnitudes against periods, the line and its band.
 
-    Magnitudes are reduced to the reference metallicity, and each galaxy's by the
-    posterior mean of its modulus.  Parallax stars are shown where the parallax is
+    Magnitudes are reduced to the line by all other terms (the reference metallicity,
+    the fundamental mode, no offset of a group), and each galaxy's by the posterior
+    mean of its modulus.  Parallax stars are shown where the parallax is
     over 5 of its errors.
 
     Parameters
@@ -204,6 +207,8 @@ def relation_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
     at = ""
     if relation.metallicity != "none":
         at = f"\nat {plain(relation.metallicity.scale)} = {relation.metallicity.reference:g}"
+    if "overtone_offset" in result.draws:
+        at += f"{',' if at else ''}\nas of the fundamental mode"
     axes.set_ylabel(f"Absolute magnitude [mag]{at}")
     axes.legend(loc="upper left", markerscale=1.5)
     _numbers(axes, result)
