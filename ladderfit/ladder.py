@@ -86,6 +86,24 @@ class Ladder:
         """
         return _assemble(self.choices.change(changes), self.path, self._parts)
 
+    @property
+    def base(self) -> Path:
+        """The folder that paths of tables are relative to."""
+        return self._parts.base
+
+    @property
+    def in_memory(self) -> bool:
+        """Whether some table has no file."""
+        return any(section for section, _ in self._parts.tables)
+
+    def table(self, section: str) -> DataTable | None:
+        """The table of a section as it was read, all rows; None where there is none."""
+        source = self.sources.get(section)
+        if source is None:
+            return None
+        tables = self._parts.tables
+        return tables.get((section, source.path)) or tables.get(("", source.path))
+
     def difference(self, other: Ladder) -> str:
         """How the choices differ, one line per key: ``KEY: other's -> this one's``.
 
