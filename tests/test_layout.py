@@ -22,7 +22,8 @@ ORDER = """
     kinds tables table_memory table_files rows star_values select_stars select_supernovae
     covariances
     relations ladder_file assembly consistency ladder
-    kernels.compiling kernels.quadrature kernels.arrow kernels.reduced kernels
+    kernels.compiling kernels.quadrature kernels.sightlines kernels.detection kernels.arrow
+    kernels.reduced kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
     posterior.split
     posterior.supernovae posterior.joint posterior.determined posterior
@@ -31,6 +32,8 @@ ORDER = """
     sampling.ensemble sampling.chain_layout sampling.chain_file sampling.run sampling.warm
     sampling
     classical residuals influence anchors sweep alternatives review distances compare
+    draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
+    draft.make draft
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.restated
     mock.redraw mock.folder mock mock.__main__
     coverage
