@@ -34,10 +34,20 @@ class Drawer(Protocol):
 
 @dataclass(frozen=True)
 class Trouble:
-    """Why the posterior on show is not that of the choices: the keys changed, and words."""
+    """Why the posterior on show is not that of the choices asked for.
+
+    Attributes
+    ----------
+    keys : tuple of str
+        What was to be changed.
+    words : str
+    made : bool
+        Whether the change stands; one that could not be made at all does not.
+    """
 
     keys: tuple[str, ...]
     words: str
+    made: bool
 
 
 class Session:
@@ -81,8 +91,8 @@ class Session:
 
     @property
     def can_undo(self) -> bool:
-        """Whether there is a settled change to take back."""
-        return bool(self._undo)
+        """Whether there is a change to take back."""
+        return bool(self._undo) or (self.trouble is not None and not self.trouble.made)
 
     @property
     def can_redo(self) -> bool:
@@ -110,7 +120,10 @@ class Session:
         return self._try(changes, settled=True)
 
     def undo(self) -> bool:
-        """Take the last settled change back."""
+        """Take the last settled change back, or what was asked for and not made."""
+        if self.trouble is not None and not self.trouble.made:
+            self.ladder = self._settled
+            return self._draw((), settled=True)
         return self._step(self._undo, self._redo)
 
     def redo(self) -> bool:
@@ -134,7 +147,7 @@ class Session:
         try:
             self.ladder = self._settled.change(changes)
         except InputError as error:
-            self.trouble = Trouble(keys, in_words(error))
+            self.trouble = Trouble(keys, in_words(error), made=False)
             return False
         if settled and self.ladder.choices != self._settled.choices:
             self._undo.append(self._settled)
@@ -148,7 +161,7 @@ class Session:
         try:
             result = self._drawer.draw(self.ladder, draws=None if settled else TRIAL_DRAWS)
         except LadderfitError as error:
-            self.trouble = Trouble(keys, in_words(error))
+            self.trouble = Trouble(keys, in_words(error), made=settled)
             return False
         self.result, self.trouble = result, None
         if settled:

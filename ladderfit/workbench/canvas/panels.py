@@ -1,0 +1,237 @@
+"""The other views: corner, host moduli, Hubble diagram, residuals against a column."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
+
+from ladderfit.names import parameter
+from ladderfit.plots.corner import joint_panel, marginal_panel, varying
+from ladderfit.plots.hubble import flow_panel, peak_panel, velocity_panel
+from ladderfit.plots.moduli import difference_panel, host_moduli, modulus_panel
+from ladderfit.plots.theme import Theme, brighter_up, plain, symbol, symmetric
+from ladderfit.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
+from ladderfit.result import Result
+from ladderfit.workbench.columns import ColumnResiduals, against_column
+from ladderfit.workbench.points import Points
+
+CORNER = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
+_MOST_ROWS = 24
+_OTHERS = ("scatter", "parallax_offset", "velocity_constant", "velocity_scatter", "peak_scatter")
+_LEAST = 3
+
+
+def corner_names(result: Result) -> tuple[str, ...]:
+    """What the small corner shows: the headline numbers, filled up to three."""
+    known = varying(result)
+    chosen = [name for name in CORNER if name in known]
+    chosen += [name for name in _OTHERS if name in known][: max(_LEAST - len(chosen), 0)]
+    return tuple(chosen)
+
+
+def corner(figure: Figure, result: Result, theme: Theme) -> list[Points]:
+    """Pairs of the headline parameters."""
+    names = corner_names(result)
+    size = len(names)
+    if not size:
+        return []
+    grid = figure.subplots(size, size, squeeze=False)
+    figure.subplots_adjust(left=0.10, right=0.99, top=0.92, bottom=0.15, hspace=0.08, wspace=0.08)
+    for row, up in enumerate(names):
+        for column, across in enumerate(names):
+            axes = grid[row, column]
+            if column > row:
+                axes.remove()
+                continue
+            if column == row:
+                marginal_panel(result, up, axes, theme=theme)
+                axes.set_title("")
+            else:
+                joint_panel(result, across, up, axes, theme=theme)
+            _tidy(axes, across, up, first=column == 0 and row > 0, last=row == size - 1)
+    for row, up in enumerate(names[1:], 1):
+        grid[row, 0].yaxis.set_label_coords(-0.36, 0.5)
+        grid[row, 0].set_ylabel(symbol(up), fontsize=8.5)
+    figure.text(
+        0.985,
+        0.95,
+        "filled: smallest regions with 68 % and 95 % of the probability",
+        ha="right",
+        va="top",
+        fontsize=8,
+    )
+    return []
+
+
+def _tidy(axes: Axes, across: str, up: str, *, first: bool, last: bool) -> None:
+    axes.grid(visible=False)
+    axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
+    if axes.get_yticks().size:
+        axes.yaxis.set_major_locator(MaxNLocator(2, prune="both"))
+    axes.tick_params(labelbottom=last, labelleft=first, labelsize=7)
+    if last:
+        unit = parameter(across).unit
+        axes.set_xlabel(symbol(across) + (f" [{unit}]" if unit else ""), fontsize=8.5, labelpad=2)
+
+
+def moduli(figure: Figure, result: Result, theme: Theme) -> list[Points]:
+    """Every host's modulus, and what its own evidence says."""
+    entries = host_moduli(result)
+    if not entries:
+        return []
+    left, right = figure.subplots(1, 2, width_ratios=[1.0, 1.25])
+    figure.subplots_adjust(left=0.105, right=0.985, top=0.93, bottom=0.125, wspace=0.42)
+    modulus_panel(entries, left, theme=theme)
+    difference_panel(entries, right, theme=theme)
+    few = len(entries) <= _MOST_ROWS
+    for text in left.texts:
+        text.set_fontsize(6.8)
+        text.set_visible(few)
+    if not few:
+        step = -(-len(entries) // _MOST_ROWS)
+        rows = range(0, len(entries), step)
+        left.set_yticks(list(rows), [plain(entries[row].host) for row in rows])
+    left.tick_params(axis="y", labelsize=6.8)
+    handles, labels = right.get_legend_handles_labels()
+    figure.legend(
+        handles, labels, loc="upper right", ncols=3, borderaxespad=0.2, bbox_to_anchor=(0.99, 1.0)
+    )
+    return []
+
+
+def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
+    """Supernovae in hosts and in the expansion, or velocities against distances."""
+    velocities = velocity_residuals(result)
+    if velocities is not None:
+        axes = figure.subplots()
+        figure.subplots_adjust(left=0.105, right=0.985, top=0.93, bottom=0.135)
+        velocity_panel(result, axes, theme=theme)
+        axes.set_xlabel("Distance [Mpc]", labelpad=1)
+        return [_points(axes, velocities, "expansion", "km/s")]
+    columns: list[tuple[Residuals, str, str, Any]] = []
+    peaks, flow = peak_residuals(result), flow_residuals(result)
+    if peaks is not None:
+        columns.append((peaks, "supernovae", "Modulus of the host [mag]", peak_panel))
+    if flow is not None:
+        columns.append((flow, "expansion", "Redshift", flow_panel))
+    if not columns:
+        return []
+    both = len(columns) == 2
+    grid = figure.subplots(
+        2,
+        len(columns),
+        sharex="col",
+        height_ratios=[2.2, 1],
+        width_ratios=[1, 1.5] if both else [1],
+        squeeze=False,
+    )
+    figure.subplots_adjust(left=0.095, right=0.985, top=0.93, bottom=0.135, hspace=0.07, wspace=0.16)
+    found = []
+    for place, (data, section, words, panel) in enumerate(columns):
+        top, bottom = grid[0, place], grid[1, place]
+        panel(result, top, theme=theme)
+        accent = theme.accent(2 if section == "supernovae" else 0)
+        bottom.axhline(0.0, color=theme.ink, linewidth=0.8)
+        bottom.errorbar(
+            data.x,
+            data.residual,
+            yerr=data.sd,
+            linestyle="none",
+            marker=accent.marker,
+            markersize=2.6,
+            elinewidth=0.7,
+            color=accent.colour,
+            ecolor=theme.tint(accent.colour, 0.45),
+        )
+        symmetric(bottom, np.abs(data.residual) + data.sd, data.sd)
+        brighter_up(bottom)
+        bottom.set_xlabel(words, labelpad=1)
+        top.set_ylabel("")
+        found.append(_points(top, data, section, "mag", data.data))
+        found.append(_points(bottom, data, section, "mag", data.residual))
+    grid[0, 0].set_ylabel("Peak magnitude [mag]")
+    grid[1, 0].set_ylabel("Residual [mag]")
+    figure.align_ylabels(list(grid[:, 0]))
+    return found
+
+
+def _points(
+    axes: Axes, data: Residuals, section: str, unit: str, y: Any = None
+) -> Points:
+    values = data.data if y is None else y
+    nobody = [""] * len(data)
+    return Points(
+        axes, data.x, values, data.name, nobody, section, data.residual, data.sd, unit=unit
+    )
+
+
+def column(figure: Figure, result: Result, theme: Theme, rung: str, name: str) -> list[Points]:
+    """Residuals against a column of the table."""
+    found = against_column(result, rung, name)
+    axes = figure.subplots()
+    figure.subplots_adjust(left=0.105, right=0.985, top=0.955, bottom=0.135)
+    if found is None or not len(found.x):
+        axes.set_axis_off()
+        axes.text(0.5, 0.5, "no such numbers here", ha="center", transform=axes.transAxes)
+        return []
+    return [_column_points(axes, found, theme)]
+
+
+def _column_points(axes: Axes, found: ColumnResiduals, theme: Theme) -> Points:
+    data, accent = found.residuals, theme.accent(0)
+    few = len(data) <= 150
+    axes.axhline(0.0, color=theme.ink, linewidth=0.8)
+    axes.errorbar(
+        found.x,
+        data.residual,
+        yerr=data.sd if few else None,
+        linestyle="none",
+        marker=accent.marker,
+        markersize=3.4 if few else 2.6,
+        markeredgewidth=0.0,
+        elinewidth=0.7,
+        color=accent.colour,
+    )
+    x, mean, error = _binned(found)
+    axes.errorbar(
+        x,
+        mean,
+        yerr=error,
+        linestyle="none",
+        marker="o",
+        markersize=5.0,
+        markerfacecolor=theme.paper,
+        color=theme.ink,
+        zorder=3.4,
+        label="weighted means in bins of equal numbers",
+    )
+    symmetric(axes, np.abs(data.residual) + (data.sd if few else 0.0), data.sd)
+    if found.data_unit == "mag":
+        brighter_up(axes)
+    axes.set_xlabel(plain(found.column) + (f" [{plain(found.unit)}]" if found.unit else ""), labelpad=1)
+    axes.set_ylabel(f"Residual [{found.data_unit}]")
+    if len(x):
+        axes.legend(loc="upper left", bbox_to_anchor=(0.0, 1.045), borderaxespad=0.0)
+    nobody = [""] * len(data)
+    return Points(
+        axes, found.x, data.residual, data.name, nobody, found.section, data.residual, data.sd,
+        unit=found.data_unit,
+    )  # fmt: skip
+
+
+def _binned(found: ColumnResiduals) -> tuple[Any, Any, Any]:
+    data = found.residuals
+    if len(data) < 20:
+        return [], [], []
+    parts = np.array_split(np.argsort(found.x, kind="stable"), int(np.clip(len(data) // 25, 4, 10)))
+    weights = [data.sd[part] ** -2 for part in parts]
+    mean = [np.average(data.residual[p], weights=w) for p, w in zip(parts, weights, strict=True)]
+    return (
+        [float(np.mean(found.x[part])) for part in parts],
+        mean,
+        [float(np.sum(weight)) ** -0.5 for weight in weights],
+    )

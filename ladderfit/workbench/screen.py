@@ -1,0 +1,360 @@
+"""The workbench: the ladder on top, its choices left, its numbers and one view right."""
+
+from __future__ import annotations
+
+import html
+import threading
+from collections.abc import Callable, Mapping
+from functools import wraps
+from pathlib import Path
+from typing import Any, Concatenate, ParamSpec
+
+import ipywidgets as widgets
+
+from ladderfit.errors import LadderfitError
+from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
+from ladderfit.ladder import Ladder
+from ladderfit.residuals import HostResiduals
+from ladderfit.workbench.aside import aside_residuals
+from ladderfit.workbench.axis import LadderAxis
+from ladderfit.workbench.canvas import Picture
+from ladderfit.workbench.choices_panel import ChoicesPanel
+from ladderfit.workbench.controls import Changes, Control
+from ladderfit.workbench.points import Points
+from ladderfit.workbench.rungs import everything, rungs
+from ladderfit.workbench.star_line import StarLine
+from ladderfit.workbench.state import Drawer, Session, in_words, save_ladder
+from ladderfit.workbench.tables import all_numbers, strip, view_table
+from ladderfit.workbench.view_bar import ViewBar
+from ladderfit.workbench.why import prior_driven, trust, why
+
+P = ParamSpec("P")
+
+
+def _guarded(
+    method: Callable[Concatenate[Workbench, P], None],
+) -> Callable[Concatenate[Workbench, P], None]:
+    """One callback at a time; an error is shown at the foot instead of vanishing."""
+
+    @wraps(method)
+    def guarded(self: Workbench, *args: P.args, **kwargs: P.kwargs) -> None:
+        with self._lock:
+            try:
+                method(self, *args, **kwargs)
+            except LadderfitError as error:
+                self._say(in_words(error), good=False)
+            except Exception as error:  # would be lost in a widget's callback
+                self._say(f"This went wrong inside ladderfit: {error!r}", good=False)
+
+    return guarded
+
+
+class Workbench:
+    """A live ladder in JupyterLab, shown by evaluating it.
+
+    Parameters
+    ----------
+    ladder : Ladder
+        Where to start.
+    drawer : Drawer, optional
+        What draws posteriors; `WarmDrawer` by default.
+
+    Attributes
+    ----------
+    session : Session
+        Choices, posterior and pin, for use in Python.
+    widget : Widget
+        What is shown.
+    """
+
+    def __init__(self, ladder: Ladder, drawer: Drawer | None = None) -> None:
+        self._lock = threading.RLock()
+        self.session = Session(ladder, drawer)
+        self.published: dict[str, float] = {}
+        self._every = everything(ladder)
+        self._aside: tuple[object, HostResiduals | None] | None = None
+        self.axis = LadderAxis()
+        self.panel = ChoicesPanel(ladder, self._every, self._asked)
+        self.picture = Picture(self._pointed)
+        self.bar = ViewBar(ladder, self._view, self._save_view)
+        self.stars = StarLine(self._change)
+        self.numbers = widgets.HTML(layout=widgets.Layout(width="670px", height="80px", margin="0"))
+        self.why = _line("670px", "lf-why")
+        self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
+        self._scroll = widgets.VBox(
+            [self.table], layout=widgets.Layout(width="664px", height="336px", display="none")
+        )
+        self._scroll.add_class("lf-scroll")
+        self._frame = widgets.Box(
+            [self.picture.canvas, self._scroll],
+            layout=widgets.Layout(width="668px", height="340px", flex="0 0 auto", overflow="hidden"),
+        )
+        self.foot = _Foot(self)
+        self.widget = self._put_together()
+        if is_cold():
+            print(f"{WORDS_WHEN_COLD[0].upper()}{WORDS_WHEN_COLD[1:]} ...")
+        self.session.start()
+        self._open(self.panel.rungs[0 if "cepheids" not in self.panel.rungs else self._first()])
+        self.axis.observe(self._opened, "rung")
+        self.axis.observe(self._recoloured, ["dark", "rgb"])
+        self._after(None, settled=True, said=False)
+
+    @property
+    def ladder(self) -> Ladder:
+        """The choices in force."""
+        return self.session.settled
+
+    @property
+    def result(self) -> Any:
+        """The posterior on show."""
+        return self.session.result
+
+    def change(self, changes: Mapping[str, Any]) -> None:
+        """Make changes by dotted key, as a control does."""
+        self._change(changes)
+
+    def _repr_mimebundle_(self, **kwargs: Any) -> Any:
+        return self.widget._repr_mimebundle_(**kwargs)
+
+    def _first(self) -> int:
+        return self.panel.rungs.index("cepheids")
+
+    def _put_together(self) -> Any:
+        right = widgets.VBox(
+            [self.numbers, self.why, self.bar.widget, self._frame, self.stars.widget],
+            layout=widgets.Layout(width="670px", height="504px", overflow="hidden"),
+        )
+        middle = widgets.HBox(
+            [self.panel.widget, right], layout=widgets.Layout(width="1000px", height="504px")
+        )
+        root = widgets.VBox(
+            [self.axis, middle, self.foot.widget],
+            layout=widgets.Layout(width="1000px", height="640px", overflow="hidden"),
+        )
+        root.add_class("lf-workbench")
+        return root
+
+    # What the user does
+
+    @_guarded
+    def _asked(self, control: Control, changes: Changes, settled: bool) -> None:
+        session = self.session
+        ok = session.settle(changes) if settled else session.attempt(changes)
+        self._after(control, settled=settled, ok=ok)
+
+    @_guarded
+    def _change(self, changes: Changes) -> None:
+        self._after(None, settled=True, ok=self.session.settle(changes))
+
+    @_guarded
+    def _undo(self, _: Any = None) -> None:
+        self._after(None, settled=True, ok=self.session.undo())
+
+    @_guarded
+    def _redo(self, _: Any = None) -> None:
+        self._after(None, settled=True, ok=self.session.redo())
+
+    @_guarded
+    def _pin(self, _: Any = None) -> None:
+        self.session.pin()
+        self._show_numbers()
+        self._say("Pinned: changes are counted from these numbers.", good=True)
+
+    @_guarded
+    def _save(self, _: Any = None) -> None:
+        path = save_ladder(self.session.settled, self.foot.path())
+        self._say(f"Saved {path.name}; fit it with: ladderfit calibrate {path.name}", good=True)
+        self.foot.suggest(self.session.settled)
+
+    @_guarded
+    def _save_view(self) -> None:
+        result = self.session.result
+        if result is None:
+            raise LadderfitError("there is no posterior to show")
+        stem = _free(self.bar.view, (".png", ".pdf"))
+        written = self.picture.save(stem, self.bar.view, result, **self._what_view())
+        self._say(f"Saved {' and '.join(path.name for path in written)}.", good=True)
+
+    @_guarded
+    def _opened(self, change: Any) -> None:
+        self._open(change["new"])
+        self._show_view()
+
+    @_guarded
+    def _recoloured(self, _: Any) -> None:
+        self.picture.take_colours(self.axis.dark, self.axis.rgb)
+        self._show_view()
+
+    @_guarded
+    def _view(self) -> None:
+        self._show_view()
+
+    @_guarded
+    def _pointed(self, points: Points | None, index: int, clicked: bool) -> None:
+        if points is None:
+            self.stars.leave()
+            return
+        self.stars.point(points, index, self.session.settled)
+        if clicked:
+            self.stars.toggle()
+
+    # What is shown
+
+    def _open(self, rung: str) -> None:
+        self.axis.rung = rung
+        self.panel.open(rung)
+        self.bar.open(rung, self.session.settled)
+
+    def _after(
+        self, control: Control | None, *, settled: bool, ok: bool = True, said: bool = True
+    ) -> None:
+        """Bring the screen up to date after a change, or an attempt at one."""
+        session = self.session
+        trouble = session.trouble
+        self.foot.can(session)
+        if trouble is not None:
+            self._troubled(control)
+            return
+        if not ok or session.result is None:
+            return
+        self.widget.remove_class("lf-stale")
+        self.panel.quiet()
+        self._show_numbers()
+        if said and session.before is not None:
+            self.why.value = _text(why(session.before, session.result))
+        if not settled:
+            self.panel.count(session.ladder)
+            return
+        self.panel.show(session.settled)
+        leaning = prior_driven(session.result)
+        if control is not None and leaning:
+            control.say(leaning)
+        self._show_view()
+        self.axis.show(rungs(session.settled, self._every, session.result))
+        good, words = trust(session.result)
+        self._say(words, good=good)
+
+    def _troubled(self, control: Control | None) -> None:
+        session, trouble = self.session, self.session.trouble
+        if trouble is None:
+            return
+        self.widget.add_class("lf-stale")
+        if trouble.made:
+            self.panel.show(session.settled)
+            if session.result is not None:
+                self.axis.show(rungs(session.settled, self._every, session.result))
+        if control is not None:
+            control.say(trouble.words)
+        self.why.value = _text("No posterior for these choices; the last one is greyed.")
+        self._say(trouble.words, good=False)
+
+    def _show_numbers(self) -> None:
+        result = self.session.result
+        if result is not None:
+            self.numbers.value = strip(result, self.session.pinned, self.published)
+            if self.bar.shows == "numbers":
+                self.table.value = all_numbers(result, self.session.pinned, self.published)
+
+    def _show_view(self) -> None:
+        result, bar = self.session.result, self.bar
+        if result is None:
+            return
+        drawn = bar.shows == "view"
+        self._scroll.layout.display = "none" if drawn else ""
+        self.picture.canvas.layout.display = "" if drawn else "none"
+        if bar.shows == "numbers":
+            self.table.value = all_numbers(result, self.session.pinned, self.published)
+        elif bar.shows == "table":
+            self.table.value = view_table(result, bar.view, bar.rung, bar.column)
+        else:
+            self.picture.show(bar.view, result, **self._what_view())
+            self.stars.offer(self.picture.points, self.session.settled)
+
+    def _what_view(self) -> dict[str, Any]:
+        aside = self._aside_stars() if self.bar.view == "relation" else None
+        return {"aside": aside, "rung": self.bar.rung, "column": self.bar.column}
+
+    def _aside_stars(self) -> HostResiduals | None:
+        """Stars set aside, worked out once per posterior."""
+        result = self.session.result
+        if result is None:
+            return None
+        if self._aside is None or self._aside[0] is not result:
+            self._aside = (result, aside_residuals(result))
+        return self._aside[1]
+
+    def publish(self, name: str, value: float | None) -> None:
+        """Show a published value of a parameter as a tick; None takes it away."""
+        if value is None:
+            self.published.pop(name, None)
+        else:
+            self.published[name] = value
+        self._show_numbers()
+
+    def _say(self, words: str, *, good: bool) -> None:
+        self.foot.trust.value = _text(words, "" if good else "lf-bad")
+
+
+class _Foot:
+    """Pin, undo, redo, save, and a sentence of trust."""
+
+    def __init__(self, bench: Workbench) -> None:
+        self.pin = _button("Pin", "Count changes from these numbers", bench._pin)
+        self.undo = _button("Undo", "Take the last change back", bench._undo)
+        self.redo = _button("Redo", "Make it again", bench._redo)
+        self.save = _button("Save ladder file", "Write every choice", bench._save, "118px")
+        self.name = widgets.Text(
+            description="File", layout=widgets.Layout(width="190px"), style={"description_width": "28px"}
+        )
+        self.trust = _line("470px", "lf-trust")
+        self.widget = widgets.HBox(
+            [self.pin, self.undo, self.redo, self.name, self.save, self.trust],
+            layout=widgets.Layout(width="1000px", height="40px", align_items="center"),
+        )
+        self.widget.add_class("lf-foot")
+        self.suggest(bench.session.settled)
+
+    def can(self, session: Session) -> None:
+        """Enable what can be done."""
+        self.undo.disabled = not session.can_undo
+        self.redo.disabled = not session.can_redo
+        self.pin.disabled = session.trouble is not None
+
+    def suggest(self, ladder: Ladder) -> None:
+        """Offer a name that is free."""
+        stem = "ladder" if ladder.path is None else ladder.path.stem.rstrip("-0123456789")
+        self.name.value = _free(stem or "ladder", (".toml",)).name + ".toml"
+
+    def path(self) -> Path:
+        """Where to save."""
+        name = self.name.value.strip()
+        if not name:
+            raise LadderfitError("give the ladder file a name")
+        return Path(name if name.endswith(".toml") else f"{name}.toml")
+
+
+def _free(stem: str, suffixes: tuple[str, ...]) -> Path:
+    """The first STEM-01, STEM-02, ... of which none of these files exists."""
+    number = 1
+    while any(Path(f"{stem}-{number:02d}{suffix}").exists() for suffix in suffixes):
+        number += 1
+    return Path(f"{stem}-{number:02d}")
+
+
+def _button(words: str, tooltip: str, do: Any, width: str = "62px") -> Any:
+    button = widgets.Button(
+        description=words, tooltip=tooltip, layout=widgets.Layout(width=width, flex="0 0 auto")
+    )
+    button.on_click(do)
+    return button
+
+
+def _line(width: str, name: str) -> Any:
+    line = widgets.HTML(layout=widgets.Layout(width=width, margin="0"))
+    line.add_class(name)
+    return line
+
+
+def _text(words: str, name: str = "") -> str:
+    escaped = html.escape(words)
+    return f'<div class="{name}" role="status" title="{escaped}">{escaped}</div>'
