@@ -93,13 +93,13 @@ def _narrow(a: float, v: float, plx: float, err: float) -> float:
 
 
 @compiled
-def _y_of(u: float) -> float:
+def y_of(u: float) -> float:
     """Inverse of u = log(1 + e^y), without overflow or loss of digits."""
     return u if u > 30.0 else math.log(math.expm1(u) + 1e-300)
 
 
 @compiled
-def _log_stretched(
+def log_stretched(
     y: float, a: float, root: float, plx: float, err: float, log_scale: float
 ) -> float:
     """Log of the integrand in y, Jacobian included."""
@@ -118,8 +118,8 @@ def _stretched(a: float, root: float, plx: float, err: float) -> float:
     unit = K * root
     log_scale = math.log(err / unit)
     scale = err / unit
-    by_magnitude = _y_of(math.exp(min(K * (10.0 - a), 600.0)) / scale)
-    by_parallax = _y_of(max(plx, 0.5 * err) / scale)
+    by_magnitude = y_of(math.exp(min(K * (10.0 - a), 600.0)) / scale)
+    by_parallax = y_of(max(plx, 0.5 * err) / scale)
     low = min(by_magnitude, by_parallax) - _REACH * unit
     high = max(by_magnitude, by_parallax) + _REACH * unit
     if high - low > _WIDEST * unit:
@@ -129,7 +129,7 @@ def _stretched(a: float, root: float, plx: float, err: float) -> float:
     step = (high - low) / count
     peak, total = -math.inf, 0.0
     for node in range(count + 1):
-        value = _log_stretched(low + node * step, a, root, plx, err, log_scale)
+        value = log_stretched(low + node * step, a, root, plx, err, log_scale)
         if value > peak:
             total = total * math.exp(peak - value) + 1.0
             peak = value
@@ -149,14 +149,14 @@ def _narrowed(
     log_scale: float,
 ) -> tuple[float, float]:
     """The part of a wide range that holds all that is within `_DEPTH` of the peak."""
-    for _ in range(12):
+    for _ in range(60):  # a range of 1e40 widths, met while a mode is sought, takes 30
         step = (high - low) / 64.0
         peak = -math.inf
         for node in range(65):
-            peak = max(peak, _log_stretched(low + node * step, a, root, plx, err, log_scale))
+            peak = max(peak, log_stretched(low + node * step, a, root, plx, err, log_scale))
         first, last = 64, 0
         for node in range(65):
-            value = _log_stretched(low + node * step, a, root, plx, err, log_scale)
+            value = log_stretched(low + node * step, a, root, plx, err, log_scale)
             if value >= peak - _DEPTH:
                 first, last = min(first, node), max(last, node)
         new_low = low + max(first - 1, 0) * step
