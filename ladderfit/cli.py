@@ -24,7 +24,9 @@ _AFTER = """\
 examples:
   ladderfit calibrate                        fit the sample that comes along
   ladderfit calibrate my.toml --out first    fit your own ladder
+  ladderfit draft *.ecsv --out my.toml       begin a ladder file for your own tables
   ladderfit mock my.toml --out again         simulate data like yours, with known truth
+  ladderfit workbench my.toml                move its choices and see the answer move
 """
 
 
@@ -56,7 +58,9 @@ def parser() -> argparse.ArgumentParser:
     top.add_argument("--version", action=_Version, nargs=0, help="print the version and exit")
     commands = top.add_subparsers(title="commands", metavar="COMMAND", dest="command")
     _add_calibrate(commands.add_parser)
+    _add_draft(commands.add_parser)
     _add_mock(commands.add_parser)
+    _add_workbench(commands.add_parser)
     return top
 
 
@@ -84,6 +88,14 @@ def _add_calibrate(add: Callable[..., argparse.ArgumentParser]) -> None:
     command.set_defaults(run=_calibrate)
 
 
+def _add_draft(add: Callable[..., argparse.ArgumentParser]) -> None:
+    words = "write a first ladder file for your tables; what is unclear is left undecided"
+    command = add("draft", help=words, description=f"{words[0].upper()}{words[1:]}.")
+    command.add_argument("tables", nargs="+", metavar="TABLE", help="a table, one of each kind")
+    command.add_argument("--out", metavar="FILE", required=True, help="the ladder file to make")
+    command.set_defaults(run=_draft)
+
+
 def _add_mock(add: Callable[..., argparse.ArgumentParser]) -> None:
     words = "simulate tables like those of a ladder file, with known truth"
     command = add("mock", help=words, description=f"{words[0].upper()}{words[1:]}.")
@@ -91,6 +103,22 @@ def _add_mock(add: Callable[..., argparse.ArgumentParser]) -> None:
     command.add_argument("--out", metavar="DIR", required=True, help="the folder to make")
     command.add_argument("--seed", type=_seed, default=1, metavar="N", help="seed (default: 1)")
     command.set_defaults(run=_mock)
+
+
+def _add_workbench(add: Callable[..., argparse.ArgumentParser]) -> None:
+    words = "open the live ladder in JupyterLab, on this machine only"
+    command = add("workbench", help=words, description=f"{words[0].upper()}{words[1:]}.")
+    command.add_argument(
+        "file", nargs="?", metavar="FILE", help="the ladder file; without it, the sample"
+    )
+    command.add_argument(
+        "--folder",
+        metavar="DIR",
+        help="where notebooks are copied to; without it, workbench-NAME here",
+    )
+    command.add_argument("--port", type=int, metavar="N", help="the port, which must be free")
+    command.add_argument("--no-browser", action="store_true", help="print the address only")
+    command.set_defaults(run=_workbench)
 
 
 def _seed(text: str) -> int:
@@ -157,12 +185,36 @@ def _calibrate(chosen: argparse.Namespace) -> int:
     return 0
 
 
+def _draft(chosen: argparse.Namespace) -> int:
+    from ladderfit.draft import write_draft
+
+    out = Path(chosen.out)
+    made = write_draft([Path(name) for name in chosen.tables], out)
+    then = "decide what is undecided in it, then: " if made.undecided else "next: "
+    _say(f"{made.summary()}\n\nWritten to {out}; {then}ladderfit calibrate {out}", sys.stdout)
+    return 0
+
+
 def _mock(chosen: argparse.Namespace) -> int:
     from ladderfit.mock import write_mock
 
     written = write_mock(Path(chosen.file), Path(chosen.out), chosen.seed)
     _say(f"Written to {written.parent}; fit it with: ladderfit calibrate {written}", sys.stdout)
     return 0
+
+
+def _workbench(chosen: argparse.Namespace) -> int:
+    from ladderfit.launcher import default_folder, launch, prepare
+
+    file = None if chosen.file is None else Path(chosen.file)
+    if file is not None:
+        from ladderfit.ladder import read_ladder
+
+        read_ladder(file)  # what is wrong with it is said here, not in the browser
+    folder = default_folder(file) if chosen.folder is None else Path(chosen.folder)
+    prepare(folder, file)
+    _say(f"Notebooks in {folder}; to stop, press Ctrl-C twice", sys.stdout)
+    return launch(folder, port=chosen.port, browser=not chosen.no_browser)
 
 
 @contextlib.contextmanager

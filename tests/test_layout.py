@@ -15,11 +15,11 @@ import pytest
 ORDER = """
     errors rounding
     units files shipped priors names schema
-    choices.columns choices.stars choices.relation choices.anchors choices.third_rung
-    choices.sampling choices.whole choices samples
-    physics.photometry physics.zero_point physics.distance_priors physics.selection
-    physics.expansion physics.overtones physics
-    kinds tables table_memory table_files rows star_values select_stars select_supernovae
+    choices.columns choices.stars choices.relation choices.parallaxes choices.anchors
+    choices.third_rung choices.sampling choices.whole choices samples
+    physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
+    kinds tables table_memory table_files rows star_values parallax_inputs select_stars
+    select_supernovae
     covariances
     relations ladder_file assembly consistency ladder
     kernels.compiling kernels.quadrature kernels.sightlines kernels.detection kernels.arrow
@@ -39,8 +39,11 @@ ORDER = """
     coverage
     plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
     report calibration
-    workbench.state workbench.axis workbench.choices_panel workbench.canvas workbench.screen
-    workbench
+    workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
+    workbench.points workbench.tables
+    workbench.axis workbench.range workbench.controls workbench.choices_panel
+    workbench.canvas.relation workbench.canvas.panels workbench.canvas
+    workbench.view_bar workbench.star_line workbench.screen workbench
     launcher cli __main__
 """.split()
 

@@ -94,7 +94,7 @@ class Workbench:
         if is_cold():
             print(f"{WORDS_WHEN_COLD[0].upper()}{WORDS_WHEN_COLD[1:]} ...")
         self.session.start()
-        self._open(self.panel.rungs[0 if "cepheids" not in self.panel.rungs else self._first()])
+        self._open("cepheids" if "cepheids" in self.panel.rungs else self.panel.rungs[0])
         self.axis.observe(self._opened, "rung")
         self.axis.observe(self._recoloured, ["dark", "rgb"])
         self._after(None, settled=True, said=False)
@@ -113,11 +113,20 @@ class Workbench:
         """Make changes by dotted key, as a control does."""
         self._change(changes)
 
+    def open(self, rung: str) -> None:
+        """Open a rung: ``anchors``, ``cepheids``, ``supernovae`` or ``expansion``.
+
+        Raises
+        ------
+        ValueError
+            If the ladder has no such rung.
+        """
+        if rung not in self.panel.rungs:
+            raise ValueError(f"no rung {rung!r}; there are {', '.join(self.panel.rungs)}")
+        self.axis.rung = rung
+
     def _repr_mimebundle_(self, **kwargs: Any) -> Any:
         return self.widget._repr_mimebundle_(**kwargs)
-
-    def _first(self) -> int:
-        return self.panel.rungs.index("cepheids")
 
     def _put_together(self) -> Any:
         right = widgets.VBox(

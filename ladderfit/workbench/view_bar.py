@@ -99,7 +99,9 @@ class ViewBar:
             button.layout.display = "" if view in views else "none"
             button.layout.order = str(views.index(view) if view in views else 9)
         self._quiet = True
-        self.columns.options = numeric_columns(ladder, rung)
+        self.columns.options = names = numeric_columns(ladder, rung)
+        if self.columns.value is None and names:
+            self.columns.value = names[0]
         self._quiet = False
         if self.view not in views or self.view == "corner":
             self.view = views[0]
