@@ -21,24 +21,27 @@ ORDER = """
     kinds tables table_memory table_files rows star_values parallax_inputs select_stars
     select_supernovae
     covariances
-    relations ladder_file assembly consistency ladder
+    relations ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.quadrature kernels.sightlines kernels.detection kernels.arrow
     kernels.reduced kernels
-    posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.parallaxes
+    posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
+    posterior.offsets posterior.parallaxes
     posterior.split
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_file sampling.run sampling.warm
+    sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker sampling.live
     sampling
-    classical residuals influence anchors sweep alternatives review distances compare
+    classical.least_squares classical.lines classical.parallaxes classical
+    residuals influence anchors sweep alternatives review distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.restated
     mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
-    report calibration
+    report calibration repeat
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.tables
     workbench.axis workbench.range workbench.controls workbench.choices_panel
