@@ -158,4 +158,10 @@ def _rows_of_parallaxes(section: Parallaxes) -> tuple[Any, ...]:
         section.overtones,
         section.conversion,
         section.set_aside,
+        section.corrected,
+        section.offset_slope,
+        section.needs_sky,
+        section.selection,
+        section.extinction_max,
+        section.min_signal,
     )

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ladderfit.priors import HalfNormal, LogNormal, Normal, Prior
+from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior
 
 
 @dataclass(frozen=True)
@@ -80,6 +80,28 @@ _ALL = (
     Parameter(
         "parallax_offset", "mas", r"$\varpi_0$", "residual parallax offset", 4, Normal(0.0, 0.02)
     ),
+    Parameter(
+        "parallax_offset_slope",
+        "mas/mag",
+        r"$\varpi_G$",
+        "change of the residual parallax offset with G",
+        4,
+        Normal(0.0, 0.01),
+    ),
+    Parameter(
+        "parallax_error_scale", "", r"$\kappa$", "scale of the parallax errors", 3, Fixed(1.0)
+    ),
+    Parameter(
+        "distance_length", "kpc", r"$L$", "scale length of the distance prior", 3, Fixed(1.0)
+    ),
+    Parameter(
+        "parallax_field",
+        "",
+        r"$f$",
+        "mode of the parallax errors shared on the sky",
+        2,
+        Normal(0.0, 1.0),
+    ),
     Parameter("peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)),
     Parameter("peak_scatter", "mag", r"$t_\mathrm{SN}$", "supernova scatter", 3, HalfNormal(0.3)),
     Parameter("hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)),
@@ -91,7 +113,7 @@ _ALL = (
 )
 
 PARAMETERS: dict[str, Parameter] = {parameter.name: parameter for parameter in _ALL}
-HEADLINE = tuple(p.name for p in _ALL if p.prior is not None)
+HEADLINE = tuple(p.name for p in _ALL if p.prior is not None and p.name != "parallax_field")
 
 
 def with_group(name: str, group: str) -> str:

@@ -12,7 +12,7 @@ import pandas as pd
 from ladderfit.choices import Choices
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
-from ladderfit.names import HEADLINE, base_name, parameter
+from ladderfit.names import HEADLINE, PARAMETERS, base_name, parameter
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -152,5 +152,5 @@ class Result:
 
 def ordered(draws: Mapping[str, FloatArray]) -> dict[str, FloatArray]:
     """Draws in the order of `ladderfit.names`, moduli last."""
-    order = {name: place for place, name in enumerate((*HEADLINE, "modulus"))}
+    order = {name: place for place, name in enumerate(PARAMETERS)}
     return dict(sorted(draws.items(), key=lambda item: order[base_name(item[0])]))

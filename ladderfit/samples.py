@@ -20,6 +20,31 @@ BoolArray = npt.NDArray[np.bool_]
 
 
 @dataclass(frozen=True)
+class ParallaxExtras:
+    """What some choices need to know of parallax stars; None where no choice does.
+
+    Attributes
+    ----------
+    g_magnitude : array, shape (n,), or None
+        G [mag].
+    longitude, latitude : array, shape (n,), or None
+        Galactic coordinates [deg].
+    headroom : array, shape (n,), or None
+        Limit of the selection minus the star's magnitude in that band [mag].
+    cluster : array of int, shape (n,), or None
+        Index into `clusters`; -1 for a star in none.
+    clusters : tuple of str
+    """
+
+    g_magnitude: FloatArray | None = None
+    longitude: FloatArray | None = None
+    latitude: FloatArray | None = None
+    headroom: FloatArray | None = None
+    cluster: IntArray | None = None
+    clusters: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
 class StarSample:
     """Cepheids that take part, sorted by host.
 
@@ -47,6 +72,8 @@ class StarSample:
     log_period_error, metallicity_error : array, shape (n,), or None
         Errors of log10 period and of the metallicity [dex]; None where they are
         not given.
+    extras : ParallaxExtras
+        Of parallax stars.
     """
 
     star: TextArray
@@ -62,6 +89,7 @@ class StarSample:
     system: TextArray | None = None
     log_period_error: FloatArray | None = None
     metallicity_error: FloatArray | None = None
+    extras: ParallaxExtras = field(default_factory=ParallaxExtras)
 
     def __len__(self) -> int:
         """Number of stars."""

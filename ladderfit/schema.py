@@ -11,7 +11,7 @@ import dataclasses
 import functools
 import math
 import types
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from typing import Any, Literal, TypeVar, Union, get_args, get_origin, get_type_hints
 
 import numpy as np
@@ -20,6 +20,8 @@ from ladderfit.errors import Problem, nearest
 from ladderfit.priors import EXPECTED, Prior, read_prior
 
 T = TypeVar("T")
+
+UNDECIDED = "undecided:"  # a value that starts so was left open by a draft
 
 _WORDS: dict[Any, str] = {
     str: "text in quotes",
@@ -100,6 +102,23 @@ def flat(mapping: Mapping[str, Any], prefix: str = "") -> dict[str, Any]:
         else:
             leaves[dotted] = value
     return leaves
+
+
+def undecided(value: Any, key: str = "") -> Iterator[Problem]:
+    """Values of a nested mapping that a draft left open, one problem each."""
+    if isinstance(value, str) and value.startswith(UNDECIDED):
+        yield Problem(
+            found=f'"{value}"',
+            expected="a decision",
+            remedy="write what is meant in place of the whole text",
+            key=key or None,
+        )
+    elif isinstance(value, Mapping):
+        for name, inner in value.items():
+            yield from undecided(inner, join(key, str(name)))
+    elif isinstance(value, list | tuple):
+        for inner in value:
+            yield from undecided(inner, key)
 
 
 def with_value(mapping: Mapping[str, Any], dotted: str, value: Any) -> dict[str, Any]:

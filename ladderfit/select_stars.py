@@ -10,7 +10,15 @@ import numpy.typing as npt
 import pandas as pd
 
 from ladderfit.choices import Cepheids, Magnitude, Parallaxes
-from ladderfit.kinds import PARALLAX
+from ladderfit.errors import raise_if
+from ladderfit.kinds import MAGNITUDE
+from ladderfit.parallax_inputs import (
+    KINDS,
+    limit_column,
+    parallax_notes,
+    parallax_values,
+    used_columns,
+)
 from ladderfit.rows import Rows, floats, integers
 from ladderfit.samples import FloatArray, IntArray, Kept, StarSample, frozen
 from ladderfit.star_values import (
@@ -101,25 +109,31 @@ def select_parallax_stars(
     """
     key = "anchors.parallaxes"
     rows = Rows(table, key)
-    columns = star_columns(section.columns, metallicity=metallicity)
+    columns = used_columns(section, star_columns(section.columns, metallicity=metallicity))
     place = "cepheids.magnitude" if section.magnitude is None else f"{key}.magnitude"
-    require_stars(rows, columns, magnitude, place)
+    require_stars(rows, columns, magnitude, place, KINDS)
+    limited = limit_column(section, magnitude)
+    raise_if(rows.faults(limited, dict.fromkeys(limited, MAGNITUDE), f"{key}.selection.band"))
     star = _star_names(table, columns)
     rows.set_aside(section.set_aside, star, "star")
     rows.need(star, "star", columns.get("star"))
     rows.unique("the star", {"star": star}, columns.get("star"), _SAME_NAME)
     values = star_values(rows, columns, section, magnitude)
-    parallax = rows.number("parallax", columns["parallax"], PARALLAX)
-    error = rows.number("parallax_error", columns["parallax_error"], PARALLAX, above=0.0)
+    measured = parallax_values(rows, columns, section, magnitude)
     system = cut_stars(rows, columns, section, values)
     left, kept = rows.finish("parallax star")
     nowhere = np.full(left.size, -1, dtype=np.int64)
     sample = replace(
         _star_sample(star, values, left, nowhere, system, section.overtones),
-        parallax=floats(parallax[left]),
-        parallax_error=floats(error[left]),
+        parallax=floats(measured.parallax[left]),
+        parallax_error=floats(measured.error[left]),
+        extras=measured.extras(left),
     )
-    return ParallaxSelection(sample, kept, conversion_notes(section, values, left))
+    notes = (
+        *conversion_notes(section, values, left),
+        *parallax_notes(section, columns, star, measured, left),
+    )
+    return ParallaxSelection(sample, kept, notes)
 
 
 def _star_names(table: DataTable, columns: Mapping[str, str]) -> Texts:

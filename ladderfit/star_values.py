@@ -17,6 +17,7 @@ from ladderfit.kinds import (
     PARALLAX,
     PERIOD,
     PERIOD_ERROR,
+    Kind,
 )
 from ladderfit.physics.overtones import (
     PERIOD_RATIOS,
@@ -78,7 +79,13 @@ def star_columns(columns: Mapping[str, str], *, metallicity: bool) -> dict[str, 
     return {role: name for role, name in columns.items() if role not in unused}
 
 
-def require_stars(rows: Rows, columns: Mapping[str, str], magnitude: Magnitude, key: str) -> None:
+def require_stars(
+    rows: Rows,
+    columns: Mapping[str, str],
+    magnitude: Magnitude,
+    key: str,
+    kinds: Mapping[str, Kind] | None = None,
+) -> None:
     """Check that all columns are there, in the right kind of unit; `key` is the magnitude's.
 
     Raises
@@ -90,7 +97,7 @@ def require_stars(rows: Rows, columns: Mapping[str, str], magnitude: Magnitude, 
     used = {name: magnitude.bands[name] for name in magnitude.used}
     errors = {name: magnitude.errors[name] for name in _error_names(magnitude)}
     of_error = LOG_PERIOD_ERROR if "log_period" in columns else PERIOD_ERROR
-    problems.extend(rows.faults(columns, {**_KINDS, "period_error": of_error}))
+    problems.extend(rows.faults(columns, {**_KINDS, **(kinds or {}), "period_error": of_error}))
     problems.extend(rows.faults(used, dict.fromkeys(used, MAGNITUDE), f"{key}.bands"))
     measured = dict.fromkeys(errors, MAGNITUDE)
     problems.extend(rows.faults(errors, measured, f"{key}.errors", _error_words))

@@ -106,7 +106,7 @@ def prior_rows(result: Result) -> list[tuple[str, ...]]:
         rows.append(("modulus of a host", where, ""))
     stars = result.choices.anchors.parallaxes
     if stars is not None and stars.use:
-        rows.append(("modulus of a parallax star", stars.distance_prior, ""))
+        rows.append(("modulus of a parallax star", stars.prior_words, ""))
     return rows
 
 
@@ -130,6 +130,11 @@ def trust_lines(result: Result) -> list[str]:
         lines.append(f"{known[worst]:,.0f} effective draws{whose}")
     if found.pareto_k is not None:
         lines.append(f"Pareto k = {to_place(found.pareto_k, -2)}: {pareto_words(found.pareto_k)}")
+    if found.rhat:
+        least = max(found.rhat, key=lambda name: found.rhat[name])
+        lines.append(
+            f"R-hat at most {found.rhat[least]:.3f} over independent ensembles ({printable(least)})"
+        )
     if found.log_evidence is not None:
         evidence = rounded(found.log_evidence, found.log_evidence_error or 0.0)
         lines.append(f"log evidence {evidence}, to compare only where the data are identical")

@@ -396,9 +396,9 @@ CONTRADICTIONS: dict[str, tuple[Callable[[dict[str, Any]], Any], str]] = {
     ),
     "uncorrected parallaxes": (
         lambda c: c["anchors"]["parallaxes"].update(corrected=False),
-        "key anchors.parallaxes.corrected: found false; "
-        "expected parallaxes with a zero-point recipe applied; "
-        "apply a published recipe to the table and set corrected = true",
+        "key anchors.parallaxes.corrected: found the zero-point recipe, without columns for it; "
+        "expected columns.g_magnitude, columns.nu_eff, columns.ecliptic_latitude; "
+        "name the columns, or set corrected = true if the recipe is already applied",
     ),
 }
 

@@ -43,16 +43,16 @@ def compare(cases, found, priors):
 @pytest.mark.parametrize("length", [0.3, 2.0, 10.0])
 def test_exponential_agrees_with_a_dense_grid(length):
     """To 1e-6 + 1e-12 |log p|, from 200 sigma to negative parallaxes."""
-    cases = draw_cases(np.random.default_rng(5), 500)
+    cases = draw_cases(np.random.default_rng(5), 300)
     a, v, p, s = (part[:, None] for part in cases)
-    rate = np.full(500, 1.0 / length)
+    rate = np.full(300, 1.0 / length)
     found = log_falloff_integrals(a, v, p, s, rate, NO_SIGHT)[:, 0]
-    compare(cases, found, [log_prior("exponential", length)] * 500)
+    compare(cases, found, [log_prior("exponential", length)] * 300)
 
 
 @pytest.mark.parametrize("height", [0.05, 0.3])
 def test_disc_agrees_with_a_dense_grid(height):
-    n = 500
+    n = 300
     rng = np.random.default_rng(6)
     cases, (longitude, latitude) = draw_cases(rng, n), sky(rng, n)
     disc = {**DISC, "height": height}

@@ -31,7 +31,8 @@ ORDER = """
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_file sampling.run sampling.warm
-    sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker sampling.live
+    sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
+    sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
     residuals influence anchors sweep alternatives review distances compare
@@ -45,7 +46,7 @@ ORDER = """
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.tables
     workbench.axis workbench.range workbench.controls workbench.choices_panel
-    workbench.canvas.relation workbench.canvas.panels workbench.canvas
+    workbench.canvas.margins workbench.canvas.relation workbench.canvas.panels workbench.canvas
     workbench.view_bar workbench.star_line workbench.screen workbench
     launcher cli __main__
 """.split()

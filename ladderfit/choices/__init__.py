@@ -8,13 +8,20 @@ a nested mapping, given back as one, changed by dotted keys and compared.
 from ladderfit.choices.anchors import (
     LARGEST_MODULUS,
     Anchors,
-    DistancePrior,
     GeometricAnchor,
     Hosts,
-    Parallaxes,
     SharedError,
 )
 from ladderfit.choices.columns import Columns, Range, SetAside
+from ladderfit.choices.parallaxes import (
+    Cluster,
+    Correlation,
+    Density,
+    Disc,
+    DistancePrior,
+    Parallaxes,
+    Selection,
+)
 from ladderfit.choices.relation import Group, Metallicity, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids, Magnitude, Overtones, PeriodRatio, Wesenheit
@@ -26,7 +33,11 @@ __all__ = [
     "Anchors",
     "Cepheids",
     "Choices",
+    "Cluster",
     "Columns",
+    "Correlation",
+    "Density",
+    "Disc",
     "DistancePrior",
     "Expansion",
     "GeometricAnchor",
@@ -41,6 +52,7 @@ __all__ = [
     "Range",
     "Relation",
     "Sampling",
+    "Selection",
     "SetAside",
     "SharedError",
     "Supernovae",

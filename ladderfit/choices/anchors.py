@@ -4,16 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from typing import Literal
 
-from ladderfit.choices.columns import Columns, Range, SetAside
-from ladderfit.choices.stars import Magnitude, Overtones, PeriodRatio, star_faults
+from ladderfit.choices.parallaxes import DistancePrior, Parallaxes
 from ladderfit.errors import Problem, nearest
 from ladderfit.schema import choice
 
 LARGEST_MODULUS = 50.0  # mag; "flat in modulus" and "uniform in volume" hold from 0 to here
-
-DistancePrior = Literal["flat in modulus", "uniform in volume"]
 
 
 @dataclass(frozen=True)
@@ -29,44 +25,6 @@ class GeometricAnchor:
         if not 0.0 < self.error < float("inf"):
             yield Problem(
                 f"{self.error:g}", "an error above 0 mag", "give the standard error", key="error"
-            )
-
-
-@dataclass(frozen=True)
-class Parallaxes:
-    """Cepheids of the Milky Way with trigonometric parallaxes.
-
-    Without a `magnitude` of its own the sample uses that of the Cepheids.
-    """
-
-    table: str = choice("the table of parallax stars, a path relative to this file")
-    columns: Columns = choice(
-        "column of each role: parallax, parallax_error, and those of other Cepheids but host"
-    )
-    magnitude: Magnitude | None = choice("its own bands and columns", default=None)
-    corrected: bool = choice("whether the zero-point recipe is already applied", default=True)
-    distance_prior: DistancePrior = choice("prior of a star's distance", default="flat in modulus")
-    periods: Range = choice("shortest and longest period [d]", default=(0.0, float("inf")))
-    overtones: Overtones = choice(
-        "drop overtone pulsators, give them an offset, or convert their periods", default="drop"
-    )
-    conversion: PeriodRatio = choice(
-        "the published period ratio that converts overtone periods",
-        default="Feast & Catchpole 1997",
-    )
-    set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
-    use: bool = choice("whether the parallaxes take part", default=True)
-
-    def check(self) -> Iterator[Problem]:
-        """Roles and ranges."""
-        required = ("parallax", "parallax_error")
-        yield from star_faults(self.columns, required, self.periods, self.overtones)
-        if not self.corrected:
-            yield Problem(
-                found="false",
-                expected="parallaxes with a zero-point recipe applied",
-                remedy="apply a published recipe to the table and set corrected = true",
-                key="corrected",
             )
 
 

@@ -152,10 +152,14 @@ class Cepheids:
 
 
 def star_faults(
-    columns: Columns, required: tuple[str, ...], periods: Range, overtones: Overtones
+    columns: Columns,
+    required: tuple[str, ...],
+    periods: Range,
+    overtones: Overtones,
+    others: tuple[str, ...] = (),
 ) -> Iterator[Problem]:
     """Problems that any section with a table of Cepheids may have."""
-    yield from column_faults(columns, required, STAR_ROLES)
+    yield from column_faults(columns, required, (*STAR_ROLES, *others))
     yield from period_faults(columns)
     yield from range_faults("periods", periods, " in days", above_zero=True)
     if "metallicity_error" in columns and "metallicity" not in columns:

@@ -8,14 +8,15 @@ from dataclasses import dataclass
 from typing import Any, Self
 
 from ladderfit import schema
-from ladderfit.choices.anchors import Anchors, Hosts, Parallaxes
+from ladderfit.choices.anchors import Anchors, Hosts
+from ladderfit.choices.parallaxes import Parallaxes
 from ladderfit.choices.relation import Group, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids
 from ladderfit.choices.third_rung import Expansion, Supernovae
 from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.names import PARAMETERS, base_name, parameter
-from ladderfit.priors import Prior
+from ladderfit.priors import Fixed, Prior
 from ladderfit.schema import choice
 
 
@@ -48,6 +49,7 @@ class Choices:
         InputError
             One problem per key that does not fit.
         """
+        raise_if(list(schema.undecided(mapping)))
         problems: list[Problem] = []
         plain = dict(mapping)
         alternatives = plain.pop("alternatives", {})
@@ -119,6 +121,9 @@ class Choices:
         for stated in (name, base_name(name)):
             if stated in self.priors:
                 return self.priors[stated]
+        stars = self.anchors.parallaxes
+        if name == "distance_length" and stars is not None and stars.exponential is not None:
+            return Fixed(stars.exponential)
         default = parameter(name).prior
         if default is None:
             raise KeyError(name)
@@ -131,7 +136,7 @@ class Choices:
     def check(self) -> Iterator[Problem]:
         """Sections that need one another."""
         yield from _prior_faults(self.priors)
-        yield from _group_faults(self.relation, self.groups)
+        yield from _group_faults(self.relation, self.anchors.parallaxes, self.groups)
         yield from _magnitude_faults(self.cepheids, self.anchors.parallaxes)
         sections = {"cepheids": self.cepheids, "anchors.parallaxes": self.anchors.parallaxes}
         for key, section in sections.items():
@@ -163,14 +168,27 @@ def _prior_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:
                 remedy=nearest(name, known),
                 key=schema.join("priors", name),
             )
+        elif base_name(name) in ("parallax_error_scale", "distance_length"):
+            prior = priors[name]
+            lowest = prior.value if isinstance(prior, Fixed) else prior.bounds[0]
+            if lowest < 0.0 or (isinstance(prior, Fixed) and lowest == 0.0):
+                yield Problem(
+                    found=str(prior),
+                    expected="a prior on numbers above 0",
+                    remedy="write {log_normal = [median, sd in mag]} or {uniform = [low, high]}",
+                    key=schema.join("priors", name),
+                )
 
 
-def _group_faults(relation: Relation, groups: Mapping[str, Group]) -> Iterator[Problem]:
-    """Groups that the relation names and nobody defines."""
+def _group_faults(
+    relation: Relation, stars: Parallaxes | None, groups: Mapping[str, Group]
+) -> Iterator[Problem]:
+    """Groups that the relation or the offsets name and nobody defines."""
     named = {
-        "scatter": relation.scatter_groups,
-        "zero_points": relation.zero_points,
-        "slopes": relation.slopes,
+        "relation.scatter": relation.scatter_groups,
+        "relation.zero_points": relation.zero_points,
+        "relation.slopes": relation.slopes,
+        "anchors.parallaxes.offsets": () if stars is None else stars.offsets,
     }
     for key, listed in named.items():
         for group in listed:
@@ -179,7 +197,7 @@ def _group_faults(relation: Relation, groups: Mapping[str, Group]) -> Iterator[P
                     found=f"the group {group!r}, which [groups] does not define",
                     expected="names of groups",
                     remedy=nearest(group, groups),
-                    key=f"relation.{key}",
+                    key=key,
                 )
 
 

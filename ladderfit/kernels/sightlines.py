@@ -24,7 +24,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled, in_halves
-from ladderfit.kernels.quadrature import LOG_2PI, K, _log_stretched, _y_of
+from ladderfit.kernels.quadrature import LOG_2PI, K, log_stretched, y_of
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -103,7 +103,7 @@ def _axis_step(nearest: float, farthest: float, sight: FloatArray) -> float:
     if closest < nearest or closest > farthest:
         return math.inf
     gap2 = sight[3] * sight[3] * max(1.0 - sight[0] * sight[0] / sight[1], 0.0)
-    return 0.5 * math.sqrt(gap2 + _SOFT2) / closest
+    return float(0.5 * math.sqrt(gap2 + _SOFT2) / closest)
 
 
 @compiled
@@ -174,7 +174,7 @@ def _log_here(
     rate: float,
     sight: FloatArray,
 ) -> float:
-    value = _log_stretched(y, a, root, plx, err, log_scale)
+    value = log_stretched(y, a, root, plx, err, log_scale)
     if value == -math.inf:
         return value
     return value + log_falloff(1.0 / _parallax_at(y, log_scale), rate, sight)
@@ -194,8 +194,8 @@ def _stretched(
     unit = K * root
     scale = err / unit
     log_scale = math.log(scale)
-    by_magnitude = _y_of(math.exp(min(K * (10.0 - a), 600.0)) / scale)
-    by_parallax = _y_of(max(plx, 0.5 * err) / scale)
+    by_magnitude = y_of(math.exp(min(K * (10.0 - a), 600.0)) / scale)
+    by_parallax = y_of(max(plx, 0.5 * err) / scale)
     low = min(by_magnitude, by_parallax) - (_REACH + _FARTHER) * unit
     nearer = max(by_magnitude, by_parallax) + _REACH * unit
     found = (low, nearer, nearer)
@@ -241,7 +241,7 @@ def _scanned(
 ) -> tuple[float, float, float]:
     """The part of a range within `_DEPTH` of the peak, and where the peak is."""
     top = low
-    for _ in range(12):
+    for _ in range(60):
         step = (high - low) / 64.0
         peak = -math.inf
         for node in range(65):

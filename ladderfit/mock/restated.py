@@ -48,6 +48,7 @@ def beyond(ladder: Ladder) -> Iterator[Problem]:
             yield Problem(repr(value), expected, remedy, key=key)
     if ladder.choices.anchors.shared_errors:
         yield Problem("a shared error", expected, remedy, key="anchors.shared_errors")
+    yield from _beyond_parallaxes(ladder)
     stars = {"cepheids": ladder.cepheids, "anchors.parallaxes": ladder.parallax_stars}
     for key, sample in stars.items():
         if sample is not None and sample.log_period_error is not None:
@@ -56,6 +57,40 @@ def beyond(ladder: Ladder) -> Iterator[Problem]:
             yield Problem("errors of the metallicity", expected, remedy, key=f"{key}.columns")
         if sample is not None and sample.overtone is not None:
             yield Problem("overtones with an offset", expected, remedy, key=f"{key}.overtones")
+
+
+def _beyond_parallaxes(ladder: Ladder) -> Iterator[Problem]:
+    """Treatments of parallaxes that the simulator does not know."""
+    section = ladder.choices.anchors.parallaxes
+    if ladder.parallax_stars is None or section is None:
+        return
+    known = ("flat in modulus", "uniform in volume")
+    unknown = {
+        "distance_prior": section.distance_prior not in known,
+        "modulus_bounds": section.modulus_bounds is not None,
+        "offsets": bool(section.offsets),
+        "offset_slope": section.offset_slope,
+        "correlation": section.correlation is not None,
+        "selection": section.selection is not None,
+        "min_signal": section.min_signal is not None,
+        "columns.cluster": "cluster" in section.columns,
+    }
+    for key, asked in unknown.items():
+        if asked:
+            yield Problem(
+                found="a treatment of parallaxes that the simulator does not know",
+                expected="one offset, one star a modulus, and one of the priors "
+                + " and ".join(known),
+                remedy="take it out to simulate the rest",
+                key=f"anchors.parallaxes.{key}",
+            )
+    if ladder.choices.states_prior("parallax_error_scale"):
+        yield Problem(
+            found="a scale of the parallax errors",
+            expected="terms that the simulator knows",
+            remedy="take it out to simulate the rest",
+            key="priors.parallax_error_scale",
+        )
 
 
 def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:

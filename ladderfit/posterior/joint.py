@@ -15,12 +15,8 @@ from ladderfit.names import with_group
 from ladderfit.posterior.cepheids import Block, ScatterBlock, noisy_block, plain_rows
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.frame import Frame, host_frame
-from ladderfit.posterior.parallaxes import (
-    ParallaxTerms,
-    log_modulus_norm,
-    parallax_terms,
-    tilt_of,
-)
+from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
+from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
 from ladderfit.posterior.split import Split, split
 from ladderfit.posterior.supernovae import ladder_rows
 from ladderfit.samples import FloatArray
@@ -121,7 +117,7 @@ class Posterior:
         return np.where(np.isnan(total), -np.inf, total)
 
     def log_parallaxes(self, z: FloatArray) -> FloatArray:
-        """Log density of each parallax star, shape (b, n)."""
+        """Log density of each parallax star or cluster of them, shape (b, g)."""
         if self.parallaxes is None:
             return np.empty((len(z), 0))
         return self.parallaxes.log_density(partial(self.split.value, z=z))

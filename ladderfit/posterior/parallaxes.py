@@ -1,33 +1,29 @@
-"""The parallax stars' share of the log density."""
+"""The parallax stars' share of the log density.
+
+Each star, or each cluster of stars that share a modulus, contributes the integral
+over its modulus, divided by the chance D that it enters the sample; without a
+selection D is the norm of the distance prior.  Stars of a cluster are one star to
+the quadrature: the product of their normals in modulus is one normal, and so is
+that of their normals in parallax.
+"""
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ladderfit.choices import LARGEST_MODULUS, DistancePrior
-from ladderfit.kernels.arrow import LOG_2PI
-from ladderfit.kernels.quadrature import log_parallax_integrals
+from ladderfit.choices import Parallaxes, Selection
+from ladderfit.kernels import detection
+from ladderfit.kernels.quadrature import LOG_2PI
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.cepheids import Values
 from ladderfit.posterior.errors_in_inputs import InputErrors, input_errors
+from ladderfit.posterior.moduli import Distances, Sharing, distances_of, product, sharing_of
+from ladderfit.posterior.offsets import offset_terms
 from ladderfit.relations import design, scatters
 from ladderfit.samples import FloatArray, IntArray, StarSample
-
-VOLUME_TILT = 0.6 * float(np.log(10.0))
-
-
-def log_modulus_norm(prior: DistancePrior) -> float:
-    """Log of the integral of the unnormalised distance prior from 0 to the largest modulus."""
-    if prior == "flat in modulus":
-        return float(np.log(LARGEST_MODULUS))
-    return float(VOLUME_TILT * LARGEST_MODULUS - np.log(VOLUME_TILT))
-
-
-def tilt_of(prior: DistancePrior) -> float:
-    """The prior of a modulus is exp(tilt mu): 0, or 0.6 ln 10 where uniform in volume."""
-    return 0.0 if prior == "flat in modulus" else VOLUME_TILT
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,9 +41,21 @@ class ParallaxTerms:
     scatters : tuple of str
     scatter_of : array of int, shape (n,)
         Which of the scatters each star has.
-    prior : str
-        Prior of each star's distance.
     errors : InputErrors or None
+    offsets : mapping of str to array, shape (n + e,)
+        Columns of what parallaxes are shifted by; the last e are clusters' own.
+    shared_variance : array, shape (n,)
+        Shared errors beyond their modes [mas^2].
+    error_scale : bool
+        Whether the stars' parallax errors have a scale.
+    cluster_parallax, cluster_error : array, shape (e,)
+        Clusters' own parallaxes [mas].
+    distances : Distances
+    sharing : Sharing or None
+        None where no two stars share a modulus.
+    selection : Selection or None
+    headroom : array, shape (n,), or None
+        Limit minus magnitude, in the selection's band [mag].
     """
 
     coefficients: tuple[str, ...]
@@ -59,17 +67,50 @@ class ParallaxTerms:
     metallicity: FloatArray
     scatters: tuple[str, ...]
     scatter_of: IntArray
-    prior: DistancePrior
     errors: InputErrors | None
+    offsets: Mapping[str, FloatArray]
+    shared_variance: FloatArray
+    error_scale: bool
+    cluster_parallax: FloatArray
+    cluster_error: FloatArray
+    distances: Distances
+    sharing: Sharing | None
+    selection: Selection | None
+    headroom: FloatArray | None
 
     def log_density(self, values: Values) -> FloatArray:
-        """Log density of every star, shape (b, n), at the given parameter values."""
+        """Log density of every star or cluster, shape (b, g), at the given parameter values."""
+        a, v, measured = self._magnitudes(values)
+        offset, err = self._parallaxes(values)
+        rate = np.zeros(len(a))
+        if self.distances.kind == detection.EXPONENTIAL:
+            rate = 1.0 / values("distance_length")
+        chance = self._log_chance(a, v, offset, err, rate)
+        n = len(self.parallax)
+        plx = np.concatenate([self.parallax, self.cluster_parallax]) - offset
+        if self.sharing is None:
+            return measured - chance + self.distances.log_integrals(a, v, plx[:, :n], err, rate)
+        own = np.broadcast_to(self.cluster_error, (len(a), len(self.cluster_error)))
+        err = np.concatenate([np.broadcast_to(err, (len(a), n)), own], axis=1)
+        order, starts = self.sharing.order, self.sharing.starts
+        a, v, apart = product(a[:, order], v[:, order], starts)
+        places = self.sharing.parallax_order
+        plx, square, apart_plx = product(
+            plx[:, places], err[:, places] ** 2, self.sharing.parallax_starts
+        )
+        total = apart + apart_plx - chance
+        total = total + self.distances.log_integrals(a, v, plx, np.sqrt(square), rate)
+        if isinstance(measured, float):
+            return total
+        return total + np.add.reduceat(measured[:, order], starts[:-1], axis=1)
+
+    def _magnitudes(self, values: Values) -> tuple[FloatArray, FloatArray, FloatArray | float]:
+        """Apparent minus absolute magnitudes, variances, and the density of metallicities."""
         coefficients = np.stack([values(name) for name in self.coefficients], axis=1)
         scatter2 = np.stack([values(name) ** 2 for name in self.scatters], axis=1)
         distance_like = self.magnitude - coefficients @ self.design.T
         variance = self.variance + scatter2[:, self.scatter_of]
-        extra = 0.0 - log_modulus_norm(self.prior)
-        measured: FloatArray | float = extra
+        measured: FloatArray | float = 0.0
         if self.errors is not None:
             spread = values("metallicity_spread") if self._population else None
             effect = self.errors.effect(coefficients, spread)
@@ -77,10 +118,44 @@ class ParallaxTerms:
             if effect.pull is not None and effect.weight is not None:
                 off = values("parallax_metallicity")[:, None] - self.metallicity
                 distance_like = distance_like - effect.pull * off
-                measured = extra + 0.5 * (np.log(effect.weight) - effect.weight * off**2 - LOG_2PI)
-        parallax = self.parallax - values("parallax_offset")[:, None]
-        return measured + log_parallax_integrals(
-            distance_like, variance, parallax, self.parallax_error, tilt_of(self.prior)
+                measured = 0.5 * (np.log(effect.weight) - effect.weight * off**2 - LOG_2PI)
+        return distance_like, variance, measured
+
+    def _parallaxes(self, values: Values) -> tuple[FloatArray, FloatArray]:
+        """Offsets, shape (b, n + e), and errors of the stars, shape (b, n) or (1, n) [mas]."""
+        amounts = np.stack([values(name) for name in self.offsets], axis=1)
+        offset = amounts @ np.stack(list(self.offsets.values()))
+        variance = self.parallax_error[None, :] ** 2
+        if self.error_scale:
+            variance = variance * values("parallax_error_scale")[:, None] ** 2
+        return offset, np.sqrt(variance + self.shared_variance)
+
+    def _log_chance(
+        self, a: FloatArray, v: FloatArray, offset: FloatArray, err: FloatArray, rate: FloatArray
+    ) -> FloatArray:
+        """Log of D, shape (b, g); without a selection, of the prior's norm."""
+        chosen, n = self.selection, len(self.parallax)
+        if chosen is None:
+            return self.distances.log_norm(rate)
+        order = np.arange(n) if self.sharing is None else self.sharing.order
+        starts = np.arange(n + 1) if self.sharing is None else self.sharing.starts
+        magnitude = parallax = None
+        if self.headroom is not None:
+            width = np.sqrt(v + chosen.softness**2)
+            magnitude = ((a + self.headroom)[:, order], width[:, order])
+        if chosen.parallax_min is not None:
+            least = chosen.parallax_min - offset[:, :n]
+            parallax = (least[:, order], np.broadcast_to(err, least.shape)[:, order])
+        distances = self.distances
+        return detection.log_detection(
+            starts,
+            magnitude,
+            parallax,
+            distances.kind,
+            rate,
+            distances.sight,
+            distances.tables,
+            distances.flat,
         )
 
     @property
@@ -108,19 +183,56 @@ def parallax_terms(ladder: Ladder) -> ParallaxTerms | None:
     columns = active_coefficients(ladder, stars)
     reference = ladder.choices.relation.metallicity
     names, which = scatters(ladder.choices, stars, ladder.hosts)
+    offsets = offset_terms(ladder.choices, stars, ladder.hosts)
+    named = _named_clusters(section, stars)
+    measured = [section.clusters[name] for _, name in named]
+    own = np.array([float(cluster.offset) for cluster in measured])
+    sharing = sharing_of(stars, [place for place, _ in named])
     return ParallaxTerms(
-        tuple(columns),
-        np.stack(list(columns.values()), axis=1),
-        stars.magnitude,
-        stars.variance,
-        stars.parallax,
-        stars.parallax_error,
-        np.zeros(len(stars)) if reference == "none" else stars.metallicity - reference.reference,
-        names,
-        which,
-        section.distance_prior,
-        _active_errors(ladder, stars, tuple(columns)),
+        coefficients=tuple(columns),
+        design=np.stack(list(columns.values()), axis=1),
+        magnitude=stars.magnitude,
+        variance=stars.variance,
+        parallax=stars.parallax,
+        parallax_error=stars.parallax_error,
+        metallicity=np.zeros(len(stars))
+        if reference == "none"
+        else stars.metallicity - reference.reference,
+        scatters=names,
+        scatter_of=which,
+        errors=_active_errors(ladder, stars, tuple(columns)),
+        offsets={
+            name: np.concatenate([column, own if name == "parallax_offset" else 0.0 * own])
+            for name, column in offsets.columns.items()
+        },
+        shared_variance=offsets.variance,
+        error_scale=ladder.choices.states_prior("parallax_error_scale"),
+        cluster_parallax=np.array([cluster.parallax for cluster in measured]),
+        cluster_error=np.array([cluster.error for cluster in measured]),
+        distances=distances_of(section, stars, sharing),
+        sharing=sharing,
+        selection=section.selection,
+        headroom=stars.extras.headroom,
     )
+
+
+def parallax_parameters(ladder: Ladder) -> tuple[str, ...]:
+    """Parameters of the parallaxes that are no coefficients of the relation."""
+    stars, section = ladder.parallax_stars, ladder.choices.anchors.parallaxes
+    if stars is None or section is None:
+        return ()
+    names = [*offset_terms(ladder.choices, stars, ladder.hosts).columns]
+    if ladder.choices.states_prior("parallax_error_scale"):
+        names.append("parallax_error_scale")
+    if section.exponential is not None:
+        names.append("distance_length")
+    return tuple(names)
+
+
+def _named_clusters(section: Parallaxes, stars: StarSample) -> list[tuple[int, str]]:
+    """Clusters of the sample that have a parallax of their own: number and name."""
+    known = enumerate(stars.extras.clusters)
+    return [(place, name) for place, name in known if name in section.clusters]
 
 
 def _active_errors(

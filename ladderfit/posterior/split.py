@@ -1,6 +1,7 @@
 """Which parameters enter non-linearly (phi) and which are Gaussian given those (theta).
 
-phi holds the scatters, the parallax offset, the relation's coefficients where
+phi holds the scatters, what is unknown of the parallaxes (offsets, error scale,
+modes of shared errors, the distance prior's length), the relation's coefficients where
 parallax stars are present, and every coefficient whose prior is not normal.
 theta holds all other coefficients and the host moduli.  This file alone decides.
 """
@@ -16,7 +17,7 @@ from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
 from ladderfit.posterior.errors_in_inputs import input_errors, uses_population
-from ladderfit.posterior.parallaxes import active_coefficients
+from ladderfit.posterior.parallaxes import active_coefficients, parallax_parameters
 from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
 from ladderfit.relations import coefficient_names, scatters
 from ladderfit.samples import FloatArray, IntArray
@@ -245,7 +246,7 @@ def _others(ladder: Ladder) -> tuple[str, ...]:
     if ladder.parallax_stars is not None:
         if uses_population(ladder, ladder.parallax_stars):
             names.append("parallax_metallicity")
-        names.append("parallax_offset")
+        names += parallax_parameters(ladder)
     if ladder.peaks is not None or ladder.flow is not None:
         names.append("peak_scatter")
     if ladder.velocities is not None:
