@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
     from ladderfit.result import Result
+    from ladderfit.sampling.live import Run, open_run, start
     from ladderfit.sampling.run import draw
     from ladderfit.store import read_result
 
@@ -27,10 +28,23 @@ _HOME = {
     "read_ladder": "ladderfit.ladder",
     "Result": "ladderfit.result",
     "draw": "ladderfit.sampling.run",
+    "Run": "ladderfit.sampling.live",
+    "open_run": "ladderfit.sampling.live",
+    "start": "ladderfit.sampling.live",
     "read_result": "ladderfit.store",
 }
 
-__all__ = ["Ladder", "build_ladder", "read_ladder", "Result", "draw", "read_result"]
+__all__ = [
+    "Ladder",
+    "build_ladder",
+    "read_ladder",
+    "Result",
+    "draw",
+    "Run",
+    "open_run",
+    "start",
+    "read_result",
+]
 
 
 def __getattr__(name: str) -> Any:

@@ -2,15 +2,23 @@
 
 from __future__ import annotations
 
+import shutil
 from pathlib import Path
 
+from ladderfit.errors import LadderfitError
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
 from ladderfit.plots import save_figures
 from ladderfit.result import Result
 from ladderfit.sampling.direct import Progress
+from ladderfit.sampling.live import Run, start
+from ladderfit.sampling.progress import RunProgress
 from ladderfit.sampling.run import draw
 from ladderfit.store import write_result
+
+
+class StoppedError(LadderfitError):
+    """A run was stopped before its goal; the message says how to go on."""
 
 
 def calibrate(
@@ -23,13 +31,16 @@ def calibrate(
 ) -> Result:
     """Draw the posterior and write numbers, draws, choices and figures into a new folder.
 
+    The ladder's ``sampling.sampler`` says how: `direct`, or `ensemble`, whose folder
+    exists from the start so that the run can be stopped and resumed.
+
     Parameters
     ----------
     ladder : Ladder
     folder : str or Path
-        Must not exist.  It appears once everything in it is written.
+        Must not exist.  With `direct` it appears once everything in it is written.
     seed, draws : int, optional
-        In place of the ladder's own.
+        In place of the ladder's own; with `ensemble` the draws are effective ones.
     progress : callable, optional
         Called with a stage in words and the fraction of it that is done.
 
@@ -45,7 +56,11 @@ def calibrate(
         If the folder cannot be written.
     SamplingError
         If the posterior could not be drawn.
+    StoppedError
+        If an ensemble run was interrupted; what it drew is kept.
     """
+    if ladder.choices.sampling.sampler == "ensemble":
+        return finish(start(ladder, folder, seed=seed, ess=draws), progress)
     with new_folder(folder) as temporary:
         result = draw(ladder, seed=seed, draws=draws, progress=progress)
         if progress is not None:
@@ -53,3 +68,45 @@ def calibrate(
         write_result(result, temporary)
         save_figures(result, temporary / "figures")
     return result
+
+
+def finish(run: Run, progress: Progress | None = None) -> Result:
+    """Wait for an ensemble run, then add the figures to its folder.
+
+    Raises
+    ------
+    StoppedError
+        If the run was stopped before its goal, here by an interrupt or from elsewhere.
+    LadderfitError
+        If the run failed.
+    """
+
+    def tell(found: RunProgress) -> None:
+        if progress is not None:
+            progress(*stage(found))
+
+    found = run.wait(tell=tell)
+    if found.state != "finished":
+        raise StoppedError(
+            f"stopped; {found.draws:,} draws are kept in {run.path}; "
+            f"to go on: ladderfit calibrate --resume {run.path}"
+        )
+    result = run.result()
+    if progress is not None:
+        progress("drawing figures", 0.0)
+    target = run.path / "figures"
+    temporary = run.path / ".figures.tmp"
+    shutil.rmtree(temporary, ignore_errors=True)
+    save_figures(result, temporary)
+    shutil.rmtree(target, ignore_errors=True)
+    temporary.rename(target)
+    return result
+
+
+def stage(found: RunProgress) -> tuple[str, float]:
+    """A run's progress as a stage in words and the fraction of it that is done."""
+    if found.worst is None:
+        return found.message or f"{found.state} the ensembles", 0.0
+    if found.goal.ess is None:
+        return f"{found.draws:,} draws of the ensembles", found.fraction
+    return f"{found.ess:,.0f} effective draws of {found.worst}", found.fraction

@@ -85,6 +85,18 @@ def _add_calibrate(add: Callable[..., argparse.ArgumentParser]) -> None:
     command.add_argument(
         "--draws", type=int, metavar="N", help="number in place of the ladder's sampling.draws"
     )
+    command.add_argument(
+        "--sampler",
+        choices=("direct", "ensemble"),
+        help="in place of the ladder's sampling.sampler; an ensemble can be stopped and resumed",
+    )
+    former = command.add_mutually_exclusive_group()
+    former.add_argument(
+        "--again", metavar="DIR", help="repeat the result in DIR and say whether it is the same"
+    )
+    former.add_argument(
+        "--resume", metavar="DIR", help="go on with the ensemble run in DIR, or watch it"
+    )
     command.set_defaults(run=_calibrate)
 
 
@@ -168,21 +180,77 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _calibrate(chosen: argparse.Namespace) -> int:
-    from ladderfit.calibration import calibrate
+    from ladderfit.calibration import StoppedError, calibrate
     from ladderfit.files import first_free
     from ladderfit.ladder import read_ladder
     from ladderfit.shipped import sample_ladder
     from ladderfit.wording import summary_text
 
+    if chosen.again is not None:
+        return _again(chosen)
+    if chosen.resume is not None:
+        return _resume(chosen)
     path = sample_ladder() if chosen.file is None else Path(chosen.file)
     ladder = read_ladder(path)
-    stated = {"sampling.seed": chosen.seed, "sampling.draws": chosen.draws}
+    stated = {
+        "sampling.seed": chosen.seed,
+        "sampling.draws": chosen.draws,
+        "sampling.sampler": chosen.sampler,
+    }
     ladder = ladder.change({key: value for key, value in stated.items() if value is not None})
     folder = first_free(Path(path.stem)) if chosen.out is None else Path(chosen.out)
-    with progress_on(sys.stderr) as report:
-        result = calibrate(ladder, folder, progress=report)
+    try:
+        with progress_on(sys.stderr) as report:
+            result = calibrate(ladder, folder, progress=report)
+    except StoppedError as error:
+        _say(f"ladderfit: {error}", sys.stderr)
+        return EXIT_INTERRUPTED
     _say(f"{summary_text(result)}\n\nWritten to {folder}", sys.stdout)
     return 0
+
+
+def _again(chosen: argparse.Namespace) -> int:
+    from ladderfit.repeat import repeat
+
+    _refuse_besides("--again", chosen, ("file", "seed", "draws", "sampler"))
+    with progress_on(sys.stderr) as report:
+        found = repeat(chosen.again, chosen.out, report)
+    _say(str(found), sys.stdout)
+    return 0 if found.equal else EXIT_FAILED
+
+
+def _resume(chosen: argparse.Namespace) -> int:
+    from ladderfit.calibration import StoppedError, finish
+    from ladderfit.sampling.live import open_run
+    from ladderfit.wording import summary_text
+
+    _refuse_besides("--resume", chosen, ("file", "out", "seed", "sampler"))
+    run = open_run(chosen.resume)
+    if chosen.draws is not None:
+        run.set_goal(ess=chosen.draws)
+    if run.state not in ("starting", "running"):
+        run.resume()
+    try:
+        with progress_on(sys.stderr) as report:
+            result = finish(run, report)
+    except StoppedError as error:
+        _say(f"ladderfit: {error}", sys.stderr)
+        return EXIT_INTERRUPTED
+    _say(f"{summary_text(result)}\n\nWritten to {run.path}", sys.stdout)
+    return 0
+
+
+def _refuse_besides(option: str, chosen: argparse.Namespace, others: Sequence[str]) -> None:
+    given = [name for name in others if getattr(chosen, name) is not None]
+    if given:
+        words = given[0].upper() if given[0] == "file" else f"--{given[0]}"
+        raise InputError(
+            Problem(
+                found=f"{words} besides {option}",
+                expected=f"{option} alone, as its folder says all that",
+                remedy=f"leave {words} out",
+            )
+        )
 
 
 def _draft(chosen: argparse.Namespace) -> int:

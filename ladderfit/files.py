@@ -145,6 +145,12 @@ def lock(path: str | Path, words: str = "in use") -> Iterator[None]:
         path.unlink(missing_ok=True)
 
 
+def held(path: str | Path) -> str | None:
+    """Who holds a lock, in words; None where nobody does, and a lock left behind is removed."""
+    path = Path(path)
+    return None if not path.exists() or _abandoned(path) else _who_holds(path)
+
+
 def _take(path: Path, words: str) -> bool:
     """Make the lock whole in one step: a link to a finished file fails if the name is taken."""
     handle, name = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
@@ -178,7 +184,16 @@ def _abandoned(path: Path) -> bool:
         return _move_away(path, holder)
     except OSError:
         return False
-    return False
+    return _move_away(path, holder) if _dead(int(holder[0])) else False
+
+
+def _dead(process: int) -> bool:
+    """Whether a process has ended and only waits to be collected (told on Linux alone)."""
+    try:
+        state = Path(f"/proc/{process}/stat").read_text(encoding="utf-8").rpartition(")")[2]
+    except OSError:
+        return False
+    return state.split()[:1] == ["Z"]
 
 
 def _move_away(path: Path, holder: list[str]) -> bool:

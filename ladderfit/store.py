@@ -10,6 +10,7 @@ from __future__ import annotations
 import json
 import os
 import platform
+import shutil
 from collections.abc import Mapping
 from datetime import UTC, datetime
 from importlib import metadata
@@ -23,6 +24,7 @@ from astropy.table import Table
 
 from ladderfit.choices import Choices
 from ladderfit.errors import InputError, Problem
+from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.names import base_name, group_of, parameter, with_group
@@ -34,19 +36,23 @@ _RECORDED = ("ladderfit", "numpy", "scipy", "astropy", "pandas", "emcee", "numba
 _TABLES = ("cepheids", "anchors.parallaxes", "supernovae", "expansion")
 
 
-def write_result(result: Result, folder: Path) -> None:
+def write_result(result: Result, folder: Path, ladder_file: Path | None = None) -> None:
     """Write a result's files into an existing folder.
 
     Meant to be used inside `ladderfit.files.new_folder`, which moves the folder
-    into place once everything in it is written.
+    into place once everything in it is written.  A `ladder_file` is copied as it
+    is; without one the choices are written, with paths as seen from beside the folder.
     """
-    provenance = provenance_of(result)
+    if ladder_file is None:
+        write_choices(_relocated(result, folder), folder / "ladder.toml")
+    else:
+        shutil.copyfile(ladder_file, folder / "ladder.toml")
+    provenance = provenance_of(result) | {"ladder_sha256": sha256_of(folder / "ladder.toml")}
     summary = {**_summary(result), "provenance": provenance}
     _write_json(folder / "summary.json", summary)
     _write_json(folder / "provenance.json", provenance)
     write_ecsv(result, folder / "summary.ecsv")
     write_netcdf(result, folder / "posterior.nc")
-    write_choices(_relocated(result, folder), folder / "ladder.toml")
 
 
 def read_result(folder: str | Path) -> Result:

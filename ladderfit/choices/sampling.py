@@ -14,7 +14,7 @@ from ladderfit.schema import choice
 class Sampling:
     """How the posterior is drawn."""
 
-    sampler: Literal["direct"] = choice("which sampler", default="direct")
+    sampler: Literal["direct", "ensemble"] = choice("which sampler", default="direct")
     draws: int = choice("number of draws", default=4000)
     seed: int = choice("seed of the random generator", default=1)
 

@@ -22,6 +22,7 @@ from ladderfit.diagnostics import ess_of_mean, rhat
 FloatArray = npt.NDArray[np.float64]
 
 AGREED_RHAT = 1.01  # Vehtari et al. 2021: above this, independent runs have not yet agreed
+_WORST_RHAT = 1e6  # stands for infinity, which JSON does not know
 FEWEST_ROWS = 25  # steps of the ensembles below which nothing is estimated
 
 
@@ -102,27 +103,37 @@ class Report:
             wanted.append(max(short, math.ceil(self.draws / 2)) if not self.agreed else short)
         return max(min(wanted), 1) if wanted else None
 
-    def sentence(self, goal: Goal) -> str:
-        """Which parameter is worst, how many more draws are needed, and what to do."""
+    def sentence(self, goal: Goal, *, going: bool = True) -> str:
+        """Which parameter is worst, how many more draws are needed, and what to do.
+
+        Parameters
+        ----------
+        goal : Goal
+        going : bool
+            Whether the run is under way.
+        """
+        go_on = "let the run go on" if going else "resume the run"
         if self.worst is None:
-            return f"{self.draws:,} draws so far, too few to say what they are worth; let it run."
-        lines = [f"{self.worst} is worst: {self.worst_ess:,.0f} effective of {self.draws:,} draws."]
+            few = (
+                "too few to say what they are worth" if self.draws else "as the warm-up comes first"
+            )
+            return f"{self.draws:,} draws so far, {few}: {go_on}."
+        parts = [f"{self.worst} is worst: {self.worst_ess:,.0f} effective of {self.draws:,} draws."]
         if not self.agreed:
-            lines.append(
+            parts.append(
                 f"The ensembles disagree on {self.least_agreed} (R-hat {self.worst_rhat:.3f}, "
-                f"above {AGREED_RHAT}): do not use these numbers yet; let the run go on, and if "
-                "R-hat stays there look for separate modes or a bound in the corner figure."
+                f"above {AGREED_RHAT}): do not use these numbers yet; if R-hat stays there, look "
+                "for separate modes or a bound in the corner figure."
             )
-        elif self.reaches(goal):
-            lines.append(
-                f"The ensembles agree (R-hat at most {self.worst_rhat:.3f}, "
-                f"{self.least_agreed}); nothing more is needed."
-            )
+        else:
+            parts.append(f"The ensembles agree (R-hat at most {self.worst_rhat:.3f}).")
         more = self.more(goal)
         if more:
-            aim = f"{goal.ess:,.0f} effective" if goal.ess is not None else f"{goal.total:,} in all"
-            lines.append(f"About {more:,} more draws for {aim}: let it run, or resume it.")
-        return " ".join(lines)
+            aim = f"{goal.ess:,.0f} effective" if goal.ess is not None else f"{goal.total:,}"
+            parts.append(f"About {more:,} more draws for {aim}: {go_on}.")
+        elif self.agreed:
+            parts.append("Nothing more is needed.")
+        return " ".join(parts)
 
 
 def report(values: Mapping[str, FloatArray]) -> Report:
@@ -161,4 +172,4 @@ def ensemble_ess(draws: FloatArray) -> float:
 def ensemble_rhat(draws: FloatArray) -> float:
     """Rank-normalised split R-hat over ensembles, shape (ensembles, rows, walkers)."""
     found = rhat(draws.reshape(draws.shape[0], -1))
-    return found if math.isfinite(found) else math.inf
+    return found if found < _WORST_RHAT else _WORST_RHAT

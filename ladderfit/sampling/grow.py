@@ -23,7 +23,7 @@ FloatArray = npt.NDArray[np.float64]
 
 COMMIT_EVERY = 0.5  # s
 _WARM_UP_EVERY = 10  # rows between two looks at the warm-up
-_WARM_UP_MOST = 500  # rows
+_WARM_UP_LEAST, _WARM_UP_MOST = 30, 500  # rows
 _SETTLED_RHAT = 1.05
 _FIRST_LOOK, _LOOKS_APART = 25, 1.1
 
@@ -60,7 +60,7 @@ def grow(
         warming = file.commit.warm_up is None
         kept = 0 if file.commit.warm_up is None else file.rows - file.commit.warm_up
         look = file.rows % _WARM_UP_EVERY == 0 if warming else is_look(kept)
-        full = not warming and kept == most()
+        full = not warming and _reached(kept, most())
         now = time.monotonic()
         if not (look or full or now - last >= every):
             continue
@@ -88,7 +88,7 @@ def settled(file: ChainFile) -> bool:
     coordinate (location or scale) or of the log density.
     """
     rows = file.commit.rows
-    if rows < 2 * _WARM_UP_EVERY:
+    if rows < _WARM_UP_LEAST:
         return False
     if rows >= _WARM_UP_MOST:
         return True
@@ -104,6 +104,10 @@ def _at_the_end(file: ChainFile, enough: Callable[[FloatArray], bool], most: int
     commit = file.commit
     if commit.warm_up is None:
         return False
-    if most is not None and commit.kept >= most:
+    if _reached(commit.kept, most):
         return True
     return is_look(commit.kept) and enough(file.read(commit.warm_up)[0])
+
+
+def _reached(kept: int, most: int | None) -> bool:
+    return most is not None and kept >= most
