@@ -11,12 +11,14 @@ LOG_2PI = np.log(2.0 * np.pi)
 def dense_log_evidence(host, columns, y, variance, hosts, prior_mean, prior_sd, modulus_sd=None):
     """Log density of y with coefficients and host locals integrated out, covariance written out.
 
-    Where `modulus_sd` is None the locals are flat (their improper density is 1).
+    `variance` is that of each row, or the whole covariance of the rows.  Where
+    `modulus_sd` is None the locals are flat (their improper density is 1).
     """
     indicator = np.zeros((len(y), hosts))
     inside = host >= 0
     indicator[np.flatnonzero(inside), host[inside]] = 1.0
-    covariance = np.diag(variance) + (columns * np.asarray(prior_sd) ** 2) @ columns.T
+    own = np.diag(variance) if np.ndim(variance) == 1 else variance
+    covariance = own + (columns * np.asarray(prior_sd) ** 2) @ columns.T
     mean = columns @ np.asarray(prior_mean)
     if modulus_sd is not None:
         covariance = covariance + modulus_sd**2 * indicator @ indicator.T

@@ -22,8 +22,8 @@ ORDER = """
     select_supernovae
     covariances
     relations ladder_file assembly consistency ladder ladder_copy
-    kernels.compiling kernels.quadrature kernels.sightlines kernels.detection kernels.arrow
-    kernels.reduced kernels
+    kernels.compiling kernels.quadrature kernels.sightlines kernels.detection
+    kernels.elimination kernels.arrow kernels.reduced kernels.coupled kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
     posterior.split

@@ -1,5 +1,8 @@
 """Gaussian systems of arrow shape: one local parameter per host, a few globals.
 
+Hosts whose rows are correlated with one another are an exception: their locals
+are factored together, after all others have gone.
+
 Rows y = u[host] + X g + e, or y = X g + e where there is no host, with e normal
 of known variance, are summed into moments; the locals are eliminated one by one
 and the globals by a Cholesky factor.  Everything carries a leading batch axis,
@@ -19,7 +22,8 @@ from functools import cache
 import numpy as np
 import numpy.typing as npt
 
-from ladderfit.kernels.compiling import compiled, in_halves
+from ladderfit.kernels.compiling import in_halves
+from ladderfit.kernels.elimination import draw_coupled, eliminate
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -43,20 +47,33 @@ class Moments:
         Weighted products of [X, y], over all rows.
     constant : array, shape (b,)
         Part of the log density that depends on no coefficient.
+    coupling : array, shape (b, m, m), or None
+        Weighted products of the locals of coupled hosts with one another, on top
+        of `local`; None where every product is in `local`.
+    coupled : array of int, shape (m,), or None
+        The coupled hosts, ascending.
     """
 
     local: FloatArray
     cross: FloatArray
     square: FloatArray
     constant: FloatArray
+    coupling: FloatArray | None = None
+    coupled: IntArray | None = None
 
     def __add__(self, other: Moments) -> Moments:
-        """Moments of both sets of rows."""
+        """Moments of both sets of rows; both have the same coupled hosts, or one has none."""
+        mine, theirs = self.coupling, other.coupling
+        first, second = self.coupled, other.coupled
+        if first is not None and second is not None and not np.array_equal(first, second):
+            raise ValueError("the two sets of rows couple different hosts")
         return Moments(
             self.local + other.local,
             self.cross + other.cross,
             self.square + other.square,
             self.constant + other.constant,
+            theirs if mine is None else mine if theirs is None else mine + theirs,
+            first if first is not None else second,
         )
 
     def repeated(self, batch: int) -> Moments:
@@ -66,6 +83,8 @@ class Moments:
             np.repeat(self.cross[:1], batch, axis=0),
             np.repeat(self.square[:1], batch, axis=0),
             np.repeat(self.constant[:1], batch, axis=0),
+            None if self.coupling is None else np.repeat(self.coupling[:1], batch, axis=0),
+            self.coupled,
         )
 
 
@@ -76,13 +95,16 @@ def upper_triangle(width: int) -> tuple[IntArray, IntArray]:
     return row, column
 
 
-def no_moments(batch: int, hosts: int, width: int) -> Moments:
-    """Moments of no rows, for `width` coefficients."""
+def no_moments(batch: int, hosts: int, width: int, coupled: IntArray | None = None) -> Moments:
+    """Moments of no rows, for `width` coefficients; `coupled` hosts, if any, shape (m,)."""
+    some = coupled is not None and len(coupled) > 0
     return Moments(
         np.zeros((batch, hosts)),
         np.zeros((batch, hosts, width + 1)),
         np.zeros((batch, width + 1, width + 1)),
         np.zeros(batch),
+        np.zeros((batch, len(coupled), len(coupled))) if some and coupled is not None else None,
+        coupled if some else None,
     )
 
 
@@ -195,8 +217,22 @@ class Solution:
         globals_[:, self.free] += np.linalg.solve(np.swapaxes(self.factor, 1, 2), noise)[..., 0]
         cross, local = self.moments.cross, self.moments.local
         expected = np.einsum("bhk,bk->bh", cross[:, :, :-1], globals_)
-        centre = (cross[:, :, -1] - expected) / local
-        return globals_, centre + rng.standard_normal(local.shape) / np.sqrt(local)
+        linear = cross[:, :, -1] - expected
+        noise = rng.standard_normal(local.shape)
+        coupled = self.moments.coupled
+        if coupled is None or self.moments.coupling is None:
+            return globals_, linear / local + noise / np.sqrt(local)
+        drawn = np.empty(local.shape)
+        alone = np.setdiff1d(np.arange(local.shape[1]), coupled)
+        weight = local[:, alone]
+        drawn[:, alone] = linear[:, alone] / weight + noise[:, alone] / np.sqrt(weight)
+        precision = self.moments.coupling.copy()
+        places = np.arange(len(coupled))
+        precision[:, places, places] += local[:, coupled]
+        together = np.ascontiguousarray(linear[:, coupled])
+        draw_coupled(precision, together, np.ascontiguousarray(noise[:, coupled]))
+        drawn[:, coupled] = together
+        return globals_, drawn
 
 
 def solve(
@@ -216,7 +252,9 @@ def solve(
     Notes
     -----
     Every host needs at least one row of its own, and the free globals' precision
-    has to be positive definite (which proper priors ensure).
+    has to be positive definite (which proper priors ensure).  Hosts that are not
+    coupled go first, one by one; the m coupled ones are then eliminated from one
+    dense block, which costs of the order of m^2 (m / 3 + k) steps a draw.
     """
     batch, width = len(moments.constant), moments.square.shape[-1]
     known = np.empty(0, dtype=np.int64) if known is None else known.astype(np.int64)
@@ -225,14 +263,22 @@ def solve(
     log_evidence = np.empty(batch)
     mean = np.empty((batch, len(free)))
     factor = np.zeros((batch, len(free), len(free)))
+    hosts = moments.local.shape[1]
+    coupled, coupling = moments.coupled, moments.coupling
+    if coupled is None or coupling is None:
+        coupled, coupling = np.empty(0, dtype=np.int64), np.empty((batch, 0, 0))
+    alone = np.setdiff1d(np.arange(hosts), coupled)
 
     def part(start: int, stop: int) -> None:
         chosen = slice(start, stop)
-        _eliminate(
+        eliminate(
             np.ascontiguousarray(moments.local[chosen]),
             np.ascontiguousarray(moments.cross[chosen]),
             np.ascontiguousarray(moments.square[chosen]),
             np.ascontiguousarray(moments.constant[chosen]),
+            np.ascontiguousarray(coupling[chosen]),
+            coupled,
+            alone,
             known,
             values[chosen],
             free,
@@ -241,99 +287,7 @@ def solve(
             factor[chosen],
         )
 
-    in_halves(part, batch, work=batch * (moments.local.shape[1] + 4) * width)
+    in_halves(part, batch, work=batch * (hosts + 4 + len(coupled) ** 2) * width)
     coefficients = np.empty((batch, width - 1))
     coefficients[:, known], coefficients[:, free] = values, mean
     return Solution(log_evidence, mean, factor, coefficients, free, moments)
-
-
-@compiled
-def _eliminate(
-    local: FloatArray,
-    cross: FloatArray,
-    square: FloatArray,
-    constant: FloatArray,
-    known: IntArray,
-    values: FloatArray,
-    free: IntArray,
-    log_evidence: FloatArray,
-    mean: FloatArray,
-    factor: FloatArray,
-) -> None:
-    batch, hosts = local.shape
-    k, y = len(free), square.shape[1] - 1
-    work = np.empty((k + 1, k + 1))
-    column = np.empty(k + 1)
-    for draw in range(batch):
-        _move_known(square[draw], known, values[draw], free, work)
-        logs = 0.0
-        for host in range(hosts):
-            weight = local[draw, host]
-            logs += math.log(weight)
-            here = cross[draw, host]
-            data = here[y]
-            for j in range(len(known)):
-                data -= here[known[j]] * values[draw, j]
-            for i in range(k):
-                column[i] = here[free[i]]
-            column[k] = data
-            for i in range(k + 1):
-                part = column[i] / weight
-                for j in range(i + 1):
-                    work[i, j] -= part * column[j]
-        log_pivots = _cholesky(work, k)
-        log_evidence[draw] = (
-            constant[draw]
-            - 0.5 * work[k, k]
-            - 0.5 * logs
-            - log_pivots
-            + 0.5 * (k + hosts) * LOG_2PI
-        )
-        if math.isnan(log_evidence[draw]):
-            log_evidence[draw] = -math.inf
-        for i in range(k - 1, -1, -1):
-            value = work[k, i]
-            for j in range(i + 1, k):
-                value -= work[j, i] * mean[draw, j]
-            mean[draw, i] = value / work[i, i]
-            factor[draw, i, : i + 1] = work[i, : i + 1]
-
-
-@compiled
-def _move_known(
-    square: FloatArray, known: IntArray, values: FloatArray, free: IntArray, work: FloatArray
-) -> None:
-    """Lower triangle of the products of [free columns, y less the known part]."""
-    k, y = len(free), square.shape[0] - 1
-    for i in range(k):
-        for j in range(i + 1):
-            work[i, j] = square[free[i], free[j]]
-        linear = square[free[i], y]
-        for j in range(len(known)):
-            linear -= square[free[i], known[j]] * values[j]
-        work[k, i] = linear
-    total = square[y, y]
-    for i in range(len(known)):
-        total -= 2.0 * square[known[i], y] * values[i]
-        for j in range(len(known)):
-            total += values[i] * square[known[i], known[j]] * values[j]
-    work[k, k] = total
-
-
-@compiled
-def _cholesky(work: FloatArray, k: int) -> float:
-    """Factor the leading k by k part in place; the last row becomes L^-1 b and chi squared."""
-    log_pivots = 0.0
-    for i in range(k + 1):
-        for j in range(min(i + 1, k)):
-            value = work[i, j]
-            for m in range(j):
-                value -= work[i, m] * work[j, m]
-            if i == j:
-                work[i, i] = math.sqrt(value) if value > 0.0 else math.nan
-                log_pivots += math.log(work[i, i])
-            else:
-                work[i, j] = value / work[j, j]
-    for m in range(k):
-        work[k, k] -= work[k, m] * work[k, m]
-    return log_pivots

@@ -7,11 +7,15 @@ lie a distance pi off the real axis, so that convergence is geometric.  The numb
 of nodes is doubled until the *summed log density* agrees with the exact one at
 all points in between: how many that takes grows with the number of stars and with
 small errors, so it is measured at every build, never assumed.
+
+What is tabulated are `SmoothSums`: the sums of independent rows here, those of
+correlated ones in `ladderfit.kernels.coupled`.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from typing import Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -24,6 +28,24 @@ _FIRST, _LAST = 9, 257  # nodes; nested Clenshaw-Curtis points: 9, 17, 33, ...
 _TOLERANCE = 1e-7  # of the summed log density, per thousand stars
 _MUCH_WIDER = 4.0
 _FEWEST_ROWS = 64  # below this the exact sums are as cheap
+
+
+class SmoothSums(Protocol):
+    """Sums that are smooth functions of one extra variance."""
+
+    @property
+    def size(self) -> int:
+        """Number of rows."""
+
+    @property
+    def shift(self) -> float:
+        """The smallest variance: the sums' nearest singularity lies at minus this."""
+
+    def packed(self, extra: FloatArray) -> FloatArray:
+        """Exact sums at the given extra variances, shape (b, q)."""
+
+    def log_density(self, packed: FloatArray) -> FloatArray:
+        """Log density of the rows under unit priors, shape (b,), from such sums."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -103,23 +125,37 @@ class ReducedRows:
         return total
 
     def _sums(self, extra: FloatArray) -> FloatArray:
-        packed = np.empty((len(extra), _packed_size(self.rows)))
-        todo = np.ones(len(extra), bool)
-        for table in self.tables:
-            here = todo & table.holds(extra)
-            if here.all():
-                return table.sums(extra)
-            if here.any():
-                packed[here] = table.sums(extra[here])
-                todo &= ~here
-        if todo.any():
-            packed[todo] = pack(self.rows, self.rows.moments(extra[todo]))
-        return packed
+        return interpolated(RowSums(self.rows), self.tables, extra)
 
     def focus(self, low: float, high: float) -> None:
         """Have a short table for the range of extra variance where most draws will fall."""
-        if not any(table.covers(low, high) for table in self.tables[:-1]):
-            self.tables[:-1] = [tabulate(self.rows, low, high)]
+        focus(RowSums(self.rows), self.tables, low, high)
+
+
+def interpolated(source: SmoothSums, tables: list[SumTable], extra: FloatArray) -> FloatArray:
+    """Sums from the first table that holds each extra variance; exact where none does."""
+    packed: FloatArray | None = None
+    todo = np.ones(len(extra), bool)
+    for table in tables:
+        here = todo & table.holds(extra)
+        if here.all():
+            return table.sums(extra)
+        if here.any():
+            found = table.sums(extra[here])
+            packed = np.empty((len(extra), found.shape[1])) if packed is None else packed
+            packed[here] = found
+            todo &= ~here
+    if packed is None:
+        return source.packed(extra)
+    if todo.any():
+        packed[todo] = source.packed(extra[todo])
+    return packed
+
+
+def focus(source: SmoothSums, tables: list[SumTable], low: float, high: float) -> None:
+    """Put a short table for a range of extra variance before the wide one, in place."""
+    if not any(table.covers(low, high) for table in tables[:-1]):
+        tables[:-1] = [table_of(source, low, high)]
 
 
 def reduced(rows: Rows, largest: float) -> Rows | ReducedRows:
@@ -130,24 +166,52 @@ def reduced(rows: Rows, largest: float) -> Rows | ReducedRows:
 
 
 def tabulate(rows: Rows, low: float, high: float) -> SumTable:
+    """As `table_of`, for independent rows."""
+    return table_of(RowSums(rows), low, high)
+
+
+def table_of(source: SmoothSums, low: float, high: float) -> SumTable:
     """Tabulate sums between two extra variances, to the tolerance in the log density."""
-    shift = float(rows.variance.min())
-    tolerance = _TOLERANCE * max(1.0, len(rows.variance) / 1000.0)
+    shift = source.shift
+    tolerance = _TOLERANCE * max(1.0, source.size / 1000.0)
     ends = np.log(low + shift), np.log(high + shift)
     count = _FIRST
-    points = _points(count)
-    values = pack(rows, rows.moments(_extra(points, ends, shift)))
+    values = source.packed(_extra(_points(count), ends, shift))
     while True:
         table = SumTable(low, high, shift, _coefficients(values), np.inf)
-        between = _points(2 * count - 1)[1::2]
-        extra = _extra(between, ends, shift)
-        exact = pack(rows, rows.moments(extra))
-        error = _largest_error(rows, table.sums(extra), exact)
+        extra = _extra(_points(2 * count - 1)[1::2], ends, shift)
+        exact = source.packed(extra)
+        error = _largest_error(source, table.sums(extra), exact)
         if error < tolerance or count >= _LAST:
             return SumTable(low, high, shift, _coefficients(values), error)
         merged = np.empty((2 * count - 1, values.shape[1]))
         merged[0::2], merged[1::2] = values, exact
         values, count = merged, 2 * count - 1
+
+
+@dataclass(frozen=True, eq=False)
+class RowSums:
+    """The sums of independent rows, as `SmoothSums`."""
+
+    rows: Rows
+
+    @property
+    def size(self) -> int:
+        """Number of rows."""
+        return len(self.rows.variance)
+
+    @property
+    def shift(self) -> float:
+        """The smallest measurement variance."""
+        return float(self.rows.variance.min())
+
+    def packed(self, extra: FloatArray) -> FloatArray:
+        """Exact sums, as `pack` lays them out."""
+        return pack(self.rows, self.rows.moments(extra))
+
+    def log_density(self, packed: FloatArray) -> FloatArray:
+        """Log density of the rows under unit priors."""
+        return _log_density(self.rows, packed)
 
 
 def pack(rows: Rows, moments: Moments) -> FloatArray:
@@ -164,11 +228,6 @@ def pack(rows: Rows, moments: Moments) -> FloatArray:
         ],
         axis=1,
     )
-
-
-def _packed_size(rows: Rows) -> int:
-    width: int = rows.columns.shape[1]
-    return 1 + width * (width + 1) // 2 + len(rows.slices) * (1 + width)
 
 
 def _points(count: int) -> FloatArray:
@@ -199,9 +258,9 @@ def _coefficients(values: FloatArray) -> FloatArray:
     return np.asarray(scaled @ values)
 
 
-def _largest_error(rows: Rows, packed: FloatArray, exact: FloatArray) -> float:
+def _largest_error(source: SmoothSums, packed: FloatArray, exact: FloatArray) -> float:
     """Largest difference in the log density of the rows, coefficients integrated out."""
-    found = [_log_density(rows, sums) for sums in (packed, exact)]
+    found = [source.log_density(sums) for sums in (packed, exact)]
     difference = np.abs(found[0] - found[1])
     return float(np.max(np.where(np.isfinite(difference), difference, np.inf)))
 
