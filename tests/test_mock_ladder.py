@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import dataclasses
+import re
 import tomllib
 from pathlib import Path
 
 import numpy as np
 import pytest
+from scipy import stats
 
 from ladderfit.errors import InputError
 from ladderfit.ladder import Ladder, build_ladder, read_ladder
@@ -88,6 +90,33 @@ def test_parallaxes_and_magnitudes_share_one_true_modulus(sample: Ladder) -> Non
     assert abs(pull.std() - 1.0) < 5.0 / np.sqrt(2.0 * len(pull))
 
 
+def ranks_of_parallaxes(ladder: Ladder, assumed: dict[str, float]) -> np.ndarray:
+    """Where each simulated parallax falls in what is expected of it, given the magnitude."""
+    steps = np.linspace(-8.0, 8.0, 401)
+    weights = stats.norm.pdf(steps) / stats.norm.pdf(steps).sum()
+    ranks = []
+    for seed in range(15):
+        stars = mock_from_ladder(ladder, TRUTH, np.random.default_rng(seed)).parallax_stars
+        assert stars is not None
+        assert stars.parallax is not None
+        variance = (stars.variance + assumed["scatter"] ** 2)[:, None]
+        near = (stars.magnitude - absolute(ladder, stars, assumed))[:, None]
+        if ladder.choices.anchors.parallaxes.distance_prior == "uniform in volume":
+            near = near + 0.6 * np.log(10.0) * variance
+        true = 10.0 ** (2.0 - 0.2 * (near + np.sqrt(variance) * steps))
+        miss = stars.parallax[:, None] - true - assumed["parallax_offset"]
+        ranks.append(stats.norm.cdf(miss / stars.parallax_error[:, None]) @ weights)
+    return np.concatenate(ranks)
+
+
+@pytest.mark.parametrize("prior", ["flat in modulus", "uniform in volume"])
+def test_parallaxes_are_as_the_magnitudes_have_them(sample: Ladder, prior: str) -> None:
+    ladder = sample.change({"anchors.parallaxes.distance_prior": prior})
+    assert stats.kstest(ranks_of_parallaxes(ladder, TRUTH), "uniform").pvalue > 1e-4
+    wrong = {**TRUTH, "zero_point": TRUTH["zero_point"] + 0.05}
+    assert stats.kstest(ranks_of_parallaxes(ladder, wrong), "uniform").pvalue < 1e-6
+
+
 def test_moduli_follow_the_distance_prior(sample: Ladder) -> None:
     volume = sample.change({"anchors.parallaxes.distance_prior": "uniform in volume"})
     means = {}
@@ -118,7 +147,15 @@ def test_what_is_exact_stays(sample: Ladder) -> None:
         np.testing.assert_allclose(after.log_period, before.log_period, atol=1e-9)
         np.testing.assert_allclose(after.variance, before.variance, rtol=1e-6)
         np.testing.assert_allclose(after.metallicity, before.metallicity, atol=1e-7)
-        assert (after.magnitude != before.magnitude).all()
+    assert mock.cepheids is not None
+    assert sample.cepheids is not None
+    assert (mock.cepheids.magnitude != sample.cepheids.magnitude).all()
+    assert mock.parallax_stars is not None
+    assert sample.parallax_stars is not None
+    np.testing.assert_allclose(
+        mock.parallax_stars.magnitude, sample.parallax_stars.magnitude, rtol=1e-7
+    )
+    assert (mock.parallax_stars.parallax != sample.parallax_stars.parallax).all()
     assert sample.flow is not None
     assert mock.flow is not None
     np.testing.assert_allclose(mock.flow.redshift, sample.flow.redshift, rtol=1e-9)
@@ -150,18 +187,26 @@ def test_a_missing_truth_is_named(sample: Ladder) -> None:
 @pytest.mark.parametrize(
     ("changes", "complaint"),
     [
-        ({"relation.break": 10.0}, "key relation.break: found 10.0"),
-        ({"relation.curvature": True}, "key relation.curvature: found True"),
+        ({"relation.break": 10.0}, "key relation.break: found 10;"),
+        ({"relation.curvature": True}, "key relation.curvature: found true"),
         (
             {"anchors.shared_errors": {"s": {"error": 0.02, "loads": {"Tavin": 1, "Orsell": 1}}}},
-            "key anchors.shared_errors: found a shared error",
+            "key anchors.shared_errors: found {s",
+        ),
+        (
+            {"anchors.parallaxes.modulus_bounds": [5.0, 15.0]},
+            "key anchors.parallaxes.modulus_bounds: found [5, 15]",
+        ),
+        (
+            {"anchors.parallaxes.distance_prior": {"exponential": 2.0}},
+            "key anchors.parallaxes.distance_prior: found {exponential = 2}",
         ),
     ],
 )
 def test_a_term_the_simulator_does_not_know_is_refused(
     sample: Ladder, changes: dict[str, object], complaint: str
 ) -> None:
-    with pytest.raises(InputError, match=complaint):
+    with pytest.raises(InputError, match=re.escape(complaint)):
         mock_from_ladder(sample.change(changes), TRUTH, np.random.default_rng(1))
 
 

@@ -3,6 +3,10 @@
 Stars, periods, metallicities, stated errors, hosts and redshifts stay; magnitudes,
 parallaxes, anchor moduli, peaks and velocities are simulated one object at a
 time.  Magnitudes and indices become one column, W.
+
+Parallax stars keep their magnitudes unless a range of moduli is stated: a
+distance prior without ends says what the modulus, and so the parallax, may be
+given the magnitude, and nothing of the magnitude itself.
 """
 
 from __future__ import annotations
@@ -21,8 +25,6 @@ from ladderfit.mock.restated import beyond, restated
 from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
 from ladderfit.samples import FloatArray, FlowSample, PeakSample, StarSample, VelocitySample
-
-_MARGIN = 0.5  # mag, beyond the nearest and the farthest parallax star
 
 Rng = np.random.Generator
 
@@ -52,9 +54,11 @@ def mock_from_ladder(
     rng : Generator
         Source of randomness.
     parallax_moduli : pair of float, optional
-        Range [mag] of the parallax stars' true moduli, which follow the distance
-        prior of the choices inside it, whatever else is known of the star; by
-        default the range of the given stars and half a magnitude on either side.
+        Range [mag] in which the parallax stars' true moduli follow the distance
+        prior of the choices, whatever else is known of the star.  The fit does not
+        know the ends of the range, which pulls it a little.  By default the true
+        modulus is drawn from what prior and magnitude say of it, which is what
+        the fit assumes.
 
     Returns
     -------
@@ -139,17 +143,19 @@ def _measured(mean: FloatArray, scatter: float, error: FloatArray, rng: Rng) -> 
     return np.asarray(own + error * rng.normal(size=len(mean)))
 
 
-def _star_columns(
+def _magnitudes(
     ladder: Ladder, stars: StarSample, modulus: FloatArray, truth: Mapping[str, float], rng: Rng
-) -> list[MaskedColumn]:
-    error = np.sqrt(stars.variance)
+) -> FloatArray:
     mean = modulus + absolute(ladder, stars, truth)
-    measured = _measured(mean, truth["scatter"], error, rng)
+    return _measured(mean, truth["scatter"], np.sqrt(stars.variance), rng)
+
+
+def _star_columns(ladder: Ladder, stars: StarSample, magnitude: FloatArray) -> list[MaskedColumn]:
     columns = [
         text_column("ID", stars.star, "star"),
         digits_column("P", 10.0**stars.log_period, 10, "d", "period of pulsation"),
-        digits_column("W", measured, 8, "mag", "magnitude of the relation, simulated"),
-        digits_column("e_W", error, 8, "mag", "error of W"),
+        digits_column("W", magnitude, 8, "mag", "magnitude or index of the relation"),
+        digits_column("e_W", np.sqrt(stars.variance), 8, "mag", "error of W"),
     ]
     if ladder.choices.relation.metallicity != "none":
         columns.append(digits_column("OH", stars.metallicity, 8, "dex", "metallicity"))
@@ -158,7 +164,7 @@ def _star_columns(
 
 def _cepheids(ladder: Ladder, stars: StarSample, truth: Mapping[str, float], rng: Rng) -> Table:
     modulus = _host_moduli(ladder, truth)[stars.host]
-    columns = _star_columns(ladder, stars, modulus, truth, rng)
+    columns = _star_columns(ladder, stars, _magnitudes(ladder, stars, modulus, truth, rng))
     galaxy = [ladder.hosts[number] for number in stars.host]
     return Table([columns[0], text_column("Galaxy", galaxy, "host galaxy"), *columns[1:]])
 
@@ -174,10 +180,11 @@ def _parallax_stars(
     if section is None or stars.parallax_error is None:  # a ladder with such stars has both
         raise AssertionError
     if moduli is None:
-        near = stars.magnitude - absolute(ladder, stars, truth)
-        moduli = (float(near.min()) - _MARGIN, float(near.max()) + _MARGIN)
-    modulus = _true_moduli(section.distance_prior, moduli, len(stars), rng)
-    columns = _star_columns(ladder, stars, modulus, truth, rng)
+        modulus = _moduli_given_magnitudes(ladder, stars, truth, str(section.distance_prior), rng)
+        columns = _star_columns(ladder, stars, stars.magnitude)
+    else:
+        modulus = _moduli_between(str(section.distance_prior), moduli, len(stars), rng)
+        columns = _star_columns(ladder, stars, _magnitudes(ladder, stars, modulus, truth, rng))
     true = 10.0 ** (2.0 - 0.2 * modulus) + truth["parallax_offset"]
     measured = true + stars.parallax_error * rng.normal(size=len(stars))
     columns += [
@@ -187,7 +194,17 @@ def _parallax_stars(
     return Table(columns)
 
 
-def _true_moduli(prior: str, ends: tuple[float, float], size: int, rng: Rng) -> FloatArray:
+def _moduli_given_magnitudes(
+    ladder: Ladder, stars: StarSample, truth: Mapping[str, float], prior: str, rng: Rng
+) -> FloatArray:
+    """Moduli as prior and magnitude have them: normal, and farther where volume counts."""
+    variance = stars.variance + truth["scatter"] ** 2
+    farther = 0.0 if prior == "flat in modulus" else 0.6 * np.log(10.0) * variance
+    mean = stars.magnitude - absolute(ladder, stars, truth) + farther
+    return np.asarray(mean + np.sqrt(variance) * rng.normal(size=len(stars)))
+
+
+def _moduli_between(prior: str, ends: tuple[float, float], size: int, rng: Rng) -> FloatArray:
     """Moduli between two ends, by the distance prior: flat, or as the volume grows."""
     if prior == "flat in modulus":
         return rng.uniform(*ends, size)

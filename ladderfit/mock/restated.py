@@ -3,16 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import fields
+from dataclasses import MISSING, fields
 from typing import Any
 
 import numpy as np
 
 from ladderfit import schema
-from ladderfit.choices import Relation
 from ladderfit.errors import Problem
 from ladderfit.ladder import Ladder
+from ladderfit.ladder_file import as_written
 from ladderfit.names import with_group
+from ladderfit.samples import StarSample
 
 _MAGNITUDE = {"bands": {"W": "W"}, "errors": {"W": "e_W"}, "band": "W"}
 _COLUMNS = {
@@ -32,71 +33,102 @@ _COLUMNS = {
         "peak_error": "e_mB",
     },
 }
+_ROWS = (  # decided already which rows take part, and what they hold
+    "table",
+    "set_aside",
+    "overtones",
+    "conversion",
+    "extinction_max",
+    "min_signal",
+    "corrected",
+)
+_KNOWN: dict[str, tuple[str, ...]] = {
+    "": (
+        "title",
+        "cepheids",
+        "relation",
+        "groups",
+        "anchors",
+        "hosts",
+        "supernovae",
+        "expansion",
+        "priors",
+        "sampling",
+        "alternatives",
+    ),
+    "cepheids": (*_ROWS, "columns", "magnitude", "periods"),
+    "relation": ("pivot", "metallicity"),
+    "anchors": ("geometric", "parallaxes"),
+    "anchors.parallaxes": (*_ROWS, "columns", "magnitude", "distance_prior", "periods", "use"),
+    "hosts": ("distance_prior",),
+    "supernovae": (*_ROWS, "columns"),
+    "expansion": (
+        *_ROWS,
+        "columns",
+        "intercept",
+        "redshifts",
+        "q0",
+        "j0",
+        "peculiar_velocity",
+        "velocity_constant",
+    ),
+}
 Rng = np.random.Generator
 
 
 def beyond(ladder: Ladder) -> Iterator[Problem]:
     """What a ladder asks for and the simulator does not know: never passed over."""
-    remedy = "take it out to simulate the rest"
-    expected = "terms that the simulator knows"
-    relation = ladder.choices.relation
-    plain = Relation(pivot=relation.pivot, metallicity=relation.metallicity)
-    for item in fields(Relation):
-        value = getattr(relation, item.name)
-        if value != getattr(plain, item.name):
-            key = f"relation.{schema.key_of(item)}"
-            yield Problem(repr(value), expected, remedy, key=key)
-    if ladder.choices.anchors.shared_errors:
-        yield Problem("a shared error", expected, remedy, key="anchors.shared_errors")
-    yield from _beyond_parallaxes(ladder)
+    choices = ladder.choices
+    sections: dict[str, Any] = {
+        "": choices,
+        "cepheids": choices.cepheids,
+        "relation": choices.relation,
+        "anchors": choices.anchors,
+        "anchors.parallaxes": ladder.parallax_stars and choices.anchors.parallaxes,
+        "hosts": choices.hosts,
+        "supernovae": choices.supernovae,
+        "expansion": choices.expansion,
+    }
+    for key, section in sections.items():
+        if section is not None:
+            yield from _strange_keys(key, section)
     stars = {"cepheids": ladder.cepheids, "anchors.parallaxes": ladder.parallax_stars}
     for key, sample in stars.items():
-        if sample is not None and sample.log_period_error is not None:
-            yield Problem("errors of the periods", expected, remedy, key=f"{key}.columns")
-        if sample is not None and sample.metallicity_error is not None:
-            yield Problem("errors of the metallicity", expected, remedy, key=f"{key}.columns")
-        if sample is not None and sample.overtone is not None:
-            yield Problem("overtones with an offset", expected, remedy, key=f"{key}.overtones")
+        if sample is not None:
+            yield from _strange_stars(key, sample)
 
 
-def _beyond_parallaxes(ladder: Ladder) -> Iterator[Problem]:
-    """Treatments of parallaxes that the simulator does not know."""
-    section = ladder.choices.anchors.parallaxes
-    if ladder.parallax_stars is None or section is None:
-        return
-    known = ("flat in modulus", "uniform in volume")
-    unknown = {
-        "distance_prior": section.distance_prior not in known,
-        "modulus_bounds": section.modulus_bounds is not None,
-        "offsets": bool(section.offsets),
-        "offset_slope": section.offset_slope,
-        "correlation": section.correlation is not None,
-        "selection": section.selection is not None,
-        "min_signal": section.min_signal is not None,
-        "columns.cluster": "cluster" in section.columns,
-    }
-    for key, asked in unknown.items():
-        if asked:
-            yield Problem(
-                found="a treatment of parallaxes that the simulator does not know",
-                expected="one offset, one star a modulus, and one of the priors "
-                + " and ".join(known),
-                remedy="take it out to simulate the rest",
-                key=f"anchors.parallaxes.{key}",
-            )
-    if ladder.choices.states_prior("parallax_error_scale"):
-        yield Problem(
-            found="a scale of the parallax errors",
-            expected="terms that the simulator knows",
-            remedy="take it out to simulate the rest",
-            key="priors.parallax_error_scale",
-        )
+def _problem(found: str, key: str) -> Problem:
+    return Problem(
+        found, "terms that the simulator knows", "take it out to simulate the rest", key=key
+    )
+
+
+def _strange_keys(key: str, section: Any) -> Iterator[Problem]:
+    for item in fields(section):
+        value = getattr(section, item.name)
+        default = item.default if item.default_factory is MISSING else item.default_factory()
+        if item.name not in _KNOWN[key] and value != default:
+            yield _problem(as_written(schema.written(value)), schema.join(key, schema.key_of(item)))
+    prior = getattr(section, "distance_prior", "flat in modulus")
+    if prior not in ("flat in modulus", "uniform in volume"):
+        yield _problem(as_written(schema.written(prior)), f"{key}.distance_prior")
+
+
+def _strange_stars(key: str, sample: StarSample) -> Iterator[Problem]:
+    if sample.log_period_error is not None:
+        yield _problem("errors of the periods", f"{key}.columns")
+    if sample.metallicity_error is not None:
+        yield _problem("errors of the metallicity", f"{key}.columns")
+    if sample.overtone is not None:
+        yield _problem("overtones with an offset", f"{key}.overtones")
 
 
 def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, Any]:
     """The ladder's choices, made to fit the new tables; anchors measured again."""
     plain = ladder.choices.to_mapping()
     plain.pop("alternatives", None)
+    plain.pop("groups", None)
     for section in ("cepheids", "supernovae", "expansion"):
         if section in plain:
             plain[section] = _fitted(plain[section], _COLUMNS[section])
@@ -118,8 +150,7 @@ def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, 
 
 def _fitted(section: Mapping[str, Any], columns: Mapping[str, str]) -> dict[str, Any]:
     """A section without its table and what was done to its rows, its columns named anew."""
-    done = ("table", "set_aside", "overtones", "conversion")
-    kept = {key: value for key, value in section.items() if key not in done}
+    kept = {key: value for key, value in section.items() if key not in _ROWS}
     return kept | {"columns": dict(columns)}
 
 
