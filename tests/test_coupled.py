@@ -10,7 +10,8 @@ from oracles import dense_log_evidence
 from test_arrow import random_rows, with_prior
 
 from ladderfit.kernels.arrow import Moments, no_moments, rows, solve
-from ladderfit.kernels.coupled import CoupledData, coupled_rows, tridiagonal, two_scatters
+from ladderfit.kernels.coupled import CoupledData, coupled_rows, two_scatters
+from ladderfit.kernels.tridiagonal import tridiagonal
 
 
 def random_covariance(rng, n):

@@ -23,7 +23,8 @@ ORDER = """
     covariances
     relations ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.quadrature kernels.sightlines kernels.detection
-    kernels.elimination kernels.arrow kernels.reduced kernels.coupled kernels
+    kernels.elimination kernels.arrow kernels.tridiagonal kernels.reduced
+    kernels.coupled kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
     posterior.split
