@@ -108,7 +108,7 @@ def command(folder: Path, *, port: int | None = None, browser: bool = True) -> l
 
 
 def environment() -> dict[str, str]:
-    """This process's environment, with our settings of JupyterLab among the defaults."""
+    """The environment of this process, with our settings of JupyterLab among the defaults."""
     found = dict(os.environ)
     before = found.get("JUPYTER_CONFIG_PATH")
     found["JUPYTER_CONFIG_PATH"] = os.pathsep.join([str(_SETTINGS), *([before] if before else [])])

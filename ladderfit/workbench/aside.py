@@ -56,9 +56,7 @@ def with_reason(choices: Choices, section: str, found: SetAside, reason: str) ->
     """Changes that record another reason."""
     new = replace(found, reason=reason.strip() or BY_HAND)
     known = entries(choices, section)
-    return {
-        f"{section}.set_aside": [_plain(new if entry is found else entry) for entry in known]
-    }
+    return {f"{section}.set_aside": [_plain(new if entry is found else entry) for entry in known]}
 
 
 def _plain(entry: SetAside) -> dict[str, str]:

@@ -19,7 +19,7 @@ def _palette(theme: Theme) -> dict[str, str]:
     return {key: theme.accent(index).colour for key, index in _COLOURS.items()}
 
 
-class LadderAxis(anywidget.AnyWidget):  # type: ignore[misc]  # ships no types
+class LadderAxis(anywidget.AnyWidget):
     """Segments per rung, marks per object; knows the page's colours.
 
     Traits
@@ -28,17 +28,20 @@ class LadderAxis(anywidget.AnyWidget):  # type: ignore[misc]  # ships no types
         Key of the open rung; set by click or Enter.
     dark : bool
         Whether the page is dark.
+    width : int
+        Of the workbench, in px, as the page has room.
     rgb : list of float
         The colour that the workbench stands on.
     """
 
     _esm = ASSETS / "axis.js"
     _css = ASSETS / "axis.css"
-    rungs = traitlets.List().tag(sync=True)
-    overlaps = traitlets.List().tag(sync=True)
+    rungs: traitlets.List[Any] = traitlets.List().tag(sync=True)
+    overlaps: traitlets.List[Any] = traitlets.List().tag(sync=True)
     rung = traitlets.Unicode().tag(sync=True)
     palette = traitlets.Dict().tag(sync=True)
     dark = traitlets.Bool(False).tag(sync=True)
+    width = traitlets.Int(1000).tag(sync=True)
     rgb = traitlets.List([255, 255, 255]).tag(sync=True)
 
     def __init__(self, **traits: Any) -> None:

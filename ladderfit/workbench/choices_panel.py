@@ -100,7 +100,9 @@ class ChoicesPanel:
                 if kept is not None:
                     text = f"{kept.kept:,} of {kept.total:,} {_ROWS[section]} kept"
                     reasons = "; ".join(f"{n:,} {why}" for why, n in kept.reasons.items())
-                    lines.append(f"<b>{text}</b>" + (f" ({html.escape(reasons)})" if reasons else ""))
+                    lines.append(
+                        f"<b>{text}</b>" + (f" ({html.escape(reasons)})" if reasons else "")
+                    )
             line.value = "<br>".join(lines)
 
     def quiet(self) -> None:
@@ -170,9 +172,7 @@ def _reads_use(name: str) -> Any:
     return lambda choices: choices.anchors.geometric[name].use
 
 
-def _width(
-    choices: Choices, name: str, words: str, ends: tuple[float, float]
-) -> Iterator[Control]:
+def _width(choices: Choices, name: str, words: str, ends: tuple[float, float]) -> Iterator[Control]:
     """The width of a parameter's prior, where its family has one number for it."""
     if not isinstance(choices.prior(name), Normal | HalfNormal):
         return
@@ -198,6 +198,14 @@ def _period_ends(every: Ladder) -> tuple[float, float]:
     return _round(float(periods.min()), math.floor), _round(float(periods.max()), math.ceil)
 
 
+def _including(ends: tuple[float, float], bounds: tuple[float, float]) -> tuple[float, float]:
+    """Ends of a slider that reach the bounds chosen, where these are finite and above zero."""
+    low, high = bounds
+    return min(ends[0], low) if low > 0.0 else ends[0], max(
+        ends[1], high
+    ) if high < math.inf else ends[1]
+
+
 def _round(value: float, towards: Any) -> float:
     """Two digits, outwards."""
     step = 10.0 ** (math.floor(math.log10(value)) - 1)
@@ -211,7 +219,7 @@ def _of_cepheids(ladder: Ladder, every: Ladder) -> Iterator[Control]:
     def section(now: Choices) -> Any:
         return now.cepheids if base == "cepheids" else now.anchors.parallaxes
 
-    ends = _period_ends(every)
+    ends = _including(_period_ends(every), section(choices).periods)
     yield span("Periods", f"{base}.periods", ends, lambda c: section(c).periods, unit="d")
     if "mode" in section(choices).columns:
         yield menu(
@@ -278,8 +286,8 @@ def _terms(choices: Choices) -> Iterator[Control]:
 
 def _of_supernovae(ladder: Ladder, every: Ladder) -> Iterator[Control]:
     choices = ladder.choices
-    yield from _width(choices, "peak_scatter", "Prior width of the scatter", (0.01, 1.0))
-    yield from _width(choices, "peak_magnitude", "Prior width of the peak magnitude", (0.02, 5.0))
+    yield from _width(choices, "peak_scatter", "Prior width, scatter", (0.01, 1.0))
+    yield from _width(choices, "peak_magnitude", "Prior width, peak magnitude", (0.02, 5.0))
     if every.peaks is not None:
         yield _set_aside("supernovae", sorted(map(str, every.peaks.name)))
 
@@ -309,6 +317,7 @@ def _of_expansion(ladder: Ladder, every: Ladder) -> Iterator[Control]:
     if expansion is not None and every.flow is not None:
         redshift = every.flow.redshift
         ends = _round(float(redshift.min()), math.floor), _round(float(redshift.max()), math.ceil)
+        ends = _including(ends, expansion.redshifts)
         yield span("Redshifts", "expansion.redshifts", ends, _redshifts)
         yield _plain("Dispersion of velocities", "peculiar_velocity", (0.0, 600.0), "km/s")
     if expansion is not None and not expansion.linear and expansion.intercept is None:
@@ -346,7 +355,7 @@ def _hubble_prior(choices: Choices) -> Iterator[Control]:
     key = "priors.hubble_constant"
     yield menu(
         "Prior of H0",
-        [(f"{stated}", True), ("none stated", False)],
+        [(f"{stated.median:g}, {stated.deviation:g} mag", True), ("none stated", False)],
         lambda c: key.partition(".")[2] in c.priors,
         lambda value, _: {key: stated.written() if value else None},
     )

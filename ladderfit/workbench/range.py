@@ -8,7 +8,7 @@ import traitlets
 from ladderfit.workbench.axis import ASSETS
 
 
-class Range(anywidget.AnyWidget):  # type: ignore[misc]  # ships no types
+class Range(anywidget.AnyWidget):
     """Thumbs and number fields for one number or two.
 
     Traits
@@ -28,5 +28,5 @@ class Range(anywidget.AnyWidget):  # type: ignore[misc]  # ships no types
     high = traitlets.Float(1.0).tag(sync=True)
     log = traitlets.Bool(False).tag(sync=True)
     digits = traitlets.Int(3).tag(sync=True)
-    value = traitlets.List().tag(sync=True)
+    value: traitlets.List[float] = traitlets.List().tag(sync=True)
     request = traitlets.Dict().tag(sync=True)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -97,7 +98,11 @@ def rungs(ladder: Ladder, every: Ladder, result: Result) -> list[Rung]:
         Places objects; one that it does not know gets no mark.
     """
     found = [
-        Rung("anchors", WORDS["anchors"], (*_parallaxes(ladder, every, result), *_anchors(ladder, result))),
+        Rung(
+            "anchors",
+            WORDS["anchors"],
+            (*_parallaxes(ladder, every, result), *_anchors(ladder, result)),
+        ),
         Rung("cepheids", WORDS["cepheids"], _hosts(ladder, every, result)),
         Rung("supernovae", WORDS["supernovae"], _peaks(ladder, every, result)),
         Rung("expansion", WORDS["expansion"], _flow(ladder, every, result)),
@@ -184,7 +189,7 @@ def _flow(ladder: Ladder, every: Ladder, result: Result) -> tuple[Mark, ...]:
 def overlaps(found: list[Rung]) -> list[tuple[float, float]]:
     """Stretches of log10 distance [pc] that two neighbouring rungs share."""
     shared = []
-    for near, far in zip(found, found[1:], strict=False):
+    for near, far in pairwise(found):
         low, high = max(near.ends[0], far.ends[0]), min(near.ends[1], far.ends[1])
         if low < high:
             shared.append((low, high))

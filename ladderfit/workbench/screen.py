@@ -29,15 +29,16 @@ from ladderfit.workbench.view_bar import ViewBar
 from ladderfit.workbench.why import prior_driven, trust, why
 
 P = ParamSpec("P")
+_LEFT = 338  # px, of the choices and the gap beside them
 
 
 def _guarded(
     method: Callable[Concatenate[Workbench, P], None],
-) -> Callable[Concatenate[Workbench, P], None]:
+) -> Callable[Concatenate[Any, P], None]:
     """One callback at a time; an error is shown at the foot instead of vanishing."""
 
     @wraps(method)
-    def guarded(self: Workbench, *args: P.args, **kwargs: P.kwargs) -> None:
+    def guarded(self: Any, *args: P.args, **kwargs: P.kwargs) -> None:
         with self._lock:
             try:
                 method(self, *args, **kwargs)
@@ -78,16 +79,17 @@ class Workbench:
         self.picture = Picture(self._pointed)
         self.bar = ViewBar(ladder, self._view, self._save_view)
         self.stars = StarLine(self._change)
-        self.numbers = widgets.HTML(layout=widgets.Layout(width="670px", height="80px", margin="0"))
-        self.why = _line("670px", "lf-why")
+        self.numbers = widgets.HTML(layout=widgets.Layout(height="80px", margin="0", width="100%"))
+        self.numbers.add_class("lf-strip-box")
+        self.why = _line("lf-why")
         self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
         self._scroll = widgets.VBox(
-            [self.table], layout=widgets.Layout(width="664px", height="336px", display="none")
+            [self.table], layout=widgets.Layout(width="100%", height="336px", display="none")
         )
         self._scroll.add_class("lf-scroll")
         self._frame = widgets.Box(
             [self.picture.canvas, self._scroll],
-            layout=widgets.Layout(width="668px", height="340px", flex="0 0 auto", overflow="hidden"),
+            layout=widgets.Layout(height="336px", flex="0 0 auto", overflow="hidden"),
         )
         self.foot = _Foot(self)
         self.widget = self._put_together()
@@ -97,6 +99,7 @@ class Workbench:
         self._open("cepheids" if "cepheids" in self.panel.rungs else self.panel.rungs[0])
         self.axis.observe(self._opened, "rung")
         self.axis.observe(self._recoloured, ["dark", "rgb"])
+        self.axis.observe(self._resized, "width")
         self._after(None, settled=True, said=False)
 
     @property
@@ -129,16 +132,27 @@ class Workbench:
         return self.widget._repr_mimebundle_(**kwargs)
 
     def _put_together(self) -> Any:
+        reason = widgets.HBox(
+            [self.why, self.bar.numbers],
+            layout=widgets.Layout(height="26px", flex="0 0 auto", align_items="center"),
+        )
+        reason.add_class("lf-bar-of-views")
         right = widgets.VBox(
-            [self.numbers, self.why, self.bar.widget, self._frame, self.stars.widget],
-            layout=widgets.Layout(width="670px", height="504px", overflow="hidden"),
+            [self.numbers, reason, self.bar.widget, self._frame, self.stars.widget],
+            layout=widgets.Layout(flex="1 1 0", min_width="0", height="504px", overflow="hidden"),
         )
         middle = widgets.HBox(
-            [self.panel.widget, right], layout=widgets.Layout(width="1000px", height="504px")
+            [self.panel.widget, right], layout=widgets.Layout(width="100%", height="504px")
         )
         root = widgets.VBox(
             [self.axis, middle, self.foot.widget],
-            layout=widgets.Layout(width="1000px", height="640px", overflow="hidden"),
+            layout=widgets.Layout(
+                width="100%",
+                max_width="1000px",
+                min_width="820px",
+                height="640px",
+                overflow="hidden",
+            ),
         )
         root.add_class("lf-workbench")
         return root
@@ -192,6 +206,11 @@ class Workbench:
     @_guarded
     def _recoloured(self, _: Any) -> None:
         self.picture.take_colours(self.axis.dark, self.axis.rgb)
+        self._show_view()
+
+    @_guarded
+    def _resized(self, change: Any) -> None:
+        self.picture.resize(change["new"] - _LEFT)
         self._show_view()
 
     @_guarded
@@ -311,14 +330,14 @@ class _Foot:
         self.pin = _button("Pin", "Count changes from these numbers", bench._pin)
         self.undo = _button("Undo", "Take the last change back", bench._undo)
         self.redo = _button("Redo", "Make it again", bench._redo)
-        self.save = _button("Save ladder file", "Write every choice", bench._save, "118px")
+        self.save = _button("Save ladder file", "Write every choice", bench._save, "106px")
         self.name = widgets.Text(
-            description="File", layout=widgets.Layout(width="190px"), style={"description_width": "28px"}
+            tooltip="Name of the file to save", layout=widgets.Layout(width="128px")
         )
-        self.trust = _line("470px", "lf-trust")
+        self.trust = _line("lf-trust")
         self.widget = widgets.HBox(
             [self.pin, self.undo, self.redo, self.name, self.save, self.trust],
-            layout=widgets.Layout(width="1000px", height="40px", align_items="center"),
+            layout=widgets.Layout(width="100%", height="40px", align_items="center"),
         )
         self.widget.add_class("lf-foot")
         self.suggest(bench.session.settled)
@@ -350,7 +369,7 @@ def _free(stem: str, suffixes: tuple[str, ...]) -> Path:
     return Path(f"{stem}-{number:02d}")
 
 
-def _button(words: str, tooltip: str, do: Any, width: str = "62px") -> Any:
+def _button(words: str, tooltip: str, do: Any, width: str = "52px") -> Any:
     button = widgets.Button(
         description=words, tooltip=tooltip, layout=widgets.Layout(width=width, flex="0 0 auto")
     )
@@ -358,8 +377,8 @@ def _button(words: str, tooltip: str, do: Any, width: str = "62px") -> Any:
     return button
 
 
-def _line(width: str, name: str) -> Any:
-    line = widgets.HTML(layout=widgets.Layout(width=width, margin="0"))
+def _line(name: str) -> Any:
+    line = widgets.HTML(layout=widgets.Layout(flex="1 1 0", min_width="0", margin="0"))
     line.add_class(name)
     return line
 

@@ -26,29 +26,31 @@ class StarLine:
         self._words: dict[str, str] = {}
         self._quiet = False
         self.name = widgets.Combobox(
-            description="Object",
-            placeholder="name",
-            layout=widgets.Layout(width="168px"),
-            style={"description_width": "42px"},
+            placeholder="object",
+            tooltip="Name of an object",
+            layout=widgets.Layout(width="132px"),
         )
         self.reason = widgets.Text(
-            description="Reason",
-            placeholder="set aside by hand",
+            placeholder="reason",
+            tooltip="Reason to set it aside",
             continuous_update=False,
-            layout=widgets.Layout(width="196px"),
-            style={"description_width": "46px"},
+            layout=widgets.Layout(width="150px"),
         )
         self.button = widgets.Button(
-            description="Set aside", disabled=True, layout=widgets.Layout(width="78px")
+            description="Set aside",
+            disabled=True,
+            layout=widgets.Layout(width="72px", flex="0 0 auto"),
         )
-        self.words = widgets.HTML(layout=widgets.Layout(width="214px", margin="0 0 0 6px"))
+        self.words = widgets.HTML(
+            layout=widgets.Layout(flex="1 1 0", min_width="0", margin="0 0 0 6px")
+        )
         self.words.add_class("lf-star")
         self.name.observe(self._named, "value")
         self.reason.observe(self._reasoned, "value")
         self.button.on_click(lambda _: self.toggle())
         self.widget = widgets.HBox(
             [self.name, self.reason, self.button, self.words],
-            layout=widgets.Layout(width="668px", height="32px", align_items="center"),
+            layout=widgets.Layout(height="32px", align_items="center"),
         )
         self.widget.add_class("lf-star-line")
 

@@ -20,11 +20,18 @@ from ladderfit.residuals import (
 )
 from ladderfit.result import Result
 from ladderfit.rounding import MINUS, Interval, rounded
+from ladderfit.samples import FloatArray
 from ladderfit.workbench.columns import against_column
-from ladderfit.workbench.why import NUMBERS, SHORT, in_errors, signed
+from ladderfit.workbench.why import NUMBERS, in_errors, signed
 
 MOST_ROWS = 60
-_BAR = 132  # px
+_BAR = 132
+_TITLES = {
+    "slope": "Slope",
+    "zero_point": "Zero point",
+    "peak_magnitude": "Peak magnitude",
+    "hubble_constant": "H<sub>0</sub>",
+}
 _REACH = 4.0  # errors of the pinned posterior that the small bars show
 
 
@@ -39,7 +46,7 @@ def strip(result: Result, pinned: Result | None, published: Mapping[str, float])
         moved = "" if change is None else f"{signed(change)} of pinned error"
         if change is not None and abs(change) < 0.05:
             moved = "as pinned"
-        title = SHORT[name][0].upper() + SHORT[name][1:]
+        title = _TITLES[name]
         cells.append(
             f'<div class="lf-number" data-name="{name}"><div class="lf-what">{title} '
             f"<span>[{parameter(name).unit}]</span></div>"
@@ -50,9 +57,7 @@ def strip(result: Result, pinned: Result | None, published: Mapping[str, float])
     return f'<div class="lf-strip" role="status">{"".join(cells)}</div>'
 
 
-def _bar(
-    interval: Interval, name: str, pinned: Result | None, published: float | None
-) -> str:
+def _bar(interval: Interval, name: str, pinned: Result | None, published: float | None) -> str:
     base = interval
     if pinned is not None and name in pinned.draws:
         base = Interval.of(pinned.draws[name])
@@ -81,14 +86,12 @@ def _bar(
         words += f"; published {published:g}"
     words = words.replace("-", MINUS)
     return (
-        f'<svg width="{_BAR}" height="12" role="img" aria-label="{words}">'
+        f'<svg viewBox="0 0 {_BAR} 12" role="img" aria-label="{words}">'
         f"<title>{words}</title>{''.join(parts)}</svg>"
     )
 
 
-def all_numbers(
-    result: Result, pinned: Result | None, published: Mapping[str, float]
-) -> str:
+def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, float]) -> str:
     """Every parameter and host modulus."""
     rows = []
     for name, draws in result.draws.items():
@@ -135,9 +138,7 @@ def _relation(result: Result) -> str:
     stars, parallaxes = cepheid_residuals(result), parallax_residuals(result)
     text = ""
     if stars is not None:
-        rows = [
-            (f"{p:.3g}", *_pair(m, e)) for p, m, e in zip(*binned(stars), strict=True)
-        ]
+        rows = [(f"{p:.3g}", *_pair(m, e)) for p, m, e in zip(*binned(stars), strict=True)]
         text += "<h4>Mean residual in bins of period</h4>"
         text += table(("period [d]", "mean [mag]", "error [mag]"), rows)
         text += _farthest(stars, 10.0**stars.x, "period [d]", "mag")
@@ -155,7 +156,10 @@ def _moduli(result: Result) -> str:
                 entry.host,
                 value.value,
                 value.error,
-                *(str(rounded(*pair)) if pair else "" for pair in (entry.geometric, entry.supernovae)),
+                *(
+                    str(rounded(*pair)) if pair else ""
+                    for pair in (entry.geometric, entry.supernovae)
+                ),
             )
         )
     head = ("host", "modulus [mag]", "sd [mag]", "geometry minus it", "supernovae minus it")
@@ -188,7 +192,7 @@ def _corner(result: Result) -> str:
     return "<h4>Numbers and correlations</h4>" + table(("", "mean ± sd", *names), rows)
 
 
-def _farthest(data: Residuals, x: Sequence[float] | np.ndarray, words: str, unit: str) -> str:  # type: ignore[type-arg]
+def _farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
     """Objects by how far they are off, the farthest first."""
     order = np.argsort(-np.abs(data.standardised))[:MOST_ROWS]
     rows = [

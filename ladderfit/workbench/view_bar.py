@@ -68,21 +68,24 @@ class ViewBar:
         self._quiet = False
         self._ladder = ladder
         self._views = {view: self._view_button(view) for view in WORDS}
-        self.columns = widgets.Dropdown(layout=widgets.Layout(width="104px", display="none"))
+        self.columns = widgets.Dropdown(
+            layout=widgets.Layout(width="96px", display="none", order="10")
+        )
         self.columns.tooltip = "Column of the table"
         self.columns.observe(self._picked, "value")
-        self.table = self._toggle("Table", "The view's numbers as a table", "table", "54px")
+        self.table = self._toggle("Table", "The view's numbers as a table", "table", "50px")
         self.numbers = self._toggle("All numbers", "Every parameter", "numbers", "88px")
         self.save = widgets.Button(
-            description="PNG + PDF",
+            description="PNG, PDF",
             tooltip="Save the view beside the notebook",
-            layout=widgets.Layout(width="80px"),
+            layout=widgets.Layout(width="68px"),
         )
+        self.save.layout.order = "21"
         self.save.on_click(lambda _: save())
-        spring = widgets.Box(layout=widgets.Layout(flex="1 1 auto"))
+        spring = widgets.Box(layout=widgets.Layout(flex="1 1 auto", order="11"))
         self.widget = widgets.HBox(
-            [*self._views.values(), self.columns, spring, self.table, self.numbers, self.save],
-            layout=widgets.Layout(width="668px", height="30px", flex="0 0 auto"),
+            [*self._views.values(), self.columns, spring, self.table, self.save],
+            layout=widgets.Layout(height="30px", flex="0 0 auto"),
         )
         self.widget.add_class("lf-bar-of-views")
 
@@ -109,7 +112,7 @@ class ViewBar:
 
     def _view_button(self, view: str) -> Any:
         button = widgets.ToggleButton(
-            description=WORDS[view], tooltip=_TIPS[view], layout=widgets.Layout(width="76px")
+            description=WORDS[view], tooltip=_TIPS[view], layout=widgets.Layout(width="68px")
         )
         button.observe(lambda change: self._chosen(view), "value")
         return button

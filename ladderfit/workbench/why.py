@@ -24,6 +24,7 @@ TABLES = {
     "supernovae": "supernovae in hosts",
     "expansion": "objects in the expansion",
 }
+_SCALE = ("zero_point", "peak_magnitude", "hubble_constant")
 _WORTH_SAYING = 0.05  # of an error, and of an anchor's weight
 
 
@@ -53,9 +54,11 @@ def _moved(before: Result, after: Result) -> str:
     named = ("zero_point", max(known, key=lambda name: abs(known[name])))
     told = {name: known[name] for name in named if abs(known.get(name, 0.0)) >= _WORTH_SAYING}
     if not told:
-        text = "Nothing moved by a tenth of its error"
+        text = "No headline number moved by 0.05 of its error"
     else:
-        text = ", ".join(f"{SHORT[name]} {signed(move)} of its error" for name, move in told.items())
+        text = ", ".join(
+            f"{SHORT[name]} {signed(move)} of its error" for name, move in told.items()
+        )
     wider = {name: after.sd(name) / before.sd(name) for name in known}
     name = max(wider, key=lambda name: abs(wider[name] - 1.0))
     if abs(wider[name] - 1.0) > 0.15:
@@ -131,8 +134,7 @@ def trust(result: Result) -> tuple[bool, str]:
 def prior_driven(result: Result) -> str:
     """The library's note that a prior alone sets the scale, or nothing."""
     for name, ratio in result.diagnostics.informed.items():
-        if base_name(name) in ("zero_point", "peak_magnitude", "hubble_constant"):
-            if ratio**2 > UNINFORMED:
-                words = f"The data add nothing to the prior of the {parameter(name).words}"
-                return f"{words} {result.choices.prior(name)}."
+        if base_name(name) in _SCALE and ratio**2 > UNINFORMED:
+            words = f"The data add nothing to the prior of the {parameter(name).words}"
+            return f"{words} {result.choices.prior(name)}."
     return ""

@@ -1,11 +1,12 @@
 // The ladder as navigation: one axis of log distance, a row per rung, a mark per object.
 const SVG = "http://www.w3.org/2000/svg";
-const WIDTH = 1000, HEIGHT = 96, LEFT = 22, RIGHT = 22, TOP = 3, ROW = 18, AXIS = 78;
+const WIDEST = 1000, HEIGHT = 96, LEFT = 22, RIGHT = 22, TOP = 3, ROW = 18, AXIS = 78;
 const FIRST = 0, LAST = 9; // log10 of parsecs: 1 pc to 1 Gpc
 const TICKS = ["1 pc", "10 pc", "100 pc", "1 kpc", "10 kpc", "100 kpc", "1 Mpc", "10 Mpc", "100 Mpc", "1 Gpc"];
 
+let width = WIDEST;
 const across = (place) =>
-  LEFT + ((WIDTH - LEFT - RIGHT) * (Math.min(Math.max(place, FIRST), LAST) - FIRST)) / (LAST - FIRST);
+  LEFT + ((width - LEFT - RIGHT) * (Math.min(Math.max(place, FIRST), LAST) - FIRST)) / (LAST - FIRST);
 
 function add(parent, tag, attributes = {}, text = null) {
   const node = document.createElementNS(SVG, tag);
@@ -57,7 +58,7 @@ function drawRung(svg, rung, row, open) {
   });
   add(segment, "rect", { class: "lf-target", x: low - 8, y: y - ROW / 2 + 1, width: high - low + 16, height: ROW - 2, rx: 4 });
   add(segment, "line", { class: "lf-line", x1: low, x2: high, y1: y, y2: y });
-  const room = high + 14 + 6.2 * rung.words.length < WIDTH;
+  const room = high + 14 + 6.2 * rung.words.length < width;
   add(segment, "text", {
     class: "lf-name", x: room ? high + 13 : low - 13, y: y + 4, "text-anchor": room ? "start" : "end",
   }, rung.words);
@@ -100,7 +101,7 @@ function watchPage(el, model) {
 
 function render({ model, el }) {
   el.classList.add("lf-axis");
-  const svg = add(el, "svg", { viewBox: `0 0 ${WIDTH} ${HEIGHT}`, width: WIDTH, height: HEIGHT, role: "group", "aria-label": "The ladder: one axis of distance. Arrows move, Enter opens a rung." });
+  const svg = add(el, "svg", { height: HEIGHT, role: "group", "aria-label": "The ladder: one axis of distance. Arrows move, Enter opens a rung." });
   const hint = document.createElement("div");
   hint.className = "lf-hint";
   el.appendChild(hint);
@@ -112,10 +113,13 @@ function render({ model, el }) {
     model.set("rung", key);
     model.save_changes();
   };
+  let shown = model.get("width");
   const draw = () => {
     const had = svg.contains(document.activeElement) ? document.activeElement.getAttribute("aria-label") : null;
     const focused = had === null ? null : document.activeElement.dataset.rung;
     svg.replaceChildren();
+    width = shown;
+    svg.setAttribute("width", width);
     drawScale(svg, model.get("overlaps"));
     model.get("rungs").forEach((rung, row) => drawRung(svg, rung, row, rung.key === model.get("rung")));
     if (had !== null) {
@@ -154,8 +158,18 @@ function render({ model, el }) {
   svg.addEventListener("mouseover", tell);
   svg.addEventListener("mouseleave", () => { hint.textContent = ""; });
   for (const name of ["rungs", "overlaps", "rung"]) model.on(`change:${name}`, draw);
+  const fit = new ResizeObserver(() => {
+    const room = Math.floor(Math.min(el.clientWidth, WIDEST));
+    if (room < 200 || room === shown) return;
+    shown = room;
+    draw();
+    model.set("width", room);
+    model.save_changes();
+  });
+  fit.observe(el);
   draw();
-  return watchPage(el, model);
+  const stop = watchPage(el, model);
+  return () => { fit.disconnect(); stop(); };
 }
 
 export default { render };

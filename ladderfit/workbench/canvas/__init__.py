@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -64,10 +64,19 @@ class Picture:
         self.canvas.mpl_connect("motion_notify_event", self._hover)
         self.canvas.mpl_connect("button_press_event", self._click)
 
-    def take_colours(self, dark: bool, rgb: list[float]) -> None:
+    def take_colours(self, dark: bool, rgb: Sequence[float]) -> None:
         """Use the page's own background."""
         paper = "#" + "".join(f"{round(part):02x}" for part in rgb)
         self.theme = replace(DARK if dark else LIGHT, paper=paper)
+
+    def resize(self, width: int) -> None:
+        """Take a new width in px."""
+        if width == round(self.figure.get_figwidth() * _DPI):
+            return
+        self.figure.set_size_inches(width / _DPI, HEIGHT / _DPI, forward=False)
+        self._shown = None
+        size = self.figure.bbox.size
+        self.canvas.manager.resize(float(size[0]), float(size[1]))
 
     def show(
         self,

@@ -16,6 +16,7 @@ from ladderfit.plots.moduli import difference_panel, host_moduli, modulus_panel
 from ladderfit.plots.theme import Theme, brighter_up, plain, symbol, symmetric
 from ladderfit.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
 from ladderfit.result import Result
+from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.columns import ColumnResiduals, against_column
 from ladderfit.workbench.points import Points
 
@@ -40,7 +41,7 @@ def corner(figure: Figure, result: Result, theme: Theme) -> list[Points]:
     if not size:
         return []
     grid = figure.subplots(size, size, squeeze=False)
-    figure.subplots_adjust(left=0.10, right=0.99, top=0.92, bottom=0.15, hspace=0.08, wspace=0.08)
+    margins(figure, 66, 8, 26, 50, hspace=0.08, wspace=0.08)
     for row, up in enumerate(names):
         for column, across in enumerate(names):
             axes = grid[row, column]
@@ -54,7 +55,7 @@ def corner(figure: Figure, result: Result, theme: Theme) -> list[Points]:
                 joint_panel(result, across, up, axes, theme=theme)
             _tidy(axes, across, up, first=column == 0 and row > 0, last=row == size - 1)
     for row, up in enumerate(names[1:], 1):
-        grid[row, 0].yaxis.set_label_coords(-0.36, 0.5)
+        place_label(grid[row, 0], 42)
         grid[row, 0].set_ylabel(symbol(up), fontsize=8.5)
     figure.text(
         0.985,
@@ -69,7 +70,7 @@ def corner(figure: Figure, result: Result, theme: Theme) -> list[Points]:
 
 def _tidy(axes: Axes, across: str, up: str, *, first: bool, last: bool) -> None:
     axes.grid(visible=False)
-    axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
+    axes.xaxis.set_major_locator(MaxNLocator(2, prune="both"))
     if axes.get_yticks().size:
         axes.yaxis.set_major_locator(MaxNLocator(2, prune="both"))
     axes.tick_params(labelbottom=last, labelleft=first, labelsize=7)
@@ -84,7 +85,7 @@ def moduli(figure: Figure, result: Result, theme: Theme) -> list[Points]:
     if not entries:
         return []
     left, right = figure.subplots(1, 2, width_ratios=[1.0, 1.25])
-    figure.subplots_adjust(left=0.105, right=0.985, top=0.93, bottom=0.125, wspace=0.42)
+    margins(figure, 70, 10, 24, 42, wspace=0.5)
     modulus_panel(entries, left, theme=theme)
     difference_panel(entries, right, theme=theme)
     few = len(entries) <= _MOST_ROWS
@@ -108,7 +109,7 @@ def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
     velocities = velocity_residuals(result)
     if velocities is not None:
         axes = figure.subplots()
-        figure.subplots_adjust(left=0.105, right=0.985, top=0.93, bottom=0.135)
+        margins(figure, 70, 10, 24, 44)
         velocity_panel(result, axes, theme=theme)
         axes.set_xlabel("Distance [Mpc]", labelpad=1)
         return [_points(axes, velocities, "expansion", "km/s")]
@@ -129,7 +130,7 @@ def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
         width_ratios=[1, 1.5] if both else [1],
         squeeze=False,
     )
-    figure.subplots_adjust(left=0.095, right=0.985, top=0.93, bottom=0.135, hspace=0.07, wspace=0.16)
+    margins(figure, 64, 10, 24, 44, hspace=0.07, wspace=0.17)
     found = []
     for place, (data, section, words, panel) in enumerate(columns):
         top, bottom = grid[0, place], grid[1, place]
@@ -151,17 +152,18 @@ def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
         brighter_up(bottom)
         bottom.set_xlabel(words, labelpad=1)
         top.set_ylabel("")
+        for text in top.texts:  # the strip of numbers is right above
+            text.set_visible(False)
         found.append(_points(top, data, section, "mag", data.data))
         found.append(_points(bottom, data, section, "mag", data.residual))
     grid[0, 0].set_ylabel("Peak magnitude [mag]")
     grid[1, 0].set_ylabel("Residual [mag]")
-    figure.align_ylabels(list(grid[:, 0]))
+    for axes in grid[:, 0]:
+        place_label(axes, 42)
     return found
 
 
-def _points(
-    axes: Axes, data: Residuals, section: str, unit: str, y: Any = None
-) -> Points:
+def _points(axes: Axes, data: Residuals, section: str, unit: str, y: Any = None) -> Points:
     values = data.data if y is None else y
     nobody = [""] * len(data)
     return Points(
@@ -173,7 +175,7 @@ def column(figure: Figure, result: Result, theme: Theme, rung: str, name: str) -
     """Residuals against a column of the table."""
     found = against_column(result, rung, name)
     axes = figure.subplots()
-    figure.subplots_adjust(left=0.105, right=0.985, top=0.955, bottom=0.135)
+    margins(figure, 70, 10, 22, 44)
     if found is None or not len(found.x):
         axes.set_axis_off()
         axes.text(0.5, 0.5, "no such numbers here", ha="center", transform=axes.transAxes)
@@ -212,10 +214,12 @@ def _column_points(axes: Axes, found: ColumnResiduals, theme: Theme) -> Points:
     symmetric(axes, np.abs(data.residual) + (data.sd if few else 0.0), data.sd)
     if found.data_unit == "mag":
         brighter_up(axes)
-    axes.set_xlabel(plain(found.column) + (f" [{plain(found.unit)}]" if found.unit else ""), labelpad=1)
+    axes.set_xlabel(
+        plain(found.column) + (f" [{plain(found.unit)}]" if found.unit else ""), labelpad=1
+    )
     axes.set_ylabel(f"Residual [{found.data_unit}]")
     if len(x):
-        axes.legend(loc="upper left", bbox_to_anchor=(0.0, 1.045), borderaxespad=0.0)
+        axes.legend(loc="upper left", bbox_to_anchor=(0.0, 1.08), borderaxespad=0.0)
     nobody = [""] * len(data)
     return Points(
         axes, found.x, data.residual, data.name, nobody, found.section, data.residual, data.sd,

@@ -22,6 +22,7 @@ from ladderfit.residuals import (
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES
 from ladderfit.samples import FloatArray
+from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points
 
 _ACCENTS = 3
@@ -36,10 +37,11 @@ class RelationView:
         self.top: Axes
         self.bottom: Axes
         self.top, self.bottom = figure.subplots(2, 1, sharex=True, height_ratios=[2.1, 1.0])
-        figure.subplots_adjust(left=0.105, right=0.985, top=0.975, bottom=0.135, hspace=0.07)
+        margins(figure, 70, 10, 8, 44, hspace=0.07)
         self._groups = [self._pair(index) for index in range(_ACCENTS + 1)]
         accent = theme.accent(3)
-        style = {"linestyle": "none", "color": accent.colour, "marker": accent.marker}
+        style: dict[str, Any] = {"linestyle": "none", "color": accent.colour}
+        style["marker"] = accent.marker
         (self._stars,) = self.top.plot([], [], markersize=3.2, zorder=3.1, **style)
         self._bars = LineCollection([], colors=accent.colour, linewidths=0.7, zorder=3.0)
         self.top.add_collection(self._bars, autolim=False)
@@ -94,8 +96,8 @@ class RelationView:
         self.top.set_ylabel("Absolute magnitude [mag]")
         self.bottom.set_ylabel("Residual [mag]")
         self.bottom.set_xlabel("Period [d]", labelpad=1)
-        self.top.yaxis.set_label_coords(-0.075, 0.5)
-        self.bottom.yaxis.set_label_coords(-0.075, 0.5)
+        for axes in (self.top, self.bottom):
+            place_label(axes, 46)
 
     def update(self, result: Result, aside: HostResiduals | None) -> None:
         """Show a posterior; `aside` are stars set aside by hand, shown as crosses."""
@@ -154,7 +156,9 @@ class RelationView:
         self._bars.set_segments(_vertical(period, stars.data - below, stars.data + above))
         everything = parallax_residuals(result)
         total = len(stars) if everything is None else len(everything)
-        count = f"{len(stars)}" if len(stars) == total else f"{len(stars)} of {total}, over 5 errors"
+        count = (
+            f"{len(stars)}" if len(stars) == total else f"{len(stars)} of {total}, over 5 errors"
+        )
         told.append((self._stars, f"parallax stars ({count})"))
         self.points.append(
             Points(
@@ -203,7 +207,9 @@ class RelationView:
         draws = line_draws(result, log_period)
         period, middle = 10.0**log_period, np.mean(draws, axis=0)
         halves = [0.5 * chance for chance in reversed(PROBABILITIES)]
-        ends = np.quantile(draws, [0.5 + sign * half for half in halves for sign in (-1, 1)], axis=0)
+        ends = np.quantile(
+            draws, [0.5 + sign * half for half in halves for sign in (-1, 1)], axis=0
+        )
         for place, band in enumerate(self._bands):
             low, high = ends[2 * place], ends[2 * place + 1]
             outline = np.column_stack(
