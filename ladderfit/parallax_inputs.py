@@ -21,7 +21,7 @@ from ladderfit.physics.zero_point import (
 )
 from ladderfit.rows import Rows, floats, integers
 from ladderfit.samples import FloatArray, IntArray, ParallaxExtras
-from ladderfit.tables import BoolArray, Texts, and_more, shown
+from ladderfit.tables import BoolArray, Texts, and_more
 
 KINDS: dict[str, Kind] = {
     "g_magnitude": MAGNITUDE,
@@ -236,7 +236,7 @@ def _solutions(rows: Rows, columns: Mapping[str, str]) -> IntArray:
     if wrong.size:
         rows.problems.append(
             Problem(
-                found=shown(f"{values[wrong[0]]:g}") + and_more(wrong.size - 1),
+                found=f"{values[wrong[0]]:g}" + and_more(wrong.size - 1),
                 expected="31 (five parameters) or 95 (six)",
                 remedy="correct the cell, or set the star aside",
                 file=rows.table.name,

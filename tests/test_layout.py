@@ -39,8 +39,8 @@ ORDER = """
     residuals influence anchors sweep alternatives review distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
-    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.scenario mock.restated
-    mock.redraw mock.folder mock mock.__main__
+    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.parallax_survey mock.scenario
+    mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
     report calibration repeat
