@@ -14,8 +14,9 @@ import pytest
 # stands after its own modules.  A new module must be given its place here.
 ORDER = """
     errors rounding
-    units files shipped priors names schema
-    choices.columns choices.stars choices.relation choices.parallaxes choices.anchors
+    units files shipped priors names schema cosmologies
+    choices.columns choices.covariance choices.stars choices.relation choices.parallaxes
+    choices.anchors
     choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
     kinds tables table_memory table_files rows star_values parallax_inputs select_stars

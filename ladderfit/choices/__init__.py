@@ -13,6 +13,7 @@ from ladderfit.choices.anchors import (
     SharedError,
 )
 from ladderfit.choices.columns import Columns, Range, SetAside
+from ladderfit.choices.covariance import Covariance
 from ladderfit.choices.parallaxes import (
     Cluster,
     Correlation,
@@ -25,7 +26,7 @@ from ladderfit.choices.parallaxes import (
 from ladderfit.choices.relation import Group, Metallicity, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids, Magnitude, Overtones, PeriodRatio, Wesenheit
-from ladderfit.choices.third_rung import Expansion, Intercept, Supernovae
+from ladderfit.choices.third_rung import Cosmology, Expansion, Intercept, Supernovae
 from ladderfit.choices.whole import Choices
 
 __all__ = [
@@ -35,6 +36,8 @@ __all__ = [
     "Choices",
     "Cluster",
     "Columns",
+    "Cosmology",
+    "Covariance",
     "Correlation",
     "Density",
     "Disc",

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 
+from ladderfit.choices.covariance import Covariance
 from ladderfit.choices.parallaxes import DistancePrior, Parallaxes
 from ladderfit.errors import Problem, nearest
 from ladderfit.schema import choice
@@ -59,10 +60,20 @@ class Anchors:
     shared_errors: Mapping[str, SharedError] = choice(
         "errors that geometric anchors share", default_factory=dict
     )
+    covariance: Covariance | None = choice(
+        "the covariance of all geometric moduli, in use or not [mag^2]", default=None
+    )
     parallaxes: Parallaxes | None = choice("stars with parallaxes", default=None)
 
     def check(self) -> Iterator[Problem]:
         """Shared errors load on anchors that exist."""
+        if self.covariance is not None and not self.geometric:
+            yield Problem(
+                found="a covariance without geometric anchors",
+                expected="the covariance of the moduli in [anchors.geometric]",
+                remedy="take it out, or add the anchors",
+                key="covariance",
+            )
         for name, shared in self.shared_errors.items():
             for anchor in shared.loads:
                 if anchor not in self.geometric:

@@ -9,13 +9,15 @@ from typing import Any, Self
 
 from ladderfit import schema
 from ladderfit.choices.anchors import Anchors, Hosts
+from ladderfit.choices.columns import column_faults
+from ladderfit.choices.covariance import Covariance
 from ladderfit.choices.parallaxes import Parallaxes
 from ladderfit.choices.relation import Group, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids
 from ladderfit.choices.third_rung import Expansion, Supernovae
 from ladderfit.errors import InputError, Problem, nearest, raise_if
-from ladderfit.names import PARAMETERS, base_name, parameter
+from ladderfit.names import PARAMETERS, base_name, parameter, with_group
 from ladderfit.priors import Fixed, Prior
 from ladderfit.schema import choice
 
@@ -129,6 +131,21 @@ class Choices:
             raise KeyError(name)
         return default
 
+    @property
+    def peak_covariance(self) -> tuple[str, Covariance] | None:
+        """The covariance of peak magnitudes in force, with its dotted key."""
+        for key, section in (("supernovae", self.supernovae), ("expansion", self.expansion)):
+            if section is not None and section.covariance is not None:
+                return f"{key}.covariance", section.covariance
+        return None
+
+    @property
+    def peak_scatters(self) -> tuple[str, str]:
+        """Names of the supernovae's scatters: in hosts, and in the expansion."""
+        if self.supernovae is None or self.supernovae.scatter == "common":
+            return "peak_scatter", "peak_scatter"
+        return with_group("peak_scatter", "hosts"), with_group("peak_scatter", "expansion")
+
     def states_prior(self, name: str) -> bool:
         """Whether the prior in force was chosen, that is, differs from the default."""
         return self.prior(name) != parameter(name).prior
@@ -137,6 +154,7 @@ class Choices:
         """Sections that need one another."""
         yield from _prior_faults(self.priors)
         yield from _group_faults(self.relation, self.anchors.parallaxes, self.groups)
+        yield from _peak_faults(self)
         yield from _magnitude_faults(self.cepheids, self.anchors.parallaxes)
         sections = {"cepheids": self.cepheids, "anchors.parallaxes": self.anchors.parallaxes}
         for key, section in sections.items():
@@ -178,6 +196,26 @@ def _prior_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:
                     remedy="write {log_normal = [median, sd in mag]} or {uniform = [low, high]}",
                     key=schema.join("priors", name),
                 )
+
+
+def _peak_faults(choices: Choices) -> Iterator[Problem]:
+    """One covariance of peaks at most; errors of the expansion's peaks from it or a column."""
+    expansion = choices.expansion
+    if expansion is None:
+        return
+    both = choices.supernovae is not None and choices.supernovae.covariance is not None
+    if both and expansion.covariance is not None:
+        yield Problem(
+            found="a second covariance of peak magnitudes",
+            expected="one: that of [supernovae] holds the expansion's supernovae too",
+            remedy="take one of the two out",
+            key="expansion.covariance",
+        )
+    in_force = choices.peak_covariance
+    replaced = in_force is not None and not in_force[1].adds
+    has_peaks = expansion.table is not None and not expansion.linear
+    if has_peaks and "peak_error" not in expansion.columns and not replaced:
+        yield from column_faults(expansion.columns, (*expansion.columns, "peak_error"), ())
 
 
 def _group_faults(
