@@ -104,3 +104,10 @@ def test_the_same_numbers_on_one_thread_and_on_two(monkeypatch):
         monkeypatch.setenv("LADDERFIT_THREADS", threads)
         found.append(log_parallax_integrals(many, variance, shifted, error))
     np.testing.assert_array_equal(*found)
+
+
+def test_a_scatter_of_hundreds_of_magnitudes_takes_no_time():
+    """Such points are visited by a climb to the mode; they must cost little and stay finite."""
+    a, parallax = np.linspace(-1500.0, 50.0, 60), np.linspace(-0.5, 1.0, 60)
+    found = compiled(a, np.full(60, 1e5), parallax, np.full(60, 0.02))
+    assert np.isfinite(found).all()

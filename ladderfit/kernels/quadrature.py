@@ -44,6 +44,7 @@ _FLOOR = 18.0  # the march ends where the log integrand is this far below its pe
 _REACH = 6.0  # stretched: widths beyond the outer of the two peaks
 _STEP = 0.75  # stretched: widths between nodes
 _WIDEST = 40.0  # stretched: widths between the peaks beyond which the range is scanned
+_MOST_NODES = 4000  # reached only where a scatter of many magnitudes meets a negative parallax
 _DEPTH = 40.0  # a scanned range is narrowed to where the log integrand is this near its peak
 
 
@@ -125,7 +126,7 @@ def _stretched(a: float, root: float, plx: float, err: float) -> float:
     if high - low > _WIDEST * unit:
         low, high = _narrowed(low, high, a, root, plx, err, log_scale)
     pulled = max(1.0, 1.0 - 0.35 * unit * plx / err)  # a negative parallax bends more sharply
-    count = max(math.ceil((high - low) / (_STEP * unit) * pulled), 16)
+    count = min(max(math.ceil((high - low) / (_STEP * unit) * pulled), 16), _MOST_NODES)
     step = (high - low) / count
     peak, total = -math.inf, 0.0
     for node in range(count + 1):

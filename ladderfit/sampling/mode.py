@@ -18,6 +18,7 @@ FloatArray = npt.NDArray[np.float64]
 LogDensity = Callable[[FloatArray], FloatArray]
 
 _FAN = np.array([0.02, 0.1, 0.3, 0.6, 1.0, 1.5])
+_LONGEST = 10.0  # of the scale given, for one step in any direction
 _DIFFERENCE = 0.05  # of the current width, for central differences
 
 
@@ -68,7 +69,7 @@ def find_mode(
     for _ in range(steps):
         gradient, hessian = derivatives(log_density, point, _DIFFERENCE * width)
         covariance = _covariance(hessian, width)
-        step = covariance @ gradient
+        step = np.clip(covariance @ gradient, -_LONGEST * scale, _LONGEST * scale)
         square = float(step @ np.linalg.solve(covariance, step))
         length = math.sqrt(max(square, 0.0))
         fan = point + _FAN[:, None] * step
@@ -77,6 +78,7 @@ def find_mode(
         if values[best] > value:
             point, value = fan[best], float(values[best])
         new_width = np.clip(np.sqrt(np.diag(covariance)), 0.05 * width, 5.0 * width)
+        new_width = np.minimum(new_width, _LONGEST * scale)
         settled = bool(np.all(np.abs(new_width / width - 1.0) < 0.3))
         width = new_width
         if length < 0.02 and settled:
