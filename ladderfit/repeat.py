@@ -18,7 +18,7 @@ from ladderfit.errors import InputError, LadderfitError, Problem, raise_if
 from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.result import Result
-from ladderfit.sampling.chain_file import read_commit
+from ladderfit.sampling.chain_reading import read_commit
 from ladderfit.sampling.direct import Progress
 from ladderfit.sampling.live import start
 from ladderfit.sampling.run import draw

@@ -32,7 +32,7 @@ ORDER = """
     posterior.supernovae posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
-    sampling.ensemble sampling.chain_layout sampling.chain_file sampling.run sampling.warm
+    sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file sampling.run sampling.warm
     sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
     sampling.progress sampling.launch sampling.live
     sampling

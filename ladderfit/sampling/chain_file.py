@@ -13,11 +13,8 @@ from __future__ import annotations
 
 import os
 import tempfile
-import time
-import zlib
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, Self
 
@@ -26,20 +23,16 @@ import numpy.typing as npt
 
 from ladderfit.errors import InputError
 from ladderfit.sampling.chain_layout import (
-    ANEW,
     FLOAT,
     Commit,
     Header,
-    Places,
-    bytes_at,
     chain_problem,
     commit_of,
     generators_of,
     lay_out,
-    look_over,
     record_bytes,
-    record_type,
 )
+from ladderfit.sampling.chain_reading import ChainView, sum_rows, viewed
 from ladderfit.sampling.ensemble import EnsembleState
 
 FloatArray = npt.NDArray[np.float64]
@@ -47,50 +40,35 @@ FloatArray = npt.NDArray[np.float64]
 _ROOM = 1024  # rows of room in a new file
 
 
-@dataclass(frozen=True, eq=False)
-class Chain:
-    """Everything a chain file holds, as of one commit.
-
-    Attributes
-    ----------
-    header : Header
-    commit : Commit
-    z : array, shape (rows, ensembles, walkers, d)
-        Coordinates of phi.
-    log_density : array, shape (rows, ensembles, walkers)
-    generators : tuple
-        State of each ensemble's generator after the last row.
-    """
-
-    header: Header
-    commit: Commit
-    z: FloatArray
-    log_density: FloatArray
-    generators: tuple[tuple[Any, ...], ...]
-
-    @property
-    def states(self) -> tuple[EnsembleState, ...]:
-        """Where each ensemble stands."""
-        return tuple(
-            EnsembleState(self.z[-1, place].copy(), self.log_density[-1, place].copy(), generator)
-            for place, generator in enumerate(self.generators)
-        )
-
-
 class ChainFile:
     """A chain file open for writing; make one with `create` or `resume`.
 
     Only one writer may be at work; a lock is the caller's affair.
+
+    Attributes
+    ----------
+    path : Path
+    header : Header
+    commit : Commit
+        The last one.
     """
 
-    def __init__(self, path: Path, places: Places, commit: Commit, checksum: int) -> None:
+    def __init__(self, path: Path, *, fresh: bool = False) -> None:
         self.path = path
-        self.commit = commit
-        self.header = places.header
-        self._places = places
-        self._checksum = checksum
-        self._pending: list[tuple[EnsembleState, ...]] = []
         self._stream = path.open("r+b", buffering=0)
+        try:
+            self._view = ChainView(path, self._stream)
+        except BaseException:
+            self._stream.close()
+            raise
+        self._pending: list[tuple[EnsembleState, ...]] = []
+        self.header = self._view.places.header
+        self.commit, self._checksum = Commit(0, 0, None, 0.0), 0
+        self._generators: list[tuple[Any, ...]] = []
+        if not fresh:
+            record = self._view.newest()
+            self.commit, self._checksum = commit_of(record), int(record["draws_checksum"])
+            self._generators = generators_of(record)
 
     @classmethod
     def create(cls, path: Path, header: Header, states: Sequence[EnsembleState]) -> Self:
@@ -109,10 +87,9 @@ class ChainFile:
             )
         with _moved_into_place(path) as temporary:
             lay_out(temporary, header, _ROOM)
-            file = cls(temporary, look_over(temporary), Commit(0, 0, None, 0.0), 0)
-            file.append(states)
-            file.write_commit(0.0)
-            file.close()
+            with cls(temporary, fresh=True) as file:
+                file.append(states)
+                file.write_commit(0.0)
         return cls.resume(path)
 
     @classmethod
@@ -124,10 +101,9 @@ class ChainFile:
         InputError
             If it is missing, cut short, damaged or of another kind; it is not touched.
         """
-        places = look_over(path)
-        record = _newest(path, places)
-        _verified(path, places, record)
-        return cls(path, places, commit_of(record), int(record["draws_checksum"]))
+        with viewed(path) as view:
+            view.verified(view.newest())
+        return cls(path)
 
     def __enter__(self) -> Self:
         return self
@@ -144,6 +120,19 @@ class ChainFile:
         """Rows committed or waiting for a commit."""
         return self.commit.rows + len(self._pending)
 
+    @property
+    def states(self) -> tuple[EnsembleState, ...]:
+        """Where the ensembles stood at the last commit."""
+        z, density = self.read(self.commit.rows - 1)
+        return tuple(
+            EnsembleState(z[0, place], density[0, place], generator)
+            for place, generator in enumerate(self._generators)
+        )
+
+    def read(self, first: int = 0) -> tuple[FloatArray, FloatArray]:
+        """Committed rows from `first` on: coordinates and log densities."""
+        return self._view.rows(first, self.commit.rows)
+
     def append(self, states: Sequence[EnsembleState]) -> None:
         """Add one row, to be written by the next commit."""
         self._pending.append(tuple(states))
@@ -158,54 +147,43 @@ class ChainFile:
         warm_up : int, optional
             Ends the warm-up at this row.
         """
-        if self.rows > self._places.capacity:
+        before = self.commit
+        if warm_up is None:
+            warm_up = before.warm_up
+        if self.rows > self._view.places.capacity:
             self._resize(max(2 * self.rows, _ROOM))
+        self._write_pending()
+        commit = Commit(before.number + 1, before.rows + len(self._pending), warm_up, seconds)
+        self._write_record(commit)
+        self.commit, self._pending = commit, []
+        return commit
+
+    def trim(self) -> None:
+        """Give up the room that is not used."""
+        if self._view.places.capacity > self.commit.rows:
+            self._resize(self.commit.rows)
+
+    def _write_pending(self) -> None:
+        if not self._pending:
+            return
         z = np.array([[state.z for state in row] for row in self._pending], dtype=FLOAT)
         density = np.array(
             [[state.log_density for state in row] for row in self._pending], dtype=FLOAT
         )
-        places, before = self._places, self.commit
-        if self._pending:
-            self._write(places.z_at(before.rows), z.tobytes())
-            self._write(places.density_at(before.rows), density.tobytes())
-            os.fsync(self._stream.fileno())
-        checksum = _sum_rows(self._checksum, z, density)
-        commit = Commit(
-            before.number + 1,
-            self.rows,
-            before.warm_up if warm_up is None else warm_up,
-            seconds,
-        )
-        generators = (
-            [state.generator for state in self._pending[-1]] if self._pending else self._generators
-        )
-        record = record_bytes(places.header.plan, commit, checksum, generators)
-        self._write(places.record_at(commit.number), record)
+        self._write_rows(self.commit.rows, z, density)
+        self._checksum = sum_rows(self._checksum, z, density)
+        self._generators = [state.generator for state in self._pending[-1]]
+
+    def _write_rows(self, first: int, z: FloatArray, density: FloatArray) -> None:
+        places = self._view.places
+        self._write(places.z_at(first), z.tobytes())
+        self._write(places.density_at(first), density.tobytes())
         os.fsync(self._stream.fileno())
-        self.commit, self._checksum, self._pending = commit, checksum, []
-        return commit
 
-    def read(self, first: int = 0) -> tuple[FloatArray, FloatArray]:
-        """Committed rows from `first` on: coordinates and log densities."""
-        return _rows(self.path, self._places, first, self.commit.rows)
-
-    @property
-    def states(self) -> tuple[EnsembleState, ...]:
-        """Where the ensembles stood at the last commit."""
-        z, density = self.read(self.commit.rows - 1)
-        return tuple(
-            EnsembleState(z[0, place], density[0, place], generator)
-            for place, generator in enumerate(self._generators)
-        )
-
-    def trim(self) -> None:
-        """Give up the room that is not used."""
-        if self._places.capacity > self.commit.rows:
-            self._resize(self.commit.rows)
-
-    @property
-    def _generators(self) -> list[tuple[Any, ...]]:
-        return generators_of(_newest(self.path, self._places))
+    def _write_record(self, commit: Commit) -> None:
+        record = record_bytes(self.header.plan, commit, self._checksum, self._generators)
+        self._write(self._view.places.record_at(commit.number), record)
+        os.fsync(self._stream.fileno())
 
     def _write(self, offset: int, content: bytes) -> None:
         self._stream.seek(offset)
@@ -214,101 +192,18 @@ class ChainFile:
             view = view[self._stream.write(view) :]
 
     def _resize(self, capacity: int) -> None:
-        """Move to a new file with another capacity, holding what is committed."""
-        record = _newest(self.path, self._places)
+        """Go on in a new file with another capacity that holds what is committed."""
         z, density = self.read()
         with _moved_into_place(self.path) as temporary:
             lay_out(temporary, self.header, capacity)
-            places = look_over(temporary)
-            with temporary.open("r+b") as stream:
-                for offset, content in (
-                    (places.z_at(0), z.tobytes()),
-                    (places.density_at(0), density.tobytes()),
-                    (places.record_at(self.commit.number), record.tobytes()),
-                ):
-                    stream.seek(offset)
-                    stream.write(content)
-            _verified(temporary, places, _newest(temporary, places))
+            with type(self)(temporary, fresh=True) as file:
+                file._checksum, file._generators = self._checksum, self._generators
+                file._write_rows(0, z, density)
+                file._write_record(self.commit)
+                file._view.verified(file._view.newest())
         self._stream.close()
-        self._places = places
         self._stream = self.path.open("r+b", buffering=0)
-
-
-def read_commit(path: Path) -> tuple[Header, Commit]:
-    """What a chain is of and how far it has come; also while it grows.
-
-    Raises
-    ------
-    InputError
-        If the file is missing, cut short, damaged or of another kind.
-    """
-    places = look_over(path)
-    return places.header, commit_of(_newest(path, places))
-
-
-def read_chain(path: Path, *, verify: bool = False) -> Chain:
-    """Everything committed; also while the chain grows.
-
-    Parameters
-    ----------
-    path : Path
-    verify : bool
-        Whether to hold every draw against the checksum.
-
-    Raises
-    ------
-    InputError
-        If the file is missing, cut short, damaged or of another kind.
-    """
-    places = look_over(path)
-    record = _newest(path, places)
-    commit = commit_of(record)
-    if verify:
-        _verified(path, places, record)
-    z, density = _rows(path, places, 0, commit.rows)
-    return Chain(places.header, commit, z, density, tuple(generators_of(record)))
-
-
-def _newest(path: Path, places: Places) -> npt.NDArray[np.void]:
-    """The newer of the two records among those that are whole."""
-    kind = record_type(places.header.plan)
-    for _ in range(3):  # a reader so slow that both were replaced meanwhile tries again
-        content = bytes_at(path, places.records, 2 * kind.itemsize)
-        records = np.frombuffer(content, kind)
-        whole = [record for record in records if _whole(record, places)]
-        if whole:
-            return max(whole, key=lambda record: int(record["number"]))
-        time.sleep(0.05)
-    raise InputError(chain_problem(path, "no whole record of a commit", ANEW))
-
-
-def _whole(record: npt.NDArray[np.void], places: Places) -> bool:
-    content = record.tobytes()
-    count = 1 <= int(record["rows"]) <= places.capacity
-    return count and zlib.crc32(content[:-4]) == int(record["checksum"])
-
-
-def _rows(path: Path, places: Places, first: int, last: int) -> tuple[FloatArray, FloatArray]:
-    plan, count = places.header.plan, last - first
-    shape = (count, plan.ensembles, plan.walkers)
-    z = bytes_at(path, places.z_at(first), count * plan.per_row * plan.dimension * 8)
-    density = bytes_at(path, places.density_at(first), count * plan.per_row * 8)
-    return (
-        np.frombuffer(z, FLOAT).reshape(*shape, plan.dimension).astype(float),
-        np.frombuffer(density, FLOAT).reshape(shape).astype(float),
-    )
-
-
-def _sum_rows(checksum: int, z: FloatArray, density: FloatArray) -> int:
-    for row, values in zip(z, density, strict=True):
-        checksum = zlib.crc32(values.tobytes(), zlib.crc32(row.tobytes(), checksum))
-    return checksum
-
-
-def _verified(path: Path, places: Places, record: npt.NDArray[np.void]) -> None:
-    z, density = _rows(path, places, 0, int(record["rows"]))
-    if _sum_rows(0, z, density) != int(record["draws_checksum"]):
-        raise InputError(chain_problem(path, "draws that do not match their checksum", ANEW))
+        self._view = ChainView(self.path, self._stream)
 
 
 @contextmanager

@@ -1,12 +1,19 @@
-"""How a chain file is laid out: what it is of, where its arrays lie, and its commit records."""
+"""How a chain file is laid out: what it is of, where its arrays lie, and its commit records.
+
+The file is HDF5 for everybody.  Its user block, the part at the start that HDF5
+leaves to applications, says in text what the chain is of and where the arrays begin,
+under a checksum.  We read by that alone, so that no damage can upset a library.
+"""
 
 from __future__ import annotations
 
+import json
+import os
 import zlib
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import asdict, dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import Any, BinaryIO
 
 import h5py
 import numpy as np
@@ -15,13 +22,13 @@ import numpy.typing as npt
 from ladderfit.errors import InputError, Problem
 from ladderfit.sampling.ensemble import Layout
 
-_FORMAT = "ladderfit chain"
+FloatArray = npt.NDArray[np.float64]
+
+_MAGIC = b"ladderfit chain "
 _VERSION = 1
 _SIGNATURE = b"\x89HDF\r\n\x1a\n"
+_HEAD = 40  # bytes of the first line: magic, version, checksum and length of the text
 _KEY = 624  # words of a Mersenne Twister
-_LARGEST_LAYOUT = 100_000
-
-FloatArray = npt.NDArray[np.float64]
 
 FLOAT = np.dtype("<f8")
 ANEW = "the file is left as it was; restore it from a copy, or start a new run"
@@ -86,6 +93,7 @@ class Places:
 
     header: Header
     capacity: int
+    size: int
     z: int
     density: int
     records: int
@@ -160,98 +168,112 @@ def commit_of(record: npt.NDArray[np.void]) -> Commit:
     )
 
 
-def bytes_at(path: Path, offset: int, size: int) -> bytes:
-    """Bytes of a file; fewer where it ends before."""
-    with path.open("rb") as stream:
-        stream.seek(offset)
-        return stream.read(size)
-
-
 def lay_out(path: Path, header: Header, capacity: int) -> None:
-    """Write the structure, with room for `capacity` rows."""
+    """Write a new file with room for `capacity` rows; nothing is counted yet."""
     plan = header.plan
     walkers = (capacity, plan.ensembles, plan.walkers)
     settings = h5py.h5p.create(h5py.h5p.DATASET_CREATE)
     settings.set_layout(h5py.h5d.CONTIGUOUS)
     settings.set_alloc_time(h5py.h5d.ALLOC_TIME_EARLY)
     settings.set_fill_time(h5py.h5d.FILL_TIME_NEVER)
-    with h5py.File(path, "w", locking=False) as file:
-        for name, shape, kind in (
-            ("commits", (2,), record_type(plan)),
-            ("log_density", walkers, FLOAT),
-            ("z", (*walkers, plan.dimension), FLOAT),
-        ):
+    arrays = {
+        "commits": ((2,), record_type(plan)),
+        "log_density": (walkers, FLOAT),
+        "z": ((*walkers, plan.dimension), FLOAT),
+    }
+    content = asdict(header)
+    content["box"] = None if header.box is None else header.box.tolist()
+    block = 512
+    while block < 2 * len(json.dumps(content)) + 512:
+        block *= 2
+    with h5py.File(path, "w", locking=False, userblock_size=block) as file:
+        offsets = {}
+        for name, (shape, kind) in arrays.items():
             space = h5py.h5s.create_simple(shape)
-            h5py.h5d.create(file.id, name.encode(), h5py.h5t.py_create(kind), space, settings)
-        file.attrs.update(
-            format=_FORMAT,
-            version=_VERSION,
-            names=list(header.names),
-            folded=np.array(header.folded, dtype=np.uint8),
-            dimension=plan.dimension,
-            ensembles=plan.ensembles,
-            walkers=plan.walkers,
-            thin=plan.thin,
-            seed=str(header.seed),
-            fingerprint=header.fingerprint,
-            box=np.full((2, plan.dimension), np.nan) if header.box is None else header.box,
-        )
+            made = h5py.h5d.create(
+                file.id, name.encode(), h5py.h5t.py_create(kind), space, settings
+            )
+            offsets[name] = int(made.get_offset())
+        file.attrs.update(names=list(header.names), header=json.dumps(content))
+    text = {
+        "header": content,
+        "capacity": capacity,
+        "offsets": offsets,
+        "size": path.stat().st_size,
+    }
+    body = json.dumps(text).encode()
+    first = _MAGIC + b"%d %08x %05d\n" % (_VERSION, zlib.crc32(body), len(body))
+    with path.open("r+b") as stream:
+        stream.write(first.ljust(_HEAD) + body + b"\n")
+
+
+def look_over(path: Path, stream: BinaryIO) -> Places:
+    """Read the user block of an open file, before a single number is used.
+
+    Raises
+    ------
+    InputError
+        If it is cut short, damaged or of another kind.
+    """
+    stream.seek(0)
+    first = stream.read(_HEAD)
+    if not first.startswith(_MAGIC):
+        raise InputError(chain_problem(path, _kind_of(stream), ANEW))
+    try:
+        version, checksum, length = first[len(_MAGIC) :].split()
+        if int(version) != _VERSION:
+            found = f"version {int(version)} of the format, where {_VERSION} is known"
+            remedy = "use the version of ladderfit that wrote it"
+            raise InputError(chain_problem(path, found, remedy))
+        body = stream.read(int(length))
+        if len(body) < int(length):
+            raise InputError(chain_problem(path, _SHORT, ANEW))
+        if zlib.crc32(body) != int(checksum, 16):
+            raise ValueError("checksum")
+        places = _places_of(json.loads(body))
+    except (KeyError, TypeError, ValueError):
+        found = _SHORT if len(first) < _HEAD else "a damaged head"
+        raise InputError(chain_problem(path, found, ANEW)) from None
+    if os.fstat(stream.fileno()).st_size < places.size:
+        raise InputError(chain_problem(path, _SHORT, ANEW))
+    return places
+
+
+_SHORT = "a file cut short"
+
+
+def _places_of(text: dict[str, Any]) -> Places:
+    content, offsets = text["header"], text["offsets"]
+    box = content["box"]
+    header = Header(
+        names=tuple(content["names"]),
+        folded=tuple(content["folded"]),
+        plan=Layout(**content["plan"]),
+        seed=content["seed"],
+        fingerprint=content["fingerprint"],
+        box=None if box is None else np.array(box, dtype=float),
+    )
+    return Places(
+        header,
+        text["capacity"],
+        text["size"],
+        offsets["z"],
+        offsets["log_density"],
+        offsets["commits"],
+    )
+
+
+def _kind_of(stream: BinaryIO) -> str:
+    """What a file is that is no chain file; HDF5's signature stands at 0, 512, 1024, ..."""
+    place = 0
+    while place <= os.fstat(stream.fileno()).st_size:
+        stream.seek(place)
+        if stream.read(len(_SIGNATURE)) == _SIGNATURE:
+            return "an HDF5 file of another kind"
+        place = max(512, 2 * place)
+    return "a file that is not HDF5"
 
 
 def chain_problem(path: Path, found: str, remedy: str) -> Problem:
     """A problem with a chain file."""
     return Problem(found, "a chain file of an ensemble run", remedy, file=str(path))
-
-
-def look_over(path: Path) -> Places:
-    """Look a file over before a single number of it is used."""
-    if not path.is_file():
-        found = "a folder" if path.is_dir() else "no such file"
-        raise InputError(chain_problem(path, found, "correct the path, or start a new run"))
-    try:
-        if bytes_at(path, 0, len(_SIGNATURE)) != _SIGNATURE:
-            raise InputError(chain_problem(path, "a file that is not HDF5", ANEW))
-        with h5py.File(path, "r", locking=False) as file:
-            return _looked_over(path, file)
-    except PermissionError:
-        raise InputError(
-            chain_problem(path, "a file that may not be read", "make it readable")
-        ) from None
-    except (OSError, RuntimeError, KeyError, TypeError, ValueError, AttributeError) as error:
-        words = "a file cut short" if "truncated" in str(error) else "a damaged HDF5 file"
-        raise InputError(chain_problem(path, words, ANEW)) from None
-
-
-def _looked_over(path: Path, file: h5py.File) -> Places:
-    attributes = file.attrs
-    if str(attributes.get("format", "")) != _FORMAT:
-        raise InputError(chain_problem(path, "an HDF5 file of another kind", ANEW))
-    if int(attributes["version"]) != _VERSION:
-        found = f"version {int(attributes['version'])} of the format, where {_VERSION} is known"
-        raise InputError(chain_problem(path, found, "use the version of ladderfit that wrote it"))
-    sizes = [int(attributes[name]) for name in ("dimension", "ensembles", "walkers", "thin")]
-    if not all(1 <= size <= _LARGEST_LAYOUT for size in sizes):
-        raise InputError(chain_problem(path, f"a layout of {sizes}", ANEW))
-    box = np.array(attributes["box"], dtype=float).reshape(2, sizes[0])
-    header = Header(
-        names=tuple(str(name) for name in attributes["names"]),
-        folded=tuple(bool(flag) for flag in attributes["folded"]),
-        plan=Layout(*sizes),
-        seed=int(attributes["seed"]),
-        fingerprint=str(attributes["fingerprint"]),
-        box=None if np.isnan(box).any() else box,
-    )
-    plan, capacity = header.plan, int(file["z"].shape[0])
-    wanted = {
-        "commits": ((2,), record_type(plan)),
-        "log_density": ((capacity, plan.ensembles, plan.walkers), FLOAT),
-        "z": ((capacity, plan.ensembles, plan.walkers, plan.dimension), FLOAT),
-    }
-    offsets = {name: file[name].id.get_offset() for name in wanted}
-    fits = all(
-        file[name].shape == shape and file[name].dtype == kind and offsets[name] is not None
-        for name, (shape, kind) in wanted.items()
-    )
-    if not fits or not len(header.names) == len(header.folded) == plan.dimension:
-        raise InputError(chain_problem(path, "arrays of another layout", ANEW))
-    return Places(header, capacity, offsets["z"], offsets["log_density"], offsets["commits"])

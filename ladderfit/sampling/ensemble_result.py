@@ -9,8 +9,8 @@ from ladderfit.ladder import Ladder
 from ladderfit.posterior.determined import check_determined
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.result import Diagnostics, Result, ordered
-from ladderfit.sampling.chain_file import Chain
 from ladderfit.sampling.chain_layout import Header
+from ladderfit.sampling.chain_reading import Chain
 from ladderfit.sampling.convergence import Goal, Report, report
 from ladderfit.sampling.ensemble import Layout, theta_generator
 from ladderfit.sampling.run import informed, prior_notes

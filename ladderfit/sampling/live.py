@@ -16,8 +16,8 @@ from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_copy import copy_ladder
 from ladderfit.result import Result
-from ladderfit.sampling.chain_file import Chain, read_chain, read_commit
 from ladderfit.sampling.chain_layout import Commit, Header
+from ladderfit.sampling.chain_reading import Chain, read_chain, read_commit
 from ladderfit.sampling.convergence import Goal, Report
 from ladderfit.sampling.ensemble import focus
 from ladderfit.sampling.ensemble_result import checked_posterior, ensemble_result, phi_report

@@ -97,7 +97,7 @@ def informed(ladder: Ladder, draws: Mapping[str, FloatArray]) -> dict[str, float
     """Posterior over prior standard deviation of every free parameter with a prior."""
     ratio = {}
     for name, values in draws.items():
-        if base_name(name) == "modulus":
+        if parameter(name).prior is None:
             continue
         prior = ladder.choices.prior(name)
         if not isinstance(prior, Fixed):

@@ -24,8 +24,9 @@ from ladderfit.files import lock
 from ladderfit.ladder import read_ladder
 from ladderfit.posterior.joint import Posterior
 from ladderfit.result import Result
-from ladderfit.sampling.chain_file import ChainFile, read_chain
+from ladderfit.sampling.chain_file import ChainFile
 from ladderfit.sampling.chain_layout import Header
+from ladderfit.sampling.chain_reading import read_chain
 from ladderfit.sampling.convergence import Goal
 from ladderfit.sampling.ensemble import Start, focus, layout, start
 from ladderfit.sampling.ensemble_result import (
