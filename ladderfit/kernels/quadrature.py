@@ -105,9 +105,7 @@ def log_stretched(
 ) -> float:
     """Log of the integrand in y, Jacobian included."""
     u = y + math.log1p(math.exp(-y)) if y > 0.0 else math.log1p(math.exp(y))
-    if u <= 0.0:  # y so low that e^y vanished
-        return -math.inf
-    log_u = math.log(u)
+    log_u = y if y < -40.0 else math.log(u)  # u is e^y there, and may underflow
     off = (10.0 - (log_u + log_scale) / K - a) / root
     miss = (u * math.exp(log_scale) - plx) / err
     return -0.5 * (off * off + miss * miss) + (y - u) - log_u - math.log(K)
