@@ -25,6 +25,7 @@ FloatArray = npt.NDArray[np.float64]
 ENSEMBLES = 4
 _WIDER = 2.0  # times the posterior's width, for the starting points
 _BOX = 12.0  # widths round the mode
+_LOOKS = 8  # dispersed points from which modes are sought
 _TRIES = 30
 _STARTS, _THETA = 1_000_000, 1_000_001  # places of the streams that belong to no ensemble
 
@@ -110,7 +111,7 @@ def start(target: Target, plan: Layout, seed: int) -> Start:
         If no starting points of finite density are found.
     """
     rng = np.random.default_rng(stream(seed, _STARTS))
-    modes = find_modes(target, rng)
+    modes = find_modes(target, rng, others=_LOOKS)
     box = _box(modes) if len(modes) == 1 else None
     focus(target, box)
     states = []

@@ -25,6 +25,7 @@ COMMIT_EVERY = 0.5  # s
 _WARM_UP_EVERY = 10  # rows between two looks at the warm-up
 _WARM_UP_LEAST, _WARM_UP_MOST = 30, 500  # rows
 _SETTLED_RHAT = 1.05
+_LEFT_BEHIND = 30.0  # below the highest log density, and 3 more for each dimension
 _FIRST_LOOK, _LOOKS_APART = 25, 1.1
 
 
@@ -85,7 +86,8 @@ def settled(file: ChainFile) -> bool:
     """Whether the warm-up is over: in its second half the ensembles agree, or it is very long.
 
     Over-dispersed starts that still drift or shrink show in the split R-hat of a
-    coordinate (location or scale) or of the log density.
+    coordinate (location or scale) or of the log density; single walkers left behind,
+    which ranks do not mind, show in a log density far below the highest.
     """
     rows = file.commit.rows
     if rows < _WARM_UP_LEAST:
@@ -93,7 +95,8 @@ def settled(file: ChainFile) -> bool:
     if rows >= _WARM_UP_MOST:
         return True
     z, density = file.read(rows // 2)
-    if not np.isfinite(density).all():
+    behind = float(density.max() - density[-1].min())
+    if not behind < _LEFT_BEHIND + 3.0 * file.header.plan.dimension:
         return False
     z = np.where(np.array(file.header.folded), np.abs(z), z)
     series = [density, *np.moveaxis(z, -1, 0)]
