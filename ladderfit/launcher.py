@@ -8,12 +8,17 @@ import shutil
 import subprocess
 import sys
 from pathlib import Path
+from uuid import uuid4
+
+from jupyter_core.paths import jupyter_runtime_dir
 
 from ladderfit.errors import InputError, Problem
 from ladderfit.shipped import sample_ladder, shipped
 
 FIRST = "01_calibrate.ipynb"
 _SETTINGS = Path(__file__).resolve().parent / "workbench" / "lab"
+_LONGEST_SOCKET = 107  # bytes, sun_path of Linux
+_SOCKET_NAME = len(f"/kernel-{uuid4()}-ipc-5")
 _NO_FILE = "FILE = None"
 
 
@@ -96,7 +101,7 @@ def command(folder: Path, *, port: int | None = None, browser: bool = True) -> l
         "--LabApp.check_for_updates_class=jupyterlab.NeverCheckForUpdate",
         f"--LabApp.default_url=/lab/tree/{FIRST}",
     ]
-    if sys.platform.startswith("linux"):
+    if sys.platform.startswith("linux") and sockets_fit(Path(jupyter_runtime_dir())):
         words.append("--KernelManager.transport=ipc")
     if port is not None:
         words += [f"--ServerApp.port={port}", "--ServerApp.port_retries=0"]
@@ -105,6 +110,11 @@ def command(folder: Path, *, port: int | None = None, browser: bool = True) -> l
     if hasattr(os, "geteuid") and os.geteuid() == 0:
         words.append("--allow-root")
     return words
+
+
+def sockets_fit(folder: Path) -> bool:
+    """Whether names of a kernel's sockets in this folder are short enough for Linux."""
+    return len(os.fsencode(folder)) + _SOCKET_NAME <= _LONGEST_SOCKET
 
 
 def environment() -> dict[str, str]:

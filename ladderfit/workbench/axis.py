@@ -30,6 +30,8 @@ class LadderAxis(anywidget.AnyWidget):
         Whether the page is dark.
     width : int
         Of the workbench, in px, as the page has room.
+    ready : int
+        Counts how often a figure has come to stand in the page.
     rgb : list of float
         The colour that the workbench stands on.
     """
@@ -41,6 +43,7 @@ class LadderAxis(anywidget.AnyWidget):
     rung = traitlets.Unicode().tag(sync=True)
     palette = traitlets.Dict().tag(sync=True)
     dark = traitlets.Bool(False).tag(sync=True)
+    ready = traitlets.Int(0).tag(sync=True)
     width = traitlets.Int(1000).tag(sync=True)
     rgb = traitlets.List([255, 255, 255]).tag(sync=True)
 

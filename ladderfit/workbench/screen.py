@@ -38,7 +38,7 @@ def _guarded(
     """One callback at a time; an error is shown at the foot instead of vanishing."""
 
     @wraps(method)
-    def guarded(self: Any, *args: P.args, **kwargs: P.kwargs) -> None:
+    def guarded(self: Any, /, *args: P.args, **kwargs: P.kwargs) -> None:
         with self._lock:
             try:
                 method(self, *args, **kwargs)
@@ -100,6 +100,7 @@ class Workbench:
         self.axis.observe(self._opened, "rung")
         self.axis.observe(self._recoloured, ["dark", "rgb"])
         self.axis.observe(self._resized, "width")
+        self.axis.observe(self._stands, "ready")
         self._after(None, settled=True, said=False)
 
     @property
@@ -211,6 +212,11 @@ class Workbench:
     @_guarded
     def _resized(self, change: Any) -> None:
         self.picture.resize(change["new"] - _LEFT)
+        self._show_view()
+
+    @_guarded
+    def _stands(self, _: Any) -> None:
+        self.picture.anew()
         self._show_view()
 
     @_guarded

@@ -99,6 +99,27 @@ function watchPage(el, model) {
   return () => observer.disconnect();
 }
 
+// A figure keeps the Tab key to itself: leave it to the pointer, as the line below it does the same by keyboard.
+// It may also lose what is drawn in its first half second: ask for it once more when it is there.
+function openFigures(el, model) {
+  let asked = false;
+  const release = () => {
+    const bench = el.closest(".lf-workbench") || document.body;
+    for (const node of bench.querySelectorAll(".jupyter-matplotlib [tabindex='0'], .jupyter-matplotlib[tabindex='0']"))
+      node.setAttribute("tabindex", "-1");
+    if (!asked && bench.querySelector(".jupyter-matplotlib canvas")) {
+      asked = true;
+      setTimeout(() => { model.set("ready", model.get("ready") + 1); model.save_changes(); }, 700);
+    }
+  };
+  const observer = new MutationObserver(release);
+  setTimeout(() => {
+    release();
+    observer.observe(el.closest(".lf-workbench") || document.body, { childList: true, subtree: true });
+  }, 0);
+  return () => observer.disconnect();
+}
+
 function render({ model, el }) {
   el.classList.add("lf-axis");
   const svg = add(el, "svg", { height: HEIGHT, role: "group", "aria-label": "The ladder: one axis of distance. Arrows move, Enter opens a rung." });
@@ -168,8 +189,8 @@ function render({ model, el }) {
   });
   fit.observe(el);
   draw();
-  const stop = watchPage(el, model);
-  return () => { fit.disconnect(); stop(); };
+  const stops = [watchPage(el, model), openFigures(el, model), () => fit.disconnect()];
+  return () => stops.forEach((stop) => stop());
 }
 
 export default { render };

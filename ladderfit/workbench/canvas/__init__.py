@@ -75,8 +75,13 @@ class Picture:
             return
         self.figure.set_size_inches(width / _DPI, HEIGHT / _DPI, forward=False)
         self._shown = None
+        self.anew()
+
+    def anew(self) -> None:
+        """Tell the page the size once more, and send the next picture whole."""
         size = self.figure.bbox.size
         self.canvas.manager.resize(float(size[0]), float(size[1]))
+        self.canvas._force_full = True
 
     def show(
         self,
