@@ -304,9 +304,17 @@ def start(
     UndeterminedError
         If the data and the stated priors leave the distance scale undetermined.
     """
+    run = Run(lay_out(ladder, out, seed=seed, goal=_goal(ess, total)))
+    run.resume()
+    return run
+
+
+def lay_out(
+    ladder: Ladder, out: str | Path, *, seed: int | None = None, goal: Goal | None = None
+) -> RunFolder:
+    """Lay out the folder of a run, without starting it; raises what `start` raises."""
     sampling = ladder.choices.sampling
     seed = sampling.seed if seed is None else seed
-    goal = _goal(ess, total) or Goal(ess=float(sampling.draws))
     ladder = ladder.change({"sampling.sampler": "ensemble", "sampling.seed": seed})
     if checked_posterior(ladder).dimension == 0:
         raise InputError(
@@ -321,11 +329,10 @@ def start(
     with new_folder(out) as temporary:
         folder = RunFolder(temporary)
         copy = copy_ladder(ladder, temporary)
+        goal = goal or Goal(ess=float(sampling.draws))
         folder.write_settings(Settings(seed, goal, inputs_of(copy)))
         folder.write_status(Status("stopped", "not started yet"))
-    run = Run(RunFolder(Path(out)))
-    run.resume()
-    return run
+    return RunFolder(Path(out))
 
 
 def open_run(folder: str | Path) -> Run:
