@@ -381,7 +381,7 @@ def test_the_command_says_what_it_guessed(
     errors = capsys.readouterr().err.splitlines()
     assert errors[0] == (
         f"ladderfit: {path}, key anchors.parallaxes.corrected: found "
-        '"undecided: true if a published zero-point recipe is applied to the parallaxes?"; '
+        '"undecided: true if a zero-point recipe is applied already, false to apply one?"; '
         "expected a decision; write what is meant in place of the whole text"
     )
     assert len(errors) == 2

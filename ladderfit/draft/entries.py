@@ -60,7 +60,7 @@ def _relative(path: Path, folder: Path) -> str:
 def _section(job: str, section: tuple[str, ...]) -> Iterator[Entry]:
     """Choices that no table can tell."""
     if job == PARALLAXES:
-        text = f"{UNDECIDED} true if a published zero-point recipe is applied to the parallaxes?"
+        text = f"{UNDECIDED} true if a zero-point recipe is applied already, false to apply one?"
         yield Entry(section, "corrected", Choice(text))
         yield Entry(section, "distance_prior", Choice("flat in modulus", "or uniform in volume"))
 
