@@ -2,13 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, TypeVar, cast
 
-from ladderfit.choices import Choices, Parallaxes
+import numpy as np
+
+from ladderfit.choices import Choices, Covariance, Parallaxes
+from ladderfit.correlated import Given, Supernovae, anchors_together, supernovae_together
+from ladderfit.covariances import Matrix, read_covariance
 from ladderfit.errors import InputError, Problem
+from ladderfit.samples import FloatArray
 from ladderfit.select_stars import (
     CepheidSelection,
     ParallaxSelection,
@@ -27,16 +32,43 @@ from ladderfit.tables import DataTable
 T = TypeVar("T")
 
 SECTIONS = ("cepheids", "anchors.parallaxes", "supernovae", "expansion")
+MATRICES = (
+    "anchors.covariance",
+    "supernovae.covariance",
+    "expansion.covariance",
+    "expansion.velocity_covariance",
+)
+PATHS = (  # dotted keys whose values are paths of input files
+    *(f"{section}.table" for section in SECTIONS),
+    *(f"{matrix}.{part}" for matrix in MATRICES for part in ("file", "names")),
+)
 IN_MEMORY = "(in memory)"
 
 
 @dataclass(frozen=True)
 class Source:
-    """Where a table came from: `path` as written, `sha256` of file or arrays, `rows` in it."""
+    """Where an input came from: `path` as written, `sha256` of file or arrays, `rows` in it."""
 
     path: str
     sha256: str
     rows: int
+
+
+@dataclass(frozen=True)
+class AnchorInUse:
+    """A geometric anchor that takes part: index and name of its host, modulus and error [mag]."""
+
+    host: int
+    name: str
+    modulus: float
+    error: float
+
+
+def file_key(section: str) -> str:
+    """The dotted key that names the file of an entry of `Ladder.sources`."""
+    if section in MATRICES:
+        return f"{section}.file"
+    return f"{section}.table" if section in SECTIONS else section
 
 
 @dataclass(frozen=True, eq=False)
@@ -139,15 +171,90 @@ class Assembly:
 
     def expansion(self) -> ExpansionSelection | None:
         """The objects that follow the expansion."""
-        section = self.choices.expansion
+        section, covariance = self.choices.expansion, self.choices.peak_covariance
         if section is None or section.table is None:
             return None
+        errors = covariance is None or covariance[1].adds
         return self.select(
             "expansion",
             section.table,
-            (section.columns, section.redshifts, section.set_aside),
-            lambda table: select_expansion(table, section),
+            (section.columns, section.redshifts, section.set_aside, errors),
+            lambda table: select_expansion(table, section, errors=errors),
         )
+
+    def supernovae(
+        self, peaks: PeakSelection | None, expansion: ExpansionSelection | None
+    ) -> Supernovae:
+        """The supernovae with their covariance, if there is one."""
+        section = self.choices.expansion
+        peak, velocity = self.choices.peak_covariance, None
+        if section is not None and section.velocity_covariance is not None:
+            velocity = self.matrix("expansion.velocity_covariance", section.velocity_covariance)
+        magnitudes = None if peak is None else self.matrix(*peak)
+        tables = [self.sources[s].sha256 for s in ("supernovae", "expansion") if s in self.sources]
+        made_from = (
+            peaks,
+            expansion,
+            None if section is None else section.peculiar_velocity,
+            *((g.matrix, g.key, g.adds) for g in (magnitudes, velocity) if g is not None),
+        )
+        return self._once(
+            "supernovae together",
+            made_from,
+            lambda: supernovae_together(
+                peaks,
+                expansion,
+                section,
+                magnitudes,
+                velocity,
+                same_table=len(tables) == 2 and tables[0] == tables[1],
+            ),
+        )
+
+    def anchors(self, used: Sequence[AnchorInUse]) -> FloatArray | None:
+        """The covariance of the geometric anchors in use, if one is given."""
+        section = self.choices.anchors
+        if section.covariance is None or not used:
+            return None
+        given = self.matrix("anchors.covariance", section.covariance)
+        names = [anchor.name for anchor in used]
+        errors = np.array([anchor.error for anchor in used])
+        made_from = (tuple(section.geometric), tuple(names), *errors, given.matrix, given.adds)
+        return self._once(
+            "anchors together",
+            made_from,
+            lambda: anchors_together(tuple(section.geometric), names, errors, given),
+        )
+
+    def matrix(self, key: str, choice: Covariance) -> Given:
+        """A covariance matrix, read once."""
+        base = self.before.base
+        names = None if choice.names is None else base / choice.names
+        earlier = self.made.get(key)
+        if earlier is None or earlier[0] != (choice.file, choice.names):
+            if choice.file == IN_MEMORY:
+                raise InputError(
+                    Problem(
+                        found="no matrix of that key in memory",
+                        expected="a matrix",
+                        remedy="write it to a file and name the file",
+                        key=f"{key}.file",
+                    )
+                )
+            found = read_covariance(base / choice.file, names, key)
+            self.made[key] = ((choice.file, choice.names), found)
+        found = cast("Matrix", self.made[key][1])
+        self.sources[key] = Source(choice.file, found.sha256[0], len(found))
+        if choice.names is not None:
+            self.sources[f"{key}.names"] = Source(choice.names, found.sha256[1], len(found))
+        return Given(found, key, choice.adds)
+
+    def _once(self, key: str, made_from: tuple[Any, ...], make: Callable[[], T]) -> T:
+        """What `make` gives; the earlier one if it was made from the same."""
+        earlier = self.made.get(key)
+        if earlier is None or earlier[0] != made_from:
+            self.made[key] = (made_from, make())
+        return cast("T", self.made[key][1])
 
 
 def _rows_of_parallaxes(section: Parallaxes) -> tuple[Any, ...]:

@@ -7,13 +7,26 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from ladderfit import schema
-from ladderfit.assembly import IN_MEMORY, SECTIONS, Assembly, Parts, Source
+from ladderfit.assembly import (
+    IN_MEMORY,
+    MATRICES,
+    SECTIONS,
+    AnchorInUse,
+    Assembly,
+    Parts,
+    Source,
+    file_key,
+)
 from ladderfit.choices import Choices
 from ladderfit.consistency import star_notes, star_problems
+from ladderfit.correlated import Supernovae, repeated_names
+from ladderfit.covariances import covariance_in_memory
 from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.ladder_file import as_written, read_choices
-from ladderfit.samples import FlowSample, Kept, PeakSample, StarSample, VelocitySample
+from ladderfit.samples import FloatArray, FlowSample, Kept, PeakSample, StarSample, VelocitySample
 from ladderfit.select_stars import CepheidSelection
 from ladderfit.select_supernovae import PeakSelection
 from ladderfit.table_memory import table_in_memory
@@ -21,15 +34,7 @@ from ladderfit.tables import DataTable
 
 __all__ = ["AnchorInUse", "Ladder", "Source", "build_ladder", "read_ladder"]
 
-
-@dataclass(frozen=True)
-class AnchorInUse:
-    """A geometric anchor that takes part: index and name of its host, modulus and error [mag]."""
-
-    host: int
-    name: str
-    modulus: float
-    error: float
+_SEVERAL = 5  # names that a note lists
 
 
 @dataclass(frozen=True, eq=False)
@@ -49,6 +54,13 @@ class Ladder:
         The rows that take part; None where a section is absent or not in use.
     geometric : tuple of AnchorInUse
         Anchors in use whose host takes part.
+    anchor_covariance : array, shape (n, n), or None
+        Of their moduli [mag^2]; None where the errors are independent (but for
+        shared ones).
+    peak_covariance : array, shape (n, n), or None
+        Of peak magnitudes less their prediction, without intrinsic scatter [mag^2]:
+        `peaks` first, then `flow`, peculiar velocities included; None where all are
+        independent.
     kept : mapping of str to Kept
         By section: how many rows take part, and why the others do not.
     notes : tuple of str
@@ -66,6 +78,8 @@ class Ladder:
     flow: FlowSample | None
     velocities: VelocitySample | None
     geometric: tuple[AnchorInUse, ...]
+    anchor_covariance: FloatArray | None
+    peak_covariance: FloatArray | None
     kept: Mapping[str, Kept]
     notes: tuple[str, ...]
     sources: Mapping[str, Source]
@@ -93,8 +107,15 @@ class Ladder:
 
     @property
     def in_memory(self) -> bool:
-        """Whether some table has no file."""
-        return any(section for section, _ in self._parts.tables)
+        """Whether some table or matrix has no file."""
+        tables = any(section for section, _ in self._parts.tables)
+        return tables or any(self.sources[key].path == IN_MEMORY for key in self.matrices)
+
+    @property
+    def matrices(self) -> dict[str, FloatArray]:
+        """The covariance matrices in use as they were read, by dotted key."""
+        made = self._parts.made
+        return {key: made[key][1].values for key in MATRICES if key in self.sources}
 
     def table(self, section: str) -> DataTable | None:
         """The table of a section as it was read, all rows; None where there is none."""
@@ -118,7 +139,7 @@ class Ladder:
             theirs = other.sources.get(section)
             if theirs and theirs.path == mine.path and theirs.sha256 != mine.sha256:
                 lines.append(
-                    f"{section}.table: the contents differ "
+                    f"{file_key(section)}: the contents differ "
                     f"(SHA-256 {theirs.sha256[:12]} -> {mine.sha256[:12]})"
                 )
         return "\n".join(lines)
@@ -154,7 +175,9 @@ def build_ladder(
         As in a ladder file; `table` may be left out where `tables` has the section.
     tables : mapping of str to table, optional
         By section ("cepheids", "anchors.parallaxes", "supernovae", "expansion"): a
-        pandas DataFrame, an astropy Table or QTable, or a mapping of arrays.
+        pandas DataFrame, an astropy Table or QTable, or a mapping of arrays.  A
+        covariance ("supernovae.covariance", "expansion.covariance",
+        "expansion.velocity_covariance", "anchors.covariance") is an array.
     base : path, optional
         Folder that paths of other tables are relative to; the current one by default.
 
@@ -164,9 +187,15 @@ def build_ladder(
         With one problem for each thing found wrong.
     """
     plain = schema.written(choices)
+    folder = Path() if base is None else Path(base)
     problems: list[Problem] = []
     given: dict[tuple[str, str], DataTable] = {}
+    made: dict[str, tuple[tuple[Any, ...], Any]] = {}
     for section, value in (tables or {}).items():
+        if section in MATRICES:
+            plain, matrix = _with_matrix(plain, section, value, folder, problems)
+            made |= matrix
+            continue
         entry = _entry(plain, section) if section in SECTIONS else None
         if entry is None:
             problems.append(_stray_table(section))
@@ -179,8 +208,25 @@ def build_ladder(
         except InputError as error:
             problems.extend(error.problems)
     raise_if(problems)
-    folder = Path() if base is None else Path(base)
-    return _assemble(Choices.from_mapping(plain), None, Parts(folder, given, {}))
+    return _assemble(Choices.from_mapping(plain), None, Parts(folder, given, made))
+
+
+def _with_matrix(
+    plain: Mapping[str, Any], key: str, value: Any, folder: Path, problems: list[Problem]
+) -> tuple[dict[str, Any], dict[str, tuple[tuple[Any, ...], Any]]]:
+    """Choices that name a matrix in memory, and the matrix, as if read before."""
+    if _entry(plain, key.rpartition(".")[0]) is None:
+        problems.append(_stray_table(key))
+        return dict(plain), {}
+    entry = {**(_entry(plain, key) or {}), "file": IN_MEMORY}
+    names = entry.get("names")
+    listed = folder / names if isinstance(names, str) else None
+    try:
+        matrix = covariance_in_memory(value, key, listed)
+    except InputError as error:
+        problems.extend(error.problems)
+        return dict(plain), {}
+    return schema.with_value(plain, key, entry), {key: ((IN_MEMORY, names), matrix)}
 
 
 def _entry(plain: Mapping[str, Any], section: str) -> Mapping[str, Any] | None:
@@ -191,11 +237,12 @@ def _entry(plain: Mapping[str, Any], section: str) -> Mapping[str, Any] | None:
 
 
 def _stray_table(section: str) -> Problem:
-    known = section in SECTIONS
+    known = section in (*SECTIONS, *MATRICES)
+    places = (*SECTIONS, *MATRICES)
     return Problem(
         found=f"a table for {section!r}" + (", which the choices do not have" if known else ""),
         expected="tables for sections of the choices, among " + ", ".join(SECTIONS),
-        remedy="add the section to the choices" if known else nearest(section, SECTIONS),
+        remedy="add the section to the choices" if known else nearest(section, places),
     )
 
 
@@ -206,9 +253,15 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
     peaks = assembly.peaks(cepheids)
     expansion = assembly.expansion()
     raise_if(assembly.problems)
+    together = assembly.supernovae(peaks, expansion)
     hosts = peaks.hosts if peaks else cepheids.hosts if cepheids else ()
     seen = {*(cepheids.seen if cepheids else ()), *(peaks.seen if peaks else ())}
     geometric, notes = _anchors_in_use(choices, hosts, seen)
+    anchors = assembly.anchors(geometric)
+    if anchors is not None:
+        errors = np.sqrt(np.diag(anchors))
+        pairs = zip(geometric, errors, strict=True)
+        geometric = tuple(replace(anchor, error=float(error)) for anchor, error in pairs)
     samples = [each.sample for each in (cepheids, parallaxes) if each is not None]
     raise_if(list(star_problems(choices, samples, hosts, seen)))
     selections = dict(zip(SECTIONS, (cepheids, parallaxes, peaks, expansion), strict=True))
@@ -218,10 +271,12 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
         hosts=hosts,
         cepheids=cepheids.sample if cepheids else None,
         parallax_stars=parallaxes.sample if parallaxes else None,
-        peaks=peaks.sample if peaks else None,
-        flow=expansion.flow if expansion else None,
+        peaks=together.peaks,
+        flow=together.flow,
         velocities=expansion.velocities if expansion else None,
         geometric=geometric,
+        anchor_covariance=anchors,
+        peak_covariance=together.matrix,
         kept={key: selection.kept for key, selection in selections.items() if selection},
         notes=(
             *(f"Cepheids: {note}" for note in (cepheids.notes if cepheids else ())),
@@ -229,6 +284,7 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
             *_lost_hosts(cepheids, peaks),
             *(peaks.notes if peaks else ()),
             *notes,
+            *_notes_on_repeated(choices, together),
             *star_notes(choices, samples),
         ),
         sources=assembly.sources,
@@ -261,6 +317,23 @@ def _anchors_in_use(
             )
     raise_if(problems)
     return tuple(used), notes
+
+
+def _notes_on_repeated(choices: Choices, together: Supernovae) -> list[str]:
+    """Supernovae in both samples that nothing correlates."""
+    if choices.peak_covariance is not None:
+        return []
+    names = repeated_names(together.peaks, together.flow)
+    if not names:
+        return []
+    listed = ", ".join(names[:_SEVERAL]) + (", ..." if len(names) > _SEVERAL else "")
+    return [
+        f"{len(names)} supernovae stand in hosts and in the expansion ({listed}); without a "
+        "covariance the two measurements of each are taken as independent"
+        if len(names) > 1
+        else f"{listed} stands in hosts and in the expansion; without a covariance its two "
+        "measurements are taken as independent"
+    ]
 
 
 def _lost_hosts(cepheids: CepheidSelection | None, peaks: PeakSelection | None) -> list[str]:

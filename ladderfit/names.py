@@ -105,6 +105,7 @@ _ALL = (
     Parameter("peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)),
     Parameter("peak_scatter", "mag", r"$t_\mathrm{SN}$", "supernova scatter", 3, HalfNormal(0.3)),
     Parameter("hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)),
+    Parameter("intercept", "", r"$a_B$", "intercept of the expansion", 4, None),
     Parameter(
         "velocity_constant", "km/s", r"$v_0$", "velocity at zero distance", 1, Normal(0.0, 1000.0)
     ),
@@ -113,6 +114,7 @@ _ALL = (
 )
 
 PARAMETERS: dict[str, Parameter] = {parameter.name: parameter for parameter in _ALL}
+DERIVED = ("intercept",)  # functions of parameters, without a prior of their own
 HEADLINE = tuple(p.name for p in _ALL if p.prior is not None and p.name != "parallax_field")
 
 

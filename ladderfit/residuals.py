@@ -13,12 +13,14 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from ladderfit.choices import Expansion
+from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
-from ladderfit.physics.expansion import distance_term, peculiar_variance
+from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.relations import design, scatters
 from ladderfit.result import Result
-from ladderfit.samples import FloatArray, IntArray, StarSample, TextArray
+from ladderfit.samples import FloatArray, FlowSample, IntArray, StarSample, TextArray
 from ladderfit.units import LN10, modulus_from_parallax, parallax_from_modulus
 
 LINE = ("zero_point", "slope", "slope_beyond", "curvature")  # terms of the period alone
@@ -257,7 +259,7 @@ def peak_residuals(result: Result) -> HostResiduals | None:
         x=modulus,
         data=peaks.magnitude,
         model=modulus + at_mean(result, "peak_magnitude"),
-        sd=np.sqrt(peaks.variance + at_mean(result, "peak_scatter") ** 2),
+        sd=np.sqrt(peaks.variance + at_mean(result, result.choices.peak_scatters[0]) ** 2),
         host=peaks.host,
     )
 
@@ -267,7 +269,7 @@ def flow_model(result: Result, redshift: npt.ArrayLike) -> FloatArray:
     expansion = result.choices.expansion
     if expansion is None:
         raise ValueError("the ladder has no expansion")
-    term = distance_term(redshift, redshift, expansion.q0, expansion.j0)
+    term = term_of(expansion, redshift, redshift)
     return np.asarray(term + _flow_zero_point(result))
 
 
@@ -282,15 +284,23 @@ def flow_residuals(result: Result) -> Residuals | None:
     flow, expansion = result.ladder.flow, result.choices.expansion
     if flow is None or expansion is None:
         return None
-    term = distance_term(flow.redshift, flow.redshift_heliocentric, expansion.q0, expansion.j0)
-    peculiar = peculiar_variance(flow.redshift, expansion.peculiar_velocity)
+    term = term_of(expansion, flow.redshift, flow.redshift_heliocentric)
+    scatter = at_mean(result, result.choices.peak_scatters[1])
     return Residuals(
         name=flow.name,
         x=flow.redshift,
         data=flow.magnitude,
         model=term + _flow_zero_point(result),
-        sd=np.sqrt(flow.variance + peculiar + at_mean(result, "peak_scatter") ** 2),
+        sd=np.sqrt(_flow_variance(result.ladder, flow, expansion) + scatter**2),
     )
+
+
+def _flow_variance(ladder: Ladder, flow: FlowSample, expansion: Expansion) -> FloatArray:
+    """Variance of each peak in the expansion, peculiar velocities included."""
+    if ladder.peak_covariance is not None:
+        return np.asarray(np.diag(ladder.peak_covariance)[-len(flow) :])
+    velocity = peculiar_velocities(flow, expansion)
+    return np.asarray(flow.variance + peculiar_variance(flow.redshift, velocity))
 
 
 def velocity_residuals(result: Result) -> Residuals | None:

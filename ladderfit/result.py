@@ -12,7 +12,7 @@ import pandas as pd
 from ladderfit.choices import Choices
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
-from ladderfit.names import HEADLINE, PARAMETERS, base_name, parameter
+from ladderfit.names import DERIVED, HEADLINE, PARAMETERS, base_name, parameter
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -100,6 +100,11 @@ class Result:
     def headline(self) -> tuple[str, ...]:
         """Names of the parameters other than host moduli."""
         return tuple(name for name in self.draws if base_name(name) in HEADLINE)
+
+    @property
+    def derived(self) -> tuple[str, ...]:
+        """Names of numbers that follow from the parameters and have no prior of their own."""
+        return tuple(name for name in self.draws if base_name(name) in DERIVED)
 
     @property
     def size(self) -> int:

@@ -122,6 +122,9 @@ class FlowSample:
         (equal to it where the table gives none).
     magnitude, variance : array, shape (n,)
         Standardised peak [mag] and its variance [mag^2], without peculiar velocities.
+    peculiar_velocity_error : array, shape (n,), or None
+        Error of each redshift from its peculiar velocity [km/s]; None where the
+        choices give one dispersion for all.
     """
 
     name: TextArray
@@ -130,6 +133,7 @@ class FlowSample:
     magnitude: FloatArray
     variance: FloatArray
     row: IntArray
+    peculiar_velocity_error: FloatArray | None = None
 
     def __len__(self) -> int:
         """Number of supernovae."""

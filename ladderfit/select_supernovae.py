@@ -12,7 +12,7 @@ from ladderfit.choices import Expansion, Supernovae
 from ladderfit.errors import Problem, nearest, raise_if
 from ladderfit.kinds import DISTANCE, MAGNITUDE, REDSHIFT, VELOCITY
 from ladderfit.rows import Rows, floats, integers
-from ladderfit.samples import FlowSample, Kept, PeakSample, VelocitySample
+from ladderfit.samples import FloatArray, FlowSample, Kept, PeakSample, TextArray, VelocitySample
 from ladderfit.select_stars import CepheidSelection
 from ladderfit.tables import DataTable, Texts, shown
 
@@ -23,14 +23,19 @@ _KINDS = {
     "redshift_heliocentric": REDSHIFT,
     "distance": DISTANCE,
     "velocity": VELOCITY,
+    "peculiar_velocity_error": VELOCITY,
 }
 
 
 @dataclass(frozen=True, eq=False)
 class PeakSelection:
-    """Kept supernovae; `hosts` is the ladder's list, `notes` say what was set aside."""
+    """Kept supernovae; `hosts` is the ladder's list, `notes` say what was set aside.
+
+    `names` holds the name in every row of the table, kept or not.
+    """
 
     sample: PeakSample
+    names: TextArray
     hosts: tuple[str, ...]
     seen: tuple[str, ...]
     kept: Kept
@@ -39,8 +44,9 @@ class PeakSelection:
 
 @dataclass(frozen=True, eq=False)
 class ExpansionSelection:
-    """Kept objects of the expansion: one of the two samples."""
+    """Kept objects of the expansion: one of the two samples, and every row's name."""
 
+    names: TextArray
     flow: FlowSample | None
     velocities: VelocitySample | None
     kept: Kept
@@ -77,7 +83,8 @@ def select_peaks(
     rows.need(name, "name", columns["name"])
     rows.need(host, "host", columns["host"])
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
-    error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
+    replaced = section.covariance is not None and not section.covariance.adds
+    variance = _variance(rows, columns, needed=not replaced)
     rows.unique("the supernova", {"name": name, "host": host, "peak": peak}, columns["name"])
     known = {*(cepheids.seen if cepheids else ()), *anchors}
     _unknown_hosts(rows, host, known, columns["host"])
@@ -93,10 +100,17 @@ def select_peaks(
         name=name.values[left],
         host=integers([index[label] for label in theirs]),
         magnitude=floats(peak[left]),
-        variance=floats(error[left] ** 2),
+        variance=floats(variance[left]),
         row=integers(left + 1),
     )
-    return PeakSelection(sample, tuple(hosts), tuple(host.known), kept, notes)
+    return PeakSelection(sample, name.values, tuple(hosts), tuple(host.known), kept, notes)
+
+
+def _variance(rows: Rows, columns: Mapping[str, str], *, needed: bool) -> FloatArray:
+    """Squared errors of the peaks; zero where a covariance stands in their place."""
+    if not needed:
+        return np.zeros(rows.table.rows)
+    return rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0) ** 2
 
 
 def _unknown_hosts(rows: Rows, host: Texts, known: set[str], column: str) -> None:
@@ -127,8 +141,17 @@ def _notes_on(hosts: Iterable[str], cepheids: CepheidSelection | None) -> tuple[
     return tuple(notes)
 
 
-def select_expansion(table: DataTable, section: Expansion) -> ExpansionSelection:
+def select_expansion(
+    table: DataTable, section: Expansion, *, errors: bool = True
+) -> ExpansionSelection:
     """The objects of the expansion that take part, in the order of their table.
+
+    Parameters
+    ----------
+    table : DataTable
+    section : Expansion
+    errors : bool
+        Whether the table's errors of the peaks are used, not a covariance in their place.
 
     Raises
     ------
@@ -140,7 +163,9 @@ def select_expansion(table: DataTable, section: Expansion) -> ExpansionSelection
     name = table.texts(columns["name"])
     rows.set_aside(section.set_aside, name, "name")
     rows.need(name, "name", columns["name"])
-    return _velocities(rows, name, columns) if section.linear else _flow(rows, name, section)
+    if section.linear:
+        return _velocities(rows, name, columns)
+    return _flow(rows, name, section, errors=errors)
 
 
 def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> ExpansionSelection:
@@ -156,10 +181,10 @@ def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> Expansio
         velocity=floats(velocity[left]),
         row=integers(left + 1),
     )
-    return ExpansionSelection(None, sample, kept)
+    return ExpansionSelection(name.values, None, sample, kept)
 
 
-def _flow(rows: Rows, name: Texts, section: Expansion) -> ExpansionSelection:
+def _flow(rows: Rows, name: Texts, section: Expansion, *, errors: bool) -> ExpansionSelection:
     columns = section.columns
     redshift = rows.number("redshift", columns["redshift"], REDSHIFT, above=0.0)
     observed = redshift
@@ -168,7 +193,11 @@ def _flow(rows: Rows, name: Texts, section: Expansion) -> ExpansionSelection:
             "redshift_heliocentric", columns["redshift_heliocentric"], REDSHIFT, above=-1.0
         )
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
-    error = rows.number("peak_error", columns["peak_error"], MAGNITUDE, above=0.0)
+    variance = _variance(rows, columns, needed=errors)
+    velocity_error = None
+    if "peculiar_velocity_error" in columns:
+        role = "peculiar_velocity_error"
+        velocity_error = rows.number(role, columns[role], VELOCITY, above=0.0)
     rows.unique(
         "the supernova", {"name": name, "redshift": redshift, "peak": peak}, columns["name"]
     )
@@ -180,7 +209,8 @@ def _flow(rows: Rows, name: Texts, section: Expansion) -> ExpansionSelection:
         redshift=floats(redshift[left]),
         redshift_heliocentric=floats(observed[left]),
         magnitude=floats(peak[left]),
-        variance=floats(error[left] ** 2),
+        variance=floats(variance[left]),
         row=integers(left + 1),
+        peculiar_velocity_error=None if velocity_error is None else floats(velocity_error[left]),
     )
-    return ExpansionSelection(sample, None, kept)
+    return ExpansionSelection(name.values, sample, None, kept)

@@ -69,10 +69,11 @@ def data_rows(ladder: Ladder) -> list[tuple[str, ...]]:
 def headline_rows(result: Result) -> list[tuple[str, ...]]:
     """One row per headline parameter: words, name, rounded numbers, unit."""
     rows: list[tuple[str, ...]] = []
-    for name in result.headline:
+    for name in (*result.headline, *result.derived):
         known, interval = parameter(name), Interval.of(result.draws[name])
         group = group_of(name)
         words = known.words if group is None else f"{known.words}, {group}"
+        words = f"{words} (derived)" if name in result.derived else words
         value = str(interval) if interval.sd > 0.0 else f"{interval} (fixed)"
         rows.append((printable(words), printable(name), value, known.unit))
     return rows

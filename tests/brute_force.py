@@ -135,6 +135,7 @@ class Written:
     y: np.ndarray
     variance: np.ndarray
     scatter: tuple[str | None, ...]
+    shared: np.ndarray | None = None  # covariance on top of the variances, shape (rows, rows)
     names: tuple[str, ...] = field(init=False)
 
     def __post_init__(self) -> None:
@@ -308,13 +309,15 @@ def marginal(whole: Written, values: dict[str, float]) -> float:
     The covariance of the data is written out: measurement, scatter, and the
     priors of the coefficients that `values` (coefficients as in a point x, and
     scatters) leaves open.  Host moduli have the density of their prior without
-    bounds.
+    bounds.  `whole.shared` is heeded here alone.
     """
     keep = np.array([not np.any(row[_stars(whole)]) for row in whole.A])
     A, y, variance = whole.A[keep], whole.y[keep], whole.variance[keep]
     names = np.array(whole.scatter, dtype=object)[keep]
     variance = variance + np.array([0.0 if name is None else values[name] ** 2 for name in names])
     covariance, tilt, norm, hosts = np.diag(variance), 0.0, 0.0, []
+    if whole.shared is not None:
+        covariance = covariance + whole.shared[np.ix_(keep, keep)]
     for place, name in enumerate(whole.linear):
         column = A[:, place]
         if name.startswith("modulus["):

@@ -21,7 +21,7 @@ ORDER = """
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
     kinds tables table_memory table_files rows star_values parallax_inputs select_stars
     select_supernovae
-    covariances
+    covariances covariance_rows correlated
     relations ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.arrow kernels.tridiagonal kernels.reduced
@@ -29,7 +29,7 @@ ORDER = """
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
     posterior.split
-    posterior.supernovae posterior.joint posterior.determined posterior
+    posterior.supernovae posterior.coupled posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file sampling.run sampling.warm

@@ -14,6 +14,9 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from ladderfit.choices import Expansion
+from ladderfit.cosmologies import KINEMATIC, luminosity_shape
+from ladderfit.samples import FlowSample
 from ladderfit.units import LIGHT_SPEED
 
 FloatArray = npt.NDArray[np.float64]
@@ -73,7 +76,36 @@ def distance_term(
     return np.asarray(MODULUS_OF_MEGAPARSEC + 5.0 * np.log10(dimming * velocity))
 
 
-def peculiar_variance(redshift: npt.ArrayLike, dispersion: float) -> FloatArray:
+def term_of(
+    expansion: Expansion, redshift: npt.ArrayLike, redshift_heliocentric: npt.ArrayLike
+) -> FloatArray:
+    """As `distance_term`, for whatever law of distances the choices name.
+
+    Of a cosmology other than the kinematic one only H0 d_L / c is used, so that the
+    Hubble constant scales it.
+    """
+    model = expansion.cosmology
+    if model.model == KINEMATIC:
+        return distance_term(redshift, redshift_heliocentric, expansion.q0, expansion.j0)
+    z = np.asarray(redshift, dtype=float)
+    dimming = (1.0 + np.asarray(redshift_heliocentric, dtype=float)) / (1.0 + z)
+    shape = luminosity_shape(model.model, model.parameters, z)
+    return np.asarray(MODULUS_OF_MEGAPARSEC + 5.0 * np.log10(dimming * LIGHT_SPEED * shape))
+
+
+def magnitudes_per_velocity(redshift: npt.ArrayLike) -> FloatArray:
+    """What a peculiar velocity of 1 km/s does to a predicted modulus, 5 / ln 10 / (c z) [mag]."""
+    return np.asarray(_MAG_PER_EFOLD / (LIGHT_SPEED * np.asarray(redshift, dtype=float)))
+
+
+def peculiar_velocities(flow: FlowSample, expansion: Expansion) -> FloatArray:
+    """Each redshift's error from peculiar velocities [km/s]: the table's column, or the choice."""
+    if flow.peculiar_velocity_error is not None:
+        return flow.peculiar_velocity_error
+    return np.full(len(flow), expansion.peculiar_velocity)
+
+
+def peculiar_variance(redshift: npt.ArrayLike, dispersion: npt.ArrayLike) -> FloatArray:
     """Variance that random velocities along the line of sight give a predicted modulus.
 
     First order in velocity and in redshift, sd = 5 / ln 10 x dispersion / (c z).
@@ -84,13 +116,12 @@ def peculiar_variance(redshift: npt.ArrayLike, dispersion: float) -> FloatArray:
     ----------
     redshift : array_like
         Redshift in the frame of the background radiation, above zero.
-    dispersion : float
-        Dispersion of the line-of-sight velocities [km/s].
+    dispersion : array_like
+        Dispersion of the line-of-sight velocities [km/s], one for all or one each.
 
     Returns
     -------
     variance : array, the shape of `redshift`
         In mag^2.
     """
-    z = np.asarray(redshift, dtype=float)
-    return np.asarray((_MAG_PER_EFOLD * dispersion / (LIGHT_SPEED * z)) ** 2)
+    return np.asarray((np.asarray(dispersion) * magnitudes_per_velocity(redshift)) ** 2)

@@ -43,13 +43,19 @@ class Frame:
         self, host: IntArray, columns: FloatArray, y: FloatArray, variance: FloatArray
     ) -> Rows:
         """Rows y = mu[host] + columns . g + e, brought into the frame."""
-        return rows(
-            host,
-            columns - self.centroid[host],
-            y - self.origin[host],
-            variance,
-            self.hosts,
-        )
+        whole = self.columns(host, columns, y)
+        return rows(host, whole[:, :-1], whole[:, -1], variance, self.hosts)
+
+    def columns(self, host: IntArray, columns: FloatArray, y: FloatArray) -> FloatArray:
+        """[columns, y] of rows y = mu[host] + columns . g + e in the frame, shape (n, k + 1).
+
+        Rows of no host, where it is -1, stay as they are.
+        """
+        whole = np.column_stack([columns, y])
+        inside = host >= 0
+        whole[inside, :-1] -= self.centroid[host[inside]]
+        whole[inside, -1] -= self.origin[host[inside]]
+        return whole
 
 
 def host_frame(ladder: Ladder, width: int) -> Frame:

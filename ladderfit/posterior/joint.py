@@ -9,19 +9,28 @@ from functools import partial
 import numpy as np
 
 from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
-from ladderfit.kernels.reduced import ReducedRows, reduced
+from ladderfit.kernels.coupled import CoupledData, coupled_rows
+from ladderfit.kernels.reduced import reduced
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
 from ladderfit.posterior.cepheids import Block, ScatterBlock, noisy_block, plain_rows
+from ladderfit.posterior.coupled import (
+    CoupledBlock,
+    TwoScatterBlock,
+    coupled_hosts,
+    supernova_block,
+    supernova_data,
+)
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.frame import Frame, host_frame
 from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
 from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
 from ladderfit.posterior.split import Split, split
-from ladderfit.posterior.supernovae import ladder_rows
+from ladderfit.posterior.supernovae import correlated_samples, ladder_rows
 from ladderfit.samples import FloatArray
 
 _CHUNK = 20_000  # draws held at once
+_COUPLED_CHUNK = 1_000  # the same where hosts are coupled
 _FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
 
 
@@ -68,7 +77,7 @@ class Posterior:
         array, shape (b,)
             Normalised but for the evidence; minus infinity outside the priors.
         """
-        parts = [self._log_density(part) for part in _chunks(z)]
+        parts = [self._log_density(part) for part in self._chunks(z)]
         return np.concatenate(parts) if parts else np.empty(0)
 
     def draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
@@ -85,7 +94,7 @@ class Posterior:
         dict
             One array of shape (b,) per parameter and host modulus.
         """
-        pieces = [self._draw(part, rng) for part in _chunks(z)]
+        pieces = [self._draw(part, rng) for part in self._chunks(z)]
         return {name: np.concatenate([piece[name] for piece in pieces]) for name in pieces[0]}
 
     def focus(self, low: FloatArray, high: FloatArray) -> None:
@@ -97,7 +106,9 @@ class Posterior:
             Corners of the box in coordinates; folded ones may straddle zero.
         """
         for block in self.blocks:
-            if isinstance(block, ScatterBlock) and isinstance(block.rows, ReducedRows):
+            if not isinstance(block, ScatterBlock | CoupledBlock | TwoScatterBlock):
+                continue
+            if block.scatter in self.split.phi_names and not isinstance(block.rows, Rows):
                 ends = self.split.value(block.scatter, np.stack([low, high]))
                 place = self.split.phi_names.index(block.scatter)
                 bottom = 0.0 if low[place] * high[place] <= 0.0 else float(ends.min())
@@ -128,12 +139,17 @@ class Posterior:
         for place, name in enumerate(self.split.coefficients):
             value = coefficients[:, place]
             draws[name] = 10.0 ** (0.2 * value) if name in self.split.logarithmic else value
+        draws |= _derived(self.split, coefficients)
         for name in (*self.split.phi_names, *self.split.fixed):
             draws.setdefault(name, self.split.value(name, z))
         moduli = self.frame.modulus(local, coefficients)
         for place, host in enumerate(self.ladder.hosts):
             draws[with_group("modulus", host)] = moduli[:, place]
         return draws
+
+    def _chunks(self, z: FloatArray) -> list[FloatArray]:
+        size = _CHUNK if self.constant.coupling is None else _COUPLED_CHUNK
+        return [z[start : start + size] for start in range(0, len(z), size)]
 
     def coordinates(self, values: Mapping[str, float]) -> FloatArray:
         """Coordinates of phi at the given parameter values, shape (d,)."""
@@ -153,11 +169,21 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
     parts = split(ladder)
     names = parts.coefficients
     frame = host_frame(ladder, len(names))
-    constant = _anchors(ladder, frame, names) + _theta_prior(parts, frame)
+    constant = no_moments(1, frame.hosts, len(names), coupled_hosts(ladder))
+    constant = constant + _anchors(ladder, frame, names) + _theta_prior(parts, frame)
     constant = constant + _distances(ladder, frame)
     errors = input_errors(ladder, ladder.cepheids)
     blocks: list[Block] = []
-    found = list(ladder_rows(ladder, frame, names))
+    correlated = supernova_data(ladder, frame, names)
+    if correlated is not None:
+        earlier = () if before is None else before.blocks
+        reach = {name: _largest(ladder, name) for name in ladder.choices.peak_scatters}
+        block = supernova_block(ladder, correlated, parts.fixed, reach, earlier)
+        if isinstance(block, Moments):
+            constant = constant + block
+        else:
+            blocks.append(block)
+    found = list(ladder_rows(ladder, frame, names, but=correlated_samples(ladder)))
     if ladder.cepheids is not None and errors is not None:
         blocks.append(noisy_block(ladder, frame, ladder.cepheids, errors))
     else:
@@ -188,8 +214,15 @@ def _kept(
     return None
 
 
-def _chunks(z: FloatArray) -> list[FloatArray]:
-    return [z[start : start + _CHUNK] for start in range(0, len(z), _CHUNK)]
+def _derived(parts: Split, coefficients: FloatArray) -> dict[str, FloatArray]:
+    """The intercept a = log10 H0 - 0.2 M - 5, which the expansion alone determines."""
+    places = {name: place for place, name in enumerate(parts.coefficients)}
+    if "peak_magnitude" not in places or "hubble_constant" not in parts.logarithmic:
+        return {}
+    if "hubble_constant" not in places:
+        return {}
+    rate = coefficients[:, places["hubble_constant"]]
+    return {"intercept": 0.2 * (rate - coefficients[:, places["peak_magnitude"]]) - 5.0}
 
 
 def _largest(ladder: Ladder, scatter: str) -> float:
@@ -210,7 +243,11 @@ def _anchors(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Moments:
         if place in names:
             loads = [shared.loads.get(anchor.name, 0.0) for anchor in anchors]
             columns[:, names.index(place)] = shared.error * np.array(loads)
-    return frame.modulus_rows(host, columns, modulus, variance).moments(np.zeros(1))
+    if ladder.anchor_covariance is None:
+        return frame.modulus_rows(host, columns, modulus, variance).moments(np.zeros(1))
+    whole, coupled = frame.columns(host, columns, modulus), coupled_hosts(ladder)
+    data = CoupledData(host, whole, ladder.anchor_covariance, frame.hosts, coupled)
+    return coupled_rows(data, None).moments(np.zeros(1))
 
 
 def _theta_prior(parts: Split, frame: Frame) -> Moments:

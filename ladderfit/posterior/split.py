@@ -247,8 +247,11 @@ def _others(ladder: Ladder) -> tuple[str, ...]:
         if uses_population(ladder, ladder.parallax_stars):
             names.append("parallax_metallicity")
         names += parallax_parameters(ladder)
-    if ladder.peaks is not None or ladder.flow is not None:
-        names.append("peak_scatter")
+    in_hosts, elsewhere = ladder.choices.peak_scatters
+    if ladder.peaks is not None:
+        names.append(in_hosts)
+    if ladder.flow is not None and elsewhere not in names:
+        names.append(elsewhere)
     if ladder.velocities is not None:
         names.append("velocity_scatter")
     return tuple(names)

@@ -7,9 +7,9 @@ import numpy as np
 from ladderfit.choices import Expansion
 from ladderfit.kernels.arrow import Rows, rows
 from ladderfit.ladder import Ladder
-from ladderfit.physics.expansion import distance_term, peculiar_variance
+from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.frame import Frame
-from ladderfit.samples import FloatArray, FlowSample, PeakSample, VelocitySample
+from ladderfit.samples import FloatArray, FlowSample, IntArray, PeakSample, VelocitySample
 
 _SMALLEST_VELOCITY_VARIANCE = 1e-6  # (km/s)^2, so that a vanishing scatter stays finite
 
@@ -29,11 +29,18 @@ def peak_rows(peaks: PeakSample, frame: Frame, names: tuple[str, ...]) -> Rows:
 
 def flow_rows(flow: FlowSample, expansion: Expansion, hosts: int, names: tuple[str, ...]) -> Rows:
     """m - distance term = M - 5 log10 H0 + e, peculiar velocities in the variance."""
-    term = distance_term(flow.redshift, flow.redshift_heliocentric, expansion.q0, expansion.j0)
-    variance = flow.variance + peculiar_variance(flow.redshift, expansion.peculiar_velocity)
+    columns, y = _flow_arrays(flow, expansion, names)
+    velocity = peculiar_velocities(flow, expansion)
+    variance = flow.variance + peculiar_variance(flow.redshift, velocity)
+    return rows(np.full(len(flow), -1), columns, y, variance, hosts)
+
+
+def _flow_arrays(
+    flow: FlowSample, expansion: Expansion, names: tuple[str, ...]
+) -> tuple[FloatArray, FloatArray]:
+    term = term_of(expansion, flow.redshift, flow.redshift_heliocentric)
     columns = _columns(len(flow), names, peak_magnitude=1.0, hubble_constant=-1.0)
-    nowhere = np.full(len(flow), -1)
-    return rows(nowhere, columns, flow.magnitude - term, variance, hosts)
+    return columns, flow.magnitude - term
 
 
 def intercept_row(expansion: Expansion, hosts: int, names: tuple[str, ...]) -> Rows | None:
@@ -57,18 +64,57 @@ def velocity_rows(velocities: VelocitySample, hosts: int, names: tuple[str, ...]
     return rows(nowhere, columns, velocities.velocity, variance, hosts)
 
 
+def correlated_samples(ladder: Ladder) -> tuple[str, ...]:
+    """Which of "peaks" and "flow" the covariance correlates within itself or with the other."""
+    covariance = ladder.peak_covariance
+    if covariance is None:
+        return ()
+    split = 0 if ladder.peaks is None else len(ladder.peaks)
+    near, far = covariance[:split], covariance[split:]
+    crossed = bool(np.any(near[:, split:]))
+    kinds = {
+        "peaks": crossed or _correlates(near[:, :split]),
+        "flow": crossed or _correlates(far[:, split:]),
+    }
+    return tuple(kind for kind, correlates in kinds.items() if correlates)
+
+
+def _correlates(block: FloatArray) -> bool:
+    return int(np.count_nonzero(block)) > int(np.count_nonzero(np.diag(block)))
+
+
+def supernova_arrays(
+    ladder: Ladder, kinds: tuple[str, ...], names: tuple[str, ...]
+) -> tuple[IntArray, FloatArray, FloatArray]:
+    """Host (-1 in the expansion), columns and y of the samples named, in hosts first."""
+    parts: list[tuple[IntArray, FloatArray, FloatArray]] = []
+    peaks, flow, expansion = ladder.peaks, ladder.flow, ladder.choices.expansion
+    if peaks is not None and "peaks" in kinds:
+        columns = _columns(len(peaks), names, peak_magnitude=1.0)
+        parts.append((peaks.host, columns, peaks.magnitude))
+    if flow is not None and expansion is not None and "flow" in kinds:
+        nowhere = np.full(len(flow), -1, dtype=np.int64)
+        parts.append((nowhere, *_flow_arrays(flow, expansion, names)))
+    host, columns, y = (np.concatenate(arrays) for arrays in zip(*parts, strict=True))
+    return host, columns, y
+
+
 def ladder_rows(
-    ladder: Ladder, frame: Frame, names: tuple[str, ...]
+    ladder: Ladder, frame: Frame, names: tuple[str, ...], but: tuple[str, ...] = ()
 ) -> list[tuple[Rows, str | None]]:
-    """All third-rung rows of a ladder, each with the name of the scatter it gets."""
+    """All third-rung rows of a ladder, each with the name of the scatter it gets.
+
+    `but` names samples left out: those that a covariance correlates.
+    """
     found: list[tuple[Rows, str | None]] = []
     expansion = ladder.choices.expansion
-    if ladder.peaks is not None:
-        found.append((peak_rows(ladder.peaks, frame, names), "peak_scatter"))
+    in_hosts, elsewhere = ladder.choices.peak_scatters
+    if ladder.peaks is not None and "peaks" not in but:
+        found.append((peak_rows(ladder.peaks, frame, names), in_hosts))
     if expansion is None:
         return found
-    if ladder.flow is not None:
-        found.append((flow_rows(ladder.flow, expansion, frame.hosts, names), "peak_scatter"))
+    if ladder.flow is not None and "flow" not in but:
+        found.append((flow_rows(ladder.flow, expansion, frame.hosts, names), elsewhere))
     if ladder.velocities is not None:
         found.append((velocity_rows(ladder.velocities, frame.hosts, names), "velocity_scatter"))
     published = intercept_row(expansion, frame.hosts, names)

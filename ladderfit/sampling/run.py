@@ -11,7 +11,7 @@ import numpy.typing as npt
 from ladderfit.diagnostics import TRUSTED_K
 from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
 from ladderfit.ladder import Ladder
-from ladderfit.names import base_name, parameter
+from ladderfit.names import parameter
 from ladderfit.posterior.determined import check_determined
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.priors import Fixed, HalfNormal, Prior, Uniform
