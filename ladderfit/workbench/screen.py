@@ -187,7 +187,12 @@ class Workbench:
     @_guarded
     def _save(self, _: Any = None) -> None:
         path = save_ladder(self.session.settled, self.foot.path())
-        self._say(f"Saved {path.name}; fit it with: ladderfit calibrate {path.name}", good=True)
+        words = f"Saved {path.name}"
+        if self.session.confirm():
+            self._show_numbers()
+            self._show_view()
+            words += f"; its numbers, as shown, are those of: ladderfit calibrate {path.name}"
+        self._say(f"{words}.", good=True)
         self.foot.suggest(self.session.settled)
 
     @_guarded

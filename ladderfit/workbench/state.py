@@ -20,6 +20,7 @@ from ladderfit.ladder import Ladder
 from ladderfit.ladder_copy import copy_ladder
 from ladderfit.ladder_file import write_choices
 from ladderfit.result import Result
+from ladderfit.sampling.run import draw
 from ladderfit.sampling.warm import WarmDrawer
 
 TRIAL_DRAWS = 500
@@ -141,6 +142,19 @@ class Session:
         if self.trouble is not None or self._settled_result is None:
             raise LadderfitError("nothing to pin: these choices have no posterior")
         self.pinned = self._settled_result
+
+    def confirm(self) -> bool:
+        """Draw the settled choices as the command line does, from nothing, to the same digits.
+
+        Returns
+        -------
+        bool
+            Whether there is such a posterior.
+        """
+        if self.trouble is not None:
+            return False
+        self.result = self._settled_result = draw(self._settled)
+        return True
 
     def _try(self, changes: Mapping[str, Any], *, settled: bool) -> bool:
         keys = tuple(changes)
