@@ -12,7 +12,7 @@ import numpy as np
 from astropy.table import Column as AstropyColumn
 from astropy.table import MaskedColumn, Table
 
-from ladderfit.assembly import SECTIONS
+from ladderfit.assembly import IN_MEMORY, SECTIONS, file_key
 from ladderfit.errors import InputError, LadderfitError, Problem
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import write_choices
@@ -20,6 +20,7 @@ from ladderfit.tables import Column, DataTable
 
 LADDER = "ladder.toml"
 _SAMPLES = ("cepheids", "parallax_stars", "peaks", "flow", "velocities")
+_COVARIANCES = ("anchor_covariance", "peak_covariance")
 _UNITS = {  # what a column without a unit means, where a file has to state it
     "period": "d",
     "period_error": "d",
@@ -69,10 +70,31 @@ def copy_ladder(ladder: Ladder, folder: Path) -> Ladder:
             (folder / "tables").mkdir(exist_ok=True)
             _write_table(table, _roles(ladder, section), folder / path)
         changes[f"{section}.table"] = Path(path).as_posix()
+    changes |= _matrices(ladder, base, folder)
     write_choices(ladder.choices.change(changes), folder / LADDER)
     copy = read_ladder(folder / LADDER)
     _compare(ladder, copy)
     return copy
+
+
+def _matrices(ladder: Ladder, base: Path, folder: Path) -> dict[str, Any]:
+    """Paths of covariances and of lists of names; matrices in memory are written."""
+    changes: dict[str, Any] = {}
+    for key, values in ladder.matrices.items():
+        choice: Mapping[str, Any] = ladder.choices.value(key)
+        for part in ("file", "names"):
+            written = choice.get(part)
+            if written is None:
+                continue
+            path = written
+            if part == "file" and written == IN_MEMORY:
+                path = f"tables/{key}.npy"
+                (folder / "tables").mkdir(exist_ok=True)
+                np.save(folder / path, values)
+            elif not Path(written).is_absolute():
+                path = os.path.relpath(base / written, folder.resolve())
+            changes[f"{key}.{part}"] = Path(path).as_posix()
+    return changes
 
 
 def _table_of(ladder: Ladder, section: str) -> str | None:
@@ -123,16 +145,23 @@ def _compare(ladder: Ladder, copy: Ladder) -> None:
             expected="the same table throughout",
             remedy="read the ladder again",
             file=source.path,
-            key=f"{section}.table",
+            key=file_key(section),
         )
         for section, source in ladder.sources.items()
         if (section, source.path) not in ladder._parts.tables
+        and source.path != IN_MEMORY
         and copy.sources[section].sha256 != source.sha256
     ]
     if problems:
         raise InputError(problems)
     same = ladder.hosts == copy.hosts and all(
         _same(getattr(ladder, name), getattr(copy, name)) for name in _SAMPLES
+    )
+    same = same and all(
+        np.array_equal(getattr(ladder, name), getattr(copy, name))
+        if getattr(ladder, name) is not None
+        else getattr(copy, name) is None
+        for name in _COVARIANCES
     )
     if not same:
         raise LadderfitError(

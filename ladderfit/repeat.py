@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 
+from ladderfit.assembly import file_key
 from ladderfit.calibration import calibrate, finish
 from ladderfit.errors import InputError, LadderfitError, Problem, raise_if
 from ladderfit.files import sha256_of
@@ -147,7 +148,7 @@ def _changed(folder: Path, ladder: Ladder, recorded: Mapping[str, Any]) -> list[
         source = ladder.sources.get(section)
         found = "" if source is None else source.sha256
         table = folder / (str(known["table"]) if source is None else source.path)
-        expected.append((table, f"{section}.table", str(known["sha256"]), found))
+        expected.append((table, file_key(section), str(known["sha256"]), found))
     return [
         Problem(
             found=f"SHA-256 {found[:12]}..." if found else "no such table in use",

@@ -22,6 +22,7 @@ import numpy.typing as npt
 import xarray as xr
 from astropy.table import Table
 
+from ladderfit.assembly import PATHS
 from ladderfit.choices import Choices
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
@@ -33,7 +34,6 @@ from ladderfit.result import Diagnostics, Result, ordered
 FloatArray = npt.NDArray[np.float64]
 
 _RECORDED = ("ladderfit", "numpy", "scipy", "astropy", "pandas", "emcee", "numba", "xarray")
-_TABLES = ("cepheids", "anchors.parallaxes", "supernovae", "expansion")
 
 
 def write_result(result: Result, folder: Path, ladder_file: Path | None = None) -> None:
@@ -205,19 +205,18 @@ def _plain(value: Any) -> Any:
 
 
 def _relocated(result: Result, folder: Path) -> Choices:
-    """The resolved choices, with table paths as seen from the folder's final place."""
+    """The resolved choices, with paths of inputs as seen from the folder's final place."""
     if result.source is None or result.source.path is None:
         return result.choices
     base = result.source.path.parent.resolve()
     changes = {}
-    for key in _TABLES:
+    for key in PATHS:
         try:
-            written = result.choices.value(f"{key}.table")
+            written = result.choices.value(key)
         except KeyError:
             continue
-        changes[f"{key}.table"] = Path(
-            os.path.relpath(base / written, folder.parent.resolve() / "_")
-        ).as_posix()
+        seen = os.path.relpath(base / written, folder.parent.resolve() / "_")
+        changes[key] = Path(seen).as_posix()
     return result.choices.change(changes)
 
 

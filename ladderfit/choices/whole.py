@@ -215,7 +215,9 @@ def _peak_faults(choices: Choices) -> Iterator[Problem]:
     replaced = in_force is not None and not in_force[1].adds
     has_peaks = expansion.table is not None and not expansion.linear
     if has_peaks and "peak_error" not in expansion.columns and not replaced:
-        yield from column_faults(expansion.columns, (*expansion.columns, "peak_error"), ())
+        wanted = (*expansion.columns, "peak_error")
+        for fault in column_faults(expansion.columns, wanted, ()):
+            yield dataclasses.replace(fault, key=f"expansion.{fault.key}")
 
 
 def _group_faults(

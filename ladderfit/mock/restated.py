@@ -96,6 +96,8 @@ def beyond(ladder: Ladder) -> Iterator[Problem]:
     for key, sample in stars.items():
         if sample is not None:
             yield from _strange_stars(key, sample)
+    if ladder.flow is not None and ladder.flow.peculiar_velocity_error is not None:
+        yield _problem("errors of single peculiar velocities", "expansion.columns")
 
 
 def _problem(found: str, key: str) -> Problem:

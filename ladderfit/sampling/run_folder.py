@@ -16,6 +16,7 @@ from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 from typing import Any, Literal
 
+from ladderfit.assembly import file_key
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import held, write_text_atomically
 from ladderfit.ladder import Ladder
@@ -170,7 +171,7 @@ def changed_inputs(ladder: Ladder, known: Mapping[str, tuple[str, str]]) -> list
             expected=f"{sha256[:12]}..., the contents at the time of the first draws",
             remedy="restore the table, or start anew",
             file=table,
-            key=f"{key}.table",
+            key=file_key(key),
         )
         for key, (table, sha256) in known.items()
         if key not in ladder.sources or ladder.sources[key].sha256 != sha256
