@@ -224,3 +224,6 @@ def test_third_rung_alone() -> None:
     together = np.hypot(error, 5.0 * INTERCEPT["error"])
     assert together / error > 1.03  # so that the next line would miss its absence
     assert np.std(magnitudes) == pytest.approx(together, rel=0.018)
+    limit = 5.0 * INTERCEPT["error"] / np.sqrt(result.size)
+    assert result.mean("intercept") == pytest.approx(INTERCEPT["value"], abs=limit)
+    assert result.sd("intercept") == pytest.approx(INTERCEPT["error"], rel=0.018)
