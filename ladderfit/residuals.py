@@ -18,6 +18,7 @@ from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
 from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.errors_in_inputs import input_errors
+from ladderfit.posterior.offsets import offset_terms
 from ladderfit.relations import design, scatters
 from ladderfit.result import Result
 from ladderfit.samples import FloatArray, FlowSample, IntArray, StarSample, TextArray
@@ -183,11 +184,29 @@ def cepheid_residuals(result: Result) -> HostResiduals | None:
     )
 
 
+def parallax_offsets(result: Result, stars: StarSample) -> FloatArray:
+    """What each parallax has too much, at the posterior mean [mas], shape (n,)."""
+    columns = offset_terms(result.choices, stars, result.ladder.hosts).columns
+    total = np.zeros(len(stars))
+    for name, column in columns.items():
+        total += at_mean(result, name) * column
+    return total
+
+
+def _parallax_variance(result: Result, stars: StarSample) -> FloatArray:
+    """Of each parallax, with the scale of the errors at its mean [mas^2]."""
+    if stars.parallax_error is None:
+        raise TypeError("a parallax sample without parallaxes")
+    scale = at_mean(result, "parallax_error_scale") or 1.0
+    left = offset_terms(result.choices, stars, result.ladder.hosts).variance
+    return np.asarray((scale * stars.parallax_error) ** 2 + left)
+
+
 def parallax_residuals(result: Result) -> Residuals | None:
     """Parallax stars: measured parallaxes against those that the relation predicts.
 
     `x` is log10 of the period in days.  The prediction is the photometric parallax
-    10^(2 - 0.2 (m - M)) plus the residual offset, in mas; `sd` adds to the
+    10^(2 - 0.2 (m - M)) plus the residual offsets, in mas; `sd` adds to the
     measurement error the error of the prediction from the star's magnitude and
     the intrinsic scatter, to first order.
     """
@@ -201,8 +220,10 @@ def parallax_residuals(result: Result) -> Residuals | None:
         name=stars.star,
         x=stars.log_period,
         data=stars.parallax,
-        model=photometric + at_mean(result, "parallax_offset"),
-        sd=np.sqrt(stars.parallax_error**2 + (_PER_MAG * photometric) ** 2 * predicted.variance),
+        model=photometric + parallax_offsets(result, stars),
+        sd=np.sqrt(
+            _parallax_variance(result, stars) + (_PER_MAG * photometric) ** 2 * predicted.variance
+        ),
     )
 
 
@@ -234,7 +255,7 @@ def parallax_magnitudes(
     if stars is None or stars.parallax is None or stars.parallax_error is None:
         return None
     predicted = _predicted(result, stars)
-    parallax = stars.parallax - at_mean(result, "parallax_offset")
+    parallax = stars.parallax - parallax_offsets(result, stars)
     good = parallax >= least_signal * stars.parallax_error
     value, error = parallax[good], stars.parallax_error[good]
     shown = Residuals(

@@ -80,7 +80,7 @@ def test_calibrate_leaves_a_whole_folder(
     names = {str(path.relative_to(out)) for path in out.rglob("*") if path.is_file()}
     figures = {
         f"figures/{name}.{kind}"
-        for name in ("relation", "corner", "moduli", "hubble")
+        for name in ("relation", "parallaxes", "corner", "moduli", "hubble")
         for kind in ("pdf", "png")
     }
     files = {"summary.json", "summary.ecsv", "posterior.nc", "ladder.toml", "provenance.json"}

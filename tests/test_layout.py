@@ -37,13 +37,14 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
-    residuals influence anchors sweep alternatives review distances compare
+    residuals influence anchors distance_priors sweep alternatives review distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.parallax_survey mock.scenario
     mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
-    plots.theme plots.density plots.relation plots.corner plots.moduli plots.hubble plots
+    plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
+    plots.hubble plots
     report calibration repeat
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.tables

@@ -67,10 +67,10 @@ def words(figure: Figure) -> Iterator[Text]:
 @pytest.mark.parametrize(
     ("rung", "expected"),
     [
-        ("whole", ["relation", "corner", "moduli", "hubble"]),
-        ("no expansion", ["relation", "corner", "moduli", "hubble"]),
-        ("relation and distances", ["relation", "corner", "moduli"]),
-        ("relation and parallaxes", ["relation", "corner"]),
+        ("whole", ["relation", "parallaxes", "corner", "moduli", "hubble"]),
+        ("no expansion", ["relation", "parallaxes", "corner", "moduli", "hubble"]),
+        ("relation and distances", ["relation", "parallaxes", "corner", "moduli"]),
+        ("relation and parallaxes", ["relation", "parallaxes", "corner"]),
         ("supernovae and anchors", ["corner", "moduli", "hubble"]),
     ],
 )
@@ -248,7 +248,7 @@ def test_contours_speak_of_probability_never_of_sigma(drawn: dict[str, Figure]) 
 # ---- legibility -----------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("name", ["relation", "corner", "moduli", "hubble"])
+@pytest.mark.parametrize("name", ["relation", "parallaxes", "corner", "moduli", "hubble"])
 def test_no_text_is_cut_off(drawn: dict[str, Figure], name: str) -> None:
     figure = drawn[name]
     page = figure.bbox
@@ -259,7 +259,7 @@ def test_no_text_is_cut_off(drawn: dict[str, Figure], name: str) -> None:
         assert inside, text.get_text()
 
 
-@pytest.mark.parametrize("name", ["relation", "corner", "moduli", "hubble"])
+@pytest.mark.parametrize("name", ["relation", "parallaxes", "corner", "moduli", "hubble"])
 def test_no_text_lies_on_text(drawn: dict[str, Figure], name: str) -> None:
     """Rotated tick labels have loose boxes; they are compared by their anchors instead."""
     texts = [text for text in words(drawn[name]) if text.get_rotation() in (0.0, 90.0)]
@@ -331,7 +331,7 @@ def test_nothing_global_is_left_behind(whole: Result) -> None:
     assert made["corner"].get_facecolor()[:3] == pytest.approx(to_rgb(DARK.paper))
     del made
     gc.collect()
-    assert [ghost() for ghost in ghosts] == [None] * 4
+    assert [ghost() for ghost in ghosts] == [None] * 5
 
 
 def test_panels_return_the_figure_they_drew_into(whole: Result) -> None:

@@ -33,9 +33,10 @@ FLAT, VOLUME, EXPONENTIAL, DISC = 0, 1, 2, 3
 
 _CERTAIN = 6.5  # widths before a limit from which a factor counts as 1
 _NEVER = 8.5  # widths beyond it from which a factor counts as 0
-_PANEL = 2.0  # widths per panel
-_SMOOTH = 0.25  # mag: width on which priors count as smooth
+_PANEL = 3.0  # widths per panel
+_SMOOTH = 0.4  # mag: width on which priors count as smooth
 _FINE = 0.3  # mag: longest step between nodes of the mean of P
+_MOST_NODES = 2000  # reached only at widths of many magnitudes
 _FARTHEST = 60.0  # scale lengths beyond which an exponential prior counts as 0
 _ROOT2 = math.sqrt(2.0)
 
@@ -152,7 +153,8 @@ def _magnitude_limited(
         near, far = (limit - flat[0]) / width, (limit - flat[1]) / width
         return math.log(max(width * (_mean_excess(near) - _mean_excess(far)), 1e-300))
     step = min(0.9, _FINE / width)
-    count = math.ceil((13.0 + VOLUME_TILT * width) / step)
+    count = min(math.ceil((13.0 + VOLUME_TILT * width) / step), _MOST_NODES)
+    step = (13.0 + VOLUME_TILT * width) / count
     total = 0.0
     for node in range(count + 1):
         t = -6.5 + node * step
@@ -243,7 +245,9 @@ def _general(
     near, far = min(near, end), min(far, end)
     total = _cumulative(near, kind, rate, sight, table, flat)
     mu = near
-    while mu < far:
+    for _ in range(_MOST_NODES):
+        if mu >= far:
+            break
         stop = _panel_end(mu, far, limit, width, least, err)
         half = 0.5 * (stop - mu)
         for node in range(8):

@@ -38,6 +38,7 @@ _REACH = 6.0
 _NEARER, _FARTHER = 14.0, 5.0  # widths by which g is first taken to move a broad peak
 _STEP = 0.6
 _DEPTH = 40.0
+_MOST_NODES = 10_000
 _LOG_2 = math.log(2.0)
 
 
@@ -214,7 +215,7 @@ def _stretched(
     step = _STEP * unit / (pulled * math.sqrt(1.0 + max(4.0 * bent, 0.0)))
     nearest, farthest = 1.0 / _parallax_at(high, log_scale), 1.0 / _parallax_at(low, log_scale)
     step = min(step, _axis_step(nearest, farthest, sight))
-    count = max(math.ceil((high - low) / step), 16)
+    count = min(max(math.ceil((high - low) / step), 16), _MOST_NODES)
     step = (high - low) / count
     peak, total = -math.inf, 0.0
     for node in range(count + 1):

@@ -10,6 +10,7 @@ from matplotlib.figure import Figure
 from ladderfit.plots.corner import corner_figure
 from ladderfit.plots.hubble import hubble_figure
 from ladderfit.plots.moduli import moduli_figure
+from ladderfit.plots.parallax import parallax_figure
 from ladderfit.plots.relation import relation_figure
 from ladderfit.plots.theme import LIGHT, Theme
 from ladderfit.result import Result
@@ -18,6 +19,7 @@ __all__ = ["figures", "save_figures"]
 
 _MAKERS = {
     "relation": relation_figure,
+    "parallaxes": parallax_figure,
     "corner": corner_figure,
     "moduli": moduli_figure,
     "hubble": hubble_figure,
@@ -36,7 +38,7 @@ def figures(result: Result, *, theme: Theme = LIGHT) -> dict[str, Figure]:
     Returns
     -------
     dict of str to Figure
-        Among ``relation``, ``corner``, ``moduli`` and ``hubble``, in this order.
+        Among ``relation``, ``parallaxes``, ``corner``, ``moduli`` and ``hubble``, in this order.
     """
     return dict(_made(result, theme))
 
