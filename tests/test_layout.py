@@ -49,7 +49,8 @@ ORDER = """
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.tables
     workbench.axis workbench.range workbench.controls workbench.choices_panel
-    workbench.canvas.margins workbench.canvas.relation workbench.canvas.panels workbench.canvas
+    workbench.canvas.margins workbench.canvas.relation workbench.canvas.corner
+    workbench.canvas.panels workbench.canvas
     workbench.view_bar workbench.star_line workbench.screen workbench
     launcher cli __main__
 """.split()

@@ -14,6 +14,7 @@ from ladderfit.plots.theme import DARK, LIGHT, Theme
 from ladderfit.residuals import HostResiduals
 from ladderfit.result import Result
 from ladderfit.workbench.canvas import panels
+from ladderfit.workbench.canvas.corner import CornerView, corner_names
 from ladderfit.workbench.canvas.relation import RelationView
 from ladderfit.workbench.points import Points, nearest_of
 
@@ -29,7 +30,6 @@ VIEWS = {
 WIDTH, HEIGHT = 662, 336
 _DPI = 100
 _PANELS: Mapping[str, Callable[[Figure, Result, Theme], list[Points]]] = {
-    "corner": panels.corner,
     "moduli": panels.moduli,
     "hubble": panels.hubble,
 }
@@ -58,6 +58,7 @@ class Picture:
         self.theme = LIGHT
         self._pointed = pointed
         self._relation: RelationView | None = None
+        self._corner: CornerView | None = None
         self._shown: tuple[str, Theme] | None = None
         self._under: tuple[Points, int] | None = None
         self.points: list[Points] = []
@@ -95,14 +96,20 @@ class Picture:
         """Draw a view of a posterior."""
         with self.theme.applied():
             again = self._shown == (view, self.theme)
-            if not (again and view == "relation"):
+            if not (again and self._kept(view, result)):
                 self.figure.clear()
                 self.figure.set_facecolor(self.theme.paper)
-                self._relation = None
+                self._relation = self._corner = None
             self._shown = (view, self.theme)
             self._under = None
             self.points = self._draw(view, result, aside, rung, column)
             self.canvas.draw_idle()
+
+    def _kept(self, view: str, result: Result) -> bool:
+        """Whether the axes of a view can stay, and only what is in them changes."""
+        if view == "corner":
+            return self._corner is not None and self._corner.names == corner_names(result)
+        return view == "relation"
 
     def _draw(
         self, view: str, result: Result, aside: HostResiduals | None, rung: str, column: str
@@ -112,6 +119,11 @@ class Picture:
                 self._relation = RelationView(self.figure, self.theme)
             self._relation.update(result, aside)
             return self._relation.points
+        if view == "corner":
+            if self._corner is None:
+                self._corner = CornerView(self.figure, corner_names(result), self.theme)
+            self._corner.update(result)
+            return []
         if view == "column":
             return panels.column(self.figure, result, self.theme, rung, column)
         return _PANELS[view](self.figure, result, self.theme)
@@ -133,6 +145,8 @@ class Picture:
             figure.set_facecolor(LIGHT.paper)
             if view == "relation":
                 RelationView(figure, LIGHT).update(result, aside)
+            elif view == "corner":
+                CornerView(figure, corner_names(result), LIGHT).update(result)
             elif view == "column":
                 panels.column(figure, result, LIGHT, rung, column)
             else:

@@ -1,4 +1,4 @@
-"""The other views: corner, host moduli, Hubble diagram, residuals against a column."""
+"""The other views: host moduli, Hubble diagram, residuals against a column."""
 
 from __future__ import annotations
 
@@ -7,76 +7,17 @@ from typing import Any
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import MaxNLocator
 
-from ladderfit.names import parameter
-from ladderfit.plots.corner import joint_panel, marginal_panel, varying
 from ladderfit.plots.hubble import flow_panel, peak_panel, velocity_panel
 from ladderfit.plots.moduli import difference_panel, host_moduli, modulus_panel
-from ladderfit.plots.theme import Theme, brighter_up, plain, symbol, symmetric
+from ladderfit.plots.theme import Theme, brighter_up, plain, symmetric
 from ladderfit.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
 from ladderfit.result import Result
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.columns import ColumnResiduals, against_column
 from ladderfit.workbench.points import Points
 
-CORNER = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
 _MOST_ROWS = 24
-_OTHERS = ("scatter", "parallax_offset", "velocity_constant", "velocity_scatter", "peak_scatter")
-_LEAST = 3
-
-
-def corner_names(result: Result) -> tuple[str, ...]:
-    """What the small corner shows: the headline numbers, filled up to three."""
-    known = varying(result)
-    chosen = [name for name in CORNER if name in known]
-    chosen += [name for name in _OTHERS if name in known][: max(_LEAST - len(chosen), 0)]
-    return tuple(chosen)
-
-
-def corner(figure: Figure, result: Result, theme: Theme) -> list[Points]:
-    """Pairs of the headline parameters."""
-    names = corner_names(result)
-    size = len(names)
-    if not size:
-        return []
-    grid = figure.subplots(size, size, squeeze=False)
-    margins(figure, 66, 8, 26, 50, hspace=0.08, wspace=0.08)
-    for row, up in enumerate(names):
-        for column, across in enumerate(names):
-            axes = grid[row, column]
-            if column > row:
-                axes.remove()
-                continue
-            if column == row:
-                marginal_panel(result, up, axes, theme=theme)
-                axes.set_title("")
-            else:
-                joint_panel(result, across, up, axes, theme=theme)
-            _tidy(axes, across, up, first=column == 0 and row > 0, last=row == size - 1)
-    for row, up in enumerate(names[1:], 1):
-        place_label(grid[row, 0], 42)
-        grid[row, 0].set_ylabel(symbol(up), fontsize=8.5)
-    figure.text(
-        0.985,
-        0.95,
-        "filled: smallest regions with 68 % and 95 % of the probability",
-        ha="right",
-        va="top",
-        fontsize=8,
-    )
-    return []
-
-
-def _tidy(axes: Axes, across: str, up: str, *, first: bool, last: bool) -> None:
-    axes.grid(visible=False)
-    axes.xaxis.set_major_locator(MaxNLocator(2, prune="both"))
-    if axes.get_yticks().size:
-        axes.yaxis.set_major_locator(MaxNLocator(2, prune="both"))
-    axes.tick_params(labelbottom=last, labelleft=first, labelsize=7)
-    if last:
-        unit = parameter(across).unit
-        axes.set_xlabel(symbol(across) + (f" [{unit}]" if unit else ""), fontsize=8.5, labelpad=2)
 
 
 def moduli(figure: Figure, result: Result, theme: Theme) -> list[Points]:

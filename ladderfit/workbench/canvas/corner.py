@@ -1,0 +1,78 @@
+"""The joint posterior of the headline numbers; axes are made once, their contents anew."""
+
+from __future__ import annotations
+
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
+
+from ladderfit.names import parameter
+from ladderfit.plots.corner import joint_panel, marginal_panel, varying
+from ladderfit.plots.theme import Theme, symbol
+from ladderfit.result import Result
+from ladderfit.workbench.canvas.margins import margins, place_label
+
+CORNER = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
+_OTHERS = ("scatter", "parallax_offset", "velocity_constant", "velocity_scatter", "peak_scatter")
+_LEAST = 3
+_WORDS = "filled: smallest regions with 68 % and 95 % of the probability"
+
+
+def corner_names(result: Result) -> tuple[str, ...]:
+    """What the small corner shows: the headline numbers, filled up to three."""
+    known = varying(result)
+    chosen = [name for name in CORNER if name in known]
+    chosen += [name for name in _OTHERS if name in known][: max(_LEAST - len(chosen), 0)]
+    return tuple(chosen)
+
+
+class CornerView:
+    """Pairs of parameters below, each on its own on the diagonal.
+
+    Attributes
+    ----------
+    names : tuple of str
+        The parameters; for others another view is needed.
+    """
+
+    def __init__(self, figure: Figure, names: tuple[str, ...], theme: Theme) -> None:
+        self.names, self.theme = names, theme
+        size = max(len(names), 1)
+        margins(figure, 66, 8, 26, 50, hspace=0.08, wspace=0.08)
+        grid = figure.add_gridspec(size, size)
+        self._axes = {
+            (row, column): figure.add_subplot(grid[row, column])
+            for row in range(len(names))
+            for column in range(row + 1)
+        }
+        for (row, column), axes in self._axes.items():
+            self._tidy(axes, row, column)
+        figure.text(0.985, 0.95, _WORDS, ha="right", va="top", fontsize=8)
+
+    def update(self, result: Result) -> None:
+        """Show a posterior."""
+        for (row, column), axes in self._axes.items():
+            for artist in [*axes.lines, *axes.collections]:
+                artist.remove()
+            if row == column:
+                marginal_panel(result, self.names[row], axes, theme=self.theme)
+                axes.set_title("")
+            else:
+                joint_panel(result, self.names[column], self.names[row], axes, theme=self.theme)
+
+    def _tidy(self, axes: Axes, row: int, column: int) -> None:
+        across, up = self.names[column], self.names[row]
+        last, first = row == len(self.names) - 1, column == 0 and row > 0
+        axes.grid(visible=False)
+        axes.xaxis.set_major_locator(MaxNLocator(2, prune="both"))
+        if row != column:
+            axes.yaxis.set_major_locator(MaxNLocator(2, prune="both"))
+        axes.tick_params(labelbottom=last, labelleft=first, labelsize=7)
+        if last:
+            unit = parameter(across).unit
+            axes.set_xlabel(
+                symbol(across) + (f" [{unit}]" if unit else ""), fontsize=8.5, labelpad=2
+            )
+        if first:
+            axes.set_ylabel(symbol(up), fontsize=8.5)
+            place_label(axes, 42)
