@@ -26,6 +26,7 @@ FloatArray = npt.NDArray[np.float64]
 
 _FIRST, _LAST = 9, 257  # nodes; nested Clenshaw-Curtis points: 9, 17, 33, ...
 _TOLERANCE = 1e-7  # of the summed log density, per thousand stars
+_ROUNDING, _STALLED = 10.0, 0.1  # near the tolerance, yet no better for twice the nodes
 _MUCH_WIDER = 4.0
 _FEWEST_ROWS = 64  # below this the exact sums are as cheap
 
@@ -171,19 +172,26 @@ def tabulate(rows: Rows, low: float, high: float) -> SumTable:
 
 
 def table_of(source: SmoothSums, low: float, high: float) -> SumTable:
-    """Tabulate sums between two extra variances, to the tolerance in the log density."""
+    """Tabulate sums between two extra variances, to the tolerance in the log density.
+
+    Where the rounding of the sums themselves is larger than that, more nodes are no
+    remedy, and the table ends with the error it has.
+    """
     shift = source.shift
     tolerance = _TOLERANCE * max(1.0, source.size / 1000.0)
     ends = np.log(low + shift), np.log(high + shift)
     count = _FIRST
     values = source.packed(_extra(_points(count), ends, shift))
+    before = np.inf
     while True:
         table = SumTable(low, high, shift, _coefficients(values), np.inf)
         extra = _extra(_points(2 * count - 1)[1::2], ends, shift)
         exact = source.packed(extra)
         error = _largest_error(source, table.sums(extra), exact)
-        if error < tolerance or count >= _LAST:
+        rounding = error > _STALLED * before and error < _ROUNDING * tolerance
+        if error < tolerance or rounding or count >= _LAST:
             return SumTable(low, high, shift, _coefficients(values), error)
+        before = error
         merged = np.empty((2 * count - 1, values.shape[1]))
         merged[0::2], merged[1::2] = values, exact
         values, count = merged, 2 * count - 1

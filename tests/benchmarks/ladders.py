@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import copy
+from typing import Any
+
 import numpy as np
 import pandas as pd
 
@@ -45,15 +48,15 @@ CHOICES = {
 }
 
 
-def reference_ladder(
+def reference_tables(
     cepheids: int = 3040,
     hosts: int = 38,
     parallax_stars: int = 75,
     supernovae: int = 42,
     flow: int = 280,
     seed: int = 1,
-) -> Ladder:
-    """A whole ladder with the given numbers of objects."""
+) -> tuple[dict[str, Any], dict[str, Any]]:
+    """Choices and tables of a whole ladder with the given numbers of objects."""
     rng = np.random.default_rng(seed)
     moduli = np.concatenate([[18.49, 29.4], np.linspace(29.0, 33.0, hosts - 2)])
     tables = {
@@ -62,7 +65,12 @@ def reference_ladder(
         "supernovae": _peaks(rng, supernovae, moduli),
         "expansion": _flow(rng, flow),
     }
-    return build_ladder(CHOICES, tables)
+    return copy.deepcopy(CHOICES), tables
+
+
+def reference_ladder(**numbers: int) -> Ladder:
+    """The ladder of `reference_tables`."""
+    return build_ladder(*reference_tables(**numbers))
 
 
 def _photometry(
