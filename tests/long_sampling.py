@@ -39,7 +39,7 @@ def sample(
     start = whole.point(truth)
     factor = np.linalg.cholesky(_curvature(whole.log_density, start))
     state = _State(whole.log_density, start, factor, chains, rng)
-    for length in (10, 15, 20, 25, 30):
+    for length in (10, 12, 15, 20):
         drawn = state.run(length)
         late = drawn[length // 2 :].reshape(-1, len(start))
         state.factor = np.linalg.cholesky(np.cov(late.T))
