@@ -37,21 +37,22 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
-    residuals influence anchors distance_priors sweep alternatives review distances compare
+    residuals running redshift_cuts influence anchors distance_priors sweep alternatives review distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.parallax_survey mock.scenario
     mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
-    plots.hubble plots
+    plots.hubble plots.cuts plots
     report calibration repeat
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.tables
     workbench.axis workbench.range workbench.controls workbench.choices_panel
     workbench.canvas.margins workbench.canvas.relation workbench.canvas.corner
     workbench.canvas.panels workbench.canvas
-    workbench.view_bar workbench.star_line workbench.screen workbench
+    workbench.view_bar workbench.star_line workbench.published workbench.foot
+    workbench.screen workbench
     launcher cli __main__
 """.split()
 

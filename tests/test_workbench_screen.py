@@ -176,6 +176,16 @@ def test_published_values_and_all_numbers(bench: Workbench) -> None:
     bench.bar.numbers.value = True
     assert "−3.26" in bench.table.value or "-3.26" in bench.table.value
     assert "distance modulus, Q07" in bench.table.value
+    bench.entry.name.value = "hubble_constant"
+    bench.entry.value.value = "seventy"
+    bench.entry.button.click()
+    assert "expected a value such as 73.0" in bench.entry.message.value
+    bench.entry.value.value = "71,3"
+    bench.entry.button.click()
+    assert bench.published == {"slope": -3.26, "hubble_constant": 71.3}
+    bench.entry.value.value = ""
+    bench.entry.button.click()
+    assert bench.published == {"slope": -3.26}
     bench.publish("slope", None)
     assert "lf-published" not in bench.numbers.value
 

@@ -2,11 +2,9 @@
 
 from __future__ import annotations
 
-import html
 import threading
 from collections.abc import Callable, Mapping
 from functools import wraps
-from pathlib import Path
 from typing import Any, Concatenate, ParamSpec
 
 import ipywidgets as widgets
@@ -20,7 +18,9 @@ from ladderfit.workbench.axis import LadderAxis
 from ladderfit.workbench.canvas import Picture
 from ladderfit.workbench.choices_panel import ChoicesPanel
 from ladderfit.workbench.controls import Changes, Control
+from ladderfit.workbench.foot import Does, Foot, free, line, text
 from ladderfit.workbench.points import Points
+from ladderfit.workbench.published import Published
 from ladderfit.workbench.rungs import everything, rungs
 from ladderfit.workbench.star_line import StarLine
 from ladderfit.workbench.state import Drawer, Session, in_words, save_ladder
@@ -44,6 +44,10 @@ def _guarded(
                 method(self, *args, **kwargs)
             except LadderfitError as error:
                 self._say(in_words(error), good=False)
+            except OSError as error:
+                self._say(
+                    f"Not written: {error.strerror or error}; choose another place.", good=False
+                )
             except Exception as error:  # would be lost in a widget's callback
                 self._say(f"This went wrong inside ladderfit: {error!r}", good=False)
 
@@ -81,17 +85,19 @@ class Workbench:
         self.stars = StarLine(self._change)
         self.numbers = widgets.HTML(layout=widgets.Layout(height="80px", margin="0", width="100%"))
         self.numbers.add_class("lf-strip-box")
-        self.why = _line("lf-why")
+        self.why = line("lf-why")
         self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
+        self.entry = Published(self.publish)
         self._scroll = widgets.VBox(
-            [self.table], layout=widgets.Layout(width="100%", height="336px", display="none")
+            [self.entry.widget, self.table],
+            layout=widgets.Layout(width="100%", height="336px", display="none"),
         )
         self._scroll.add_class("lf-scroll")
         self._frame = widgets.Box(
             [self.picture.canvas, self._scroll],
             layout=widgets.Layout(height="336px", flex="0 0 auto", overflow="hidden"),
         )
-        self.foot = _Foot(self)
+        self.foot = Foot(ladder, Does(self._pin, self._undo, self._redo, self._save))
         self.widget = self._put_together()
         if is_cold():
             print(f"{WORDS_WHEN_COLD[0].upper()}{WORDS_WHEN_COLD[1:]} ...")
@@ -200,7 +206,7 @@ class Workbench:
         result = self.session.result
         if result is None:
             raise LadderfitError("there is no posterior to show")
-        stem = _free(self.bar.view, (".png", ".pdf"))
+        stem = free(self.bar.view, (".png", ".pdf"))
         written = self.picture.save(stem, self.bar.view, result, **self._what_view())
         self._say(f"Saved {' and '.join(path.name for path in written)}.", good=True)
 
@@ -260,7 +266,7 @@ class Workbench:
         self.panel.quiet()
         self._show_numbers()
         if said and session.before is not None:
-            self.why.value = _text(why(session.before, session.result))
+            self.why.value = text(why(session.before, session.result))
         if not settled:
             self.panel.count(session.ladder)
             return
@@ -284,7 +290,7 @@ class Workbench:
                 self.axis.show(rungs(session.settled, self._every, session.result))
         if control is not None:
             control.say(trouble.words)
-        self.why.value = _text("No posterior for these choices; the last one is greyed.")
+        self.why.value = text("No posterior for these choices; the last one is greyed.")
         self._say(trouble.words, good=False)
 
     def _show_numbers(self) -> None:
@@ -301,7 +307,9 @@ class Workbench:
         drawn = bar.shows == "view"
         self._scroll.layout.display = "none" if drawn else ""
         self.picture.canvas.layout.display = "" if drawn else "none"
+        self.entry.widget.layout.display = "" if bar.shows == "numbers" else "none"
         if bar.shows == "numbers":
+            self.entry.offer(result)
             self.table.value = all_numbers(result, self.session.pinned, self.published)
         elif bar.shows == "table":
             self.table.value = view_table(result, bar.view, bar.rung, bar.column)
@@ -331,69 +339,4 @@ class Workbench:
         self._show_numbers()
 
     def _say(self, words: str, *, good: bool) -> None:
-        self.foot.trust.value = _text(words, "" if good else "lf-bad")
-
-
-class _Foot:
-    """Pin, undo, redo, save, and a sentence of trust."""
-
-    def __init__(self, bench: Workbench) -> None:
-        self.pin = _button("Pin", "Count changes from these numbers", bench._pin)
-        self.undo = _button("Undo", "Take the last change back", bench._undo)
-        self.redo = _button("Redo", "Make it again", bench._redo)
-        self.save = _button("Save ladder file", "Write every choice", bench._save, "106px")
-        self.name = widgets.Text(
-            tooltip="Name of the file to save", layout=widgets.Layout(width="128px")
-        )
-        self.trust = _line("lf-trust")
-        self.widget = widgets.HBox(
-            [self.pin, self.undo, self.redo, self.name, self.save, self.trust],
-            layout=widgets.Layout(width="100%", height="40px", align_items="center"),
-        )
-        self.widget.add_class("lf-foot")
-        self.suggest(bench.session.settled)
-
-    def can(self, session: Session) -> None:
-        """Enable what can be done."""
-        self.undo.disabled = not session.can_undo
-        self.redo.disabled = not session.can_redo
-        self.pin.disabled = session.trouble is not None
-
-    def suggest(self, ladder: Ladder) -> None:
-        """Offer a name that is free."""
-        stem = "ladder" if ladder.path is None else ladder.path.stem.rstrip("-0123456789")
-        self.name.value = _free(stem or "ladder", (".toml",)).name + ".toml"
-
-    def path(self) -> Path:
-        """Where to save."""
-        name = self.name.value.strip()
-        if not name:
-            raise LadderfitError("give the ladder file a name")
-        return Path(name if name.endswith(".toml") else f"{name}.toml")
-
-
-def _free(stem: str, suffixes: tuple[str, ...]) -> Path:
-    """The first STEM-01, STEM-02, ... of which none of these files exists."""
-    number = 1
-    while any(Path(f"{stem}-{number:02d}{suffix}").exists() for suffix in suffixes):
-        number += 1
-    return Path(f"{stem}-{number:02d}")
-
-
-def _button(words: str, tooltip: str, do: Any, width: str = "52px") -> Any:
-    button = widgets.Button(
-        description=words, tooltip=tooltip, layout=widgets.Layout(width=width, flex="0 0 auto")
-    )
-    button.on_click(do)
-    return button
-
-
-def _line(name: str) -> Any:
-    line = widgets.HTML(layout=widgets.Layout(flex="1 1 0", min_width="0", margin="0"))
-    line.add_class(name)
-    return line
-
-
-def _text(words: str, name: str = "") -> str:
-    escaped = html.escape(words)
-    return f'<div class="{name}" role="status" title="{escaped}">{escaped}</div>'
+        self.foot.trust.value = text(words, "" if good else "lf-bad")

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
 
 from ladderfit.plots.hubble import flow_panel, peak_panel, velocity_panel
 from ladderfit.plots.moduli import difference_panel, host_moduli, modulus_panel
@@ -91,6 +92,7 @@ def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
         )
         symmetric(bottom, np.abs(data.residual) + data.sd, data.sd)
         brighter_up(bottom)
+        bottom.yaxis.set_major_locator(MaxNLocator(4, prune="both"))
         bottom.set_xlabel(words, labelpad=1)
         top.set_ylabel("")
         for text in top.texts:  # the strip of numbers is right above
