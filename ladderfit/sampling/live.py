@@ -186,10 +186,10 @@ class Run:
                 self._attend(tell)
         except KeyboardInterrupt:
             return self.stop()
-        found = self.progress()
-        if found.state == "failed":
-            raise LadderfitError(f"{self.path}: the run failed: {found.message}")
-        return found
+        status = self._status()
+        if status.state == "failed":
+            raise LadderfitError(f"{self.path}: the run failed: {status.message}")
+        return self.progress()
 
     def result(self) -> Result:
         """The joint posterior as drawn so far: same names, units and order as from `draw`.
@@ -242,11 +242,12 @@ class Run:
         return status
 
     def _at_work(self) -> bool:
-        if self._worker is not None and self._worker.poll() is None:
-            return True
         if self._folder.held() is not None:
             return True
-        return self._worker is None and self._folder.being_launched()
+        if self._worker is None:
+            return self._folder.being_launched()
+        going = self._folder.status().state in ("starting", "running")
+        return going and self._worker.poll() is None
 
     def _attend(self, tell: Callable[[RunProgress], None] | None) -> None:
         told = 0.0
