@@ -24,8 +24,10 @@ from relation_ladders import (
     shape_of,
 )
 
+from ladderfit.errors import UndeterminedError
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.physics.overtones import PERIOD_RATIOS, fundamental_log_period
+from ladderfit.posterior.determined import check_determined, undetermined
 from ladderfit.posterior.joint import posterior
 
 SEEDS = st.integers(0, 10**6)
@@ -344,3 +346,42 @@ def test_an_ordinary_star_does_tell_something() -> None:
     more.tables["cepheids"] = _with_row(more.tables["cepheids"], row)
     with pytest.raises(AssertionError, match="Not equal to tolerance"):
         compare(found.built(), more.built(), rng, tolerance=1e-5, free=True)
+
+
+@pytest.mark.parametrize(
+    ("changes", "lonely"),
+    [
+        ({"cepheids.periods": [9.0, 100.0]}, "overtone_offset"),
+        (
+            {
+                "groups": {"near": {"parallax_stars": True}},
+                "relation.zero_points": ["near"],
+                "anchors.parallaxes.use": False,
+            },
+            "zero_point_offset[near]",
+        ),
+    ],
+)
+def test_a_term_that_no_star_informs_leaves_the_scale_alone(
+    changes: dict[str, Any], lonely: str
+) -> None:
+    found = made(4)
+    for table in found.tables.values():
+        table["P"] = np.where(table["Mode"] == "1O", 8.0, np.maximum(table["P"], 9.5))
+    whole = posterior(found.built({**changes, "anchors.parallaxes.overtones": "drop"}))
+    assert undetermined(whole) == (lonely,)
+    check_determined(whole)
+    without = whole.ladder.change({"anchors.geometric.Tavin.use": False})
+    if without.parallax_stars is None:
+        with pytest.raises(UndeterminedError, match="no anchor in use"):
+            check_determined(posterior(without))
+
+
+def test_a_zero_point_of_its_own_for_the_anchor_takes_the_scale_away() -> None:
+    """Unless a prior of it is stated: the one to state is named."""
+    group = {"groups": {"near": {"hosts": ["Tavin"]}}, "relation.zero_points": ["near"]}
+    ladder = made(5, parallaxes=False).built(group)
+    with pytest.raises(UndeterminedError, match=r'\(priors."zero_point_offset\[near\]"\)'):
+        check_determined(posterior(ladder))
+    stated = ladder.change({"priors.zero_point_offset": {"normal": [0.0, 0.03]}})
+    check_determined(posterior(stated))

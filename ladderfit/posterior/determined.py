@@ -24,6 +24,7 @@ FloatArray = npt.NDArray[np.float64]
 _SCALE = ("zero_point", "peak_magnitude", "hubble_constant", "modulus")
 _TYPICAL = {"scatter": 0.1, "peak_scatter": 0.1, "velocity_scatter": 100.0}
 _FREE = 1e-9  # relative information below which a direction counts as free
+_ROUNDING = 1e-10  # of a direction of unit length
 
 
 def undetermined(posterior: Posterior) -> tuple[str, ...]:
@@ -36,7 +37,8 @@ def undetermined(posterior: Posterior) -> tuple[str, ...]:
     free = free / scale[:, None]
     part = np.abs(forms @ free).max(axis=1, initial=0.0)
     whole = np.abs(forms) @ np.abs(free).max(axis=1, initial=0.0) if free.size else part
-    loose = part > 1e-6 * np.maximum(whole, 1e-300)
+    noise = _ROUNDING * np.abs(forms) @ (1.0 / scale)  # what the eigenvectors are good to
+    loose = part > np.maximum(1e-6 * whole, noise)
     return tuple(name for name, is_loose in zip(names, loose, strict=True) if is_loose)
 
 
@@ -48,7 +50,8 @@ def check_determined(posterior: Posterior) -> None:
     UndeterminedError
         Naming what is undetermined and what would determine it.
     """
-    loose = [name for name in undetermined(posterior) if base_name(name) in _SCALE]
+    every = undetermined(posterior)
+    loose = [name for name in every if base_name(name) in _SCALE]
     if not loose:
         return
     words = list(dict.fromkeys(parameter(name).words for name in loose))
@@ -62,6 +65,9 @@ def check_determined(posterior: Posterior) -> None:
     found = "no anchor for these" if anchored else "no anchor in use"
     priors = [name for name in dict.fromkeys(map(base_name, loose)) if name != "modulus"]
     example = f"priors.{priors[0]}" if priors else "priors.zero_point"
+    offsets = [name for name in every if base_name(name) == "zero_point_offset"]
+    if anchored and offsets:  # a group's own zero point stands between anchor and hosts
+        example = f'priors."{offsets[0]}"'
     raise UndeterminedError(
         Problem(
             found=f"{found}, so undetermined: {listed}",
