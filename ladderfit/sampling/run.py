@@ -11,7 +11,7 @@ import numpy.typing as npt
 from ladderfit.diagnostics import TRUSTED_K
 from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
 from ladderfit.ladder import Ladder
-from ladderfit.names import parameter
+from ladderfit.names import HEADLINE, base_name, parameter
 from ladderfit.posterior.determined import check_determined
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.priors import Fixed, HalfNormal, Prior, Uniform
@@ -97,7 +97,7 @@ def informed(ladder: Ladder, draws: Mapping[str, FloatArray]) -> dict[str, float
     """Posterior over prior standard deviation of every free parameter with a prior."""
     ratio = {}
     for name, values in draws.items():
-        if parameter(name).prior is None:
+        if base_name(name) not in HEADLINE:  # moduli, and modes of shared errors
             continue
         prior = ladder.choices.prior(name)
         if not isinstance(prior, Fixed):
