@@ -17,6 +17,7 @@ from ladderfit.plots.theme import (
     new_figure,
     plain_log_axis,
     series_of_ticks,
+    symbol,
     symmetric,
 )
 from ladderfit.residuals import (
@@ -29,6 +30,7 @@ from ladderfit.residuals import (
 )
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval
+from ladderfit.running import running_mean
 from ladderfit.samples import FloatArray
 
 
@@ -56,7 +58,7 @@ def _line(axes: Axes, x: FloatArray, y: FloatArray, theme: Theme) -> None:
 
 def _numbers(axes: Axes, result: Result, names: tuple[str, ...], *, left: bool) -> None:
     words = [
-        f"{parameter(name).symbol} = {Interval.of(result.draws[name])} {parameter(name).unit}"
+        f"{symbol(name)} = {Interval.of(result.draws[name])} {parameter(name).unit}".rstrip()
         for name in names
         if name in result.draws
     ]
@@ -75,7 +77,29 @@ def _numbers(axes: Axes, result: Result, names: tuple[str, ...], *, left: bool) 
 def _left_over(axes: Axes, data: Residuals, accent: Accent, theme: Theme) -> None:
     axes.axhline(0.0, color=theme.ink, linewidth=0.8)
     _points(axes, data, data.residual, accent, theme, bars=True)
+    _running(axes, data, theme)
     symmetric(axes, np.abs(data.residual) + data.sd, data.sd)
+
+
+def _running(axes: Axes, data: Residuals, theme: Theme) -> None:
+    """The running mean with its error, where there are enough objects."""
+    found = running_mean(data)
+    if found is None:
+        return
+    low, high = found.mean - found.error, found.mean + found.error
+    axes.fill_between(
+        found.x, low, high, color=theme.ink, alpha=0.18, linewidth=0, zorder=2.7, label="_"
+    )
+    axes.plot(
+        found.x,
+        found.mean,
+        color=theme.ink,
+        linewidth=1.3,
+        linestyle=(0, (4, 1.5)),
+        zorder=2.8,
+        label=f"running mean of {found.size}, and its error",
+    )
+    axes.legend(loc="upper left")
 
 
 def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
@@ -104,7 +128,7 @@ def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     brighter_up(axes)
     axes.set_title(f"{len(data)} supernovae in hosts")
     axes.set_ylabel("Peak magnitude [mag]")
-    _numbers(axes, result, ("peak_magnitude", "peak_scatter"), left=True)
+    _numbers(axes, result, ("peak_magnitude", result.choices.peak_scatters[0]), left=True)
     return figure_of(axes)
 
 
@@ -135,8 +159,10 @@ def flow_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     axes.set_xlim(low, high)
     brighter_up(axes)
     axes.set_title(f"{len(data)} supernovae in the expansion")
-    alone = () if result.ladder.peaks is not None else ("peak_scatter",)
-    _numbers(axes, result, ("hubble_constant", *alone), left=True)
+    in_hosts, own = result.choices.peak_scatters
+    told = result.ladder.peaks is not None and own == in_hosts
+    names = ("hubble_constant", "intercept", *(() if told else (own,)))
+    _numbers(axes, result, names, left=True)
     return figure_of(axes)
 
 

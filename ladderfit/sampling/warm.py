@@ -16,6 +16,7 @@ from ladderfit.ladder import Ladder
 from ladderfit.posterior.determined import check_determined
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.result import Result
+from ladderfit.samples import FloatArray
 from ladderfit.sampling.direct import Near, Target
 from ladderfit.sampling.mode import Mode
 from ladderfit.sampling.run import drawn, target
@@ -29,6 +30,12 @@ class WarmDrawer:
     def __init__(self) -> None:
         self._last: Posterior | None = None
         self._mode: Mode | None = None
+        self._phi: FloatArray | None = None
+
+    @property
+    def last(self) -> tuple[Posterior, FloatArray] | None:
+        """The posterior drawn last, and its draws of phi, shape (n, d)."""
+        return None if self._last is None or self._phi is None else (self._last, self._phi)
 
     def draw(self, ladder: Ladder, *, draws: int | None = None, seed: int | None = None) -> Result:
         """As `ladderfit.draw`, faster where `ladder` resembles the one before.
@@ -51,7 +58,7 @@ class WarmDrawer:
             sampling.seed if seed is None else seed,
             sampling.draws if draws is None else draws,
         )
-        self._last = joint
+        self._last, self._phi = joint, found.z
         self._mode = found.modes[0] if len(found.modes) == 1 else None
         return result
 
