@@ -112,22 +112,24 @@ class Result:
         return len(next(iter(self.draws.values())))
 
     def mean(self, name: str) -> float:
-        """Posterior mean of a parameter."""
-        return float(np.mean(self.draws[name]))
+        """Posterior mean of a parameter; the value itself where fixed."""
+        draws = self.draws[name]
+        return float(np.mean(draws)) if np.ptp(draws) > 0.0 else float(draws[0])
 
     def sd(self, name: str) -> float:
         """Posterior standard deviation of a parameter; 0 where fixed."""
-        return float(np.std(self.draws[name], ddof=1))
+        draws = self.draws[name]
+        return float(np.std(draws, ddof=1)) if np.ptp(draws) > 0.0 else 0.0
 
     def summary(self) -> pd.DataFrame:
         """One row per parameter: mean, sd, 16, 50 and 84 % points, unit, ess, mcse."""
         rows = {}
         for name, draws in self.draws.items():
             low, middle, high = np.quantile(draws, [0.16, 0.5, 0.84])
-            sd = float(np.std(draws, ddof=1)) if np.ptp(draws) > 0.0 else 0.0
+            sd = self.sd(name)
             ess = self.diagnostics.ess.get(name, float("nan")) if sd > 0.0 else float("nan")
             rows[name] = (
-                float(np.mean(draws)),
+                self.mean(name),
                 sd,
                 float(low),
                 float(middle),
