@@ -6,6 +6,7 @@ import math
 import textwrap
 from collections.abc import Iterable, Sequence
 
+from ladderfit.assembly import MATRICES
 from ladderfit.diagnostics import TRUSTED_K
 from ladderfit.ladder import Ladder
 from ladderfit.names import base_name, group_of, parameter
@@ -63,6 +64,11 @@ def data_rows(ladder: Ladder) -> list[tuple[str, ...]]:
     if expansion is not None and expansion.intercept is not None:
         published = expansion.intercept
         rows.append(("expansion", f"intercept {published.value:g} ± {published.error:g}"))
+    rows += [
+        ("covariance", f"{printable(source.path)}, {source.rows:,} rows ({key})")
+        for key, source in ladder.sources.items()
+        if key in MATRICES
+    ]
     return rows + [("note", printable(note)) for note in ladder.notes]
 
 
