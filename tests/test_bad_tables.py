@@ -294,7 +294,8 @@ def test_missing_unit_where_it_matters(workshop: Workshop, suffix: str) -> None:
     table["P"].unit = "d"
     table["e_plx"].unit = "mas"
     layout = {"vot": "votable", "ecsv": "ascii.ecsv"}.get(suffix, suffix)
-    table.write(workshop.folder / name, format=layout)
+    options = {"tabledata_format": "binary"} if suffix == "vot" else {}  # as text can crash
+    table.write(workshop.folder / name, format=layout, **options)
     workshop.choices["anchors"]["parallaxes"]["table"] = name
     assert workshop.complaints() == [
         f"{workshop.file(name)}, column 'plx': found no unit; expected a parallax, in mas or "

@@ -42,9 +42,9 @@ def write_csv(path: Path) -> None:
     )
 
 
-def write_astropy(layout: str) -> Callable[[Path], None]:
+def write_astropy(layout: str, **options: str) -> Callable[[Path], None]:
     def write(path: Path) -> None:
-        astropy_table().write(path, format=layout)
+        astropy_table().write(path, format=layout, **options)
 
     return write
 
@@ -58,7 +58,7 @@ FORMATS: dict[str, Callable[[Path], None]] = {
     "t.csv": write_csv,
     "t.ecsv": write_astropy("ascii.ecsv"),
     "t.fits": write_astropy("fits"),
-    "t.vot": write_astropy("votable"),
+    "t.vot": write_astropy("votable", tabledata_format="binary"),
     "t.parquet": write_parquet,
     "t.mrt": write_astropy("ascii.mrt"),
     "t.txt": write_astropy("ascii.basic"),
