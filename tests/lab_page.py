@@ -11,7 +11,7 @@ import socket
 import subprocess
 import sys
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -157,12 +157,18 @@ class Lab:
 
     def changed(self, before: list[int]) -> list[int]:
         """The picture once it is another and rests."""
-        end = time.monotonic() + 20
+        self.until(lambda picture: picture[:1] != before[:1])
+        return self.rested()
+
+    def until(self, good: Callable[[list[int]], bool]) -> None:
+        """Wait for a picture of some kind."""
+        end = time.monotonic() + 30
         while time.monotonic() < end:
-            if self.picture()[:1] != before[:1]:
-                return self.rested()
-            self.page.wait_for_timeout(30)
-        raise AssertionError("the figure did not change")
+            picture = self.picture()
+            if picture and good(picture):
+                return
+            self.page.wait_for_timeout(40)
+        raise AssertionError(f"no such picture; the last is {self.picture()}")
 
     def number(self, name: str) -> str:
         """What the strip says of a parameter."""

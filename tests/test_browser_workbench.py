@@ -118,13 +118,11 @@ def test_a_session(lab: Lab, work: Path, tmp_path: Path) -> None:
     assert lab.number("slope") == dragged
 
     # the theme: the figure takes the page's colour
-    light = lab.picture()
+    assert min(lab.rested()[2:]) > 200
     lab.theme("JupyterLab Dark")
-    dark = lab.changed(light)
-    assert max(dark[2:]) < 60
-    assert min(light[2:]) > 200
+    lab.until(lambda picture: max(picture[2:]) < 60)
     lab.theme("JupyterLab Light")
-    lab.changed(dark)
+    lab.until(lambda picture: min(picture[2:]) > 200)
 
     # the ladder file, fitted again by the command line
     button(lab, "Save ladder file").click()

@@ -27,8 +27,8 @@ class Published:
         self._publish = publish
         self.name = widgets.Dropdown(
             description="Published",
-            style={"description_width": "62px"},
-            layout=widgets.Layout(width="210px"),
+            style={"description_width": "72px"},
+            layout=widgets.Layout(width="220px"),
         )
         self.value = widgets.Text(
             placeholder="value", tooltip="Published value", layout=widgets.Layout(width="84px")
@@ -36,7 +36,7 @@ class Published:
         self.button = widgets.Button(
             description="Show tick",
             tooltip="Show the published value as a tick; without a value, take it away",
-            layout=widgets.Layout(width="76px"),
+            layout=widgets.Layout(width="92px", flex="0 0 auto"),
         )
         self.message = widgets.HTML()
         self.message.add_class("lf-message")

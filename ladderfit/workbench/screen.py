@@ -83,7 +83,7 @@ class Workbench:
         self.picture = Picture(self._pointed)
         self.bar = ViewBar(ladder, self._view, self._save_view)
         self.stars = StarLine(self._change)
-        self.numbers = widgets.HTML(layout=widgets.Layout(height="80px", margin="0", width="100%"))
+        self.numbers = widgets.HTML(layout=widgets.Layout(height="74px", margin="0", width="100%"))
         self.numbers.add_class("lf-strip-box")
         self.why = line("lf-why")
         self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
@@ -141,7 +141,7 @@ class Workbench:
     def _put_together(self) -> Any:
         reason = widgets.HBox(
             [self.why, self.bar.numbers],
-            layout=widgets.Layout(height="26px", flex="0 0 auto", align_items="center"),
+            layout=widgets.Layout(height="32px", flex="0 0 auto", align_items="center"),
         )
         reason.add_class("lf-bar-of-views")
         right = widgets.VBox(

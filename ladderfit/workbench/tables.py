@@ -107,14 +107,14 @@ def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, f
                 words,
                 value.value,
                 value.error or "fixed",
+                "" if change is None else signed(change),
                 rounded(interval.low, interval.sd).value,
                 rounded(interval.high, interval.sd).value,
                 parameter(name).unit,
-                "" if change is None else signed(change),
                 "" if told is None else f"{told:g}",
             )
         )
-    head = ("parameter", "mean", "sd", "16 %", "84 %", "unit", "change [pinned sd]", "published")
+    head = ("parameter", "mean", "sd", "change [sd]", "16 %", "84 %", "unit", "published")
     return table(head, rows)
 
 

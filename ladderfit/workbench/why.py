@@ -62,7 +62,8 @@ def _moved(before: Result, after: Result) -> str:
     wider = {name: after.sd(name) / before.sd(name) for name in known}
     name = max(wider, key=lambda name: abs(wider[name] - 1.0))
     if abs(wider[name] - 1.0) > 0.15:
-        text += f", error of the {SHORT[name]} × {wider[name]:.2g}"
+        whose = "its error" if list(told) == [name] else f"error of the {SHORT[name]}"
+        text += f", {whose} × {wider[name]:.2g}"
     return text[0].upper() + text[1:]
 
 
