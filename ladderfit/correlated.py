@@ -5,7 +5,8 @@ The rows of a matrix that belong to rows cut from the tables are cut with them.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections import Counter
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -16,6 +17,8 @@ from ladderfit.covariances import Matrix
 from ladderfit.physics.expansion import magnitudes_per_velocity, peculiar_velocities
 from ladderfit.samples import FloatArray, FlowSample, PeakSample, frozen
 from ladderfit.select_supernovae import ExpansionSelection, PeakSelection
+
+_SEVERAL = 5  # names that a note lists
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,8 +167,27 @@ def anchors_together(
     return total
 
 
-def repeated_names(peaks: PeakSample | None, flow: FlowSample | None) -> tuple[str, ...]:
-    """Names that stand in both samples."""
-    if peaks is None or flow is None:
-        return ()
-    return tuple(sorted({str(n) for n in peaks.name} & {str(n) for n in flow.name}))
+def repeated_notes(peaks: PeakSample | None, flow: FlowSample | None) -> Iterator[str]:
+    """What is assumed of names that stand several times where nothing correlates them."""
+    samples = [[] if s is None else [str(name) for name in s.name] for s in (peaks, flow)]
+    both = sorted(set(samples[0]) & set(samples[1]))
+    if both:
+        yield (
+            f"{_listed(both, 'stand')} in hosts and in the expansion; without a covariance "
+            "the measurements are taken as independent"
+        )
+    for names, where in zip(samples, ("hosts", "the expansion"), strict=True):
+        counts = Counter(names)
+        several = sorted(name for name, count in counts.items() if count > 1)
+        if several:
+            yield (
+                f"{_listed(several, 'stand')} more than once in {where}; without a covariance "
+                "the light curves are taken as independent"
+            )
+
+
+def _listed(names: list[str], verb: str) -> str:
+    if len(names) == 1:
+        return f"the supernova {names[0]} {verb}s"
+    listed = ", ".join(names[:_SEVERAL]) + (", ..." if len(names) > _SEVERAL else "")
+    return f"{len(names)} supernovae ({listed}) {verb}"

@@ -22,7 +22,7 @@ from ladderfit.assembly import (
 )
 from ladderfit.choices import Choices
 from ladderfit.consistency import star_notes, star_problems
-from ladderfit.correlated import Supernovae, repeated_names
+from ladderfit.correlated import repeated_notes
 from ladderfit.covariances import covariance_in_memory
 from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.ladder_file import as_written, read_choices
@@ -33,8 +33,6 @@ from ladderfit.table_memory import table_in_memory
 from ladderfit.tables import DataTable
 
 __all__ = ["AnchorInUse", "Ladder", "Source", "build_ladder", "read_ladder"]
-
-_SEVERAL = 5  # names that a note lists
 
 
 @dataclass(frozen=True, eq=False)
@@ -257,7 +255,7 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
     hosts = peaks.hosts if peaks else cepheids.hosts if cepheids else ()
     seen = {*(cepheids.seen if cepheids else ()), *(peaks.seen if peaks else ())}
     geometric, notes = _anchors_in_use(choices, hosts, seen)
-    anchors = assembly.anchors(geometric)
+    anchors, correlated = assembly.anchors(geometric), choices.peak_covariance is not None
     if anchors is not None:
         errors = np.sqrt(np.diag(anchors))
         pairs = zip(geometric, errors, strict=True)
@@ -284,7 +282,7 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
             *_lost_hosts(cepheids, peaks),
             *(peaks.notes if peaks else ()),
             *notes,
-            *_notes_on_repeated(choices, together),
+            *(repeated_notes(together.peaks, together.flow) if not correlated else ()),
             *star_notes(choices, samples),
         ),
         sources=assembly.sources,
@@ -317,23 +315,6 @@ def _anchors_in_use(
             )
     raise_if(problems)
     return tuple(used), notes
-
-
-def _notes_on_repeated(choices: Choices, together: Supernovae) -> list[str]:
-    """Supernovae in both samples that nothing correlates."""
-    if choices.peak_covariance is not None:
-        return []
-    names = repeated_names(together.peaks, together.flow)
-    if not names:
-        return []
-    listed = ", ".join(names[:_SEVERAL]) + (", ..." if len(names) > _SEVERAL else "")
-    return [
-        f"{len(names)} supernovae stand in hosts and in the expansion ({listed}); without a "
-        "covariance the two measurements of each are taken as independent"
-        if len(names) > 1
-        else f"{listed} stands in hosts and in the expansion; without a covariance its two "
-        "measurements are taken as independent"
-    ]
 
 
 def _lost_hosts(cepheids: CepheidSelection | None, peaks: PeakSelection | None) -> list[str]:

@@ -236,8 +236,13 @@ def test_light_curves_of_one_supernova_and_one_that_stands_in_both_tables(tmp_pa
     kept += [first[name] for name in plain.flow.name]
     variance = np.concatenate([plain.peaks.variance, plain.flow.variance])
     agree(ladder, with_shared(plain, both=matrix[np.ix_(kept, kept)] - np.diag(variance)))
-    assert any("P1 stands in hosts and in the expansion" in note for note in plain.notes)
-    assert not any("stands in hosts" in note for note in ladder.notes)
+    assert [note for note in plain.notes if "without a covariance" in note] == [
+        "the supernova P1 stands in hosts and in the expansion; without a covariance the "
+        "measurements are taken as independent",
+        "the supernova P0 stands more than once in hosts; without a covariance the light "
+        "curves are taken as independent",
+    ]
+    assert not any("without a covariance" in note for note in ladder.notes)
 
 
 def test_a_change_elsewhere_keeps_the_decomposition() -> None:
