@@ -32,12 +32,14 @@ ORDER = """
     posterior.supernovae posterior.coupled posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
-    sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file sampling.run sampling.warm
+    sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file
+    sampling.run sampling.warm
     sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
     sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
-    residuals running redshift_cuts influence anchors distance_priors sweep alternatives review distances compare
+    residuals running redshift_cuts influence anchors distance_priors sweep alternatives review
+    distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
     mock.plan mock.tables mock.stars mock.peaks mock.survey mock.parallax_survey mock.scenario
