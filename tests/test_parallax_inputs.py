@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Any
 
 import astropy.units as u
@@ -11,9 +12,14 @@ import pytest
 from astropy.coordinates import Angle, SkyCoord
 from test_parallax_terms import SECTION, ladder, table
 
+from ladderfit.choices import Choices
 from ladderfit.errors import InputError
+from ladderfit.ladder import read_ladder
+from ladderfit.ladder_file import write_choices
 from ladderfit.physics.sky import ecliptic_latitude, galactic, separations
 from ladderfit.physics.zero_point import parallax_zero_point
+from ladderfit.sampling.run import draw
+from ladderfit.wording import summary_text
 
 RECIPE = {
     "g_magnitude": "G",
@@ -113,3 +119,54 @@ def test_a_missing_colour_leaves_a_star_out() -> None:
     stars.loc[0, "pc"] = np.nan
     built = ladder(stars, {"corrected": False, "columns": RECIPE})
     assert built.kept[SECTION].reasons == {"missing nu_eff or pseudocolour": 1}
+
+
+EVERY = {
+    "columns": RECIPE | {"cluster": "cl", "l": "glon", "b": "glat", "extinction": "A_V"},
+    "corrected": False,
+    "distance_prior": {"disc": {"length": 2.5, "height": 0.1}},
+    "offset_slope": True,
+    "correlation": {"amplitude": 0.01, "length": 90.0},
+    "selection": {"band": "V", "limit": 12.0, "softness": 0.1, "parallax_min": 0.05},
+    "clusters": {"A": {"parallax": 0.7, "error": 0.05}},
+    "extinction_max": 3.0,
+    "min_signal": 1.0,
+}
+
+
+def test_every_choice_is_written_and_read_again(tmp_path: Path) -> None:
+    """Through a ladder file, and one key at a time."""
+    built = ladder(catalogue(), EVERY)
+    again = Choices.from_mapping(built.choices.to_mapping())
+    assert again == built.choices
+    stars = tmp_path / "stars.csv"
+    catalogue().to_csv(stars, index=False)
+    named = built.choices.change({f"{SECTION}.table": "stars.csv"})
+    write_choices(named, tmp_path / "ladder.toml")
+    read = read_ladder(tmp_path / "ladder.toml")
+    assert read.choices == named
+    np.testing.assert_array_equal(read.parallax_stars.parallax, built.parallax_stars.parallax)
+    changed = built.change({f"{SECTION}.distance_prior": {"exponential": 2.0}})
+    assert changed.choices.value(f"{SECTION}.distance_prior.exponential") == 2.0
+    assert "exponential" in changed.difference(built)
+
+
+def test_a_ladder_with_every_treatment_is_drawn() -> None:
+    changes = {
+        f"{SECTION}.min_signal": None,
+        f"{SECTION}.selection.parallax_min": None,  # dear; see test_parallax_terms
+        "priors.parallax_error_scale": {"log_normal": [1.0, 0.3]},
+        "priors.distance_length": {"log_normal": [2.0, 1.0]},
+        f"{SECTION}.distance_prior": {"exponential": 2.0},
+    }
+    two_fields = catalogue()
+    two_fields["glon"], two_fields["glat"] = np.where(np.arange(14) < 7, 30.0, 200.0), 1.0
+    result = draw(ladder(two_fields, EVERY).change(changes), seed=1, draws=300)
+    expected = {"parallax_offset_slope", "parallax_error_scale", "distance_length"}
+    assert expected < set(result.headline)
+    fields = [name for name in result.draws if name.startswith("parallax_field")]
+    assert fields == ["parallax_field[1]", "parallax_field[2]"]
+    assert not any(name.startswith("parallax_field") for name in result.headline)
+    assert not any("parallax_field" in note for note in result.diagnostics.notes)
+    assert all(np.isfinite(values).all() for values in result.draws.values())
+    assert "exponentially decreasing density" in summary_text(result)

@@ -47,6 +47,8 @@ _X8, _W8 = np.polynomial.legendre.leggauss(8)
 
 @compiled
 def _phi(z: float) -> float:
+    if z > 8.5:
+        return 1.0
     return 0.5 * math.erfc(-z / _ROOT2)
 
 
