@@ -289,3 +289,32 @@ def test_draws_with_a_covariance_have_the_mean_of_the_data_written_out() -> None
     a, error = form @ mean - 5.0, np.sqrt(form @ covariance @ form)
     assert result.mean("intercept") == pytest.approx(a, abs=5.0 * error / np.sqrt(20_000))
     assert result.sd("intercept") == pytest.approx(error, rel=0.03)
+
+
+@pytest.mark.parametrize(
+    "changes",
+    [
+        {"hosts.distance_prior": "uniform in volume"},
+        {"priors.hubble_constant": {"uniform": [60.0, 76.0]}},
+        {"priors.metallicity": {"fixed": -0.2}},
+    ],
+    ids=lambda changes: next(iter(changes)),
+)
+@pytest.mark.parametrize("scatter", ["common", "apart"])
+def test_other_priors_beside_a_covariance(changes: dict[str, Any], scatter: str) -> None:
+    """A tilt of the moduli; coefficients that are known in a draw, or always."""
+    ladder, whole = both("flow", adds=True, scatter=scatter)
+    plain, shared = whole.ladder.change(changes), whole.shared
+    moved = replace(written(plain), shared=shared)
+    agree(ladder.change(changes), scatters_apart(moved) if scatter == "apart" else moved)
+
+
+@pytest.mark.parametrize("scatter", ["common", "apart"])
+def test_finer_tables_round_the_mode_change_nothing(scatter: str) -> None:
+    ladder, _ = both("flow", adds=True, scatter=scatter)
+    joint, fresh = posterior(ladder), posterior(ladder)
+    size = joint.dimension
+    joint.focus(np.full(size, 0.05), np.full(size, 0.15))
+    assert len(joint.blocks[0].rows.tables) == 2
+    z = np.random.default_rng(3).uniform(0.06, 0.14, (20, size))
+    np.testing.assert_allclose(joint.log_density(z), fresh.log_density(z), rtol=0.0, atol=2e-7)
