@@ -24,6 +24,7 @@ from ladderfit.sampling.run import draw
 from ladderfit.sampling.warm import WarmDrawer
 
 TRIAL_DRAWS = 500
+_REMEMBERED = 8  # posteriors kept for undo and redo; older ones are drawn again
 
 
 class Drawer(Protocol):
@@ -49,6 +50,14 @@ class Trouble:
     keys: tuple[str, ...]
     words: str
     made: bool
+
+
+@dataclass(frozen=True)
+class _Step:
+    """Settled choices, and their posterior while it is remembered."""
+
+    ladder: Ladder
+    result: Result | None
 
 
 class Session:
@@ -77,8 +86,8 @@ class Session:
         self._drawer = WarmDrawer() if drawer is None else drawer
         self._settled = ladder
         self._settled_result: Result | None = None
-        self._undo: list[Ladder] = []
-        self._redo: list[Ladder] = []
+        self._undo: list[_Step] = []
+        self._redo: list[_Step] = []
 
     def start(self) -> None:
         """Draw the first posterior, and pin it."""
@@ -164,7 +173,7 @@ class Session:
             self.trouble = Trouble(keys, in_words(error), made=False)
             return False
         if settled and self.ladder.choices != self._settled.choices:
-            self._undo.append(self._settled)
+            self._push(self._undo)
             self._redo.clear()
         return self._draw(keys, settled=settled)
 
@@ -184,12 +193,28 @@ class Session:
             self.before = self._settled_result
         return True
 
-    def _step(self, back: list[Ladder], forth: list[Ladder]) -> bool:
+    def _push(self, steps: list[_Step]) -> None:
+        """Remember the settled choices, and their posterior for a while."""
+        found = self._settled_result
+        known = found is not None and found.source is self._settled
+        steps.append(_Step(self._settled, found if known else None))
+        if len(steps) > _REMEMBERED:
+            place = len(steps) - _REMEMBERED - 1
+            steps[place] = replace(steps[place], result=None)
+
+    def _step(self, back: list[_Step], forth: list[_Step]) -> bool:
         if not back:
             return False
-        forth.append(self._settled)
+        self._push(forth)
         former = self._settled
-        self.ladder = back.pop()
+        step = back.pop()
+        self.ladder = step.ladder
+        if step.result is not None:
+            self.before = self._settled_result
+            self._settled = step.ladder
+            self.result = self._settled_result = step.result
+            self.trouble = None
+            return True
         return self._draw(tuple(self.ladder.choices.difference(former.choices)), settled=True)
 
 
