@@ -92,7 +92,7 @@ peculiar_velocity = {velocity}          # km/s
 slope           = {{normal = [-3.3, 0.5]}}           # mag/dex
 scatter         = {{half_normal = 0.3}}              # mag
 parallax_offset = {{normal = [0.0, 0.02]}}           # mas
-hubble_constant = {{log_normal = [70.0, 0.5]}}       # km/s/Mpc; sd in mag of 5 log10 H0
+hubble_constant = {{log_normal = [70.0, 1.0]}}       # km/s/Mpc; sd in mag of 5 log10 H0
 
 [sampling]
 sampler = "direct"
