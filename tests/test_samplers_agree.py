@@ -24,9 +24,14 @@ from ladderfit.sampling.run import draw
 from ladderfit.shipped import sample_ladder
 
 EFFECTIVE = 4000
-DIRECT = 8000
+DIRECT = 16_000
 IN_BRIEF = ("anchors and parallaxes", "velocities", "zero scatter")
-CHOSEN = tuple(SMALL) if os.environ.get("LADDERFIT_FULL") == "1" else IN_BRIEF
+WITHOUT = ("fixed scatter",)  # given the fixed numbers all is Gaussian: `start` refuses it
+CHOSEN = (
+    tuple(name for name in SMALL if name not in WITHOUT)
+    if os.environ.get("LADDERFIT_FULL") == "1"
+    else IN_BRIEF
+)
 
 
 @pytest.fixture(scope="module")
