@@ -94,3 +94,15 @@ def test_same_seed_same_draws_other_seed_other_draws():
     )
     np.testing.assert_array_equal(first, again)
     assert not np.array_equal(first, other)
+
+
+def test_heavy_weights_found_late_are_met_by_another_round():
+    """A pilot can be lucky; the pool's own Pareto k then calls for a wider proposal."""
+    density = multivariate_t(np.zeros(2), np.eye(2), df=5)
+    found = [
+        draw_direct(
+            target(lambda z: np.atleast_1d(density.logpdf(z)), 2), 4000, np.random.default_rng(seed)
+        ).pareto_k
+        for seed in range(10)
+    ]
+    assert max(found) < 0.7

@@ -22,6 +22,7 @@ WORDS_WHEN_COLD = "compiling the kernels (once after installing; takes 5 to 15 s
 
 _WORTH_SHARING = 20_000  # elements of work below which a second thread does not pay
 _KERNELS: list[Any] = []
+_ALWAYS_USED = "elimination.eliminate"
 
 
 def compiled(function: F) -> F:
@@ -32,16 +33,24 @@ def compiled(function: F) -> F:
 
 
 def is_cold() -> bool:
-    """Whether some kernel has neither been compiled in this process nor kept by an earlier one."""
-    return any(not kernel.signatures and not _kept(kernel) for kernel in _KERNELS)
+    """Whether the kernel that every job needs is neither compiled nor kept by an earlier process.
+
+    Kernels that only some jobs need follow at their own first use, without a word.
+    """
+    return all(
+        not kernel.signatures and not _kept(kernel)
+        for kernel in _KERNELS
+        if _name(kernel) == _ALWAYS_USED
+    )
 
 
 def _kept(kernel: Any) -> bool:
     place = kernel.stats.cache_path
-    if place is None:
-        return False
-    name = f"{kernel.py_func.__module__.rpartition('.')[2]}.{kernel.py_func.__qualname__}"
-    return any(Path(place).glob(f"{name}-*.nbi"))
+    return place is not None and any(Path(place).glob(f"{_name(kernel)}-*.nbi"))
+
+
+def _name(kernel: Any) -> str:
+    return f"{kernel.py_func.__module__.rpartition('.')[2]}.{kernel.py_func.__qualname__}"
 
 
 @cache

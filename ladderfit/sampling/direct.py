@@ -27,7 +27,7 @@ _FREEDOM = 12.0
 _WIDEN, _WIDE = 1.03, 2.0  # widths of the two parts of the proposal, in those of the mode
 _WIDE_SHARE = 0.06
 _PILOT = 600
-_ROUNDS = 3
+_ROUNDS = 4
 _GOOD_EFFICIENCY = 0.5
 _GOOD_K = 0.5
 _OVERSAMPLE = 1.25
@@ -131,17 +131,11 @@ def draw_direct(
         target.focus(modes[0].point - reach, modes[0].point + reach)
     tell("drawing", 0.2)
     proposal = _first_proposal(modes, target.folded)
-    for round_ in range(_ROUNDS):
-        z, log_weight = _weigh(target, proposal, _PILOT, rng)
-        weights, k = smoothed_weights(log_weight)
-        efficiency = weights_ess(weights) / len(z)
-        if (efficiency > _GOOD_EFFICIENCY and k < _GOOD_K) or round_ == _ROUNDS - 1:
+    for left in reversed(range(_ROUNDS)):
+        z, log_weight, good = _pool(target, proposal, draws, rng, last=left == 0)
+        if good:
             break
-        proposal = _adapted(proposal, z, weights, target.folded)
-    pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
-    if pool > _PILOT:
-        more, log_more = _weigh(target, proposal, pool - _PILOT, rng)
-        z, log_weight = np.concatenate([z, more]), np.concatenate([log_weight, log_more])
+        proposal = _adapted(proposal, z, smoothed_weights(log_weight)[0], target.folded)
     tell("drawing", 1.0)
     return _resampled(z, log_weight, draws, rng, modes)
 
@@ -220,6 +214,22 @@ def _weigh(
 ) -> tuple[FloatArray, FloatArray]:
     z = proposal.draw(rng, size)
     return z, target.log_density(z) - proposal.log_density(z)
+
+
+def _pool(
+    target: Target, proposal: Proposal, draws: int, rng: np.random.Generator, *, last: bool
+) -> tuple[FloatArray, FloatArray, bool]:
+    """Weighted draws, and whether they are good: a pilot, and where it is good or the last, all."""
+    z, log_weight = _weigh(target, proposal, _PILOT, rng)
+    weights, k = smoothed_weights(log_weight)
+    efficiency = weights_ess(weights) / len(z)
+    if not last and (efficiency < _GOOD_EFFICIENCY or k > _GOOD_K):
+        return z, log_weight, False
+    pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
+    if pool > _PILOT:
+        more, log_more = _weigh(target, proposal, pool - _PILOT, rng)
+        z, log_weight = np.concatenate([z, more]), np.concatenate([log_weight, log_more])
+    return z, log_weight, last or smoothed_weights(log_weight)[1] < _GOOD_K
 
 
 def _adapted(
