@@ -8,7 +8,9 @@ from __future__ import annotations
 import argparse
 import contextlib
 import os
+import signal
 import sys
+import threading
 from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 from typing import NoReturn, TextIO
@@ -180,16 +182,34 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _calibrate(chosen: argparse.Namespace) -> int:
+    with _terminable():
+        if chosen.again is not None:
+            return _again(chosen)
+        if chosen.resume is not None:
+            return _resume(chosen)
+        return _calibrate_anew(chosen)
+
+
+@contextlib.contextmanager
+def _terminable() -> Iterator[None]:
+    """Have SIGTERM end the command as Ctrl-C does: nothing half written, runs resumable."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGTERM, signal.default_int_handler)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)
+
+
+def _calibrate_anew(chosen: argparse.Namespace) -> int:
     from ladderfit.calibration import StoppedError, calibrate
     from ladderfit.files import first_free
     from ladderfit.ladder import read_ladder
     from ladderfit.shipped import sample_ladder
     from ladderfit.wording import summary_text
 
-    if chosen.again is not None:
-        return _again(chosen)
-    if chosen.resume is not None:
-        return _resume(chosen)
     path = sample_ladder() if chosen.file is None else Path(chosen.file)
     ladder = read_ladder(path)
     stated = {

@@ -193,32 +193,40 @@ def test_a_run_outlives_whoever_started_it(tmp_path: Path) -> None:
     assert read_result(tmp_path / "run").size == 768
 
 
-def interrupted(arguments: list[str], folder: Path) -> subprocess.CompletedProcess[str]:
-    """Interrupt a process once its run has kept some draws."""
+def kept_rows(folder: Path) -> int:
+    chain = folder / "chain.h5"
+    return read_commit(chain)[1].kept if chain.exists() else 0
+
+
+def interrupted(arguments: list[str], folder: Path, by: int) -> subprocess.CompletedProcess[str]:
+    """Send a signal to a process once its run has kept some more draws."""
+    before = kept_rows(folder)
     process = subprocess.Popen(
         [sys.executable, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
     )
     end = time.monotonic() + 120.0
-    while time.monotonic() < end and process.poll() is None:
-        chain = folder / "chain.h5"
-        if chain.exists() and read_commit(chain)[1].kept > 0:
-            break
+    while time.monotonic() < end and process.poll() is None and kept_rows(folder) == before:
         time.sleep(0.05)
-    process.send_signal(signal.SIGINT)
+    process.send_signal(by)
     out, err = process.communicate(timeout=120)
     return subprocess.CompletedProcess(arguments, process.returncode, out, err)
 
 
 def test_the_command_line_is_interrupted_and_resumed(from_files: Ladder, tmp_path: Path) -> None:
     folder = tmp_path / "run"
-    command = ["-m", "ladderfit", "calibrate", str(from_files.path), "--out", str(folder)]
-    command += ["--sampler", "ensemble"]
-    done = interrupted([*command, "--draws", str(LONG)], folder)
-    assert done.returncode == 130, done.stderr
-    assert done.stdout == ""
-    (line,) = done.stderr.splitlines()
-    assert line.startswith("ladderfit: stopped; ")
-    assert line.endswith(f"to go on: ladderfit calibrate --resume {folder}")
+    command = ["-m", "ladderfit", "calibrate"]
+    anew = [*command, str(from_files.path), "--out", str(folder), "--sampler", "ensemble"]
+    anew += ["--draws", str(LONG)]
+    for arguments, by in (
+        (anew, signal.SIGTERM),
+        ([*command, "--resume", str(folder)], signal.SIGINT),
+    ):
+        done = interrupted(arguments, folder, by)
+        assert done.returncode == 130, done.stderr
+        assert done.stdout == ""
+        (line,) = done.stderr.splitlines()
+        assert line.startswith("ladderfit: stopped; ")
+        assert line.endswith(f"to go on: ladderfit calibrate --resume {folder}")
     assert not (folder / "summary.json").exists()
     done = subprocess.run(
         [sys.executable, "-m", "ladderfit", "calibrate", "--resume", str(folder), "--draws", "200"],

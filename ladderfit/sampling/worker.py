@@ -167,6 +167,8 @@ class _Judge:
 
 def _open_chain(folder: RunFolder, joint: Posterior, seed: int) -> ChainFile:
     """Resume the chain, or begin one."""
+    for leftover in folder.path.glob(f".{folder.chain.name}.*.tmp"):  # of a killed worker
+        leftover.unlink()
     aim = target(joint)
     mark = fingerprint(joint.ladder)
     if not folder.chain.exists():
