@@ -73,8 +73,8 @@ def test_two_modes_are_both_drawn_and_reported():
 def test_heavy_tails_are_called_heavy(monkeypatch):
     """A Cauchy-like target under a lighter proposal that may not adapt: the k has to say so."""
     monkeypatch.setattr("ladderfit.sampling.direct._ROUNDS", 1)
-    density = multivariate_t(np.zeros(6), np.eye(6), df=1)
-    aim = target(lambda z: np.atleast_1d(density.logpdf(z)), 6)
+    density = multivariate_t(np.zeros(10), np.eye(10), df=1)
+    aim = target(lambda z: np.atleast_1d(density.logpdf(z)), 10)
     assert not draw_direct(aim, 4000, np.random.default_rng(1)).trusted
 
 
