@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import time
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -30,6 +29,8 @@ from ladderfit.sampling.ensemble import EnsembleState
 
 FloatArray = npt.NDArray[np.float64]
 Record = npt.NDArray[np.void]
+
+_TRIES = 1000
 
 
 @dataclass(frozen=True, eq=False)
@@ -82,12 +83,16 @@ class ChainView:
             If neither is.
         """
         kind = record_type(self.places.header.plan)
-        for _ in range(5):  # a reader so slow that both were replaced meanwhile tries again
+        before = b""
+        for _ in range(_TRIES):
             content = self._bytes(self.places.records, 2 * kind.itemsize)
             whole = [record for record in np.frombuffer(content, kind) if self._whole(record)]
-            if whole:
+            # One that is not whole may be changing just now, and the other be out of date.
+            if len(whole) == 2 or (content == before and whole):
                 return max(whole, key=lambda record: int(record["number"]))
-            time.sleep(0.02)
+            if content == before:
+                break
+            before = content
         raise InputError(chain_problem(self.path, "no whole record of a commit", ANEW))
 
     def rows(self, first: int, last: int) -> tuple[FloatArray, FloatArray]:
