@@ -57,7 +57,7 @@ def _name(kernel: Any) -> str:
 def _pool(process: int) -> ThreadPoolExecutor:
     """One pool of threads per process: a forked child inherits no threads."""
     del process
-    return ThreadPoolExecutor(1, thread_name_prefix="ladderfit")
+    return ThreadPoolExecutor(2, thread_name_prefix="ladderfit")
 
 
 def threads() -> int:
@@ -76,6 +76,7 @@ def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None
         part(0, size)
         return
     middle = size // 2
-    other = _pool(os.getpid()).submit(part, middle, size)
-    part(0, middle)
-    other.result()
+    pool = _pool(os.getpid())
+    halves = [pool.submit(part, 0, middle), pool.submit(part, middle, size)]
+    for half in halves:
+        half.result()

@@ -34,6 +34,7 @@ from ladderfit.kernels.compiling import threads
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.posterior.joint import posterior
 from ladderfit.sampling.direct import find_modes
+from ladderfit.sampling.moves import moves
 from ladderfit.sampling.run import draw, target
 
 SAMPLE = Path(__file__).parents[2] / "sample_data" / "sample.toml"
@@ -91,9 +92,8 @@ def run_ensemble(ladder: Ladder, steps: int = 1500, walkers: int = 48) -> Outcom
     rng = np.random.default_rng(2)
     factor = np.linalg.cholesky(mode.covariance)
     start = mode.point + rng.standard_normal((walkers, joint.dimension)) @ factor.T
-    moves = [(emcee.moves.DEMove(), 0.8), (emcee.moves.DESnookerMove(), 0.2)]
     sampler = emcee.EnsembleSampler(
-        walkers, joint.dimension, joint.log_density, vectorize=True, moves=moves
+        walkers, joint.dimension, joint.log_density, vectorize=True, moves=moves()
     )
     state = sampler.run_mcmc(start, 300)
     sampler.reset()
