@@ -246,7 +246,7 @@ def main() -> None:
             ]
             table(title, outcomes)
     for cepheids in (1_000, 10_000, 100_000, 1_000_000):
-        ladder = reference_ladder(cepheids)
+        ladder = reference_ladder(cepheids=cepheids)
         outcomes = [run_direct(ladder), run_ensemble(ladder, 200)]
         table(f"{cepheids:,} Cepheids in 38 hosts, the rest as before", outcomes)
 
