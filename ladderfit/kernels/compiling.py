@@ -10,11 +10,13 @@ from __future__ import annotations
 import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import AbstractContextManager
 from functools import cache
 from pathlib import Path
 from typing import Any, TypeVar, cast
 
 import numba
+from threadpoolctl import ThreadpoolController
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -68,6 +70,16 @@ def threads() -> int:
     asked = os.environ.get("LADDERFIT_THREADS", "")
     cores = os.cpu_count() or 1
     return max(1, min(int(asked) if asked.isdigit() else 2, cores, 2))
+
+
+@cache
+def _controller() -> ThreadpoolController:
+    return ThreadpoolController()
+
+
+def one_blas_thread() -> AbstractContextManager[Any]:
+    """Keep BLAS to one thread for a while: its idle threads spin on the core a kernel needs."""
+    return cast(AbstractContextManager[Any], _controller().limit(limits=1, user_api="blas"))
 
 
 def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None:

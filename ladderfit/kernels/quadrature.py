@@ -223,10 +223,7 @@ def log_parallax_integrals(
         threads.
     """
     shape = distance_like.shape
-    inputs = [  # written out, so that one compiled version serves all
-        np.array(np.broadcast_to(values, shape), dtype=float, order="C")
-        for values in (distance_like, variance, parallax, error)
-    ]
+    inputs = [_written_out(values, shape) for values in (distance_like, variance, parallax, error)]
     result = np.empty(shape)
 
     def part(start: int, stop: int) -> None:
@@ -235,3 +232,10 @@ def log_parallax_integrals(
 
     in_halves(part, len(result), work=result.size)
     return result
+
+
+def _written_out(values: FloatArray, shape: tuple[int, ...]) -> FloatArray:
+    """The values at full shape in one memory layout, so that one compiled version serves all."""
+    if values.shape == shape and values.flags.c_contiguous and values.flags.writeable:
+        return values
+    return np.array(np.broadcast_to(values, shape), dtype=float, order="C")

@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.diagnostics import TRUSTED_K
-from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
+from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold, one_blas_thread
 from ladderfit.ladder import Ladder
 from ladderfit.names import HEADLINE, base_name, parameter
 from ladderfit.posterior.determined import check_determined
@@ -67,8 +67,9 @@ def drawn(
     if is_cold():
         announce_compilation(progress)
     rng = np.random.default_rng(seed)
-    found = draw_direct(aim, draws, rng, progress)
-    values = ordered(joint.draw(found.z, rng))
+    with one_blas_thread():
+        found = draw_direct(aim, draws, rng, progress)
+        values = ordered(joint.draw(found.z, rng))
     diagnostics = _diagnostics(joint, found, values, seed)
     return Result(joint.ladder.choices, values, diagnostics, joint.ladder), found
 
