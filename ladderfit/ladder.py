@@ -35,7 +35,7 @@ from ladderfit.tables import DataTable
 __all__ = ["AnchorInUse", "Ladder", "Source", "build_ladder", "read_ladder"]
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Ladder:
     """Tables and choices of one calibration, checked; a change returns a copy.
 
@@ -82,6 +82,13 @@ class Ladder:
     notes: tuple[str, ...]
     sources: Mapping[str, Source]
     _parts: Parts = field(repr=False)
+
+    def __repr__(self) -> str:
+        """The title and how much of each table takes part."""
+        parts = [
+            f"{section} {kept.kept:,} of {kept.total:,}" for section, kept in self.kept.items()
+        ]
+        return f"<Ladder {self.choices.title!r}: {', '.join(parts)}; {len(self.hosts)} hosts>"
 
     def change(self, changes: Mapping[str, Any]) -> Ladder:
         """A copy with choices changed; samples of untouched sections are the same objects.

@@ -55,7 +55,7 @@ class Diagnostics:
     notes: tuple[str, ...] = ()
 
 
-@dataclass(frozen=True, eq=False)
+@dataclass(frozen=True, eq=False, repr=False)
 class Result:
     """The joint posterior of one ladder as equally weighted draws.
 
@@ -75,6 +75,13 @@ class Result:
     draws: Mapping[str, FloatArray]
     diagnostics: Diagnostics
     source: Ladder | None = None
+
+    def __repr__(self) -> str:
+        """The title and the size; `summary` has the numbers."""
+        return (
+            f"<Result {self.choices.title!r}: {self.size:,} draws of {len(self.draws)} parameters "
+            f"by {self.diagnostics.sampler!r}; see .summary()>"
+        )
 
     @property
     def ladder(self) -> Ladder:

@@ -1,6 +1,7 @@
 """Latency and memory of the workbench, measured in a real browser.
 
-Run it by hand on a quiet machine: ``python tests/measure_workbench.py [CHANGES]``.
+Run it by hand on a quiet machine: ``python tests/measure_workbench.py [CHANGES [FILE]]``;
+without a ladder file, on the sample.
 Printed are medians and 90 % points in ms, and the kernel's memory from change 20 on.
 """
 
@@ -98,7 +99,7 @@ def main() -> None:
     changes = int(sys.argv[1]) if len(sys.argv) > 1 else 200
     with (
         tempfile.TemporaryDirectory() as short,
-        workbench_server(Path(short) / "work", Path(short)) as (address, token),
+        workbench_server(Path(short) / "work", Path(short), *sys.argv[2:3]) as (address, token),
         sync_playwright() as playwright,
     ):
         browser = playwright.chromium.launch(executable_path=chromium_path(), args=ARGUMENTS)

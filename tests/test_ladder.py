@@ -384,3 +384,10 @@ def test_order_of_rows_does_not_matter(order: list[int]) -> None:
         return dict(zip(sample.star, zip(hosts, sample.magnitude, strict=True), strict=True))
 
     assert by_star(ladder) == by_star(expected)
+
+
+def test_a_ladder_shows_itself_in_one_line() -> None:
+    shown = repr(build_ladder(choices(), tables()))
+    assert shown.startswith("<Ladder ")
+    assert "hosts" in shown
+    assert len(shown) < 200
