@@ -148,11 +148,6 @@ def coefficient_names(choices: Choices) -> tuple[str, ...]:
     return tuple(design(choices, _NOBODY, ()))
 
 
-def design_matrix(choices: Choices, stars: StarSample, hosts: tuple[str, ...]) -> FloatArray:
-    """The columns of `design`, shape (n, k)."""
-    return np.stack(list(design(choices, stars, hosts).values()), axis=1)
-
-
 def period_sensitivity(choices: Choices, stars: StarSample, hosts: tuple[str, ...]) -> FloatArray:
     """Derivative of every column with respect to log10 period, shape (n, k)."""
     return _sensitivity(choices, star_inputs(choices, stars, hosts), "x")
