@@ -19,7 +19,8 @@ import pytest
 import tomlkit
 
 import ladderfit.calibration
-from ladderfit.cli import main, progress_on
+from ladderfit.cli import main
+from ladderfit.commands.terminal import progress_on
 from ladderfit.errors import SamplingError
 from ladderfit.rounding import Interval
 from ladderfit.store import read_result

@@ -55,7 +55,9 @@ ORDER = """
     workbench.canvas.panels workbench.canvas
     workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.screen workbench
-    launcher cli __main__
+    launcher
+    commands.terminal commands.calibrate commands.draft commands.mock commands.workbench commands
+    cli __main__
 """.split()
 
 TOP_LEVEL = {
