@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import pandas as pd
@@ -28,6 +28,7 @@ def along_distance_priors(
     *,
     seed: int | None = None,
     draws: int | None = None,
+    progress: Callable[[float], None] | None = None,
 ) -> dict[str, Result]:
     """Draw a ladder's posterior under each distance prior of its parallax stars.
 
@@ -41,6 +42,8 @@ def along_distance_priors(
         Values of the key anchors.parallaxes.distance_prior, by what to call them.
     seed, draws : int, optional
         In place of the ladder's own.
+    progress : callable, optional
+        Told the fraction done.
 
     Returns
     -------
@@ -56,7 +59,9 @@ def along_distance_priors(
     """
     found: dict[str, Result] = {}
     refused: list[InputError] = []
-    for name, prior in priors.items():
+    for place, (name, prior) in enumerate(priors.items()):
+        if progress is not None:
+            progress(place / len(priors))
         changes: dict[str, Any] = {f"{_KEY}.distance_prior": prior}
         if prior != "flat in modulus":
             changes[f"{_KEY}.modulus_bounds"] = None

@@ -8,9 +8,10 @@ is computed by the same instructions in the same order on one core or on two.
 from __future__ import annotations
 
 import os
-from collections.abc import Callable
+import threading
+from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
-from contextlib import AbstractContextManager
+from contextlib import contextmanager
 from functools import cache
 from pathlib import Path
 from typing import Any, TypeVar, cast
@@ -77,9 +78,27 @@ def _controller() -> ThreadpoolController:
     return ThreadpoolController()
 
 
-def one_blas_thread() -> AbstractContextManager[Any]:
-    """Keep BLAS to one thread for a while: its idle threads spin on the core a kernel needs."""
-    return cast(AbstractContextManager[Any], _controller().limit(limits=1, user_api="blas"))
+_OVERLAP = threading.Lock()
+_WITHIN: list[Any] = [0, None]  # threads within the block, and what lifts the limit
+
+
+@contextmanager
+def one_blas_thread() -> Iterator[None]:
+    """Keep BLAS to one thread for a while: its idle threads spin on the core a kernel needs.
+
+    Threads may overlap in it: the first sets the limit and the last lifts it.
+    """
+    with _OVERLAP:
+        if _WITHIN[0] == 0:
+            _WITHIN[1] = _controller().limit(limits=1, user_api="blas")
+        _WITHIN[0] += 1
+    try:
+        yield
+    finally:
+        with _OVERLAP:
+            _WITHIN[0] -= 1
+            if _WITHIN[0] == 0:
+                _WITHIN[1].restore_original_limits()
 
 
 def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None:
