@@ -98,6 +98,43 @@ def rounded(value: float, error: float) -> Rounded:
 
 
 @dataclass(frozen=True)
+class RoundedArms:
+    """A value and its two unequal errors as text, all to one decimal place."""
+
+    value: str
+    below: str
+    above: str
+
+    def __str__(self) -> str:
+        """For example ``0.12 +0.05 −0.03``."""
+        return f"{self.value} +{self.above} {MINUS}{self.below}"
+
+
+def rounded_arms(value: float, below: float, above: float) -> RoundedArms | Rounded:
+    """Round a value with unequal errors; the smaller error decides the place.
+
+    Parameters
+    ----------
+    value, below, above : float
+        The errors are lengths, in the value's unit.  Where one of them is zero or
+        not finite, the value stands alone, as from `rounded`.
+
+    Returns
+    -------
+    RoundedArms or Rounded
+
+    Examples
+    --------
+    >>> print(rounded_arms(0.1234, 0.0311, 0.0528))
+    0.123 +0.053 −0.031
+    """
+    if not (math.isfinite(value) and all(math.isfinite(a) and a > 0.0 for a in (below, above))):
+        return rounded(value, 0.0)
+    place = min(last_place(below), last_place(above))
+    return RoundedArms(to_place(value, place), to_place(below, place), to_place(above, place))
+
+
+@dataclass(frozen=True)
 class Interval:
     """One parameter's posterior in a few numbers, in the parameter's unit.
 
