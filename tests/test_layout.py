@@ -15,21 +15,22 @@ import pytest
 ORDER = """
     errors rounding
     units files shipped priors names schema cosmologies
-    choices.columns choices.covariance choices.stars choices.relation choices.parallaxes
-    choices.anchors
-    choices.third_rung choices.sampling choices.whole choices samples
+    choices.columns choices.covariance choices.photometry choices.stars choices.relation choices.parallaxes
+    choices.anchors choices.photometry_checks
+    choices.peak_relation choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
-    kinds tables table_memory table_files rows star_values parallax_inputs select_stars
-    select_supernovae
+    kinds tables table_memory table_files rows star_values parallax_inputs host_inputs
+    select_stars
+    peak_inputs select_supernovae
     covariances covariance_rows correlated
-    relations ladder_file assembly consistency ladder ladder_copy
-    kernels.compiling kernels.quadrature kernels.sightlines kernels.detection
+    relations peak_terms ladder_file assembly consistency ladder ladder_copy
+    kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels
+    kernels.coupled kernels.populations kernels
     posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
     posterior.split
-    posterior.supernovae posterior.coupled posterior.joint posterior.determined posterior
+    posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file

@@ -30,7 +30,16 @@ _ALWAYS_USED = "elimination.eliminate"
 
 def compiled(function: F) -> F:
     """Compile with numba, cached between processes, without the interpreter's lock."""
-    kernel = numba.njit(cache=True, nogil=True, error_model="numpy")(function)
+    return _kernel(function)
+
+
+def compiled_fused(function: F) -> F:
+    """The same where a product and a sum may be rounded once instead of twice."""
+    return _kernel(function, fastmath={"contract"})
+
+
+def _kernel(function: F, **options: Any) -> F:
+    kernel = numba.njit(cache=True, nogil=True, error_model="numpy", **options)(function)
     _KERNELS.append(kernel)
     return cast(F, kernel)
 

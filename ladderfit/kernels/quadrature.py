@@ -6,15 +6,14 @@ For a star of apparent magnitude m and absolute magnitude M, with a = m - M,
 
 one dimension per star and per draw.  A bright star's parallax pins mu far more
 tightly than its magnitude does, a faint one's hardly at all, so nodes laid over
-either factor alone fail.  The trapezoidal rule, which converges geometrically
-for smooth integrands that vanish at both ends, is applied in one of two ways:
+either factor alone fail.
 
 *Narrow.*  Where the product is narrower than a sixth of a magnitude it is close
-to a Gaussian: nodes march outward in mu from its own peak, found by safeguarded
-Newton steps, until the integrand has died away.
+to a normal: Gauss-Hermite nodes lie on its own peak (`ladderfit.kernels.narrow`).
 
-*Stretched.*  Otherwise in a coordinate y in which both factors have unit width
-at every distance,
+*Stretched.*  Otherwise the trapezoidal rule, which converges geometrically for
+smooth integrands that vanish at both ends, in a coordinate y in which both
+factors have unit width at every distance,
 
     u = 10^(2 - 0.2 mu) k sqrt(v) / s,   u = log(1 + e^y),   k = ln(10) / 5.
 
@@ -32,65 +31,17 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled, in_halves
+from ladderfit.kernels.narrow import SCRATCH, K, narrow_row
 
 FloatArray = npt.NDArray[np.float64]
 
-K = math.log(10.0) / 5.0
 LOG_2PI = math.log(2.0 * math.pi)
 
-_NARROW = 0.17  # mag: width of the product up to which the narrow way is taken
-_NARROW_STEP = 1.0  # of that width, between nodes
-_FLOOR = 18.0  # the march ends where the log integrand is this far below its peak
 _REACH = 6.0  # stretched: widths beyond the outer of the two peaks
 _STEP = 0.75  # stretched: widths between nodes
 _WIDEST = 40.0  # stretched: widths between the peaks beyond which the range is scanned
 _MOST_NODES = 4000  # reached only where a scatter of many magnitudes meets a negative parallax
 _DEPTH = 40.0  # a scanned range is narrowed to where the log integrand is this near its peak
-
-
-@compiled
-def _narrow(a: float, v: float, plx: float, err: float) -> float:
-    """Log of the integral of both exponentials over mu; NaN where this way does not apply."""
-    mu = a
-    per_mag, per_plx = 1.0 / v, 1.0 / (err * err)
-    parallax = math.exp(K * (10.0 - mu))
-    width = 0.0
-    settled = False
-    for _ in range(8):
-        slope = -(mu - a) * per_mag + K * parallax * (parallax - plx) * per_plx
-        pull = K * parallax
-        width = 1.0 / math.sqrt(per_mag + pull * pull * per_plx)
-        step = slope * width * width
-        if abs(step) > 0.5:
-            step = math.copysign(0.5, step)
-        mu += step
-        parallax *= math.exp(-K * step)
-        if abs(step) < 0.2 * width:
-            settled = True
-            break
-    if not settled or width > _NARROW:
-        return math.nan
-    curvature = per_mag + K * K * parallax * (2.0 * parallax - plx) * per_plx
-    relative = curvature * width * width
-    if relative < 0.4 or relative > 2.5:
-        return math.nan
-    step = _NARROW_STEP * width / math.sqrt(max(relative, 1.0))
-    off, miss = mu - a, parallax - plx
-    top = 0.5 * (off * off * per_mag + miss * miss * per_plx)
-    total = 1.0
-    for side in range(2):
-        stride = step if side == 0 else -step
-        ratio = math.exp(-K * stride)
-        here, far = off, parallax
-        while True:
-            here += stride
-            far *= ratio
-            miss = far - plx
-            drop = top - 0.5 * (here * here * per_mag + miss * miss * per_plx)
-            if drop < -_FLOOR:
-                break
-            total += math.exp(drop)
-    return math.log(total * step) - top
 
 
 @compiled
@@ -168,15 +119,6 @@ def _narrowed(
 
 
 @compiled
-def _star(a: float, v: float, plx: float, err: float, tilt: float) -> float:
-    shifted = a + tilt * v
-    value = _narrow(shifted, v, plx, err)
-    if math.isnan(value):
-        value = _stretched(shifted, math.sqrt(v), plx, err)
-    return value + tilt * (a + 0.5 * tilt * v) - 0.5 * math.log(v) - math.log(err) - LOG_2PI
-
-
-@compiled
 def _fill(
     result: FloatArray,
     distance_like: FloatArray,
@@ -185,15 +127,16 @@ def _fill(
     error: FloatArray,
     tilt: float,
 ) -> None:
+    scratch = np.empty((SCRATCH, result.shape[1]))
     for draw in range(result.shape[0]):
+        a, v, plx, err = distance_like[draw], variance[draw], parallax[draw], error[draw]
+        narrow_row(result[draw], a, v, plx, err, tilt, scratch)
         for star in range(result.shape[1]):
-            result[draw, star] = _star(
-                distance_like[draw, star],
-                variance[draw, star],
-                parallax[draw, star],
-                error[draw, star],
-                tilt,
-            )
+            if math.isnan(result[draw, star]):
+                shifted = a[star] + tilt * v[star]
+                value = _stretched(shifted, math.sqrt(v[star]), plx[star], err[star])
+                value += tilt * (a[star] + 0.5 * tilt * v[star])
+                result[draw, star] = value - 0.5 * math.log(v[star]) - math.log(err[star]) - LOG_2PI
 
 
 def log_parallax_integrals(
