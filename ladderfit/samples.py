@@ -45,6 +45,27 @@ class ParallaxExtras:
 
 
 @dataclass(frozen=True)
+class Photometry:
+    """What a Wesenheit index is made of; variances are None where only its total error is known.
+
+    Attributes
+    ----------
+    band, colour : array, shape (n,)
+        Magnitude and colour [mag].
+    band_variance, colour_variance : array, shape (n,), or None
+        In mag^2.
+    covariance : array, shape (n,), or None
+        Of the two, from a band that stands in both [mag^2].
+    """
+
+    band: FloatArray
+    colour: FloatArray
+    band_variance: FloatArray | None = None
+    colour_variance: FloatArray | None = None
+    covariance: FloatArray | None = None
+
+
+@dataclass(frozen=True)
 class StarSample:
     """Cepheids that take part, sorted by host.
 
@@ -74,6 +95,13 @@ class StarSample:
         not given.
     extras : ParallaxExtras
         Of parallax stars.
+    photometry : Photometry or None
+        None where the magnitude is one band.
+    loadings : array, shape (n, terms), or None
+        On photometric errors that a host's stars share, in the order of the choices.
+    headroom : array, shape (n,), or None
+        Limit of the host minus the star's magnitude in that band [mag]; NaN where
+        the host has none.
     """
 
     star: TextArray
@@ -90,6 +118,9 @@ class StarSample:
     log_period_error: FloatArray | None = None
     metallicity_error: FloatArray | None = None
     extras: ParallaxExtras = field(default_factory=ParallaxExtras)
+    photometry: Photometry | None = None
+    loadings: FloatArray | None = None
+    headroom: FloatArray | None = None
 
     def __len__(self) -> int:
         """Number of stars."""

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -11,6 +11,13 @@ import pandas as pd
 
 from ladderfit.choices import Cepheids, Magnitude, Parallaxes
 from ladderfit.errors import raise_if
+from ladderfit.host_inputs import (
+    HostValues,
+    cut_hosts,
+    cut_limits,
+    host_values,
+    require_host_columns,
+)
 from ladderfit.kinds import MAGNITUDE
 from ladderfit.parallax_inputs import (
     KINDS,
@@ -20,7 +27,7 @@ from ladderfit.parallax_inputs import (
     used_columns,
 )
 from ladderfit.rows import Rows, floats, integers
-from ladderfit.samples import FloatArray, IntArray, Kept, StarSample, frozen
+from ladderfit.samples import FloatArray, IntArray, Kept, Photometry, StarSample, frozen
 from ladderfit.star_values import (
     StarValues,
     conversion_notes,
@@ -77,17 +84,22 @@ def select_cepheids(table: DataTable, section: Cepheids, *, metallicity: bool) -
     rows = Rows(table, "cepheids")
     columns = star_columns(section.columns, metallicity=metallicity)
     require_stars(rows, columns, section.magnitude, "cepheids.magnitude")
+    require_host_columns(rows, section)
     star, host = _star_names(table, columns), table.texts(columns["host"])
     rows.set_aside(section.set_aside, star, "star", host)
     rows.need(star, "star", columns.get("star"))
     rows.need(host, "host", columns["host"])
     rows.unique("the star", {"star": star, "host": host}, columns.get("star"), _SAME_NAME)
     values = star_values(rows, columns, section, section.magnitude)
+    of_hosts = host_values(rows, section, host)
     system = cut_stars(rows, columns, section, values)
+    cut_hosts(rows, section, host, values.period)
+    cut_limits(rows, section, of_hosts)
     left, kept = rows.finish("Cepheid")
     codes, present = pd.factorize(host.codes[left])
     order = np.argsort(codes, kind="stable")
     sample = _star_sample(star, values, left[order], codes[order], system, section.overtones)
+    sample = _with_host_values(sample, of_hosts, left[order])
     return CepheidSelection(
         sample,
         tuple(str(host.labels[code]) for code in present),
@@ -163,4 +175,21 @@ def _star_sample(
         system=None if system is None else frozen(system.values[left], np.str_),
         log_period_error=taken(values.log_period_error),
         metallicity_error=taken(values.metallicity_error),
+        photometry=_taken_photometry(values.photometry, left),
     )
+
+
+def _with_host_values(sample: StarSample, values: HostValues, left: IntArray) -> StarSample:
+    headroom, loadings = values.headroom, values.loadings
+    return replace(
+        sample,
+        headroom=None if headroom is None else floats(headroom[left]),
+        loadings=None if loadings is None else floats(loadings[left]),
+    )
+
+
+def _taken_photometry(whole: Photometry | None, left: IntArray) -> Photometry | None:
+    if whole is None:
+        return None
+    parts = (getattr(whole, part.name) for part in fields(whole))
+    return Photometry(*(None if part is None else floats(part[left]) for part in parts))

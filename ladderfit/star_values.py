@@ -25,9 +25,15 @@ from ladderfit.physics.overtones import (
     fundamental_stretch,
     within_range,
 )
-from ladderfit.physics.photometry import combine, combine_variance, index_weights
+from ladderfit.physics.photometry import (
+    colour_weights,
+    combine,
+    combine_covariance,
+    combine_variance,
+    index_weights,
+)
 from ladderfit.rows import Rows
-from ladderfit.samples import FloatArray, IntArray
+from ladderfit.samples import FloatArray, IntArray, Photometry
 from ladderfit.tables import BoolArray, Texts, and_more, shown
 
 Section = Cepheids | Parallaxes
@@ -60,6 +66,8 @@ class StarValues:
         First-overtone pulsators.
     log_period_error, metallicity_error : array or None
         In dex.
+    photometry : Photometry or None
+        Of an index.
     """
 
     period: FloatArray
@@ -71,6 +79,7 @@ class StarValues:
     overtone: BoolArray
     log_period_error: FloatArray | None
     metallicity_error: FloatArray | None
+    photometry: Photometry | None
 
 
 def star_columns(columns: Mapping[str, str], *, metallicity: bool) -> dict[str, str]:
@@ -117,7 +126,7 @@ def star_values(
         period = np.where(overtone, _unlogged(log_period), period)
         if error is not None:
             error = np.where(overtone, error * fundamental_stretch(observed, law), error)
-    mean, variance = _magnitudes(rows, magnitude)
+    mean, variance, photometry = _magnitudes(rows, magnitude)
     metallicity = np.full(rows.table.rows, np.nan)
     if "metallicity" in columns:
         metallicity = rows.number("metallicity", columns["metallicity"], METALLICITY)
@@ -136,6 +145,7 @@ def star_values(
         overtone=overtone,
         log_period_error=error,
         metallicity_error=metallicity_error,
+        photometry=photometry,
     )
 
 
@@ -164,8 +174,10 @@ def _unlogged(log_period: FloatArray) -> FloatArray:
         return np.asarray(10.0**log_period)
 
 
-def _magnitudes(rows: Rows, magnitude: Magnitude) -> tuple[FloatArray, FloatArray]:
-    """The magnitude or index [mag] and its variance [mag^2]."""
+def _magnitudes(
+    rows: Rows, magnitude: Magnitude
+) -> tuple[FloatArray, FloatArray, Photometry | None]:
+    """The magnitude or index [mag], its variance [mag^2], and what an index is made of."""
     weights = _magnitude_weights(magnitude)
     bands = {name: rows.number(name, magnitude.bands[name], MAGNITUDE) for name in weights}
     errors = {
@@ -174,7 +186,25 @@ def _magnitudes(rows: Rows, magnitude: Magnitude) -> tuple[FloatArray, FloatArra
     }
     total = "total" in errors
     variance = errors["total"] ** 2 if total else combine_variance(weights, errors)
-    return combine(weights, bands), variance
+    return combine(weights, bands), variance, _photometry(magnitude, bands, errors)
+
+
+def _photometry(
+    magnitude: Magnitude, bands: Mapping[str, FloatArray], errors: Mapping[str, FloatArray]
+) -> Photometry | None:
+    if magnitude.wesenheit is None:
+        return None
+    band = {magnitude.wesenheit.band: 1.0}
+    colour = colour_weights(magnitude.wesenheit.colour_bands)
+    values = combine(band, bands), combine(colour, bands)
+    if "total" in errors:
+        return Photometry(*values)
+    return Photometry(
+        *values,
+        combine_variance(band, errors),
+        combine_variance(colour, errors),
+        combine_covariance(band, colour, errors),
+    )
 
 
 def _magnitude_weights(magnitude: Magnitude) -> dict[str, float]:

@@ -23,6 +23,7 @@ from ladderfit.choices.parallaxes import (
     Parallaxes,
     Selection,
 )
+from ladderfit.choices.photometry import Completeness, Reddening, SharedTerm
 from ladderfit.choices.relation import Group, Metallicity, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids, Magnitude, Overtones, PeriodRatio, Wesenheit
@@ -36,6 +37,7 @@ __all__ = [
     "Choices",
     "Cluster",
     "Columns",
+    "Completeness",
     "Cosmology",
     "Covariance",
     "Correlation",
@@ -53,11 +55,13 @@ __all__ = [
     "Parallaxes",
     "PeriodRatio",
     "Range",
+    "Reddening",
     "Relation",
     "Sampling",
     "Selection",
     "SetAside",
     "SharedError",
+    "SharedTerm",
     "Supernovae",
     "Wesenheit",
 ]

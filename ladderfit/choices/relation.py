@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal
 
+from ladderfit.choices.photometry import Reddening
 from ladderfit.errors import Problem
 from ladderfit.schema import choice
 
@@ -76,6 +77,9 @@ class Relation:
     )
     zero_points: tuple[str, ...] = choice("groups with a zero-point offset", default=())
     slopes: tuple[str, ...] = choice("groups with a slope offset", default=())
+    reddening: Reddening | Literal["fixed"] = choice(
+        "whether the ratio of the Wesenheit index is a parameter", default="fixed"
+    )
 
     @property
     def scatter_groups(self) -> tuple[str, ...]:

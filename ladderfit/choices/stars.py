@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Literal
 
@@ -14,6 +14,7 @@ from ladderfit.choices.columns import (
     period_faults,
     range_faults,
 )
+from ladderfit.choices.photometry import Completeness, SharedTerm
 from ladderfit.errors import Problem, nearest
 from ladderfit.schema import choice
 
@@ -145,6 +146,13 @@ class Cepheids:
         default="Feast & Catchpole 1997",
     )
     set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
+    shortest: Mapping[str, float] = choice(
+        "hosts with a shortest period of their own [d]", default_factory=dict
+    )
+    completeness: Completeness | None = choice("magnitude limits of the hosts", default=None)
+    shared: Mapping[str, SharedTerm] = choice(
+        "photometric errors that a host's stars share", default_factory=dict
+    )
 
     def check(self) -> Iterator[Problem]:
         """Roles and ranges."""

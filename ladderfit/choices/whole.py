@@ -12,13 +12,14 @@ from ladderfit.choices.anchors import Anchors, Hosts
 from ladderfit.choices.columns import column_faults
 from ladderfit.choices.covariance import Covariance
 from ladderfit.choices.parallaxes import Parallaxes
+from ladderfit.choices.photometry_checks import completeness_faults, reddening_faults
 from ladderfit.choices.relation import Group, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids
 from ladderfit.choices.third_rung import Expansion, Supernovae
 from ladderfit.errors import InputError, Problem, nearest, raise_if
-from ladderfit.names import PARAMETERS, base_name, parameter, with_group
-from ladderfit.priors import Fixed, Prior
+from ladderfit.names import PARAMETERS, base_name, group_of, parameter, with_group
+from ladderfit.priors import Fixed, Normal, Prior
 from ladderfit.schema import choice
 
 
@@ -123,10 +124,7 @@ class Choices:
         for stated in (name, base_name(name)):
             if stated in self.priors:
                 return self.priors[stated]
-        stars = self.anchors.parallaxes
-        if name == "distance_length" and stars is not None and stars.exponential is not None:
-            return Fixed(stars.exponential)
-        default = parameter(name).prior
+        default = _default_of_file(self, name) or parameter(name).prior
         if default is None:
             raise KeyError(name)
         return default
@@ -150,12 +148,21 @@ class Choices:
         """Whether the prior in force was chosen, that is, differs from the default."""
         return self.prior(name) != parameter(name).prior
 
+    def _photometry_faults(self) -> Iterator[Problem]:
+        yield from reddening_faults(self.relation, self.cepheids, self.anchors.parallaxes)
+        covariances = {
+            "the covariance of peaks": self.peak_covariance is not None,
+            "anchors.covariance": self.anchors.covariance is not None,
+        }
+        yield from completeness_faults(self.relation, self.cepheids, covariances=covariances)
+
     def check(self) -> Iterator[Problem]:
         """Sections that need one another."""
         yield from _prior_faults(self.priors)
         yield from _group_faults(self.relation, self.anchors.parallaxes, self.groups)
         yield from _peak_faults(self)
         yield from _magnitude_faults(self.cepheids, self.anchors.parallaxes)
+        yield from self._photometry_faults()
         sections = {"cepheids": self.cepheids, "anchors.parallaxes": self.anchors.parallaxes}
         for key, section in sections.items():
             if section is None or self.relation.metallicity == "none":
@@ -174,6 +181,27 @@ class Choices:
                 "[supernovae] and [expansion]",
                 remedy="add a section",
             )
+
+
+RATIO_WIDTH = 0.5  # of the stated ratio: width of its default prior
+
+
+def _default_of_file(choices: Choices, name: str) -> Prior | None:
+    """Defaults that follow from another choice: a stated length, ratio or error."""
+    stars, cepheids = choices.anchors.parallaxes, choices.cepheids
+    if name == "distance_length" and stars is not None and stars.exponential is not None:
+        return Fixed(stars.exponential)
+    if base_name(name) == "shared_photometry" and cepheids is not None:
+        term = cepheids.shared.get(str(group_of(name)))
+        if term is not None and term.error is not None:
+            return Fixed(term.error)
+    if name == "reddening_ratio":
+        sections = (cepheids, stars)
+        for magnitude in (s.magnitude for s in sections if s is not None):
+            if magnitude is not None and magnitude.wesenheit is not None:
+                ratio = magnitude.wesenheit.ratio
+                return Normal(ratio, RATIO_WIDTH * abs(ratio) or RATIO_WIDTH)
+    return None
 
 
 def _prior_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:

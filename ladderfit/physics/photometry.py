@@ -55,6 +55,21 @@ def index_weights(band: str, colour: Sequence[str], ratio: float) -> dict[str, f
     return weights
 
 
+def colour_weights(colour: Sequence[str]) -> dict[str, float]:
+    """The weight of each measured quantity in a colour: two bands, blue first, or one colour."""
+    return dict(zip(colour, (1.0, -1.0), strict=False))
+
+
+def combine_covariance(
+    one: Mapping[str, float], other: Mapping[str, float], errors: Mapping[str, FloatArray]
+) -> FloatArray:
+    """Covariance [mag^2] of two sums of quantities with independent `errors` [mag], shape (n,)."""
+    size = np.zeros_like(next(iter(errors.values())))
+    for name in one.keys() & other.keys():
+        size = size + one[name] * other[name] * errors[name] ** 2
+    return np.asarray(size, float)
+
+
 def combine(weights: Mapping[str, float], magnitudes: Mapping[str, FloatArray]) -> FloatArray:
     """The weighted sum of magnitudes and colours [mag], shape (n,)."""
     return np.asarray(sum(weight * magnitudes[name] for name, weight in weights.items()), float)
