@@ -12,6 +12,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from ladderfit.kernels.reduced import SumTable
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.determined import check_determined
 from ladderfit.posterior.joint import Posterior, posterior
@@ -62,6 +63,28 @@ class WarmDrawer:
         self._mode = found.modes[0] if len(found.modes) == 1 else None
         return result
 
+    def aside(self, ladder: Ladder, *, draws: int | None = None, seed: int | None = None) -> Result:
+        """As `draw`, but the drawer stays where it is.
+
+        The result depends on where the drawer stands and on the arguments alone, to the
+        last digit, not on what else was drawn aside.
+
+        Raises
+        ------
+        UndeterminedError
+            If the distance scale is undetermined.
+        SamplingError
+            If the posterior cannot be drawn.
+        """
+        place = self._last, self._mode, self._phi
+        kept = [(tables, list(tables)) for tables in _tables(self._last)]
+        try:
+            return self.draw(ladder, draws=draws, seed=seed)
+        finally:
+            self._last, self._mode, self._phi = place
+            for tables, before in kept:  # finer ones were put in for other scatters
+                tables[:] = before
+
     def _near(self, joint: Posterior, aim: Target) -> Near | None:
         """The last mode, where its parameters still exist with the same kind of coordinate."""
         if self._last is None or self._mode is None:
@@ -76,3 +99,9 @@ class WarmDrawer:
                 point[place] = self._mode.point[before]
                 width[place] = max(deviation[before], _NARROWEST * aim.scale[place])
         return Near(point, width)
+
+
+def _tables(joint: Posterior | None) -> list[list[SumTable]]:
+    """The tabulated sums of a posterior, which later ones share with it."""
+    rows = () if joint is None else (getattr(block, "rows", None) for block in joint.blocks)
+    return [each.tables for each in rows if hasattr(each, "tables")]
