@@ -48,6 +48,67 @@ def _exp_less_one(y: float) -> float:
 
 
 @compiled_fused
+def _climb(
+    mu: FloatArray,
+    parallax: FloatArray,
+    curvature: FloatArray,
+    step: FloatArray,
+    shifted: FloatArray,
+    per_mag: FloatArray,
+    per_plx: FloatArray,
+    plx: FloatArray,
+) -> None:
+    """Take every `mu` and its parallax to the peak, together; fills the first four arguments."""
+    n = len(mu)
+    for i in range(n):
+        mu[i] = shifted[i]
+        parallax[i] = math.exp(K * (10.0 - mu[i]))
+    for _ in range(_STEPS):
+        moving = 0
+        for i in range(n):
+            pull = K * parallax[i]
+            bent = per_mag[i] + pull * pull * per_plx[i]
+            push = (shifted[i] - mu[i]) * per_mag[i] + pull * (parallax[i] - plx[i]) * per_plx[i]
+            move = min(max(push / bent, -_LONGEST), _LONGEST)
+            mu[i] += move
+            parallax[i] += parallax[i] * _exp_less_one(-K * move)
+            curvature[i], step[i] = bent, move
+            moving += 0 if move * move * bent < _SETTLED * _SETTLED else 1
+        if moving == 0:
+            break
+
+
+@compiled_fused
+def _add_nodes(
+    total: FloatArray,
+    farthest: FloatArray,
+    mu: FloatArray,
+    parallax: FloatArray,
+    width: FloatArray,
+    bend: FloatArray,
+    shifted: FloatArray,
+    per_mag: FloatArray,
+    per_plx: FloatArray,
+    plx: FloatArray,
+) -> None:
+    """Sum the nodes up, relative to the peak; and how far the integrand is from a normal."""
+    n = len(mu)
+    for i in range(n):
+        total[i], farthest[i] = _MIDDLE, 0.0
+    for node in range(len(_NODES)):
+        x, weight = _NODES[node], _WEIGHTS[node]
+        for i in range(n):
+            off, miss = mu[i] - shifted[i], parallax[i] - plx[i]
+            shift = width[i] * x * (1.0 + bend[i] * x)
+            far = parallax[i] * _exp_less_one(-K * shift)
+            drop = shift * (off + 0.5 * shift) * per_mag[i]
+            drop += far * (miss + 0.5 * far) * per_plx[i]
+            rest = 0.5 * x * x - drop
+            total[i] += weight * (1.0 + 2.0 * bend[i] * x) * (1.0 + _exp_less_one(rest))
+            farthest[i] = max(farthest[i], abs(rest))
+
+
+@compiled_fused
 def narrow_row(
     result: FloatArray,
     a: FloatArray,
@@ -67,66 +128,37 @@ def narrow_row(
     scratch : array, shape (SCRATCH, n)
         Overwritten.
     """
-    n = len(a)
-    shifted, mu, parallax, per_mag, per_plx, curvature, width, bend, total = (
+    shifted, per_mag, per_plx, mu, parallax = (
         scratch[0],
         scratch[1],
         scratch[2],
         scratch[3],
         scratch[4],
-        scratch[5],
-        scratch[6],
-        scratch[7],
-        scratch[8],
     )
+    curvature, width, bend, total = scratch[5], scratch[6], scratch[7], scratch[8]
+    n = len(a)
     for i in range(n):
         shifted[i] = a[i] + tilt * v[i]
-        mu[i] = shifted[i]
         per_mag[i] = 1.0 / v[i]
         per_plx[i] = 1.0 / (err[i] * err[i])
+    _climb(mu, parallax, curvature, width, shifted, per_mag, per_plx, plx)
     for i in range(n):
-        parallax[i] = math.exp(K * (10.0 - mu[i]))
-    for _ in range(_STEPS):
-        moving = 0
-        for i in range(n):
-            pull = K * parallax[i]
-            bent = per_mag[i] + pull * pull * per_plx[i]
-            push = (shifted[i] - mu[i]) * per_mag[i] + pull * (parallax[i] - plx[i]) * per_plx[i]
-            step = min(max(push / bent, -_LONGEST), _LONGEST)
-            mu[i] += step
-            parallax[i] += parallax[i] * _exp_less_one(-K * step)
-            curvature[i] = bent
-            moving += 0 if step * step * bent < _SETTLED * _SETTLED else 1
-            width[i] = step
-        if moving == 0:
-            break
-    for i in range(n):
+        step = width[i]
         bent = per_mag[i] + K * K * parallax[i] * (2.0 * parallax[i] - plx[i]) * per_plx[i]
-        fit = (
-            (width[i] * width[i] * curvature[i] < _SETTLED * _SETTLED)
+        fits = (
+            (step * step * curvature[i] < _SETTLED * _SETTLED)
             & (bent > _LEAST_BENT * curvature[i])
             & (bent < _MOST_BENT * curvature[i])
             & (bent * _WIDEST * _WIDEST > 1.0)
         )
-        width[i] = 1.0 / math.sqrt(bent) if fit else math.nan
+        width[i] = 1.0 / math.sqrt(bent) if fits else math.nan
         third = K * K * K * parallax[i] * (4.0 * parallax[i] - plx[i]) * per_plx[i]
         bend[i] = third * width[i] * width[i] * width[i] / 6.0
-        total[i] = _MIDDLE
-        curvature[i] = 0.0  # from here on: the farthest that the integrand is from a normal
-    for node in range(len(_NODES)):
-        x, weight = _NODES[node], _WEIGHTS[node]
-        for i in range(n):
-            off, miss = mu[i] - shifted[i], parallax[i] - plx[i]
-            shift = width[i] * x * (1.0 + bend[i] * x)
-            far = parallax[i] * _exp_less_one(-K * shift)
-            drop = shift * (off + 0.5 * shift) * per_mag[i]
-            drop += far * (miss + 0.5 * far) * per_plx[i]
-            rest = 0.5 * x * x - drop
-            total[i] += weight * (1.0 + 2.0 * bend[i] * x) * (1.0 + _exp_less_one(rest))
-            curvature[i] = max(curvature[i], abs(rest))
+    farthest = curvature
+    _add_nodes(total, farthest, mu, parallax, width, bend, shifted, per_mag, per_plx, plx)
     for i in range(n):
         off, miss = mu[i] - shifted[i], parallax[i] - plx[i]
         top = 0.5 * (off * off * per_mag[i] + miss * miss * per_plx[i])
         size = total[i] * width[i] * math.sqrt(per_mag[i] * per_plx[i]) / (2.0 * math.pi)
         value = math.log(size) - top + tilt * (a[i] + 0.5 * tilt * v[i])
-        result[i] = value if curvature[i] < _FAR_OFF else math.nan
+        result[i] = value if farthest[i] < _FAR_OFF else math.nan
