@@ -69,7 +69,7 @@ def test_draws_have_the_posterior_mean_and_covariance():
     total = rows(host, columns, y, variance, 3).moments(zero) + with_prior(
         2, 3, np.zeros(2), np.ones(2)
     ).moments(zero)
-    g, u = solve(total.repeated(size)).draw(rng)
+    g, u = solve(total.repeated(size)).draw(rng.standard_normal((size, 2 + 3)))
     full = np.concatenate([columns, np.eye(3)[host] * (host >= 0)[:, None]], axis=1)
     precision = (full / variance[:, None]).T @ full + np.diag([1.0, 1.0, 0.0, 0.0, 0.0])
     mean = np.linalg.solve(precision, (full / variance[:, None]).T @ y)

@@ -135,7 +135,8 @@ def test_draws_have_the_posterior_mean_and_covariance():
     assert list(total.coupled) == [0, 2]
     total = total + rows(host, columns, y, variance, 3).moments(zero)
     total = total + with_prior(2, 3, np.zeros(2), np.ones(2)).moments(zero)
-    drawn = np.concatenate(solve(total.repeated(size)).draw(rng), axis=1)
+    white = rng.standard_normal((size, 2 + 3))
+    drawn = np.concatenate(solve(total.repeated(size)).draw(white), axis=1)
     full = np.vstack([_full(lonely.host, lonely.columns[:, :2]), _full(host, columns)])
     n = len(lonely.host)
     inverse = np.zeros((len(full),) * 2)

@@ -210,15 +210,22 @@ class Solution:
     free: IntArray
     moments: Moments
 
-    def draw(self, rng: np.random.Generator) -> tuple[FloatArray, FloatArray]:
-        """One draw per batch entry: all globals, shape (b, k), and locals, shape (b, h)."""
-        noise = rng.standard_normal((*self.mean.shape, 1))
+    def draw(self, white: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """One draw per batch entry: all globals, shape (b, k), and locals, shape (b, h).
+
+        Parameters
+        ----------
+        white : array, shape (b, f + h)
+            Standard normal numbers.
+        """
+        count = len(self.free)
         globals_ = self.coefficients.copy()
-        globals_[:, self.free] += np.linalg.solve(np.swapaxes(self.factor, 1, 2), noise)[..., 0]
+        upper = np.swapaxes(self.factor, 1, 2)
+        globals_[:, self.free] += np.linalg.solve(upper, white[:, :count, None])[..., 0]
         cross, local = self.moments.cross, self.moments.local
         expected = np.einsum("bhk,bk->bh", cross[:, :, :-1], globals_)
         linear = cross[:, :, -1] - expected
-        noise = rng.standard_normal(local.shape)
+        noise = white[:, count:]
         coupled = self.moments.coupled
         if coupled is None or self.moments.coupling is None:
             return globals_, linear / local + noise / np.sqrt(local)

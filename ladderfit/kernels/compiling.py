@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import os
 import threading
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from contextlib import contextmanager
 from functools import cache
@@ -20,6 +20,8 @@ import numba
 from threadpoolctl import ThreadpoolController
 
 F = TypeVar("F", bound=Callable[..., Any])
+T = TypeVar("T")
+R = TypeVar("R")
 
 WORDS_WHEN_COLD = "compiling the kernels (once after installing; takes 5 to 15 s)"
 
@@ -88,6 +90,7 @@ def _controller() -> ThreadpoolController:
 
 
 _OVERLAP = threading.Lock()
+_HERE = threading.local()  # `busy` where a thread already has its share of the work
 _WITHIN: list[Any] = [0, None]  # threads within the block, and what lifts the limit
 
 
@@ -110,9 +113,27 @@ def one_blas_thread() -> Iterator[None]:
                 _WITHIN[1].restore_original_limits()
 
 
+def side_by_side(function: Callable[[T], R], pieces: Sequence[T]) -> list[R]:
+    """The function of every piece, in order; computed in two threads where there are cores.
+
+    Within a piece kernels do not share their own work out again.
+    """
+    if len(pieces) < 2 or not _may_share():
+        return [function(piece) for piece in pieces]
+
+    def within(piece: T) -> R:
+        _HERE.busy = True
+        try:
+            return function(piece)
+        finally:
+            _HERE.busy = False
+
+    return list(_pool(os.getpid()).map(within, pieces))
+
+
 def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None:
     """Call ``part(start, stop)`` over a range, in two threads where that pays."""
-    if work < _WORTH_SHARING or size < 2 or threads() == 1:
+    if work < _WORTH_SHARING or size < 2 or not _may_share():
         part(0, size)
         return
     middle = size // 2
@@ -120,3 +141,7 @@ def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None
     halves = [pool.submit(part, 0, middle), pool.submit(part, middle, size)]
     for half in halves:
         half.result()
+
+
+def _may_share() -> bool:
+    return threads() > 1 and not getattr(_HERE, "busy", False)

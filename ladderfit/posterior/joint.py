@@ -9,6 +9,7 @@ from functools import partial
 import numpy as np
 
 from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
+from ladderfit.kernels.compiling import side_by_side
 from ladderfit.kernels.coupled import CoupledData, coupled_rows
 from ladderfit.kernels.reduced import reduced
 from ladderfit.ladder import Ladder
@@ -29,8 +30,7 @@ from ladderfit.posterior.split import Split, split
 from ladderfit.posterior.supernovae import correlated_samples, ladder_rows
 from ladderfit.samples import FloatArray
 
-_CHUNK = 20_000  # draws held at once
-_COUPLED_CHUNK = 1_000  # the same where hosts are coupled
+_CHUNK = 512  # draws evaluated at once: their sums stay in the processor's cache
 _FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
 
 
@@ -77,7 +77,7 @@ class Posterior:
         array, shape (b,)
             Normalised but for the evidence; minus infinity outside the priors.
         """
-        parts = [self._log_density(part) for part in self._chunks(z)]
+        parts = side_by_side(self._log_density, _chunks(z))
         return np.concatenate(parts) if parts else np.empty(0)
 
     def draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
@@ -94,7 +94,9 @@ class Posterior:
         dict
             One array of shape (b,) per parameter and host modulus.
         """
-        pieces = [self._draw(part, rng) for part in self._chunks(z)]
+        white = rng.standard_normal((len(z), len(self.split.theta) + self.frame.hosts))
+        parts = list(zip(_chunks(z), _chunks(white), strict=True))
+        pieces = side_by_side(lambda part: self._draw(*part), parts)
         return {name: np.concatenate([piece[name] for piece in pieces]) for name in pieces[0]}
 
     def focus(self, low: FloatArray, high: FloatArray) -> None:
@@ -133,8 +135,8 @@ class Posterior:
             return np.empty((len(z), 0))
         return self.parallaxes.log_density(partial(self.split.value, z=z))
 
-    def _draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
-        coefficients, local = self.solution(z).draw(rng)
+    def _draw(self, z: FloatArray, white: FloatArray) -> dict[str, FloatArray]:
+        coefficients, local = self.solution(z).draw(white)
         draws: dict[str, FloatArray] = {}
         for place, name in enumerate(self.split.coefficients):
             value = coefficients[:, place]
@@ -146,10 +148,6 @@ class Posterior:
         for place, host in enumerate(self.ladder.hosts):
             draws[with_group("modulus", host)] = moduli[:, place]
         return draws
-
-    def _chunks(self, z: FloatArray) -> list[FloatArray]:
-        size = _CHUNK if self.constant.coupling is None else _COUPLED_CHUNK
-        return [z[start : start + size] for start in range(0, len(z), size)]
 
     def coordinates(self, values: Mapping[str, float]) -> FloatArray:
         """Coordinates of phi at the given parameter values, shape (d,)."""
@@ -197,6 +195,10 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
             kept = None if before is None else _kept(before.blocks, rows_, scatter, largest)
             blocks.append(kept or ScatterBlock(reduced(rows_, largest), scatter, largest))
     return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
+
+
+def _chunks(values: FloatArray) -> list[FloatArray]:
+    return [values[start : start + _CHUNK] for start in range(0, len(values), _CHUNK)]
 
 
 def _kept(

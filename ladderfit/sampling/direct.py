@@ -17,7 +17,7 @@ import numpy.typing as npt
 
 from ladderfit.diagnostics import TRUSTED_K, smoothed_weights, weights_ess
 from ladderfit.errors import SamplingError
-from ladderfit.sampling.mode import LogDensity, Mode, find_mode
+from ladderfit.sampling.mode import LogDensity, Mode, find_modes_from
 from ladderfit.sampling.proposal import Component, Proposal, component
 
 FloatArray = npt.NDArray[np.float64]
@@ -143,22 +143,19 @@ def draw_direct(
 def find_modes(target: Target, rng: np.random.Generator, others: int = 2) -> tuple[Mode, ...]:
     """The modes reached from the start and from `others` dispersed points, by mass."""
     if target.near is not None:
-        mode = find_mode(target.log_density, target.near.point, target.near.width)
+        near = target.near
+        [mode] = find_modes_from(target.log_density, near.point[None, :], near.width)
         if mode.converged:
             return (_fold(mode, target.folded),)
     spread = 0.7 * target.scale * rng.standard_normal((others, len(target.start)))
-    starts = [target.start, *(target.start + spread)]
-    finite = np.isfinite(target.log_density(np.array(starts)))
-    if not finite.any():
+    starts = np.array([target.start, *(target.start + spread)])
+    usable = np.isfinite(target.log_density(starts))
+    if not usable.any():
         raise SamplingError(
             "the posterior has no finite density at any starting point; "
             "check the priors' bounds against the data"
         )
-    found = [
-        find_mode(target.log_density, start, 0.3 * target.scale)
-        for start, usable in zip(starts, finite, strict=True)
-        if usable
-    ]
+    found = find_modes_from(target.log_density, starts[usable], 0.3 * target.scale)
     folded = [_fold(mode, target.folded) for mode in found]
     folded.sort(key=lambda mode: -mode.log_mass)
     kept = [folded[0]]

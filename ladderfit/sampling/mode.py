@@ -1,7 +1,7 @@
 """Modes of a log density of few dimensions, by Newton steps with a line search.
 
 Gradient and curvature come from central differences, all evaluated in one
-vectorised call; the step is the best of a fan of lengths, so that it can neither
+vectorised call for all ascents; the step is the best of a fan of lengths, so that it can neither
 overshoot nor stall on a curvature of the wrong sign.
 """
 
@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import numpy.typing as npt
@@ -48,65 +48,115 @@ class Mode:
         return self.log_density + 0.5 * (float(logdet) + constant)
 
 
-def find_mode(
-    log_density: LogDensity, start: FloatArray, scale: FloatArray, steps: int = 60
-) -> Mode:
-    """Climb from `start` to a local maximum.
+def find_modes_from(
+    log_density: LogDensity, starts: FloatArray, scale: FloatArray, steps: int = 60
+) -> list[Mode]:
+    """Climb from each start to a local maximum, all of them in the same calls.
 
     Parameters
     ----------
     log_density : callable
         Maps shape (b, d) to (b,).
-    start, scale : array, shape (d,)
-        Starting point, and first guess of the width in each direction.
+    starts : array, shape (s, d)
+    scale : array, shape (d,)
+        First guess of the width in each direction.
     steps : int
         Most Newton steps.
     """
-    point, width = start.astype(float), scale.astype(float)
-    value = float(log_density(point[None, :])[0])
-    converged = False
-    covariance = np.diag(width**2)
+    values = log_density(starts)
+    climbs = [
+        _Climb(start.astype(float), float(value), scale.astype(float), scale)
+        for start, value in zip(starts, values, strict=True)
+    ]
     for _ in range(steps):
-        gradient, hessian = derivatives(log_density, point, _DIFFERENCE * width)
-        covariance = _covariance(hessian, width)
-        step = np.clip(covariance @ gradient, -_LONGEST * scale, _LONGEST * scale)
-        square = float(step @ np.linalg.solve(covariance, step))
-        length = math.sqrt(max(square, 0.0))
-        fan = point + _FAN[:, None] * step
-        values = log_density(fan)
-        best = int(np.argmax(values))
-        if values[best] > value:
-            point, value = fan[best], float(values[best])
-        new_width = np.clip(np.sqrt(np.diag(covariance)), 0.05 * width, 5.0 * width)
-        new_width = np.minimum(new_width, _LONGEST * scale)
-        settled = bool(np.all(np.abs(new_width / width - 1.0) < 0.3))
-        width = new_width
-        if length < 0.02 and settled:
-            converged = True
+        left = [climb for climb in climbs if not climb.converged]
+        if not left:
             break
-    return Mode(point, value, covariance, converged)
+        stencils = _apart(log_density, [climb.stencil() for climb in left])
+        fans = [climb.fan(found) for climb, found in zip(left, stencils, strict=True)]
+        for climb, fan, found in zip(left, fans, _apart(log_density, fans), strict=True):
+            climb.move(fan, found)
+    return [Mode(c.point, c.value, c.covariance, c.converged) for c in climbs]
 
 
-def derivatives(
-    log_density: LogDensity, point: FloatArray, step: FloatArray
-) -> tuple[FloatArray, FloatArray]:
-    """Gradient, shape (d,), and Hessian, shape (d, d), by central differences."""
+@dataclass
+class _Climb:
+    """One ascent: where it is, how wide the density seems there, whether it has arrived."""
+
+    point: FloatArray
+    value: float
+    width: FloatArray
+    scale: FloatArray
+    converged: bool = False
+    covariance: FloatArray = field(init=False)
+    length: float = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.covariance, self.length = np.diag(self.width**2), math.inf
+
+    def stencil(self) -> FloatArray:
+        return stencil(self.point, _DIFFERENCE * self.width)
+
+    def fan(self, values: FloatArray) -> FloatArray:
+        """Points along the Newton step that the stencil's values give."""
+        gradient, hessian = derivatives(values, _DIFFERENCE * self.width)
+        self.covariance = _covariance(hessian, self.width)
+        longest = _LONGEST * self.scale
+        step = np.clip(self.covariance @ gradient, -longest, longest)
+        square = float(step @ np.linalg.solve(self.covariance, step))
+        self.length = math.sqrt(max(square, 0.0))
+        return self.point + _FAN[:, None] * step
+
+    def move(self, fan: FloatArray, values: FloatArray) -> None:
+        """Go to the best point of the fan, and see whether that is the top."""
+        best = int(np.argmax(values))
+        if values[best] > self.value:
+            self.point, self.value = fan[best], float(values[best])
+        seen = np.sqrt(np.diag(self.covariance))
+        width = np.clip(seen, 0.05 * self.width, 5.0 * self.width)
+        width = np.minimum(width, _LONGEST * self.scale)
+        settled = bool(np.all(np.abs(width / self.width - 1.0) < 0.3))
+        self.width = width
+        self.converged = self.length < 0.02 and settled
+
+
+def _apart(log_density: LogDensity, groups: list[FloatArray]) -> list[FloatArray]:
+    """The densities of several groups of points, from one call."""
+    values = log_density(np.concatenate(groups))
+    return np.split(values, np.cumsum([len(group) for group in groups])[:-1])
+
+
+def stencil(point: FloatArray, step: FloatArray) -> FloatArray:
+    """Points for `derivatives`, shape (1 + d + d^2, d): the point, axes, and diagonals."""
     d = len(point)
-    pairs = [(i, j) for i in range(d) for j in range(i)]
     moves = np.diag(step)
-    corners = [moves[i] + sign * moves[j] for i, j in pairs for sign in (1.0, -1.0)]
-    shifts = np.array([*moves, *(-moves), *corners, *(-c for c in corners), np.zeros(d)])
-    values = log_density(point + shifts)
-    values = np.where(np.isfinite(values), values, values[-1] - 1e6)
-    centre, plus, minus = values[-1], values[:d], values[d : 2 * d]
+    first, second = np.tril_indices(d, -1)
+    diagonals = moves[first] + moves[second]
+    return np.asarray(
+        point + np.concatenate([np.zeros((1, d)), moves, -moves, diagonals, -diagonals])
+    )
+
+
+def derivatives(values: FloatArray, step: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Gradient, shape (d,), and Hessian, shape (d, d), by central differences.
+
+    Parameters
+    ----------
+    values : array, shape (1 + d + d^2,)
+        At the points of `stencil`; one that is not finite counts as very low.
+    step : array, shape (d,)
+    """
+    d = len(step)
+    values = np.where(np.isfinite(values), values, values[0] - 1e6)
+    centre, plus, minus = values[0], values[1 : d + 1], values[d + 1 : 2 * d + 1]
+    diagonal = values[2 * d + 1 :].reshape(2, -1).sum(axis=0)
     gradient = (plus - minus) / (2.0 * step)
-    hessian = np.diag((plus + minus - 2.0 * centre) / step**2)
-    there, back = values[2 * d : 2 * d + len(corners)], values[2 * d + len(corners) : -1]
-    both = there + back
-    for place, (i, j) in enumerate(pairs):
-        mixed = (both[2 * place] - both[2 * place + 1]) / (4.0 * step[i] * step[j])
-        hessian[i, j] = hessian[j, i] = mixed
-    return gradient, hessian
+    bend = plus + minus - 2.0 * centre
+    first, second = np.tril_indices(d, -1)
+    mixed = 0.5 * (diagonal - 2.0 * centre - bend[first] - bend[second])
+    hessian = np.diag(bend)
+    hessian[first, second] = hessian[second, first] = mixed
+    return gradient, np.asarray(hessian / np.outer(step, step))
 
 
 def _covariance(hessian: FloatArray, width: FloatArray) -> FloatArray:
