@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, TypeVar, cast
 
 import numpy as np
 
-from ladderfit.choices import Choices, Covariance, Parallaxes
+from ladderfit.choices import Choices, Covariance, Parallaxes, PeakRelation
 from ladderfit.correlated import Given, Supernovae, anchors_together, supernovae_together
 from ladderfit.covariances import Matrix, read_covariance
 from ladderfit.errors import InputError, Problem
@@ -162,11 +162,12 @@ class Assembly:
             return None
         anchors = {name: anchor.use for name, anchor in self.choices.anchors.geometric.items()}
         hosts = (cepheids.hosts, cepheids.seen) if cepheids else ()
+        relation = self._terms()
         return self.select(
             "supernovae",
             section.table,
-            (section, anchors, hosts),
-            lambda table: select_peaks(table, section, cepheids, anchors),
+            (section, anchors, hosts, relation),
+            lambda table: select_peaks(table, section, cepheids, anchors, relation),
         )
 
     def expansion(self) -> ExpansionSelection | None:
@@ -175,12 +176,17 @@ class Assembly:
         if section is None or section.table is None:
             return None
         errors = covariance is None or covariance[1].adds
+        relation = self._terms()
         return self.select(
             "expansion",
             section.table,
-            (section.columns, section.redshifts, section.set_aside, errors),
-            lambda table: select_expansion(table, section, errors=errors),
+            (section.columns, section.redshifts, section.set_aside, errors, relation),
+            lambda table: select_expansion(table, section, errors=errors, relation=relation),
         )
+
+    def _terms(self) -> PeakRelation:
+        """The peak relation, but for what no table's rows depend on."""
+        return replace(self.choices.peak_relation, errors="population")
 
     def supernovae(
         self, peaks: PeakSelection | None, expansion: ExpansionSelection | None

@@ -39,8 +39,19 @@ ANGLE = Kind("an angle", "deg")
 COLOUR = Kind("an effective wavenumber", "1/um")
 NUMBER = Kind("a number", "")
 REDSHIFT = Kind("a redshift", "")
+DECLINE_RATE = Kind("a decline rate", "mag")
+PEAK_COLOUR = Kind("a colour", "mag")
+HOST_MASS = Kind("log10 of a stellar mass in Msun", "dex")
+MAGNITUDE_SQUARED = Kind("a covariance", "mag2")
 DISTANCE = Kind("a distance", "Mpc", must_be_stated=True)
 VELOCITY = Kind("a velocity", "km/s", must_be_stated=True)
+
+
+_LOGARITHM_OF = {
+    LOG_PERIOD.words: u.d,
+    LOG_PERIOD_ERROR.words: u.d,
+    HOST_MASS.words: u.Msun,
+}
 
 
 def conversion(unit: Any, kind: Kind) -> tuple[float, float] | None:
@@ -50,8 +61,7 @@ def conversion(unit: Any, kind: Kind) -> tuple[float, float] | None:
     if kind.unit == "mag":
         return _magnitudes(unit)
     if kind.unit == "dex":
-        of_period = kind is LOG_PERIOD or kind is LOG_PERIOD_ERROR
-        factor_shift = _dex(unit, logarithm_of=u.d if of_period else None)
+        factor_shift = _dex(unit, logarithm_of=_LOGARITHM_OF.get(kind.words))
         if kind is LOG_PERIOD_ERROR and factor_shift is not None:
             return (factor_shift[0], 0.0)  # another unit shifts the logarithm, not its error
         return factor_shift

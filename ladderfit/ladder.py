@@ -26,6 +26,7 @@ from ladderfit.correlated import repeated_notes
 from ladderfit.covariances import covariance_in_memory
 from ladderfit.errors import InputError, Problem, nearest, raise_if
 from ladderfit.ladder_file import as_written, read_choices
+from ladderfit.peak_inputs import peak_notes, peak_problems
 from ladderfit.samples import FloatArray, FlowSample, Kept, PeakSample, StarSample, VelocitySample
 from ladderfit.select_stars import CepheidSelection
 from ladderfit.select_supernovae import PeakSelection
@@ -269,6 +270,9 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
         geometric = tuple(replace(anchor, error=float(error)) for anchor, error in pairs)
     samples = [each.sample for each in (cepheids, parallaxes) if each is not None]
     raise_if(list(star_problems(choices, samples, hosts, seen)))
+    supernovae = {"supernovae": together.peaks, "expansion": together.flow}
+    files = {section: source.path for section, source in assembly.sources.items()}
+    raise_if(list(peak_problems(choices, supernovae, files, together.matrix)))
     selections = dict(zip(SECTIONS, (cepheids, parallaxes, peaks, expansion), strict=True))
     return Ladder(
         choices=choices,
@@ -290,6 +294,7 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
             *(peaks.notes if peaks else ()),
             *notes,
             *(repeated_notes(together.peaks, together.flow) if not correlated else ()),
+            *peak_notes(choices, supernovae),
             *star_notes(choices, samples),
         ),
         sources=assembly.sources,

@@ -175,11 +175,17 @@ def _same(one: Any, other: Any) -> bool:
     if one is None or other is None:
         return one is other
     for part in dataclasses.fields(one):
-        mine, theirs = getattr(one, part.name), getattr(other, part.name)
-        if isinstance(mine, np.ndarray):
-            numbers = mine.dtype.kind == "f"
-            if not np.array_equal(mine, theirs, equal_nan=numbers):
-                return False
-        elif mine != theirs:
+        if not _alike(getattr(one, part.name), getattr(other, part.name)):
             return False
     return True
+
+
+def _alike(mine: Any, theirs: Any) -> bool:
+    if isinstance(mine, np.ndarray) and isinstance(theirs, np.ndarray):
+        return np.array_equal(mine, theirs, equal_nan=mine.dtype.kind == "f")
+    if isinstance(mine, Mapping) and isinstance(theirs, Mapping):
+        keys = mine.keys() == theirs.keys()
+        return keys and all(_alike(value, theirs[key]) for key, value in mine.items())
+    if dataclasses.is_dataclass(mine) and type(mine) is type(theirs):
+        return _same(mine, theirs)
+    return bool(type(mine) is type(theirs) and mine == theirs)

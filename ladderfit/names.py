@@ -168,6 +168,53 @@ _ALL = (
     ),
     Parameter("peak_magnitude", "mag", r"$M$", "standard peak magnitude", 3, Normal(-19.3, 2.0)),
     Parameter("peak_scatter", "mag", r"$t_\mathrm{SN}$", "supernova scatter", 3, HalfNormal(0.3)),
+    Parameter("alpha", "mag", r"$\alpha$", "coefficient of the width", 3, Normal(0.0, 2.0)),
+    Parameter("beta", "", r"$\beta$", "coefficient of the colour", 3, Normal(3.0, 2.0)),
+    Parameter(
+        "decline_slope", "", r"$b_\mathrm{d}$", "slope with the decline rate", 3, Normal(0.8, 2.0)
+    ),
+    Parameter(
+        "decline_curvature",
+        "1/mag",
+        r"$c_\mathrm{d}$",
+        "quadratic term in the decline rate",
+        3,
+        Normal(0.0, 2.0),
+    ),
+    Parameter("mass_step", "mag", r"$\gamma$", "step with the host's mass", 3, Normal(0.0, 0.1)),
+    Parameter("survey_offset", "mag", r"$\Delta m$", "offset of a survey", 3, Normal(0.0, 0.05)),
+    Parameter(
+        "width_mean", "", r"$\bar{w}$", "mean width, less the reference", 3, Normal(0.0, 2.0)
+    ),
+    Parameter("width_spread", "", r"$\sigma_w$", "spread of the width", 3, HalfNormal(2.0)),
+    Parameter(
+        "decline_rate_mean",
+        "mag",
+        r"$\bar{d}$",
+        "mean decline rate, less the reference",
+        3,
+        Normal(0.0, 0.5),
+    ),
+    Parameter(
+        "decline_rate_spread",
+        "mag",
+        r"$\sigma_d$",
+        "spread of the decline rate",
+        3,
+        HalfNormal(0.5),
+    ),
+    Parameter(
+        "colour_mean", "mag", r"$\bar{c}$", "mean colour, less the reference", 3, Normal(0.0, 0.3)
+    ),
+    Parameter("colour_spread", "mag", r"$\sigma_c$", "spread of the colour", 3, HalfNormal(0.3)),
+    Parameter(
+        "shape_colour_correlation",
+        "",
+        r"$\rho$",
+        "correlation of true shape and colour",
+        2,
+        Fixed(0.0),
+    ),
     Parameter("hubble_constant", "km/s/Mpc", r"$H_0$", "Hubble constant", 2, LogNormal(70.0, 1.0)),
     Parameter("intercept", "", r"$a_B$", "intercept of the expansion", 4, None),
     Parameter(

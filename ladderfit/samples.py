@@ -128,14 +128,34 @@ class StarSample:
 
 
 @dataclass(frozen=True)
+class PeakInputs:
+    """What terms of the peak-magnitude relation need of supernovae; empty where none does.
+
+    Attributes
+    ----------
+    values : mapping of str to array, shape (n,)
+        By the column's role: width, its error and covariances, and so on.
+    survey : array of str, shape (n,), or None
+    """
+
+    values: Mapping[str, FloatArray] = field(default_factory=dict)
+    survey: TextArray | None = None
+
+
+@dataclass(frozen=True)
 class PeakSample:
-    """Supernovae in hosts: `magnitude` is the standardised peak [mag], `variance` its own."""
+    """Supernovae in hosts: `magnitude` is the peak [mag], `variance` its own.
+
+    The peak is standardised already, or `inputs` holds what the terms of the
+    peak-magnitude relation need.
+    """
 
     name: TextArray
     host: IntArray
     magnitude: FloatArray
     variance: FloatArray
     row: IntArray
+    inputs: PeakInputs = field(default_factory=PeakInputs)
 
     def __len__(self) -> int:
         """Number of supernovae."""
@@ -152,10 +172,12 @@ class FlowSample:
         Redshift in the frame of the background radiation, and as observed
         (equal to it where the table gives none).
     magnitude, variance : array, shape (n,)
-        Standardised peak [mag] and its variance [mag^2], without peculiar velocities.
+        Peak [mag] and its variance [mag^2], without peculiar velocities.
     peculiar_velocity_error : array, shape (n,), or None
         Error of each redshift from its peculiar velocity [km/s]; None where the
         choices give one dispersion for all.
+    inputs : PeakInputs
+        For terms of the peak-magnitude relation.
     """
 
     name: TextArray
@@ -165,6 +187,7 @@ class FlowSample:
     variance: FloatArray
     row: IntArray
     peculiar_velocity_error: FloatArray | None = None
+    inputs: PeakInputs = field(default_factory=PeakInputs)
 
     def __len__(self) -> int:
         """Number of supernovae."""

@@ -8,9 +8,10 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from ladderfit.choices import Expansion, Supernovae
+from ladderfit.choices import Expansion, PeakRelation, Supernovae
 from ladderfit.errors import Problem, nearest, raise_if
 from ladderfit.kinds import DISTANCE, MAGNITUDE, REDSHIFT, VELOCITY
+from ladderfit.peak_inputs import KINDS, InputColumns
 from ladderfit.rows import Rows, floats, integers
 from ladderfit.samples import FloatArray, FlowSample, Kept, PeakSample, TextArray, VelocitySample
 from ladderfit.select_stars import CepheidSelection
@@ -24,7 +25,9 @@ _KINDS = {
     "distance": DISTANCE,
     "velocity": VELOCITY,
     "peculiar_velocity_error": VELOCITY,
+    **KINDS,
 }
+_NO_TERMS = PeakRelation()
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,6 +60,7 @@ def select_peaks(
     section: Supernovae,
     cepheids: CepheidSelection | None,
     anchors: Mapping[str, bool],
+    relation: PeakRelation = _NO_TERMS,
 ) -> PeakSelection:
     """The supernovae whose host has a Cepheid or an anchor in use.
 
@@ -70,6 +74,8 @@ def select_peaks(
         The Cepheids that take part.
     anchors : mapping of str to bool
         Every geometric anchor, and whether it is in use.
+    relation : PeakRelation, optional
+        The terms whose columns are read.
 
     Raises
     ------
@@ -85,6 +91,7 @@ def select_peaks(
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
     replaced = section.covariance is not None and not section.covariance.adds
     variance = _variance(rows, columns, needed=not replaced)
+    inputs = InputColumns(rows, columns, relation)
     rows.unique("the supernova", {"name": name, "host": host, "peak": peak}, columns["name"])
     known = {*(cepheids.seen if cepheids else ()), *anchors}
     _unknown_hosts(rows, host, known, columns["host"])
@@ -102,6 +109,7 @@ def select_peaks(
         magnitude=floats(peak[left]),
         variance=floats(variance[left]),
         row=integers(left + 1),
+        inputs=inputs.taken(left),
     )
     return PeakSelection(sample, name.values, tuple(hosts), tuple(host.known), kept, notes)
 
@@ -142,7 +150,11 @@ def _notes_on(hosts: Iterable[str], cepheids: CepheidSelection | None) -> tuple[
 
 
 def select_expansion(
-    table: DataTable, section: Expansion, *, errors: bool = True
+    table: DataTable,
+    section: Expansion,
+    *,
+    errors: bool = True,
+    relation: PeakRelation = _NO_TERMS,
 ) -> ExpansionSelection:
     """The objects of the expansion that take part, in the order of their table.
 
@@ -152,6 +164,8 @@ def select_expansion(
     section : Expansion
     errors : bool
         Whether the table's errors of the peaks are used, not a covariance in their place.
+    relation : PeakRelation, optional
+        The terms of the peaks whose columns are read.
 
     Raises
     ------
@@ -165,7 +179,7 @@ def select_expansion(
     rows.need(name, "name", columns["name"])
     if section.linear:
         return _velocities(rows, name, columns)
-    return _flow(rows, name, section, errors=errors)
+    return _flow(rows, name, section, relation, errors=errors)
 
 
 def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> ExpansionSelection:
@@ -184,7 +198,9 @@ def _velocities(rows: Rows, name: Texts, columns: Mapping[str, str]) -> Expansio
     return ExpansionSelection(name.values, None, sample, kept)
 
 
-def _flow(rows: Rows, name: Texts, section: Expansion, *, errors: bool) -> ExpansionSelection:
+def _flow(
+    rows: Rows, name: Texts, section: Expansion, relation: PeakRelation, *, errors: bool
+) -> ExpansionSelection:
     columns = section.columns
     redshift = rows.number("redshift", columns["redshift"], REDSHIFT, above=0.0)
     observed = redshift
@@ -194,6 +210,7 @@ def _flow(rows: Rows, name: Texts, section: Expansion, *, errors: bool) -> Expan
         )
     peak = rows.number("peak", columns["peak"], MAGNITUDE)
     variance = _variance(rows, columns, needed=errors)
+    inputs = InputColumns(rows, columns, relation)
     velocity_error = None
     if "peculiar_velocity_error" in columns:
         role = "peculiar_velocity_error"
@@ -212,5 +229,6 @@ def _flow(rows: Rows, name: Texts, section: Expansion, *, errors: bool) -> Expan
         variance=floats(variance[left]),
         row=integers(left + 1),
         peculiar_velocity_error=None if velocity_error is None else floats(velocity_error[left]),
+        inputs=inputs.taken(left),
     )
     return ExpansionSelection(name.values, sample, None, kept)

@@ -23,6 +23,7 @@ from ladderfit.choices.parallaxes import (
     Parallaxes,
     Selection,
 )
+from ladderfit.choices.peak_relation import DeclineRate, HostMass, PeakInput, PeakRelation
 from ladderfit.choices.photometry import Completeness, Reddening, SharedTerm
 from ladderfit.choices.relation import Group, Metallicity, Relation
 from ladderfit.choices.sampling import Sampling
@@ -41,18 +42,22 @@ __all__ = [
     "Cosmology",
     "Covariance",
     "Correlation",
+    "DeclineRate",
     "Density",
     "Disc",
     "DistancePrior",
     "Expansion",
     "GeometricAnchor",
     "Group",
+    "HostMass",
     "Hosts",
     "Intercept",
     "Magnitude",
     "Metallicity",
     "Overtones",
     "Parallaxes",
+    "PeakInput",
+    "PeakRelation",
     "PeriodRatio",
     "Range",
     "Reddening",

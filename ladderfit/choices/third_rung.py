@@ -8,6 +8,7 @@ from typing import Literal
 
 from ladderfit.choices.columns import Columns, Range, SetAside, column_faults, range_faults
 from ladderfit.choices.covariance import Covariance
+from ladderfit.choices.peak_relation import optional_roles
 from ladderfit.cosmologies import KINEMATIC, cosmology_faults
 from ladderfit.errors import Problem
 from ladderfit.schema import choice
@@ -15,10 +16,12 @@ from ladderfit.schema import choice
 
 @dataclass(frozen=True)
 class Supernovae:
-    """Standardised peak magnitudes of supernovae in hosts of the ladder."""
+    """Peak magnitudes of supernovae in hosts of the ladder."""
 
     table: str = choice("the table of supernovae, a path relative to this file")
-    columns: Columns = choice("column of each role: name, host, peak, peak_error")
+    columns: Columns = choice(
+        "column of each role: name, host, peak, peak_error, and those of the peak relation"
+    )
     covariance: Covariance | None = choice(
         "the covariance of all peak magnitudes, in hosts and in the expansion", default=None
     )
@@ -31,7 +34,8 @@ class Supernovae:
         """Roles; a covariance that replaces the errors needs no column of them."""
         replaced = self.covariance is not None and not self.covariance.adds
         required = ("name", "host", "peak", *(() if replaced else ("peak_error",)))
-        yield from column_faults(self.columns, required, ("peak_error",) if replaced else ())
+        also = (*(("peak_error",) if replaced else ()), *optional_roles())
+        yield from column_faults(self.columns, required, also)
 
 
 @dataclass(frozen=True)
@@ -78,7 +82,7 @@ class Expansion:
     table: str | None = choice("the table, a path relative to this file", default=None)
     columns: Columns = choice(
         "column of each role: name, redshift, redshift_heliocentric, peak, peak_error, "
-        "peculiar_velocity_error; or name, distance, velocity",
+        "peculiar_velocity_error, and those of the peak relation; or name, distance, velocity",
         default_factory=dict,
     )
     intercept: Intercept | None = choice("a published intercept instead", default=None)
@@ -122,7 +126,12 @@ class Expansion:
             yield from column_faults(
                 self.columns,
                 ("name", "redshift", "peak"),
-                ("redshift_heliocentric", "peak_error", "peculiar_velocity_error"),
+                (
+                    "redshift_heliocentric",
+                    "peak_error",
+                    "peculiar_velocity_error",
+                    *optional_roles(),
+                ),
             )
         if self.table is None or self.linear:
             for key in ("covariance", "velocity_covariance"):

@@ -13,6 +13,7 @@ from ladderfit.choices.columns import column_faults
 from ladderfit.choices.covariance import Covariance
 from ladderfit.choices.parallaxes import Parallaxes
 from ladderfit.choices.photometry_checks import completeness_faults, reddening_faults
+from ladderfit.choices.peak_relation import PeakRelation
 from ladderfit.choices.relation import Group, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids
@@ -38,6 +39,9 @@ class Choices:
     anchors: Anchors = choice("what fixes the scale", default_factory=Anchors)
     hosts: Hosts = choice("the galaxies", default_factory=Hosts)
     supernovae: Supernovae | None = choice("supernovae in hosts", default=None)
+    peak_relation: PeakRelation = choice(
+        "the peak-magnitude relation", default_factory=PeakRelation
+    )
     expansion: Expansion | None = choice("the expansion", default=None)
     priors: Mapping[str, Prior] = choice("priors by parameter", default_factory=dict)
     sampling: Sampling = choice("the sampler", default_factory=Sampling)
@@ -174,6 +178,7 @@ class Choices:
                     remedy='name the column, or set relation.metallicity = "none"',
                     key=key,
                 )
+        yield from _peak_column_faults(self)
         if not (any(sections.values()) or self.supernovae or self.expansion):
             yield Problem(
                 found="no data",
@@ -246,6 +251,22 @@ def _peak_faults(choices: Choices) -> Iterator[Problem]:
         wanted = (*expansion.columns, "peak_error")
         for fault in column_faults(expansion.columns, wanted, ()):
             yield dataclasses.replace(fault, key=f"expansion.{fault.key}")
+
+
+def _peak_column_faults(choices: Choices) -> Iterator[Problem]:
+    """Every table of supernovae has the columns that terms of the relation need."""
+    expansion = choices.expansion
+    flow = expansion is not None and expansion.table is not None and not expansion.linear
+    tables = {"supernovae": choices.supernovae, "expansion": expansion if flow else None}
+    for key, section in tables.items():
+        for role in choices.peak_relation.roles:
+            if section is not None and role not in section.columns:
+                yield Problem(
+                    found="no column of that role, yet the peak relation has a term in it",
+                    expected=f"the name of the column that holds the {role.replace('_', ' ')}",
+                    remedy=f'add {role} = "..." to columns, or take the term out of peak_relation',
+                    key=f"{key}.columns.{role}",
+                )
 
 
 def _group_faults(

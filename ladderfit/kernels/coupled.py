@@ -137,7 +137,9 @@ def _empty(batch: int, data: CoupledData) -> Moments:
     return no_moments(batch, data.hosts, data.columns.shape[1] - 1, data.coupled)
 
 
-def _add(total: Moments, data: CoupledData, products: FloatArray, constant: FloatArray) -> None:
+def add_products(
+    total: Moments, data: CoupledData, products: FloatArray, constant: FloatArray
+) -> None:
     """Add products of [indicators, X, y], shape (b, q, q), to the moments, in place."""
     inside = data.inside
     m = len(inside)
@@ -188,7 +190,7 @@ class CoupledRows:
         """Add the rows' sums, `extra` (shape (b,)) added to every variance, in place."""
         packed = interpolated(self.sums, self.tables, extra)
         width = self.sums.columns.shape[1]
-        _add(total, self.data, _unpacked(packed[:, 1:], width), packed[:, 0])
+        add_products(total, self.data, _unpacked(packed[:, 1:], width), packed[:, 0])
 
     def moments(self, extra: FloatArray) -> Moments:
         """The rows' sums alone; `extra` has shape (b,)."""
@@ -252,7 +254,7 @@ class TwoScatterRows:
         """Add the rows' sums at the two extra variances, shape (b,) each, in place."""
         packed = interpolated(self.sums, self.tables, others)
         products, constant = _schur(self.data, packed, hosts)
-        _add(total, self.data, products, constant)
+        add_products(total, self.data, products, constant)
 
     def moments(self, hosts: FloatArray, others: FloatArray) -> Moments:
         """The rows' sums alone."""

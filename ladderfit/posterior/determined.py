@@ -107,6 +107,8 @@ def _information(posterior: Posterior) -> tuple[FloatArray, tuple[str, ...], Flo
             information[place, place] += 1.0 / sd**2
     for place, name in enumerate(parts.coefficients):
         information[place, place] += base_name(name) == "shared_error"
+        if base_name(name) == "survey_offset":  # its prior says how well surveys agree
+            information[place, place] += 1.0 / ladder.choices.prior(name).sd ** 2
     information[:k, k:] = information[k:, :k].T
     forms = np.eye(k + hosts)
     forms[k:, :k] = -frame.centroid

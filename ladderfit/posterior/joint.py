@@ -26,6 +26,7 @@ from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.frame import Frame, host_frame
 from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
 from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
+from ladderfit.posterior.populations import population_blocks
 from ladderfit.posterior.split import Split, split
 from ladderfit.posterior.supernovae import correlated_samples, ladder_rows
 from ladderfit.samples import FloatArray
@@ -172,7 +173,9 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
     constant = constant + _distances(ladder, frame)
     errors = input_errors(ladder, ladder.cepheids)
     blocks: list[Block] = []
-    correlated = supernova_data(ladder, frame, names)
+    integrated = population_blocks(ladder, frame, names)
+    blocks += integrated
+    correlated = None if integrated else supernova_data(ladder, frame, names)
     if correlated is not None:
         earlier = () if before is None else before.blocks
         reach = {name: _largest(ladder, name) for name in ladder.choices.peak_scatters}
@@ -181,8 +184,11 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
             constant = constant + block
         else:
             blocks.append(block)
-    found = list(ladder_rows(ladder, frame, names, but=correlated_samples(ladder)))
-    if ladder.cepheids is not None and errors is not None:
+    done = ("peaks", "flow") if integrated else correlated_samples(ladder)
+    found = list(ladder_rows(ladder, frame, names, but=done))
+    if ladder.cepheids is not None and star_by_star(ladder):
+        blocks.append(star_terms(ladder, frame, names))
+    elif ladder.cepheids is not None and errors is not None:
         blocks.append(noisy_block(ladder, frame, ladder.cepheids, errors))
     else:
         found += plain_rows(ladder, frame)

@@ -2,7 +2,8 @@
 
 phi holds the scatters, what is unknown of the parallaxes (offsets, error scale,
 modes of shared errors, the distance prior's length), the relation's coefficients where
-parallax stars are present, and every coefficient whose prior is not normal.
+parallax stars are present, those of inputs with errors and the populations' spreads, and
+every coefficient whose prior is not normal.
 theta holds all other coefficients and the host moduli.  This file alone decides.
 """
 
@@ -16,6 +17,8 @@ import numpy as np
 from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
+from ladderfit.peak_terms import PeakTerms, peak_terms
+from ladderfit.posterior.colours import colour_coefficients, colour_parameters
 from ladderfit.posterior.errors_in_inputs import input_errors, uses_population
 from ladderfit.posterior.parallaxes import active_coefficients, parallax_parameters
 from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
@@ -184,7 +187,14 @@ def split(ladder: Ladder) -> Split:
 def linear_coefficients(ladder: Ladder) -> tuple[str, ...]:
     """Every linear coefficient: the relation's, the third rung's, shared errors of anchors."""
     relation = coefficient_names(ladder.choices) if _has_relation(ladder) else ()
-    return (*relation, *_expansion_coefficients(ladder), *_shared(ladder))
+    relation = (*relation, *colour_coefficients(ladder))
+    terms = _peak_terms(ladder)
+    third = (*_expansion_coefficients(ladder), *terms.columns, *terms.means)
+    return (*relation, *third, *_shared(ladder))
+
+
+def _peak_terms(ladder: Ladder) -> PeakTerms:
+    return peak_terms(ladder.choices, ladder.peaks, ladder.flow)
 
 
 def _has_relation(ladder: Ladder) -> bool:
@@ -202,6 +212,9 @@ def _nonlinear(ladder: Ladder) -> set[str]:
         if errors is not None:
             found.update(n for n, s in zip(names, errors.sensitive, strict=True) if s)
     return found
+    terms = _peak_terms(ladder)
+    if terms.curved:
+        found.update(terms.means)
 
 
 def _expansion_coefficients(ladder: Ladder) -> tuple[str, ...]:
@@ -254,7 +267,15 @@ def _others(ladder: Ladder) -> tuple[str, ...]:
         names.append(elsewhere)
     if ladder.velocities is not None:
         names.append("velocity_scatter")
-    return tuple(names)
+    return (*names, *_peak_terms(ladder).nonlinear)
+
+
+def shared_photometry(ladder: Ladder) -> tuple[str, ...]:
+    """Names of the standard deviations of photometric errors that hosts' stars share."""
+    section = ladder.choices.cepheids
+    if section is None or ladder.cepheids is None:
+        return ()
+    return tuple(with_group("shared_photometry", name) for name in section.shared)
 
 
 def _linear(prior: Prior, logarithmic: bool) -> Normal | None:

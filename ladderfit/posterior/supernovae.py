@@ -7,6 +7,7 @@ import numpy as np
 from ladderfit.choices import Expansion
 from ladderfit.kernels.arrow import Rows, rows
 from ladderfit.ladder import Ladder
+from ladderfit.peak_terms import PeakTerms, peak_terms
 from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.frame import Frame
 from ladderfit.samples import FloatArray, FlowSample, IntArray, PeakSample, VelocitySample
@@ -21,26 +22,45 @@ def _columns(n: int, names: tuple[str, ...], **values: FloatArray | float) -> Fl
     return columns
 
 
-def peak_rows(peaks: PeakSample, frame: Frame, names: tuple[str, ...]) -> Rows:
-    """m = mu[host] + M + e."""
-    columns = _columns(len(peaks), names, peak_magnitude=1.0)
+def peak_rows(peaks: PeakSample, terms: PeakTerms, frame: Frame, names: tuple[str, ...]) -> Rows:
+    """m = mu[host] + M + terms + e; inputs whose errors are met are left out of the terms."""
+    columns = _peak_columns(peaks, terms, names)
     return frame.modulus_rows(peaks.host, columns, peaks.magnitude, peaks.variance)
 
 
-def flow_rows(flow: FlowSample, expansion: Expansion, hosts: int, names: tuple[str, ...]) -> Rows:
-    """m - distance term = M - 5 log10 H0 + e, peculiar velocities in the variance."""
-    columns, y = _flow_arrays(flow, expansion, names)
+def _peak_columns(peaks: PeakSample, terms: PeakTerms, names: tuple[str, ...]) -> FloatArray:
+    return _columns(len(peaks), names, peak_magnitude=1.0, **terms.design(peaks))
+
+
+def flow_variance(ladder: Ladder) -> FloatArray:
+    """Variance of each peak in the expansion, peculiar velocities included [mag^2], shape (n,)."""
+    flow, expansion = ladder.flow, ladder.choices.expansion
+    if flow is None or expansion is None:
+        return np.empty(0)
     velocity = peculiar_velocities(flow, expansion)
-    variance = flow.variance + peculiar_variance(flow.redshift, velocity)
-    return rows(np.full(len(flow), -1), columns, y, variance, hosts)
+    return np.asarray(flow.variance + peculiar_variance(flow.redshift, velocity))
+
+
+def flow_rows(
+    flow: FlowSample, ladder: Ladder, expansion: Expansion, hosts: int, names: tuple[str, ...]
+) -> Rows:
+    """m - distance term = M - 5 log10 H0 + terms + e, peculiar velocities in the variance."""
+    columns, y = _flow_arrays(flow, ladder, expansion, names)
+    return rows(np.full(len(flow), -1), columns, y, flow_variance(ladder), hosts)
 
 
 def _flow_arrays(
-    flow: FlowSample, expansion: Expansion, names: tuple[str, ...]
+    flow: FlowSample, ladder: Ladder, expansion: Expansion, names: tuple[str, ...]
 ) -> tuple[FloatArray, FloatArray]:
     term = term_of(expansion, flow.redshift, flow.redshift_heliocentric)
-    columns = _columns(len(flow), names, peak_magnitude=1.0, hubble_constant=-1.0)
+    design = terms_of(ladder).design(flow)
+    columns = _columns(len(flow), names, peak_magnitude=1.0, hubble_constant=-1.0, **design)
     return columns, flow.magnitude - term
+
+
+def terms_of(ladder: Ladder) -> PeakTerms:
+    """The terms of the peak-magnitude relation of a ladder."""
+    return peak_terms(ladder.choices, ladder.peaks, ladder.flow)
 
 
 def intercept_row(expansion: Expansion, hosts: int, names: tuple[str, ...]) -> Rows | None:
@@ -90,11 +110,11 @@ def supernova_arrays(
     parts: list[tuple[IntArray, FloatArray, FloatArray]] = []
     peaks, flow, expansion = ladder.peaks, ladder.flow, ladder.choices.expansion
     if peaks is not None and "peaks" in kinds:
-        columns = _columns(len(peaks), names, peak_magnitude=1.0)
+        columns = _peak_columns(peaks, terms_of(ladder), names)
         parts.append((peaks.host, columns, peaks.magnitude))
     if flow is not None and expansion is not None and "flow" in kinds:
         nowhere = np.full(len(flow), -1, dtype=np.int64)
-        parts.append((nowhere, *_flow_arrays(flow, expansion, names)))
+        parts.append((nowhere, *_flow_arrays(flow, ladder, expansion, names)))
     host, columns, y = (np.concatenate(arrays) for arrays in zip(*parts, strict=True))
     return host, columns, y
 
@@ -110,11 +130,12 @@ def ladder_rows(
     expansion = ladder.choices.expansion
     in_hosts, elsewhere = ladder.choices.peak_scatters
     if ladder.peaks is not None and "peaks" not in but:
-        found.append((peak_rows(ladder.peaks, frame, names), in_hosts))
+        found.append((peak_rows(ladder.peaks, terms_of(ladder), frame, names), in_hosts))
     if expansion is None:
         return found
     if ladder.flow is not None and "flow" not in but:
-        found.append((flow_rows(ladder.flow, expansion, frame.hosts, names), elsewhere))
+        flow = flow_rows(ladder.flow, ladder, expansion, frame.hosts, names)
+        found.append((flow, elsewhere))
     if ladder.velocities is not None:
         found.append((velocity_rows(ladder.velocities, frame.hosts, names), "velocity_scatter"))
     published = intercept_row(expansion, frame.hosts, names)
