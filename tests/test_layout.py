@@ -26,10 +26,10 @@ ORDER = """
     relations peak_terms ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels.populations kernels
-    posterior.frame posterior.errors_in_inputs posterior.cepheids posterior.moduli
+    kernels.coupled kernels.star_sums kernels.populations kernels
+    posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
-    posterior.split
+    posterior.split posterior.star_terms
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
@@ -39,7 +39,10 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
-    residuals running redshift_cuts influence anchors distance_priors sweep alternatives review
+    residuals running
+    report.cells report.machine report.latex report.parameters report.objects report.choices
+    report.html report.files report.sections report.page report.write report
+    redshift_cuts influence anchors distance_priors sweep alternatives review
     distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
@@ -48,14 +51,17 @@ ORDER = """
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
     plots.hubble plots.cuts plots
-    report calibration repeat
+    calibration repeat
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
-    workbench.points workbench.tables
-    workbench.axis workbench.range workbench.controls workbench.choices_panel
-    workbench.canvas.margins workbench.canvas.relation workbench.canvas.corner
-    workbench.canvas.panels workbench.canvas
-    workbench.view_bar workbench.star_line workbench.published workbench.foot
-    workbench.screen workbench
+    workbench.points workbench.shown workbench.slow workbench.works
+    workbench.tables workbench.view_tables
+    workbench.axis workbench.range workbench.controls workbench.selection_controls
+    workbench.parallax_controls workbench.choices_panel
+    workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
+    workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
+    workbench.canvas.parallaxes workbench.canvas
+    workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
+    workbench.frame workbench.screen workbench
     launcher
     commands.terminal commands.calibrate commands.draft commands.mock commands.workbench commands
     cli __main__
