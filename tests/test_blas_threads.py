@@ -1,12 +1,13 @@
-"""The limit on BLAS threads, where two threads draw at the same time."""
+"""Two threads that draw at the same time: the limit on BLAS threads, work in the background."""
 
 from __future__ import annotations
 
 import threading
 
+import pytest
 from threadpoolctl import threadpool_info
 
-from ladderfit.kernels.compiling import one_blas_thread
+from ladderfit.kernels.compiling import in_background, in_halves, one_blas_thread
 
 
 def blas_threads() -> list[int]:
@@ -33,3 +34,28 @@ def test_overlapping_blocks_leave_the_number_of_threads_as_it_was() -> None:
         thread.join(20)
         assert set(blas_threads()) == {1}
     assert blas_threads() == before
+
+
+def test_work_in_the_background_keeps_to_its_thread_and_can_be_ended() -> None:
+    seen: list[int] = []
+    calls = 0
+
+    def part(start: int, stop: int) -> None:
+        del start, stop
+        seen.append(threading.get_ident())
+
+    def check() -> None:
+        nonlocal calls
+        calls += 1
+        if calls > 2:
+            raise StopIteration
+
+    def work() -> None:
+        for _ in range(5):
+            in_halves(part, 10, work=10**9)
+
+    with pytest.raises(StopIteration), in_background(check):
+        work()
+    assert seen == [threading.get_ident()] * 2
+    work()  # the check ends with its block
+    assert len(seen) > 6

@@ -113,12 +113,28 @@ def one_blas_thread() -> Iterator[None]:
                 _WITHIN[1].restore_original_limits()
 
 
+@contextmanager
+def in_background(check: Callable[[], None]) -> Iterator[None]:
+    """Keep kernels to this thread, so that others find the pool free.
+
+    Parameters
+    ----------
+    check : callable
+        Called before every piece of work; what it raises ends the work.
+    """
+    _HERE.busy, _HERE.check = True, check
+    try:
+        yield
+    finally:
+        _HERE.busy, _HERE.check = False, None
+
+
 def side_by_side(function: Callable[[T], R], pieces: Sequence[T]) -> list[R]:
     """The function of every piece, in order; computed in two threads where there are cores.
 
     Within a piece kernels do not share their own work out again.
     """
-    if len(pieces) < 2 or not _may_share():
+    if not _may_share() or len(pieces) < 2:
         return [function(piece) for piece in pieces]
 
     def within(piece: T) -> R:
@@ -133,7 +149,7 @@ def side_by_side(function: Callable[[T], R], pieces: Sequence[T]) -> list[R]:
 
 def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None:
     """Call ``part(start, stop)`` over a range, in two threads where that pays."""
-    if work < _WORTH_SHARING or size < 2 or not _may_share():
+    if not _may_share() or work < _WORTH_SHARING or size < 2:
         part(0, size)
         return
     middle = size // 2
@@ -144,4 +160,7 @@ def in_halves(part: Callable[[int, int], None], size: int, *, work: int) -> None
 
 
 def _may_share() -> bool:
+    check = getattr(_HERE, "check", None)
+    if check is not None:
+        check()
     return threads() > 1 and not getattr(_HERE, "busy", False)
