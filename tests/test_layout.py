@@ -46,8 +46,8 @@ ORDER = """
     distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
-    mock.plan mock.tables mock.stars mock.peaks mock.survey mock.parallax_survey mock.scenario
-    mock.restated mock.redraw mock.folder mock mock.__main__
+    mock.tables mock.light_curves mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
+    mock.peak_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
     plots.hubble plots.cuts plots
@@ -81,7 +81,7 @@ LONGEST_FILE = 400
 PLOTTING = ("plots", "workbench.canvas")
 WIDGETS = ("workbench",)
 BLIND = ("mock",)  # must not know how a fit is made
-FIT = ("relations", "kernels", "posterior")
+FIT = ("relations", "peak_terms", "kernels", "posterior")
 
 
 def belongs(module: str, places: tuple[str, ...]) -> bool:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from astropy.table import Table
 
+from ladderfit.mock.light_curves import light_curve_columns
 from ladderfit.mock.plan import Plan
 from ladderfit.mock.tables import number_column, text_column
 from ladderfit.priors import FloatArray
@@ -55,7 +56,7 @@ def host_supernovae(plan: Plan, rng: np.random.Generator) -> Table:
         [
             text_column("SN", [f"ES-{number:03d}" for number in range(1, n + 1)], "supernova"),
             text_column("Galaxy", [host.name for host in where], "host galaxy"),
-            *_peak_columns(true, stated, rng),
+            *_measured_columns(plan, "hosts", true, stated, [host.name for host in where], rng),
         ]
     )
 
@@ -88,9 +89,25 @@ def flow_supernovae(plan: Plan, rng: np.random.Generator) -> Table:
             text_column("SN", [f"EF-{number:03d}" for number in range(1, n + 1)], "supernova"),
             number_column("zcmb", redshift, 5, None, "redshift, background radiation at rest"),
             number_column("zhel", heliocentric, 5, None, "redshift, Sun at rest"),
-            *_peak_columns(true, stated, rng),
+            *_measured_columns(plan, "expansion", true, stated, None, rng),
         ]
     )
+
+
+def _measured_columns(
+    plan: Plan,
+    group: str,
+    true: FloatArray,
+    stated: FloatArray,
+    galaxies: list[str] | None,
+    rng: np.random.Generator,
+) -> list[object]:
+    """Peaks as measured: standardised, or with the widths and colours of their light curves."""
+    light = plan.light_curves
+    if light is None:
+        return _peak_columns(true, stated, rng)
+    population = light.hosts if group == "hosts" else light.expansion
+    return light_curve_columns(light, population, true, stated, galaxies, rng)
 
 
 def _peak_columns(true: FloatArray, stated: FloatArray, rng: np.random.Generator) -> list[object]:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from astropy.table import Table
 
+from ladderfit.mock.light_curves import LightCurves
 from ladderfit.names import with_group
 
 
@@ -84,6 +85,8 @@ class Plan:
         Number of supernovae with redshifts inside `flow_redshifts` and outside.
     missing_cepheids, missing_parallax_stars : int
         Number of rows that lack one value.
+    light_curves : LightCurves or None
+        Widths and colours of the supernovae; None where peaks are standardised.
     """
 
     hosts: tuple[Host, ...]
@@ -111,6 +114,7 @@ class Plan:
     flow_redshifts: tuple[float, float] = (0.023, 0.15)
     missing_cepheids: int = 12
     missing_parallax_stars: int = 3
+    light_curves: LightCurves | None = None
 
     def truth(self) -> dict[str, float]:
         """True values by parameter name, host moduli included."""
@@ -125,6 +129,7 @@ class Plan:
             "hubble_constant",
         )
         values = {name: float(getattr(self, name)) for name in named}
+        values |= {} if self.light_curves is None else self.light_curves.truth()
         return values | {with_group("modulus", host.name): host.modulus for host in self.hosts}
 
 

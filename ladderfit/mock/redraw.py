@@ -20,6 +20,7 @@ from astropy.table import MaskedColumn, Table
 
 from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.mock.peak_redraw import peak_beyond, peak_needs, peaks_again
 from ladderfit.mock.peaks import peak_in_flow
 from ladderfit.mock.restated import beyond, restated
 from ladderfit.mock.tables import digits_column, text_column
@@ -82,7 +83,7 @@ def redraw(
     parallax_moduli: tuple[float, float] | None = None,
 ) -> Redrawn:
     """Choices and tables of `mock_from_ladder`, before they are put together."""
-    raise_if(list(beyond(ladder)))
+    raise_if([*beyond(ladder), *peak_beyond(ladder)])
     lacking = [name for name in needed(ladder) if name not in truth]
     if lacking:
         raise InputError(
@@ -116,6 +117,7 @@ def needed(ladder: Ladder) -> tuple[str, ...]:
     names += ["parallax_offset"] if ladder.parallax_stars is not None else []
     if ladder.peaks is not None or (expansion is not None and not linear):
         names += ["peak_magnitude", "peak_scatter"]
+    names += peak_needs(ladder)
     names += ["hubble_constant"] if expansion is not None else []
     if expansion is not None and linear:
         names += ["velocity_scatter"]
@@ -214,13 +216,12 @@ def _moduli_between(prior: str, ends: tuple[float, float], size: int, rng: Rng) 
 
 def _peaks(ladder: Ladder, peaks: PeakSample, truth: Mapping[str, float], rng: Rng) -> Table:
     mean = _host_moduli(ladder, truth)[peaks.host] + truth["peak_magnitude"]
-    error = np.sqrt(peaks.variance)
     galaxy = [ladder.hosts[number] for number in peaks.host]
     return Table(
         [
             text_column("SN", peaks.name, "supernova"),
             text_column("Galaxy", galaxy, "host galaxy"),
-            *_peak_columns(_measured(mean, truth["peak_scatter"], error, rng), error),
+            *peaks_again(ladder.choices, peaks, "hosts", mean, truth, rng),
         ]
     )
 
@@ -232,22 +233,14 @@ def _flow(ladder: Ladder, flow: FlowSample, truth: Mapping[str, float], rng: Rng
     law = (truth["peak_magnitude"], truth["hubble_constant"], expansion.q0, expansion.j0)
     velocity = expansion.peculiar_velocity * rng.normal(size=len(flow))
     mean = peak_in_flow(law, flow.redshift, flow.redshift_heliocentric, velocity)
-    error = np.sqrt(flow.variance)
     return Table(
         [
             text_column("SN", flow.name, "supernova"),
             digits_column("zcmb", flow.redshift, 10, None, "redshift, background at rest"),
             digits_column("zhel", flow.redshift_heliocentric, 10, None, "redshift, Sun at rest"),
-            *_peak_columns(_measured(mean, truth["peak_scatter"], error, rng), error),
+            *peaks_again(ladder.choices, flow, "expansion", mean, truth, rng),
         ]
     )
-
-
-def _peak_columns(measured: FloatArray, error: FloatArray) -> list[MaskedColumn]:
-    return [
-        digits_column("mB", measured, 8, "mag", "standardised peak magnitude, simulated"),
-        digits_column("e_mB", error, 8, "mag", "error of mB, without the common scatter"),
-    ]
 
 
 def _velocities(sample: VelocitySample, truth: Mapping[str, float], rng: Rng) -> Table:

@@ -12,6 +12,7 @@ from ladderfit import schema
 from ladderfit.errors import Problem
 from ladderfit.ladder import Ladder
 from ladderfit.ladder_file import as_written
+from ladderfit.mock.peak_redraw import role_columns
 from ladderfit.names import with_group
 from ladderfit.samples import StarSample
 
@@ -51,6 +52,7 @@ _KNOWN: dict[str, tuple[str, ...]] = {
         "anchors",
         "hosts",
         "supernovae",
+        "peak_relation",
         "expansion",
         "priors",
         "sampling",
@@ -134,6 +136,9 @@ def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, 
     for section in ("cepheids", "supernovae", "expansion"):
         if section in plain:
             plain[section] = _fitted(plain[section], _COLUMNS[section])
+    for section, sample in (("supernovae", ladder.peaks), ("expansion", ladder.flow)):
+        if sample is not None:
+            plain[section]["columns"] |= role_columns(sample.inputs)
     if ladder.velocities is not None:
         plain["expansion"]["columns"] = {role: role for role in ("name", "distance", "velocity")}
     metallic = ladder.choices.relation.metallicity != "none"

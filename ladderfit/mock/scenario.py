@@ -14,6 +14,7 @@ from ladderfit.files import write_text_atomically
 from ladderfit.mock.plan import Host, Mock, Plan
 from ladderfit.mock.survey import simulate
 from ladderfit.mock.tables import ecsv, truth_toml
+from ladderfit.mock.tripp import tripp_files
 
 SEED = 20261  # chosen before the first fit, and never since
 
@@ -117,8 +118,9 @@ use     = true
 def sample_files() -> dict[str, str]:
     """The sample's files by name, as text."""
     mock = simulate(PLAN, np.random.default_rng(SEED))
+    ladder = _ladder_text(PLAN, mock)
     return {
-        "sample.toml": _ladder_text(PLAN, mock),
+        "sample.toml": ladder,
         "cepheids.ecsv": ecsv(mock.cepheids),
         "parallax_stars.ecsv": ecsv(mock.parallax_stars),
         "supernovae.ecsv": ecsv(mock.supernovae),
@@ -126,6 +128,7 @@ def sample_files() -> dict[str, str]:
         "truth.toml": truth_toml(
             mock.truth, SEED, "To make the sample again: python -m ladderfit.mock FOLDER"
         ),
+        **tripp_files(PLAN, ladder),
     }
 
 
