@@ -25,7 +25,7 @@ ORDER = """
     covariances covariance_rows correlated
     relations peak_terms ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
-    kernels.elimination kernels.arrow kernels.tridiagonal kernels.reduced
+    kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.populations kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
@@ -42,7 +42,10 @@ ORDER = """
     residuals running
     report.cells report.machine report.latex report.parameters report.objects report.choices
     report.html report.files report.sections report.page report.write report
-    redshift_cuts influence anchors distance_priors sweep alternatives review
+    redshift_cuts influence anchors distance_priors sweep alternatives
+    review.claims review.claims_file review.system review.fits review.resampling review.bench
+    review.refits review.unstated review.reliance review.checks review.judged review.verdicts
+    review.whole review.words review
     distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
@@ -55,7 +58,7 @@ ORDER = """
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.tables workbench.view_tables
-    workbench.axis workbench.range workbench.controls workbench.selection_controls
+    workbench.axis workbench.pulse workbench.range workbench.controls workbench.selection_controls
     workbench.parallax_controls workbench.choices_panel
     workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble

@@ -24,12 +24,14 @@ import numpy.typing as npt
 
 from ladderfit.kernels.compiling import in_halves
 from ladderfit.kernels.elimination import draw_coupled, eliminate
+from ladderfit.kernels.sums import add_rows
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 LOG_2PI = math.log(2.0 * math.pi)
 
+_FEW = 200  # rows up to which a plain loop is faster than matrix products
 _CHUNK = 4_000_000  # elements of a (draws, rows) array held at once
 
 
@@ -122,12 +124,17 @@ class Rows:
         Number of hosts of the whole system.
     slices : tuple of (host, start, stop)
         Runs of rows that belong to one host.
+    host : array of int, shape (n,)
+        Each row's host, or -1.
+    products : array, shape (n, (k + 1) (k + 2) / 2)
+        Products of pairs of columns.
     """
 
     columns: FloatArray
     variance: FloatArray
     hosts: int
     slices: tuple[tuple[int, int, int], ...]
+    host: IntArray = field(repr=False)
     products: FloatArray = field(repr=False)
 
     def moments(self, extra: FloatArray) -> Moments:
@@ -138,6 +145,10 @@ class Rows:
 
     def add_to(self, total: Moments, extra: FloatArray) -> None:
         """Add the rows' sums to `total`, in place."""
+        if len(self.variance) < _FEW:
+            sums = (total.local, total.cross, total.square, total.constant)
+            add_rows(*sums, self.host, self.columns, self.variance, extra)
+            return
         chunk = max(1, _CHUNK // max(len(self.variance), 1))
         for start in range(0, len(extra), chunk):
             self._add_part(total, slice(start, start + chunk), extra[start : start + chunk])
@@ -183,7 +194,7 @@ def rows(
     )
     upper = upper_triangle(full.shape[1])
     products = full[:, upper[0]] * full[:, upper[1]]
-    return Rows(full, variance[order].astype(float), hosts, slices, products)
+    return Rows(full, variance[order].astype(float), hosts, slices, host.astype(np.int64), products)
 
 
 @dataclass(frozen=True)

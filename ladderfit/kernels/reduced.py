@@ -15,14 +15,17 @@ correlated ones in `ladderfit.kernels.coupled`.
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Protocol
 
 import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.arrow import Moments, Rows, no_moments, solve, upper_triangle
+from ladderfit.kernels.sums import add_packed
 
 FloatArray = npt.NDArray[np.float64]
+IntArray = npt.NDArray[np.int64]
 
 _FIRST, _LAST = 9, 257  # nodes; nested Clenshaw-Curtis points: 9, 17, 33, ...
 _TOLERANCE = 1e-7  # of the summed log density, per thousand stars
@@ -104,20 +107,12 @@ class ReducedRows:
 
     def add_to(self, total: Moments, extra: FloatArray) -> None:
         """As `Rows.add_to`; `extra` has shape (b,)."""
-        packed = self._sums(extra)
-        hosts, width = len(self.rows.slices), self.rows.columns.shape[1]
-        upper = upper_triangle(width)
-        after = 1 + len(upper[0])
-        total.constant[:] += packed[:, 0]
-        square = np.empty((len(extra), width, width))
-        square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = packed[:, 1:after]
-        total.square[:] += square
-        local, cross = packed[:, after : after + hosts], packed[:, after + hosts :]
-        places: slice | list[int] = [host for host, _, _ in self.rows.slices]
-        if places == list(range(self.rows.hosts)):
-            places = slice(None)
-        total.local[:, places] += local
-        total.cross[:, places] += cross.reshape(len(extra), hosts, width)
+        sums = (total.local, total.cross, total.square, total.constant)
+        add_packed(*sums, self._hosts, self._sums(extra))
+
+    @cached_property
+    def _hosts(self) -> IntArray:
+        return np.array([host for host, _, _ in self.rows.slices], dtype=np.int64)
 
     def moments(self, extra: FloatArray) -> Moments:
         """As `Rows.moments`; `extra` has shape (b,)."""
