@@ -1,0 +1,255 @@
+"""A ladder as one system of linear equations, the way simultaneous least squares sees it.
+
+Rows are Cepheids (m = mu + M0 + b x + ...), parallax stars in linearised form,
+geometric anchors, supernovae and the expansion; columns are host moduli, the
+relation's coefficients, the parallax offset, the peak magnitude and 5 log10 H0
+(Riess et al. 2016, ApJ 826, 56, appendix).  No prior enters but that of the
+parallax offset.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+from scipy.linalg import cholesky, solve_triangular
+
+from ladderfit.ladder import Ladder
+from ladderfit.names import base_name, with_group
+from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
+from ladderfit.priors import Fixed, Normal
+from ladderfit.relations import design
+from ladderfit.samples import BoolArray, FloatArray, IntArray, StarSample, TextArray
+from ladderfit.units import LN10
+
+HUBBLE = "5 log10 H0"
+STARS, SUPERNOVAE, GIVEN = 0, 1, 2  # groups of rows: scatter of their own, or none
+LEAST_SIGNAL = 5.0  # parallaxes below this many errors are not turned into distances
+
+
+@dataclass(frozen=True, eq=False)
+class System:
+    """Rows y = X beta + e of one ladder.
+
+    Attributes
+    ----------
+    names : tuple of str
+        Coefficients, one per column.
+    X : array, shape (n, k)
+    y, variance : array, shape (n,)
+        In mag; the variance is that of the measurement, without scatter.
+    group : array of int, shape (n,)
+        `STARS`, `SUPERNOVAE` or `GIVEN`.
+    row : array of int, shape (n,)
+        Place in the whole system; the ladder's Cepheids come first, in its order.
+    period_variance : array, shape (n,)
+        Of log10 period [dex^2]; 0 where not given.
+    label : array of str, shape (n,)
+        Star or supernova.
+    notes : tuple of str
+        What a reader has to know of the rows.
+    fixed : mapping of str to float
+        Coefficients held, already taken to the left side.
+    """
+
+    names: tuple[str, ...]
+    X: FloatArray
+    y: FloatArray
+    variance: FloatArray
+    group: IntArray
+    row: IntArray
+    period_variance: FloatArray
+    label: TextArray
+    notes: tuple[str, ...] = ()
+    fixed: Mapping[str, float] = field(default_factory=dict)
+
+    def rows(self, mask: BoolArray) -> System:
+        """The rows under a mask."""
+        return replace(
+            self,
+            X=self.X[mask],
+            y=self.y[mask],
+            variance=self.variance[mask],
+            group=self.group[mask],
+            row=self.row[mask],
+            period_variance=self.period_variance[mask],
+            label=self.label[mask],
+        )
+
+    def held(self, fixed: Mapping[str, float]) -> System:
+        """The system with coefficients held at values: their columns go to the left side."""
+        y = self.y.copy()
+        for name, value in fixed.items():
+            if name in self.names:
+                y -= value * self.X[:, self.names.index(name)]
+        free = [place for place, name in enumerate(self.names) if name not in fixed]
+        names = tuple(self.names[place] for place in free)
+        return replace(self, names=names, X=self.X[:, free], y=y, fixed={**self.fixed, **fixed})
+
+
+@dataclass(frozen=True, eq=False)
+class _Block:
+    columns: dict[str, FloatArray]
+    y: FloatArray
+    variance: FloatArray
+    group: int
+    label: TextArray
+    period_variance: FloatArray | None = None
+
+
+def linear_system(ladder: Ladder) -> System:
+    """All rows of a ladder; dense covariances of supernovae have none here, which a note says."""
+    blocks: list[_Block] = []
+    notes: list[str] = []
+    if ladder.cepheids is not None:
+        blocks.append(_cepheids(ladder, ladder.cepheids))
+    if ladder.parallax_stars is not None:
+        blocks += _parallaxes(ladder, ladder.parallax_stars, notes)
+    if ladder.geometric:
+        blocks.append(_anchors(ladder))
+    if ladder.peak_covariance is not None:
+        notes.append("correlated supernovae: the third rung is refitted by the joint fit alone")
+    else:
+        blocks += _supernovae(ladder)
+    names = tuple(dict.fromkeys(name for block in blocks for name in block.columns))
+    moduli = tuple(name for name in names if base_name(name) == "modulus")
+    names = moduli + tuple(name for name in names if name not in moduli)
+    return System(
+        names=names,
+        X=np.concatenate([_filled(block, names) for block in blocks]),
+        y=np.concatenate([block.y for block in blocks]),
+        variance=np.concatenate([block.variance for block in blocks]),
+        group=np.concatenate([np.full(len(block.y), block.group) for block in blocks]),
+        row=np.arange(sum(len(block.y) for block in blocks)),
+        period_variance=np.concatenate(
+            [_or_else(block.period_variance, block, 0.0) for block in blocks]
+        ),
+        label=np.concatenate([block.label for block in blocks]),
+        notes=tuple(notes),
+    )
+
+
+def _filled(block: _Block, names: tuple[str, ...]) -> FloatArray:
+    nothing = np.zeros(len(block.y))
+    return np.stack([block.columns.get(name, nothing) for name in names], axis=1)
+
+
+def _or_else(values: FloatArray | None, block: _Block, other: float) -> FloatArray:
+    return np.full(len(block.y), other) if values is None else values
+
+
+def _moduli(ladder: Ladder, host: IntArray) -> dict[str, FloatArray]:
+    return {
+        with_group("modulus", ladder.hosts[place]): (host == place).astype(float)
+        for place in np.unique(host)
+    }
+
+
+def _cepheids(ladder: Ladder, stars: StarSample) -> _Block:
+    columns = {**_moduli(ladder, stars.host), **design(ladder.choices, stars, ladder.hosts)}
+    error = stars.log_period_error
+    return _Block(
+        columns,
+        stars.magnitude,
+        stars.variance,
+        STARS,
+        stars.star,
+        None if error is None else error**2,
+    )
+
+
+def _parallaxes(ladder: Ladder, stars: StarSample, notes: list[str]) -> list[_Block]:
+    """M = m + 5 log10 plx - 10, for parallaxes large against their errors; the offset's prior.
+
+    A common offset is a column to first order; offsets of groups, or a scale of
+    the errors, are left to the joint fit.
+    """
+    if stars.parallax is None or stars.parallax_error is None:
+        raise TypeError("a parallax sample without parallaxes")
+    prior = ladder.choices.prior("parallax_offset")
+    start = prior.value if isinstance(prior, Fixed) else 0.0
+    parallax = stars.parallax - start
+    good = parallax > LEAST_SIGNAL * stars.parallax_error
+    if not good.all():
+        notes.append(
+            f"{int(np.sum(~good)):,} parallaxes below {LEAST_SIGNAL:g} errors are left to the "
+            "joint fit"
+        )
+    columns = {
+        name: column[good] for name, column in design(ladder.choices, stars, ladder.hosts).items()
+    }
+    value, per = parallax[good], 5.0 / LN10 / parallax[good]
+    if not isinstance(prior, Fixed):
+        columns["parallax_offset"] = per
+    error = stars.log_period_error
+    rows = [
+        _Block(
+            columns,
+            stars.magnitude[good] + 5.0 * np.log10(value) - 10.0,
+            stars.variance[good] + (per * stars.parallax_error[good]) ** 2,
+            STARS,
+            stars.star[good],
+            None if error is None else error[good] ** 2,
+        )
+    ]
+    if isinstance(prior, Normal):
+        given = {"parallax_offset": np.ones(1)}
+        width = np.array([prior.deviation**2])
+        rows.append(_Block(given, np.array([prior.mean]), width, GIVEN, np.array([""])))
+    return rows
+
+
+def _anchors(ladder: Ladder) -> _Block:
+    """mu = geometric modulus, made independent where the errors are correlated."""
+    anchors = ladder.geometric
+    X = np.zeros((len(anchors), len(ladder.hosts)))
+    X[np.arange(len(anchors)), [anchor.host for anchor in anchors]] = 1.0
+    y = np.array([anchor.modulus for anchor in anchors])
+    covariance = ladder.anchor_covariance
+    if covariance is None:
+        covariance = np.diag([anchor.error**2 for anchor in anchors])
+    names = [anchor.name for anchor in anchors]
+    covariance = np.array(covariance, dtype=float)
+    for shared in ladder.choices.anchors.shared_errors.values():
+        load = np.array([shared.loads.get(name, 0.0) for name in names])
+        covariance += shared.error**2 * np.outer(load, load)
+    factor = cholesky(covariance, lower=True)
+    white = solve_triangular(factor, np.column_stack([X, y]), lower=True)
+    columns = {
+        with_group("modulus", host): white[:, place]
+        for place, host in enumerate(ladder.hosts)
+        if np.any(white[:, place])
+    }
+    return _Block(columns, white[:, -1], np.ones(len(y)), GIVEN, np.array(names))
+
+
+def _supernovae(ladder: Ladder) -> list[_Block]:
+    """m = mu + M in hosts; m - term = M - 5 log10 H0 in the expansion, or its intercept."""
+    blocks = []
+    if ladder.peaks is not None:
+        peaks = ladder.peaks
+        columns = {**_moduli(ladder, peaks.host), "peak_magnitude": np.ones(len(peaks))}
+        blocks.append(_Block(columns, peaks.magnitude, peaks.variance, SUPERNOVAE, peaks.name))
+    expansion, flow = ladder.choices.expansion, ladder.flow
+    if expansion is not None and flow is not None:
+        ones = np.ones(len(flow))
+        columns = {"peak_magnitude": ones, HUBBLE: -ones}
+        velocity = peculiar_velocities(flow, expansion)
+        blocks.append(
+            _Block(
+                columns,
+                flow.magnitude - term_of(expansion, flow.redshift, flow.redshift_heliocentric),
+                flow.variance + peculiar_variance(flow.redshift, velocity),
+                SUPERNOVAE,
+                flow.name,
+            )
+        )
+    if expansion is not None and expansion.intercept is not None:
+        given = expansion.intercept
+        columns = {"peak_magnitude": -np.ones(1), HUBBLE: np.ones(1)}
+        y = np.array([25.0 + 5.0 * given.value])
+        blocks.append(
+            _Block(columns, y, np.array([(5.0 * given.error) ** 2]), GIVEN, np.array([""]))
+        )
+    return blocks
