@@ -309,7 +309,8 @@ def test_files_hold_text_and_repeat(tmp_path: Path) -> None:
     first = plots.save_figures(result, tmp_path / "one")
     second = plots.save_figures(result, tmp_path / "two")
     assert [path.name for path in first] == [
-        f"{name}{suffix}" for name in ("corner", "hubble") for suffix in (".pdf", ".png")
+        *(f"{name}{suffix}" for name in ("corner", "hubble") for suffix in (".pdf", ".png")),
+        *(f"{name}_column.pdf" for name in ("corner", "hubble")),
     ]
     for one, two in zip(first, second, strict=True):
         content = one.read_bytes()
@@ -343,3 +344,11 @@ def test_panels_return_the_figure_they_drew_into(whole: Result) -> None:
     gone.remove()
     with pytest.raises(ValueError, match="no figure"):
         relation.relation_panel(whole, gone)
+
+
+def test_figures_have_the_width_of_a_column_and_of_a_page(whole: Result) -> None:
+    for width in (plots.COLUMN, plots.WIDTH):
+        for name, figure in plots.figures(whole, width=width).items():
+            assert figure.get_size_inches()[0] <= width + 0.01 or name == "corner", name
+    narrow = plots.figures(whole, width=plots.COLUMN)
+    assert all(figure.get_size_inches()[0] == plots.COLUMN for figure in narrow.values())

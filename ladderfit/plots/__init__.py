@@ -12,10 +12,10 @@ from ladderfit.plots.hubble import hubble_figure
 from ladderfit.plots.moduli import moduli_figure
 from ladderfit.plots.parallax import parallax_figure
 from ladderfit.plots.relation import relation_figure
-from ladderfit.plots.theme import LIGHT, Theme
+from ladderfit.plots.theme import COLUMN, LIGHT, WIDTH, Theme
 from ladderfit.result import Result
 
-__all__ = ["figures", "save_figures"]
+__all__ = ["COLUMN", "WIDTH", "figures", "save_figures"]
 
 _MAKERS = {
     "relation": relation_figure,
@@ -27,25 +27,28 @@ _MAKERS = {
 DOTS_PER_INCH = 200
 
 
-def figures(result: Result, *, theme: Theme = LIGHT) -> dict[str, Figure]:
+def figures(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> dict[str, Figure]:
     """Every figure that the ladder's rungs allow; without its tables, the corner alone.
 
     Parameters
     ----------
     result : Result
     theme : Theme
+    width : float
+        In inches: `WIDTH` for a page, `COLUMN` for one column of a journal.
 
     Returns
     -------
     dict of str to Figure
         Among ``relation``, ``parallaxes``, ``corner``, ``moduli`` and ``hubble``, in this order.
     """
-    return dict(_made(result, theme))
+    return dict(_made(result, theme, width))
 
 
 def save_figures(result: Result, folder: Path, *, theme: Theme = LIGHT) -> list[Path]:
     """Write every figure as PDF (with its text as text) and as PNG.
 
+    Those for one column of a journal are written beside them, as ``NAME_column.pdf``.
     Figures are made, written and freed one after another.
 
     Parameters
@@ -67,21 +70,27 @@ def save_figures(result: Result, folder: Path, *, theme: Theme = LIGHT) -> list[
     """
     folder.mkdir(parents=True, exist_ok=True)
     written = []
-    for name, figure in _made(result, theme):
-        with theme.applied():
-            for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
-                path = folder / f"{name}{suffix}"
-                figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
-                written.append(path)
-                figure.set_layout_engine("none")  # laid out once, for all files
-        figure.clear()
+    for width, end, suffixes in ((WIDTH, "", (".pdf", ".png")), (COLUMN, "_column", (".pdf",))):
+        for name, figure in _made(result, theme, width):
+            paths = [folder / f"{name}{end}{suffix}" for suffix in suffixes]
+            _save(figure, paths, theme)
+            written += paths
+            figure.clear()
     return written
 
 
-def _made(result: Result, theme: Theme) -> Iterator[tuple[str, Figure]]:
+def _save(figure: Figure, paths: list[Path], theme: Theme) -> None:
+    with theme.applied():
+        for path in paths:
+            metadata = {"CreationDate": None} if path.suffix == ".pdf" else None
+            figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
+            figure.set_layout_engine("none")  # laid out once, for all files
+
+
+def _made(result: Result, theme: Theme, width: float) -> Iterator[tuple[str, Figure]]:
     for name, maker in _MAKERS.items():
         if result.source is None and name != "corner":
             continue
-        figure = maker(result, theme=theme)
+        figure = maker(result, theme=theme, width=width)
         if figure is not None:
             yield name, figure

@@ -12,7 +12,7 @@ from matplotlib.ticker import MaxNLocator
 
 from ladderfit.names import parameter
 from ladderfit.plots.density import Density
-from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, symbol
+from ladderfit.plots.theme import COLUMN, LIGHT, WIDTH, Theme, figure_of, new_figure, symbol
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval
 from ladderfit.samples import FloatArray
@@ -20,6 +20,8 @@ from ladderfit.samples import FloatArray
 _FILLS = (0.75, 0.35)  # strength of the colour, innermost region first
 _CELLS = 90
 _MOST = 10  # parameters that a page can hold
+_IN_COLUMN = 3  # parameters that one column of a journal can hold
+_RANK = {"hubble_constant": 0, "zero_point": 1, "peak_magnitude": 2, "slope": 3}
 _FIRST = (
     "slope",
     "slope_beyond",
@@ -39,9 +41,12 @@ def varying(result: Result) -> tuple[str, ...]:
     return tuple(name for name in result.headline if np.ptp(result.draws[name]) > 0.0)
 
 
-def shown(result: Result) -> tuple[str, ...]:
+def shown(result: Result, width: float = WIDTH) -> tuple[str, ...]:
     """What a corner figure shows by default: all that vary, or the first in rank if too many."""
     every = varying(result)
+    if width <= COLUMN:
+        ranked = sorted(every, key=lambda name: _RANK.get(name, len(_RANK)))[:_IN_COLUMN]
+        return tuple(name for name in every if name in ranked)
     return every if len(every) <= _MOST else tuple(name for name in every if name in _FIRST)
 
 
@@ -145,7 +150,11 @@ def joint_panel(
 
 
 def corner_figure(
-    result: Result, names: Sequence[str] | None = None, *, theme: Theme = LIGHT
+    result: Result,
+    names: Sequence[str] | None = None,
+    *,
+    theme: Theme = LIGHT,
+    width: float = WIDTH,
 ) -> Figure | None:
     """Every pair of the headline parameters, and each on its own.
 
@@ -155,6 +164,8 @@ def corner_figure(
     names : sequence of str, optional
         Which parameters, in which order; those of `shown` by default.
     theme : Theme
+    width : float
+        In inches; at page width the figure is as large as its panels need.
 
     Returns
     -------
@@ -166,12 +177,12 @@ def corner_figure(
     KeyError
         If a name is not among the draws.
     """
-    chosen = shown(result) if names is None else tuple(names)
+    chosen = shown(result, width) if names is None else tuple(names)
     if not chosen:
         return None
     size = len(chosen)
     with theme.applied():
-        side = max(3.0, min(0.95 * size + 0.9, 10.0))
+        side = width if width <= COLUMN else max(3.0, min(0.95 * size + 0.9, 10.0))
         figure = new_figure(side, side)
         grid = figure.subplots(size, size, squeeze=False)
         for row, up in enumerate(chosen):
@@ -184,6 +195,8 @@ def corner_figure(
                     marginal_panel(result, up, axes, theme=theme)
                 else:
                     joint_panel(result, across, up, axes, theme=theme)
+                if column == row and width <= COLUMN:
+                    axes.set_title(str(Interval.of(result.draws[up])), fontsize=7.5)
                 _tidy(axes, across, up, first=column == 0 and row > 0, last=row == size - 1)
         figure.align_labels()
         _legend(figure, theme, outside=size < 3)

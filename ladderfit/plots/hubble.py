@@ -9,7 +9,9 @@ from matplotlib.figure import Figure
 from ladderfit.names import parameter
 from ladderfit.plots.theme import (
     CHANCES,
+    COLUMN,
     LIGHT,
+    WIDTH,
     Accent,
     Theme,
     brighter_up,
@@ -99,7 +101,14 @@ def _running(axes: Axes, data: Residuals, theme: Theme) -> None:
         zorder=2.8,
         label=f"running mean of {found.size}, and its error",
     )
-    axes.legend(loc="upper left")
+    axes.legend(
+        loc="upper left",
+        borderaxespad=0.2,
+        frameon=True,
+        framealpha=0.85,
+        facecolor=theme.paper,
+        edgecolor="none",
+    )
 
 
 def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
@@ -215,8 +224,8 @@ def velocity_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figur
     return figure_of(axes)
 
 
-def _velocity_figure(result: Result, data: Residuals, theme: Theme) -> Figure:
-    figure = new_figure(5.0, 5.5)
+def _velocity_figure(result: Result, data: Residuals, theme: Theme, width: float) -> Figure:
+    figure = new_figure(5.0, 5.5) if width > COLUMN else new_figure(4.2, width)
     top, bottom = figure.subplots(2, 1, sharex=True, height_ratios=[3, 1])
     velocity_panel(result, top, theme=theme)
     _left_over(bottom, data, theme.accent(0), theme)
@@ -226,13 +235,15 @@ def _velocity_figure(result: Result, data: Residuals, theme: Theme) -> Figure:
     return figure
 
 
-def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
+def hubble_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> Figure | None:
     """Supernovae in hosts and in the expansion, or velocities against distances.
 
     Parameters
     ----------
     result : Result
     theme : Theme
+    width : float
+        In inches.
 
     Returns
     -------
@@ -243,7 +254,7 @@ def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
     peaks, flow = peak_residuals(result), flow_residuals(result)
     with theme.applied():
         if velocities is not None:
-            return _velocity_figure(result, velocities, theme)
+            return _velocity_figure(result, velocities, theme, width)
         columns = [
             (data, index, words, panel)
             for data, index, words, panel in (
@@ -254,26 +265,41 @@ def hubble_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
         ]
         if not columns:
             return None
-        both = len(columns) == 2
-        figure = new_figure(4.6, 7.0 if both else 5.0)
+        figure, pairs = _panel_pairs(len(columns), width)
+        for (top, bottom), (data, index, words, panel) in zip(pairs, columns, strict=True):
+            panel(result, top, theme=theme)
+            _left_over(bottom, data, theme.accent(index), theme)
+            bottom.set_xlabel(words)
+        reach = max(float(np.max(np.abs(data.residual) + data.sd)) for data, _, _, _ in columns)
+        for place, (top, bottom) in enumerate(pairs):
+            bottom.set_ylim(1.08 * reach, -1.08 * reach)
+            if place and width > COLUMN:
+                top.set_ylabel("")
+                bottom.tick_params(labelleft=False)
+            else:
+                top.set_ylabel("Peak magnitude [mag]")
+                bottom.set_ylabel("Residual\n[mag]")
+        for pair in pairs:
+            figure.align_ylabels(list(pair))
+    return figure
+
+
+def _panel_pairs(count: int, width: float) -> tuple[Figure, list[tuple[Axes, Axes]]]:
+    """Panels for data and what is left over: side by side, or stacked in one column."""
+    if width > COLUMN:
+        figure = new_figure(4.6, width if count > 1 else min(width, 5.0))
         grid = figure.subplots(
             2,
-            len(columns),
+            count,
             sharex="col",
             height_ratios=[2.4, 1],
-            width_ratios=[1, 1.5] if both else [1],
+            width_ratios=[1, 1.5] if count == 2 else [1] * count,
             squeeze=False,
         )
-        for column, (data, index, words, panel) in enumerate(columns):
-            panel(result, grid[0, column], theme=theme)
-            _left_over(grid[1, column], data, theme.accent(index), theme)
-            grid[1, column].set_xlabel(words)
-        reach = max(float(np.max(np.abs(data.residual) + data.sd)) for data, _, _, _ in columns)
-        for axes in grid[1]:
-            axes.set_ylim(1.08 * reach, -1.08 * reach)
-        if both:
-            grid[1, 1].tick_params(labelleft=False)
-        grid[0, 0].set_ylabel("Peak magnitude [mag]")
-        grid[1, 0].set_ylabel("Residual\n[mag]")
-        figure.align_ylabels(list(grid[:, 0]))
-    return figure
+        return figure, [(grid[0, place], grid[1, place]) for place in range(count)]
+    figure = new_figure(3.6 * count, width)
+    pairs: list[tuple[Axes, Axes]] = []
+    for part in figure.subfigures(count, 1, squeeze=False)[:, 0]:
+        top, bottom = part.subplots(2, 1, sharex=True, height_ratios=[2.2, 1])
+        pairs.append((top, bottom))
+    return figure, pairs

@@ -10,7 +10,7 @@ from matplotlib.figure import Figure
 from matplotlib.transforms import blended_transform_factory
 
 from ladderfit.names import with_group
-from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, plain
+from ladderfit.plots.theme import COLUMN, LIGHT, WIDTH, Theme, figure_of, new_figure, plain
 from ladderfit.residuals import peak_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
@@ -86,14 +86,18 @@ def modulus_panel(entries: list[HostModulus], axes: Axes, *, theme: Theme = LIGH
         color=accent.colour,
         elinewidth=1.2,
     )
-    beside = blended_transform_factory(axes.transAxes, axes.transData)
-    for row, entry in enumerate(entries):
-        axes.text(1.03, row, str(entry.interval), transform=beside, va="center", fontsize=7.5)
+    _numbers_beside(entries, axes)
     axes.set_yticks(rows, [plain(entry.host) for entry in entries])
     axes.tick_params(axis="y", length=0)
     axes.set_ylim(len(entries) - 0.4, -0.6)
     axes.set_xlabel("Distance modulus [mag]")
     return figure_of(axes)
+
+
+def _numbers_beside(entries: list[HostModulus], axes: Axes) -> None:
+    beside = blended_transform_factory(axes.transAxes, axes.transData)
+    for row, entry in enumerate(entries):
+        axes.text(1.03, row, str(entry.interval), transform=beside, va="center", fontsize=7.5)
 
 
 def difference_panel(entries: list[HostModulus], axes: Axes, *, theme: Theme = LIGHT) -> Figure:
@@ -160,13 +164,15 @@ def _marks(
     )
 
 
-def moduli_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
+def moduli_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> Figure | None:
     """The hosts' moduli in a list, and beside it what each host's own evidence says.
 
     Parameters
     ----------
     result : Result
     theme : Theme
+    width : float
+        In inches.
 
     Returns
     -------
@@ -177,10 +183,24 @@ def moduli_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
     if not entries:
         return None
     with theme.applied():
-        figure = new_figure(1.1 + 0.2 * max(len(entries), 3))
+        figure = new_figure(1.1 + 0.2 * max(len(entries), 3), width)
+        if width <= COLUMN:
+            return _in_one_column(entries, figure, theme)
         left, gap, right = figure.subplots(1, 3, width_ratios=[1.0, 0.34, 1.6])
         gap.set_axis_off()
         modulus_panel(entries, left, theme=theme)
         difference_panel(entries, right, theme=theme)
         figure.legend(*right.get_legend_handles_labels(), loc="outside upper right", ncols=3)
+    return figure
+
+
+def _in_one_column(entries: list[HostModulus], figure: Figure, theme: Theme) -> Figure:
+    """The differences alone, with the moduli as numbers beside."""
+    axes, gap = figure.subplots(1, 2, width_ratios=[1.0, 0.5])
+    gap.set_axis_off()
+    difference_panel(entries, axes, theme=theme)
+    axes.set_yticks(np.arange(len(entries)), [plain(entry.host) for entry in entries])
+    axes.tick_params(axis="y", labelleft=True)
+    _numbers_beside(entries, axes)
+    figure.legend(*axes.get_legend_handles_labels(), loc="outside upper center", ncols=2)
     return figure

@@ -9,12 +9,23 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from ladderfit.plots.corner import joint_panel
-from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, plain, symbol, symmetric
+from ladderfit.plots.theme import (
+    COLUMN,
+    LIGHT,
+    WIDTH,
+    Theme,
+    figure_of,
+    new_figure,
+    plain,
+    symbol,
+    symmetric,
+)
 from ladderfit.residuals import Residuals, parallax_offsets, parallax_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
 from ladderfit.samples import FloatArray
 
+_LONG_WORDS = 30  # letters of a legend that one column holds
 _FEW = 150  # stars up to which each has its bar
 
 
@@ -109,13 +120,15 @@ def _stars(axes: Axes, x: FloatArray, y: FloatArray, sd: FloatArray, theme: Them
     )
 
 
-def parallax_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
+def parallax_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> Figure | None:
     """Measured against photometric parallaxes, and zero point against offset.
 
     Parameters
     ----------
     result : Result
     theme : Theme
+    width : float
+        In inches.
 
     Returns
     -------
@@ -131,12 +144,7 @@ def parallax_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
     ]
     joint = len(free) == 2
     with theme.applied():
-        figure = new_figure(4.6)
-        panels = figure.subplot_mosaic(
-            "MJ;RJ" if joint else "M;R",
-            height_ratios=[2.2, 1.0],
-            width_ratios=[1.35, 1.0] if joint else [1.0],
-        )
+        figure, panels = _parallax_panels(width, joint=joint)
         measured_panel(result, panels["M"], theme=theme)
         panels["M"].tick_params(labelbottom=False)
         offset_panel(result, panels["R"], theme=theme)
@@ -145,8 +153,34 @@ def parallax_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
             panels["J"].set_xlabel(f"Residual offset {symbol('parallax_offset')} [mas]")
             panels["J"].set_ylabel(f"Zero point {symbol('zero_point')} [mag]")
             panels["J"].set_title("regions of 68 % and 95 %")
+        if width <= COLUMN:
+            _break_legend(panels["M"])
         figure.align_ylabels([panels["M"], panels["R"]])
     return figure
+
+
+def _break_legend(axes: Axes) -> None:
+    """Long entries on two lines."""
+    legend = axes.get_legend()
+    for entry in () if legend is None else legend.get_texts():
+        if len(entry.get_text()) > _LONG_WORDS:
+            entry.set_text(entry.get_text().replace(", ", ",\n"))
+
+
+def _parallax_panels(width: float, *, joint: bool) -> tuple[Figure, dict[str, Axes]]:
+    """M, measured parallaxes; R, what is left over; J, joint density: stacked in one column."""
+    if width > COLUMN:
+        figure = new_figure(4.6, width)
+        panels = figure.subplot_mosaic(
+            "MJ;RJ" if joint else "M;R",
+            height_ratios=[2.2, 1.0],
+            width_ratios=[1.35, 1.0] if joint else [1.0],
+        )
+    else:
+        figure = new_figure(6.8 if joint else 4.2, width)
+        rows, heights = ("M;R;J", [2.2, 1.0, 2.0]) if joint else ("M;R", [2.2, 1.0])
+        panels = figure.subplot_mosaic(rows, height_ratios=heights)
+    return figure, panels
 
 
 def distance_prior_panel(

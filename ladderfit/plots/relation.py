@@ -11,7 +11,9 @@ from matplotlib.figure import Figure
 from ladderfit.names import base_name, parameter
 from ladderfit.plots.theme import (
     CHANCES,
+    COLUMN,
     LIGHT,
+    WIDTH,
     Accent,
     Theme,
     brighter_up,
@@ -317,13 +319,15 @@ def parallax_panel(stars: Residuals, result: Result, axes: Axes, *, theme: Theme
     return figure_of(axes)
 
 
-def relation_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
+def relation_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> Figure | None:
     """The relation with its residuals in magnitude and, where there are any, in parallax.
 
     Parameters
     ----------
     result : Result
     theme : Theme
+    width : float
+        In inches.
 
     Returns
     -------
@@ -335,7 +339,8 @@ def relation_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
         return None
     heights = [3.0] + [1.0] * ((cepheids is not None) + (parallaxes is not None))
     with theme.applied():
-        figure = new_figure(1.2 + 1.15 * sum(heights))
+        size = 1.15 if width > COLUMN else 0.8
+        figure = new_figure((1.2 if width > COLUMN else 1.6) + size * sum(heights), width)
         grid = figure.subplots(len(heights), 1, sharex=True, height_ratios=heights, squeeze=False)
         panels = list(grid[:, 0])
         relation_panel(result, panels[0], theme=theme)
@@ -344,8 +349,25 @@ def relation_figure(result: Result, *, theme: Theme = LIGHT) -> Figure | None:
         if parallaxes is not None:
             parallax_panel(parallaxes, result, panels[-1], theme=theme)
         panels[-1].set_xlabel("Period [d]")
+        if width <= COLUMN:
+            _legend_above(figure, panels[0])
         figure.align_ylabels(panels)
     return figure
+
+
+def _legend_above(figure: Figure, axes: Axes) -> None:
+    """The legend out of the way of the stars, where there is little room."""
+    inside = axes.get_legend()
+    if inside is not None:
+        inside.remove()
+    figure.legend(
+        *axes.get_legend_handles_labels(),
+        loc="outside upper left",
+        ncols=2,
+        markerscale=1.5,
+        fontsize=6.5,
+        columnspacing=1.0,
+    )
 
 
 def _reach(result: Result) -> tuple[float, float]:

@@ -24,6 +24,7 @@ from ladderfit.names import group_of, parameter
 from ladderfit.samples import FloatArray
 
 WIDTH = 7.0  # inches, two columns of a journal
+COLUMN = 3.4  # inches, one column
 CHANCES = "68 % and 95 %"
 
 
