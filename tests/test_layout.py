@@ -26,10 +26,10 @@ ORDER = """
     relations peak_terms ladder_file assembly consistency ladder ladder_copy
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels.star_sums kernels.populations kernels
+    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
-    posterior.split posterior.star_terms
+    posterior.split posterior.star_terms posterior.shared posterior.limits
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence

@@ -174,8 +174,8 @@ def noisy_block(ladder: Ladder, frame: Frame, stars: StarSample, errors: InputEr
     reference = ladder.choices.relation.metallicity
     if reference != "none":
         metallicity = stars.metallicity - reference.reference
-    padded = _padded(errors, width)
-    sensitive = padded.sensitive
+    wider = padded(errors, width)
+    sensitive = wider.sensitive
     labels = tuple(
         name if sensitive[place] else None for place, name in enumerate(coefficient_names)
     )
@@ -188,11 +188,11 @@ def noisy_block(ladder: Ladder, frame: Frame, stars: StarSample, errors: InputEr
         scatters=names,
         scatter_of=which,
         coefficients=(*labels, *[None] * (width - len(labels))),
-        errors=padded,
+        errors=wider,
     )
 
 
-def _padded(errors: InputErrors, width: int) -> InputErrors:
+def padded(errors: InputErrors, width: int) -> InputErrors:
     """The same with columns of zero for coefficients that are not the relation's."""
 
     def pad(slope: FloatArray | None) -> FloatArray | None:

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from functools import partial
+from typing import Protocol
 
 import numpy as np
 
@@ -24,15 +25,25 @@ from ladderfit.posterior.coupled import (
 )
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.frame import Frame, host_frame
+from ladderfit.posterior.limits import Limits, limits_of
 from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
 from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
 from ladderfit.posterior.populations import population_blocks
-from ladderfit.posterior.split import Split, split
+from ladderfit.posterior.shared import SharedBlock, shared_block
+from ladderfit.posterior.split import Split, shared_photometry, split
+from ladderfit.posterior.star_terms import star_by_star, star_terms
 from ladderfit.posterior.supernovae import correlated_samples, ladder_rows
 from ladderfit.samples import FloatArray
 
 _CHUNK = 512  # draws evaluated at once: their sums stay in the processor's cache
 _FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
+
+
+class Tabulated(Protocol):
+    """Sums that can be tabulated more finely over a range of extra variance."""
+
+    def focus(self, low: float, high: float) -> None:
+        """Have a short table for the range."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -51,6 +62,8 @@ class Posterior:
     constant : Moments
         Anchors, priors and rows of fixed variance; batch of one.
     parallaxes : ParallaxTerms or None
+    limits : Limits or None
+        Magnitude limits of hosts.
     """
 
     ladder: Ladder
@@ -59,6 +72,7 @@ class Posterior:
     blocks: tuple[Block, ...]
     constant: Moments
     parallaxes: ParallaxTerms | None
+    limits: Limits | None = None
 
     @property
     def dimension(self) -> int:
@@ -108,14 +122,22 @@ class Posterior:
         low, high : array, shape (d,)
             Corners of the box in coordinates; folded ones may straddle zero.
         """
-        for block in self.blocks:
-            if not isinstance(block, ScatterBlock | CoupledBlock | TwoScatterBlock):
-                continue
-            if block.scatter in self.split.phi_names and not isinstance(block.rows, Rows):
-                ends = self.split.value(block.scatter, np.stack([low, high]))
-                place = self.split.phi_names.index(block.scatter)
+        for scatter, tabulated in self._tabulated():
+            if scatter in self.split.phi_names:
+                ends = self.split.value(scatter, np.stack([low, high]))
+                place = self.split.phi_names.index(scatter)
                 bottom = 0.0 if low[place] * high[place] <= 0.0 else float(ends.min())
-                block.rows.focus(bottom**2, float(ends.max()) ** 2)
+                tabulated.focus(bottom**2, float(ends.max()) ** 2)
+
+    def _tabulated(self) -> Iterator[tuple[str, Tabulated]]:
+        """Every set of tabulated sums, with its scatter."""
+        for block in self.blocks:
+            if isinstance(block, SharedBlock):
+                yield from zip(block.scatters, block.rows, strict=True)
+            elif isinstance(block, CoupledBlock | TwoScatterBlock):
+                yield block.scatter, block.rows
+            elif isinstance(block, ScatterBlock) and not isinstance(block.rows, Rows):
+                yield block.scatter, block.rows
 
     def solution(self, z: FloatArray) -> Solution:
         """Theta and the evidence of all rows, given phi."""
@@ -125,7 +147,11 @@ class Posterior:
         return solve(total, self.split.known, self.split.known_values(z))
 
     def _log_density(self, z: FloatArray) -> FloatArray:
-        total = self.solution(z).log_evidence + self.split.log_prior(z)
+        solution = self.solution(z)
+        total = solution.log_evidence + self.split.log_prior(z)
+        if self.limits is not None:
+            values = partial(self.split.value, z=z)
+            total = total + self.limits.log_factor(solution, values)
         if self.parallaxes is not None:
             total = total + self.log_parallaxes(z).sum(axis=1)
         return np.where(np.isnan(total), -np.inf, total)
@@ -137,7 +163,11 @@ class Posterior:
         return self.parallaxes.log_density(partial(self.split.value, z=z))
 
     def _draw(self, z: FloatArray, white: FloatArray) -> dict[str, FloatArray]:
-        coefficients, local = self.solution(z).draw(white)
+        solution = self.solution(z)
+        coefficients, local = solution.draw(white)
+        if self.limits is not None:
+            values = partial(self.split.value, z=z)
+            self.limits.redraw(solution, values, local, white[:, -self.frame.hosts :])
         draws: dict[str, FloatArray] = {}
         for place, name in enumerate(self.split.coefficients):
             value = coefficients[:, place]
@@ -190,6 +220,8 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
         blocks.append(star_terms(ladder, frame, names))
     elif ladder.cepheids is not None and errors is not None:
         blocks.append(noisy_block(ladder, frame, ladder.cepheids, errors))
+    elif ladder.cepheids is not None and shared_photometry(ladder):
+        blocks.append(shared_block(ladder, frame, ladder.cepheids, partial(_largest, ladder)))
     else:
         found += plain_rows(ladder, frame)
     for rows_, scatter in found:
@@ -200,7 +232,8 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
             largest = _largest(ladder, scatter)
             kept = None if before is None else _kept(before.blocks, rows_, scatter, largest)
             blocks.append(kept or ScatterBlock(reduced(rows_, largest), scatter, largest))
-    return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder))
+    limits = limits_of(ladder, frame, names)
+    return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder), limits)
 
 
 def _chunks(values: FloatArray) -> list[FloatArray]:

@@ -19,6 +19,7 @@ from ladderfit.kernels import detection
 from ladderfit.kernels.quadrature import LOG_2PI
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.cepheids import Values
+from ladderfit.posterior.colours import PARALLAX_COLOUR, SLOPE, Colours, colours_of
 from ladderfit.posterior.errors_in_inputs import InputErrors, input_errors
 from ladderfit.posterior.moduli import Distances, Sharing, distances_of, product, sharing_of
 from ladderfit.posterior.offsets import offset_terms
@@ -56,6 +57,10 @@ class ParallaxTerms:
     selection : Selection or None
     headroom : array, shape (n,), or None
         Limit minus magnitude, in the selection's band [mag].
+    colours : Colours or None
+        Where the ratio is free.
+    x : array, shape (n,)
+        log10 of period over pivot.
     """
 
     coefficients: tuple[str, ...]
@@ -77,6 +82,8 @@ class ParallaxTerms:
     sharing: Sharing | None
     selection: Selection | None
     headroom: FloatArray | None
+    colours: Colours | None
+    x: FloatArray
 
     def log_density(self, values: Values) -> FloatArray:
         """Log density of every star or cluster, shape (b, g), at the given parameter values."""
@@ -105,12 +112,24 @@ class ParallaxTerms:
         return total + np.add.reduceat(measured[:, order], starts[:-1], axis=1)
 
     def _magnitudes(self, values: Values) -> tuple[FloatArray, FloatArray, FloatArray | float]:
-        """Apparent minus absolute magnitudes, variances, and the density of metallicities."""
+        """Apparent minus absolute magnitudes, variances, and the density of what else is measured.
+
+        That is of metallicities and colours, where they have populations.
+        """
         coefficients = np.stack([values(name) for name in self.coefficients], axis=1)
         scatter2 = np.stack([values(name) ** 2 for name in self.scatters], axis=1)
-        distance_like = self.magnitude - coefficients @ self.design.T
-        variance = self.variance + scatter2[:, self.scatter_of]
         measured: FloatArray | float = 0.0
+        index, own = self.magnitude[None, :], self.variance[None, :]
+        if self.colours is not None:
+            told = self.colours.at(values)
+            index, own = told.index, told.variance
+            if told.pull is not None and told.weight is not None:
+                mean = values(PARALLAX_COLOUR)[:, None] + values(SLOPE)[:, None] * self.x
+                off = self.colours.colour - mean
+                index = index - told.pull * off
+                measured = 0.5 * (np.log(told.weight) - told.weight * off**2 - LOG_2PI)
+        distance_like = index - coefficients @ self.design.T
+        variance = own + scatter2[:, self.scatter_of]
         if self.errors is not None:
             spread = values("metallicity_spread") if self._population else None
             effect = self.errors.effect(coefficients, spread)
@@ -118,7 +137,8 @@ class ParallaxTerms:
             if effect.pull is not None and effect.weight is not None:
                 off = values("parallax_metallicity")[:, None] - self.metallicity
                 distance_like = distance_like - effect.pull * off
-                measured = 0.5 * (np.log(effect.weight) - effect.weight * off**2 - LOG_2PI)
+                density = 0.5 * (np.log(effect.weight) - effect.weight * off**2 - LOG_2PI)
+                measured = measured + density
         return distance_like, variance, measured
 
     def _parallaxes(self, values: Values) -> tuple[FloatArray, FloatArray]:
@@ -213,6 +233,8 @@ def parallax_terms(ladder: Ladder) -> ParallaxTerms | None:
         sharing=sharing,
         selection=section.selection,
         headroom=stars.extras.headroom,
+        colours=colours_of(ladder, stars),
+        x=stars.log_period - float(np.log10(ladder.choices.relation.pivot)),
     )
 
 

@@ -9,6 +9,7 @@ theta holds all other coefficients and the host moduli.  This file alone decides
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 from typing import Literal
 
@@ -207,14 +208,16 @@ def _nonlinear(ladder: Ladder) -> set[str]:
     names = coefficient_names(ladder.choices) if _has_relation(ladder) else ()
     if ladder.parallax_stars is not None:
         found.update(active_coefficients(ladder, ladder.parallax_stars))
+        found.update(colour_coefficients(ladder))
     for stars in (ladder.cepheids, ladder.parallax_stars):
         errors = input_errors(ladder, stars)
         if errors is not None:
             found.update(n for n, s in zip(names, errors.sensitive, strict=True) if s)
-    return found
+    found.update(_beside_limits(ladder))
     terms = _peak_terms(ladder)
     if terms.curved:
         found.update(terms.means)
+    return found
 
 
 def _expansion_coefficients(ladder: Ladder) -> tuple[str, ...]:
@@ -250,7 +253,7 @@ def has_intercept(choices: Choices) -> bool:
 
 def _others(ladder: Ladder) -> tuple[str, ...]:
     """Parameters that are no coefficients."""
-    names: list[str] = []
+    names: list[str] = [*colour_parameters(ladder), *shared_photometry(ladder)]
     samples = [s for s in (ladder.cepheids, ladder.parallax_stars) if s is not None]
     for stars in samples:
         names += [n for n in scatters(ladder.choices, stars, ladder.hosts)[0] if n not in names]
@@ -268,6 +271,18 @@ def _others(ladder: Ladder) -> tuple[str, ...]:
     if ladder.velocities is not None:
         names.append("velocity_scatter")
     return (*names, *_peak_terms(ladder).nonlinear)
+
+
+def _beside_limits(ladder: Ladder) -> Iterator[str]:
+    """Where hosts have magnitude limits, every coefficient that data of hosts depend on."""
+    section = ladder.choices.cepheids
+    if section is None or section.completeness is None or ladder.cepheids is None:
+        return
+    yield from coefficient_names(ladder.choices)
+    yield from (name for name in _expansion_coefficients(ladder) if name == "peak_magnitude")
+    terms = _peak_terms(ladder)
+    yield from (*terms.columns, *terms.means)
+    yield from _shared(ladder)
 
 
 def shared_photometry(ladder: Ladder) -> tuple[str, ...]:
