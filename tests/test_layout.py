@@ -19,11 +19,11 @@ ORDER = """
     choices.anchors choices.photometry_checks
     choices.peak_relation choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
-    kinds tables table_memory table_files rows star_values parallax_inputs host_inputs
+    kinds tables table_columns table_memory table_files rows star_values parallax_inputs host_inputs
     select_stars
     peak_inputs select_supernovae
     covariances covariance_rows correlated
-    relations peak_terms ladder_file assembly consistency ladder ladder_copy
+    relations peak_terms ladder_file assembly consistency ladder ladder_copy ranges
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels
@@ -39,13 +39,16 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     classical.least_squares classical.lines classical.parallaxes classical
-    residuals running
+    peak_predictions residuals running peak_views
     report.cells report.machine report.latex report.parameters report.objects report.choices
     report.html report.files report.sections report.page report.write report
-    redshift_cuts influence anchors distance_priors sweep alternatives
+    redshift_cuts influence anchors distance_priors error_budget
+    sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep
+    alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
+    alternatives.run alternatives.words alternatives.folder alternatives
     review.claims review.claims_file review.system review.fits review.resampling review.bench
     review.refits review.unstated review.reliance review.checks review.judged review.verdicts
-    review.whole review.words review
+    review.whole review.words review.page review
     distances compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
@@ -53,8 +56,8 @@ ORDER = """
     mock.peak_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
-    plots.hubble plots.cuts plots
-    calibration repeat
+    plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots
+    calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.tables workbench.view_tables

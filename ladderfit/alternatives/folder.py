@@ -1,0 +1,93 @@
+"""A comparison on disk: tables as ECSV and CSV, and what a repeat needs."""
+
+from __future__ import annotations
+
+import io
+import json
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+from astropy.table import MaskedColumn, Table
+
+from ladderfit.alternatives.comparison import Comparison
+from ladderfit.alternatives.systematics import systematics
+from ladderfit.error_budget import budgeted
+from ladderfit.errors import InputError, Problem
+from ladderfit.files import write_text_atomically
+from ladderfit.names import parameter
+from ladderfit.store import provenance_of
+
+OUTCOMES = "outcomes.jsonl"
+
+
+def sweep_folder(path: Path) -> Path:
+    """A folder for a comparison: new, or one in which a sweep has begun.
+
+    Raises
+    ------
+    InputError
+        If something else is there.
+    """
+    if path.exists() and not (path / OUTCOMES).is_file():
+        empty = path.is_dir() and not any(path.iterdir())
+        if not empty:
+            raise InputError(
+                Problem(
+                    found="a file or folder without outcomes of a sweep",
+                    expected="a name that is free, or the folder of a sweep to go on with",
+                    remedy="choose another name, or move it away",
+                    file=str(path),
+                )
+            )
+    path.mkdir(parents=True, exist_ok=True)
+    return path
+
+
+def write_comparison(comparison: Comparison, budget: pd.DataFrame, folder: Path) -> None:
+    """Write the tables into an existing folder, each in one step.
+
+    ``alternatives``, ``systematics`` and ``budget``, as ``.ecsv`` and ``.csv``, and
+    ``provenance.json``.
+
+    Raises
+    ------
+    OSError
+        If a file cannot be written.
+    """
+    title = comparison.title
+    _write(comparison.table(), comparison.units(), title, folder / "alternatives")
+    _write(systematics(comparison), {}, title, folder / "systematics")
+    units = {name: parameter(name).unit for name in budgeted(budget)}
+    _write(budget.rename_axis("source").reset_index(), units, title, folder / "budget")
+    provenance = json.dumps(provenance_of(comparison.result), indent=2, ensure_ascii=False)
+    write_text_atomically(folder / "provenance.json", provenance + "\n")
+
+
+def _one_slash(unit: str) -> str:
+    """A unit with one slash at most, as standards want it."""
+    first, *below = unit.split("/")
+    return first if not below else f"{first}/({' '.join(below)})"
+
+
+def _write(frame: pd.DataFrame, units: dict[str, str], title: str, stem: Path) -> None:
+    """As ECSV with units, and as CSV; what is not known is blank."""
+    table = Table(meta={"title": title})
+    for name in frame.columns:
+        values = frame[name].to_numpy()
+        if values.dtype.kind == "f":
+            missing = np.isnan(values)
+            whole = name.endswith("_kept")
+            filled = np.where(missing, 0.0, values)
+            column = MaskedColumn(filled.astype(int) if whole else filled, mask=missing)
+            table[name] = column if missing.any() else column.filled()
+        else:
+            table[name] = [" ".join(str(cell).split()) for cell in values]
+            if values.dtype.kind in "iu":
+                table[name] = values
+        if name in units:
+            table[name].unit = _one_slash(units[name])
+    for suffix, format_ in ((".ecsv", "ascii.ecsv"), (".csv", "ascii.csv")):
+        text = io.StringIO()
+        table.write(text, format=format_)
+        write_text_atomically(stem.with_suffix(suffix), text.getvalue())
