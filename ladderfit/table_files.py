@@ -16,13 +16,17 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
+import pyarrow
 import pyarrow.parquet
 from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
+from ladderfit.table_columns import ColumnsOnDemand
 from ladderfit.table_memory import from_astropy, from_series, parsed_unit
 from ladderfit.tables import Column, DataTable
+
+_PIECE = 100_000  # rows of a text table parsed at once
 
 
 class _UnreadableError(Exception):
@@ -118,7 +122,7 @@ def _read_csv(path: Path) -> DataTable:
         raise _UnreadableError(f"the column name {twice[0]!r} twice")
     with warnings.catch_warnings():
         warnings.simplefilter("error")
-        frame = pd.read_csv(
+        pieces = pd.read_csv(
             path,
             sep=separator,
             skiprows=lines,
@@ -130,13 +134,20 @@ def _read_csv(path: Path) -> DataTable:
             na_values=[""],
             skipinitialspace=True,
             encoding="utf-8-sig",
+            chunksize=_PIECE,
         )
-    columns = {}
-    for name in header:
-        cells = frame[name].astype(object).to_numpy()
+        kind = pyarrow.schema([(name, pyarrow.large_string()) for name in header])
+        stored = pyarrow.concat_tables(
+            pyarrow.Table.from_pandas(piece, schema=kind, preserve_index=False) for piece in pieces
+        )
+
+    def decode(name: str) -> Column:
+        cells = stored[name].to_pandas().astype(object).to_numpy()
         blank = np.array([not isinstance(cell, str) or not cell.strip() for cell in cells], bool)
-        columns[name] = Column(cells, blank)
-    return DataTable(str(path), columns, len(frame), sha256_of(path), text=True)
+        return Column(cells, blank)
+
+    columns = ColumnsOnDemand(tuple(header), decode)
+    return DataTable(str(path), columns, stored.num_rows, sha256_of(path), text=True)
 
 
 def _csv_header(path: Path) -> tuple[int, str, list[str]]:
@@ -212,20 +223,27 @@ def _read_text(path: Path) -> DataTable:
 
 def _read_parquet(path: Path) -> DataTable:
     """Through pyarrow, whose empty cells stay empty; units as astropy stores them."""
-    stored = pyarrow.parquet.read_table(path)
-    described = (stored.schema.metadata or {}).get(b"table_meta_yaml")
+    file = pyarrow.parquet.ParquetFile(path)  # stays open: columns follow when they are used
+    schema, rows = file.schema_arrow, file.metadata.num_rows
+    described = (schema.metadata or {}).get(b"table_meta_yaml")
     units: dict[str, Any] = {}
     if described is not None:
         declared = meta.get_header_from_yaml(described.decode("utf-8").split("\n"))
         units = {item["name"]: item.get("unit") for item in declared["datatype"]}
-    frame = stored.to_pandas(ignore_metadata=True, integer_object_nulls=True)
-    columns = {
-        str(name): from_series(frame[name], parsed_unit(units.get(str(name))))
-        for name in frame.columns
-    }
-    return DataTable(
-        str(path), columns, len(frame), sha256_of(path), states_units=described is not None
-    )
+    twice = sorted({name for name in schema.names if schema.names.count(name) > 1})
+    if twice:
+        raise _UnreadableError(f"the column name {twice[0]!r} twice")
+
+    def decode(name: str) -> Column:
+        try:
+            series = file.read(columns=[name])[name].to_pandas(integer_object_nulls=True)
+        except Exception as error:  # damage shows only where it lies
+            words = f"{type(error).__name__}: {error}"
+            raise InputError(_damaged(path, "", words)) from error
+        return from_series(series, parsed_unit(units.get(name)))
+
+    columns = ColumnsOnDemand(tuple(schema.names), decode)
+    return DataTable(str(path), columns, rows, sha256_of(path), states_units=described is not None)
 
 
 _READERS: dict[str, Callable[[Path], DataTable]] = {

@@ -32,6 +32,7 @@ IntArray = npt.NDArray[np.int64]
 LOG_2PI = math.log(2.0 * math.pi)
 
 _FEW = 200  # rows up to which a plain loop is faster than matrix products
+_BLOCK = 16_384  # rows summed at once
 _CHUNK = 4_000_000  # elements of a (draws, rows) array held at once
 
 
@@ -126,8 +127,6 @@ class Rows:
         Runs of rows that belong to one host.
     host : array of int, shape (n,)
         Each row's host, or -1.
-    products : array, shape (n, (k + 1) (k + 2) / 2)
-        Products of pairs of columns.
     """
 
     columns: FloatArray
@@ -135,7 +134,6 @@ class Rows:
     hosts: int
     slices: tuple[tuple[int, int, int], ...]
     host: IntArray = field(repr=False)
-    products: FloatArray = field(repr=False)
 
     def moments(self, extra: FloatArray) -> Moments:
         """Sum the rows up, with `extra` (shape (b,)) added to every variance."""
@@ -149,24 +147,34 @@ class Rows:
             sums = (total.local, total.cross, total.square, total.constant)
             add_rows(*sums, self.host, self.columns, self.variance, extra)
             return
-        chunk = max(1, _CHUNK // max(len(self.variance), 1))
-        for start in range(0, len(extra), chunk):
-            self._add_part(total, slice(start, start + chunk), extra[start : start + chunk])
+        for first in range(0, len(self.variance), _BLOCK):
+            columns = self.columns[first : first + _BLOCK]
+            upper = upper_triangle(columns.shape[1])
+            products = columns[:, upper[0]] * columns[:, upper[1]]
+            step = max(1, _CHUNK // len(columns))
+            for start in range(0, len(extra), step):
+                part = slice(start, start + step)
+                self._add_part(total, part, first, extra[part], products)
 
-    def _add_part(self, total: Moments, part: slice, extra: FloatArray) -> None:
-        variance = self.variance + extra[:, None]
+    def _add_part(
+        self, total: Moments, part: slice, first: int, extra: FloatArray, products: FloatArray
+    ) -> None:
+        """Add a block of rows, from `first` on, for some of the draws."""
+        last = first + len(products)
+        variance = self.variance[first:last] + extra[:, None]
         weight = 1.0 / variance
         for host, start, stop in self.slices:
-            here = weight[:, start:stop]
-            total.local[part, host] += here.sum(axis=1)
-            total.cross[part, host] += here @ self.columns[start:stop]
+            if stop > first and start < last:
+                inside = slice(max(start, first), min(stop, last))
+                here = weight[:, inside.start - first : inside.stop - first]
+                total.local[part, host] += here.sum(axis=1)
+                total.cross[part, host] += here @ self.columns[inside]
         upper = upper_triangle(self.columns.shape[1])
-        sums = weight @ self.products
         square = np.empty((len(extra), *total.square.shape[1:]))
-        square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = sums
+        square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = weight @ products
         total.square[part] += square
         np.log(variance, out=variance)
-        total.constant[part] -= 0.5 * (variance.sum(axis=1) + len(self.variance) * LOG_2PI)
+        total.constant[part] -= 0.5 * (variance.sum(axis=1) + len(products) * LOG_2PI)
 
 
 def rows(
@@ -182,9 +190,12 @@ def rows(
     hosts : int
         Number of hosts of the whole system.
     """
-    order = np.argsort(host, kind="stable")
-    host = host[order]
-    full = np.column_stack([columns[order], y[order]])
+    full = np.empty((len(y), columns.shape[1] + 1))
+    full[:, :-1], full[:, -1] = columns, y
+    variance = variance.astype(float)
+    if np.any(np.diff(host) < 0):
+        order = np.argsort(host, kind="stable")
+        host, full, variance = host[order], full[order], variance[order]
     edges = np.flatnonzero(np.diff(host)) + 1
     starts, stops = [0, *edges.tolist()], [*edges.tolist(), len(host)]
     slices = tuple(
@@ -192,9 +203,7 @@ def rows(
         for start, stop in zip(starts, stops, strict=True)
         if stop > start and host[start] >= 0
     )
-    upper = upper_triangle(full.shape[1])
-    products = full[:, upper[0]] * full[:, upper[1]]
-    return Rows(full, variance[order].astype(float), hosts, slices, host.astype(np.int64), products)
+    return Rows(full, variance, hosts, slices, host.astype(np.int64))
 
 
 @dataclass(frozen=True)
