@@ -9,6 +9,7 @@ from ladderfit.errors import LadderfitError
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
 from ladderfit.plots import save_figures
+from ladderfit.report import write_report
 from ladderfit.result import Result
 from ladderfit.sampling.direct import Progress
 from ladderfit.sampling.live import Run, start
@@ -29,7 +30,7 @@ def calibrate(
     draws: int | None = None,
     progress: Progress | None = None,
 ) -> Result:
-    """Draw the posterior and write numbers, draws, choices and figures into a new folder.
+    """Draw the posterior and leave numbers, draws, choices, figures and report in a new folder.
 
     The ladder's ``sampling.sampler`` says how: `direct`, or `ensemble`, whose folder
     exists from the start so that the run can be stopped and resumed.
@@ -64,14 +65,15 @@ def calibrate(
     with new_folder(folder) as temporary:
         result = draw(ladder, seed=seed, draws=draws, progress=progress)
         if progress is not None:
-            progress("writing numbers and figures", 0.0)
+            progress("writing numbers, figures and the report", 0.0)
         write_result(result, temporary)
         save_figures(result, temporary / "figures")
+        write_report(result, temporary, name=Path(folder).name)
     return result
 
 
 def finish(run: Run, progress: Progress | None = None) -> Result:
-    """Wait for an ensemble run, then add the figures to its folder.
+    """Wait for an ensemble run, then add figures, tables and report to its folder.
 
     Raises
     ------
@@ -93,13 +95,17 @@ def finish(run: Run, progress: Progress | None = None) -> Result:
         )
     result = run.result()
     if progress is not None:
-        progress("drawing figures", 0.0)
-    target = run.path / "figures"
-    temporary = run.path / ".figures.tmp"
+        progress("drawing figures and writing the report", 0.0)
+    temporary = run.path / ".report.tmp"
     shutil.rmtree(temporary, ignore_errors=True)
-    save_figures(result, temporary)
-    shutil.rmtree(target, ignore_errors=True)
-    temporary.rename(target)
+    save_figures(result, temporary / "figures")
+    shutil.copyfile(run.path / "provenance.json", temporary / "provenance.json")
+    write_report(result, temporary, name=run.path.name)
+    for name in ("figures", "tables"):
+        shutil.rmtree(run.path / name, ignore_errors=True)
+        (temporary / name).rename(run.path / name)
+    (temporary / "report.html").replace(run.path / "report.html")
+    shutil.rmtree(temporary)
     return result
 
 

@@ -29,6 +29,7 @@ from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.names import base_name, group_of, parameter, with_group
+from ladderfit.ranges import calibrated_ranges
 from ladderfit.result import Diagnostics, Result, ordered
 
 FloatArray = npt.NDArray[np.float64]
@@ -93,10 +94,12 @@ def provenance_of(result: Result) -> dict[str, Any]:
     if result.source is not None:
         for key, source in result.source.sources.items():
             inputs[key] = {"table": source.path, "sha256": source.sha256, "rows": source.rows}
+    covered = {} if result.source is None else calibrated_ranges(result.source).written()
     versions = {name: metadata.version(name) for name in _RECORDED}
     return {
         "title": result.choices.title,
         "inputs": inputs,
+        "calibrated": covered,
         "seed": result.diagnostics.seed,
         "sampler": result.diagnostics.sampler,
         "draws": result.size,
