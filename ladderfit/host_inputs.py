@@ -47,7 +47,8 @@ def require_host_columns(rows: Rows, section: Cepheids) -> None:
     kinds = dict.fromkeys(limited, MAGNITUDE)
     problems.extend(rows.faults(limited, kinds, f"{_KEY}.completeness.band"))
     loads = {name: term.loading for name, term in section.shared.items()}
-    problems.extend(rows.faults(loads, dict.fromkeys(loads, MAGNITUDE), f"{_KEY}.shared"))
+    measured = dict.fromkeys(loads, MAGNITUDE)
+    problems.extend(rows.faults(loads, measured, f"{_KEY}.shared", "loading of {}".format))
     raise_if(problems)
 
 

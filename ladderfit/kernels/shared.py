@@ -37,11 +37,13 @@ class SharedSums:
     loadings : array, shape (n, q)
         In the order of the rows.
     products : array, shape (n, (q + 1) (q + k + 2))
+    squares : array, shape (n, (k + 1) (k + 2) / 2)
     """
 
     rows: Rows
     loadings: FloatArray
     products: FloatArray = field(repr=False)
+    squares: FloatArray = field(repr=False)
 
     @property
     def size(self) -> int:
@@ -66,7 +68,7 @@ class SharedSums:
         by_host = [
             weight[:, start:stop] @ self.products[start:stop] for _, start, stop in self.rows.slices
         ]
-        return np.concatenate([constant[:, None], weight @ self.rows.products, *by_host], axis=1)
+        return np.concatenate([constant[:, None], weight @ self.squares, *by_host], axis=1)
 
     def unpacked(self, packed: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Constant, products of [X, y], and per host those of [1, L] with [1, L, X, y]."""
@@ -93,7 +95,9 @@ def shared_sums(rows: Rows, loadings: FloatArray) -> SharedSums:
     first = np.column_stack([np.ones(len(loadings)), loadings])
     whole = np.column_stack([first, rows.columns])
     products = first[:, :, None] * whole[:, None, :]
-    return SharedSums(rows, loadings, products.reshape(len(loadings), -1))
+    upper = upper_triangle(rows.columns.shape[1])
+    squares = rows.columns[:, upper[0]] * rows.columns[:, upper[1]]
+    return SharedSums(rows, loadings, products.reshape(len(loadings), -1), squares)
 
 
 def tables_of(sums: SharedSums, largest: float) -> list[SumTable]:
