@@ -15,6 +15,8 @@ from ladderfit.review.system import STARS
 
 PIVOTS = (1.0, 2.0, 3.0, 5.0, 10.0, 15.0, 20.0, 30.0)  # d
 _TOO_SMALL, _TOO_LARGE = 0.6, 1.6  # of the errors that the stars allow
+_SPREADS = 2.576  # how far from the line at another pivot, in spreads (1 % of a normal)
+_NEARER = 0.1  # and how much nearer than at the pivot stated
 _APART = 0.03  # dex: pivots nearer than this are taken for one
 
 
@@ -118,8 +120,8 @@ def pivot_check(bench: Bench, claim: Claim, way: Way, refit: Refit, reach: float
         made = bench.resampling.estimate(fit, bench.wanted(claim, way.selection, period))
         if made is None:
             continue
-        limit = max(reach, claim.half_unit + 0.5 * made.spread)
-        if abs(claim.value - made.value) <= limit:
+        limit = max(reach, claim.half_unit + _SPREADS * made.spread)
+        if abs(claim.value - made.value) <= min(limit, _NEARER * abs(refit.difference)):
             claimed = fixed_point(claim.value, claim.decimals)
             text = (
                 f"at {stated:g} d{where} the line has {_short(refit.value, 3)} mag, at {words} "

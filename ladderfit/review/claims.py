@@ -118,8 +118,8 @@ def period_words(periods: Range) -> str:
     """A range of periods, without the bounds that cut nothing."""
     low, high = periods
     if high == float("inf"):
-        return f"P >= {low:g} d" if low > 0.0 else "all periods"
-    return f"P <= {high:g} d" if low <= 0.0 else f"{low:g} to {high:g} d"
+        return f"from {low:g} d" if low > 0.0 else "all periods"
+    return f"up to {high:g} d" if low <= 0.0 else f"{low:g} to {high:g} d"
 
 
 @dataclass(frozen=True)

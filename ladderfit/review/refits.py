@@ -171,9 +171,17 @@ def tolerance(claim: Claim, found: list[Refit]) -> float:
     return claim.half_unit + float(np.clip(typical, _LEAST * spread, _MOST * spread))
 
 
-def comes_near(claim: Claim, refit: Refit) -> bool:
-    """Whether a refit is near enough to be taken for what the paper did."""
-    reach = claim.half_unit * (1.0 + 1e-6) + _NEAR * refit.spread
+def comes_near(claim: Claim, refit: Refit, spread: float) -> bool:
+    """Whether a refit is near enough to be taken for what the paper did.
+
+    Parameters
+    ----------
+    claim : Claim
+    refit : Refit
+    spread : float
+        Of the refit as described, under resampling; the smaller of the two counts.
+    """
+    reach = claim.half_unit * (1.0 + 1e-6) + _NEAR * min(refit.spread, spread)
     return abs(refit.difference) <= reach + 1e-12
 
 

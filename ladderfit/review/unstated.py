@@ -17,11 +17,13 @@ from ladderfit.review.refits import (
     held_against,
     other_ways,
 )
+from ladderfit.review.resampling import Estimate
 
 LOWEST = (0.0, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 10.0)  # d
 HIGHEST = (float("inf"), 100.0, 80.0, 60.0, 50.0, 40.0, 30.0)
 CLIPS = (2.0, 2.5, 2.7, 3.0, 3.5, 4.0)
 BREAK = 10.0  # d
+_WIDER = 1.67  # times the stated error
 _MOST_REMOVED = 0.2  # of the stars, where the paper does not state their number
 
 
@@ -121,7 +123,7 @@ def explanation(
             for claim, own, reference in zip(claims, made, base, strict=True)
             if own is not None
         ]
-        if len(found) < len(claims) or not _meets(claims, found, base[0]):
+        if len(found) < len(claims) or not _meets(claims, found, base, bool(words)):
             continue
         digits = all(refit.within_rounding for refit in found)
         pull = max(abs(refit.difference) / max(refit.spread, 1e-12) for refit in found)
@@ -135,11 +137,27 @@ def explanation(
     return None if best is None else replace(best[1], tried=tried, met=met)
 
 
-def _meets(claims: Sequence[Claim], found: Sequence[Refit], base: object) -> bool:
-    if not all(comes_near(claim, refit) for claim, refit in zip(claims, found, strict=True)):
+def _meets(
+    claims: Sequence[Claim],
+    found: Sequence[Refit],
+    base: Sequence[Estimate | None],
+    chosen: bool,
+) -> bool:
+    """Whether a way gives every claim; `chosen` if its stars or terms are not as described."""
+    first = base[0]
+    if first is None:
         return False
-    if not all(count_agrees(claim, r.stars) for claim, r in zip(claims, found, strict=True)):
-        return False
+    for claim, refit, own in zip(claims, found, base, strict=True):
+        if own is None or not comes_near(claim, refit, own.spread):
+            return False
+        if not count_agrees(claim, refit.stars) or (chosen and _far_wider(claim, refit)):
+            return False
     stated = any(claim.stars is not None for claim in claims)
-    before = getattr(base, "stars", 0)
-    return stated or found[0].stars >= (1.0 - _MOST_REMOVED) * before
+    return stated or found[0].stars >= (1.0 - _MOST_REMOVED) * first.stars
+
+
+def _far_wider(claim: Claim, refit: Refit) -> bool:
+    """Whether a choice leaves the number so uncertain that the stated error is not its own."""
+    if claim.error is None:
+        return False
+    return min(refit.error, refit.spread) > _WIDER * (claim.error + claim.error_half_unit)

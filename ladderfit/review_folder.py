@@ -1,0 +1,102 @@
+"""A review as a folder: the page in HTML and Markdown, the verdicts, one figure per claim."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import Any
+
+from ladderfit.files import new_folder
+from ladderfit.plots.review import review_figure
+from ladderfit.plots.theme import LIGHT
+from ladderfit.review import ClaimReview, Review
+from ladderfit.review.page import html_page, markdown_page
+
+_DOTS_PER_INCH = 200
+
+
+def write_review(review: Review, folder: str | Path) -> Path:
+    """Write a review into a new folder, whole or not at all.
+
+    Parameters
+    ----------
+    review : Review
+    folder : str or Path
+        Must not exist.
+
+    Returns
+    -------
+    Path
+        The folder, with ``review.html``, ``review.md``, ``verdicts.json`` and ``figures/``.
+
+    Raises
+    ------
+    InputError
+        If the folder exists.
+    OSError
+        If it cannot be written.
+    """
+    target = Path(folder)
+    with new_folder(target) as made:
+        names = _figures(review, made / "figures")
+        images = {number: (made / "figures" / name).read_bytes() for number, name in names.items()}
+        paths = {number: f"figures/{name}" for number, name in names.items()}
+        (made / "review.html").write_text(html_page(review, images), encoding="utf-8")
+        (made / "review.md").write_text(markdown_page(review, paths), encoding="utf-8")
+        text = json.dumps(verdicts_of(review), indent=2, ensure_ascii=False)
+        (made / "verdicts.json").write_text(text + "\n", encoding="utf-8")
+    return target
+
+
+def _figures(review: Review, folder: Path) -> dict[int, str]:
+    """Draw every claim's figure as PNG and PDF; returns the PNG's name by claim."""
+    folder.mkdir()
+    names = {}
+    for number, found in enumerate(review.claims, start=1):
+        figure = review_figure(found)
+        if figure is None:
+            continue
+        stem = folder / f"claim-{number:02d}"
+        with LIGHT.applied():
+            for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
+                path = stem.with_suffix(suffix)
+                figure.savefig(path, dpi=_DOTS_PER_INCH, metadata=metadata)
+                figure.set_layout_engine("none")  # laid out once, for both files
+        figure.clear()
+        names[number] = f"{stem.name}.png"
+    return names
+
+
+def verdicts_of(review: Review) -> dict[str, Any]:
+    """The verdicts and the numbers behind them, for programs."""
+    sources = {key: source.sha256 for key, source in review.ladder.sources.items()}
+    return {
+        "title": review.title,
+        "seed": review.seed,
+        "draws": review.draws,
+        "sha256": sources,
+        "claims": [_claim(found) for found in review.claims],
+    }
+
+
+def _claim(found: ClaimReview) -> dict[str, Any]:
+    claim = found.claim
+    return {
+        "quantity": claim.quantity,
+        "value": claim.value,
+        "error": claim.error,
+        "unit": claim.unit,
+        "paper": claim.paper,
+        "verdicts": [{"name": v.name, "evidence": v.evidence} for v in found.verdicts],
+        "refits": [
+            {
+                "way": refit.words,
+                "value": refit.value,
+                "error": refit.error,
+                "spread": refit.spread,
+                "stars": refit.stars,
+            }
+            for refit in found.refits
+        ],
+        "fewest_stars": None if found.smallest is None else found.smallest.size,
+    }
