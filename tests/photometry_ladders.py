@@ -176,7 +176,7 @@ def dense(found: Ladder, value: Mapping[str, float]) -> float:
     data = len(y)
     host = np.full(data, -1)
     host[:n] = stars.host
-    whole = np.array(columns).T
+    whole = np.array(columns).reshape(-1, data).T
     anchors = found.geometric
     host = np.concatenate([host, [a.host for a in anchors]]).astype(int)
     y = np.concatenate([y - known, [a.modulus for a in anchors]])
