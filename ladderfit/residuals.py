@@ -16,6 +16,8 @@ import numpy.typing as npt
 from ladderfit.choices import Expansion
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
+from ladderfit.peak_predictions import expected
+from ladderfit.peak_terms import EXPANSION, HOSTS
 from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.offsets import offset_terms
@@ -270,17 +272,22 @@ def parallax_magnitudes(
 
 
 def peak_residuals(result: Result) -> HostResiduals | None:
-    """Supernovae in hosts: `x` is the host's modulus, `data` and `model` peaks, in mag."""
+    """Supernovae in hosts: `x` is the host's modulus, `data` and `model` peaks, in mag.
+
+    From the data all terms of the peak-magnitude relation are taken off.
+    """
     peaks = result.ladder.peaks
     if peaks is None:
         return None
     modulus = moduli(result)[peaks.host]
+    terms = expected(result, peaks, HOSTS)
+    scatter = at_mean(result, result.choices.peak_scatters[0])
     return HostResiduals(
         name=peaks.name,
         x=modulus,
-        data=peaks.magnitude,
+        data=peaks.magnitude - terms.total,
         model=modulus + at_mean(result, "peak_magnitude"),
-        sd=np.sqrt(peaks.variance + at_mean(result, result.choices.peak_scatters[0]) ** 2),
+        sd=np.sqrt(peaks.variance + terms.variance + scatter**2),
         host=peaks.host,
     )
 
@@ -301,18 +308,23 @@ def _flow_zero_point(result: Result) -> float:
 
 
 def flow_residuals(result: Result) -> Residuals | None:
-    """Supernovae in the expansion: `x` is the redshift, `data` and `model` peaks, in mag."""
+    """Supernovae in the expansion: `x` is the redshift, `data` and `model` peaks, in mag.
+
+    From the data all terms of the peak-magnitude relation are taken off.
+    """
     flow, expansion = result.ladder.flow, result.choices.expansion
     if flow is None or expansion is None:
         return None
     term = term_of(expansion, flow.redshift, flow.redshift_heliocentric)
     scatter = at_mean(result, result.choices.peak_scatters[1])
+    terms = expected(result, flow, EXPANSION)
+    variance = _flow_variance(result.ladder, flow, expansion) + terms.variance
     return Residuals(
         name=flow.name,
         x=flow.redshift,
-        data=flow.magnitude,
+        data=flow.magnitude - terms.total,
         model=term + _flow_zero_point(result),
-        sd=np.sqrt(_flow_variance(result.ladder, flow, expansion) + scatter**2),
+        sd=np.sqrt(variance + scatter**2),
     )
 
 

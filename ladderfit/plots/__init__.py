@@ -11,6 +11,7 @@ from ladderfit.plots.corner import corner_figure
 from ladderfit.plots.hubble import hubble_figure
 from ladderfit.plots.moduli import moduli_figure
 from ladderfit.plots.parallax import parallax_figure
+from ladderfit.plots.peaks import peaks_figure
 from ladderfit.plots.relation import relation_figure
 from ladderfit.plots.theme import COLUMN, LIGHT, WIDTH, Theme
 from ladderfit.result import Result
@@ -23,6 +24,7 @@ _MAKERS = {
     "corner": corner_figure,
     "moduli": moduli_figure,
     "hubble": hubble_figure,
+    "peaks": peaks_figure,
 }
 DOTS_PER_INCH = 200
 
@@ -40,7 +42,8 @@ def figures(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> di
     Returns
     -------
     dict of str to Figure
-        Among ``relation``, ``parallaxes``, ``corner``, ``moduli`` and ``hubble``, in this order.
+        Among ``relation``, ``parallaxes``, ``corner``, ``moduli``, ``hubble`` and ``peaks``, in
+        this order.
     """
     return dict(_made(result, theme, width))
 

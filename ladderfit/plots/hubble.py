@@ -111,6 +111,13 @@ def _running(axes: Axes, data: Residuals, theme: Theme) -> None:
     )
 
 
+def peak_words(result: Result) -> str:
+    """What the peaks are called: standardised where the fit has taken terms off."""
+    relation = result.choices.peak_relation
+    words = "Standardised peak" if relation.roles else "Peak magnitude"
+    return f"{words} [mag]"
+
+
 def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     """Peak magnitudes of supernovae in hosts against the hosts' moduli.
 
@@ -136,7 +143,7 @@ def peak_panel(result: Result, axes: Axes, *, theme: Theme = LIGHT) -> Figure:
     axes.set_xlim(x[0], x[1])
     brighter_up(axes)
     axes.set_title(f"{len(data)} supernovae in hosts")
-    axes.set_ylabel("Peak magnitude [mag]")
+    axes.set_ylabel(peak_words(result))
     _numbers(axes, result, ("peak_magnitude", result.choices.peak_scatters[0]), left=True)
     return figure_of(axes)
 
@@ -277,7 +284,7 @@ def hubble_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH)
                 top.set_ylabel("")
                 bottom.tick_params(labelleft=False)
             else:
-                top.set_ylabel("Peak magnitude [mag]")
+                top.set_ylabel(peak_words(result))
                 bottom.set_ylabel("Residual\n[mag]")
         for pair in pairs:
             figure.align_ylabels(list(pair))
