@@ -16,7 +16,7 @@ pytestmark = [
 from ladderfit.ladder import Ladder, build_ladder  # noqa: E402
 from ladderfit.workbench import Workbench  # noqa: E402
 from ladderfit.workbench.tables import all_numbers, strip, table  # noqa: E402
-from ladderfit.workbench.view_bar import OFFERED, offered  # noqa: E402
+from ladderfit.workbench.views import BY_KEY, offered  # noqa: E402
 
 
 @pytest.fixture(scope="module")
@@ -45,9 +45,25 @@ def move(found: Any, value: list[float], *, settled: bool) -> None:
 
 def test_at_most_seven_choices_and_four_views(bench: Workbench) -> None:
     assert all(1 <= len(controls) <= 7 for controls in bench.panel.controls.values())
-    assert all(len(views) <= 4 for views in OFFERED.values())
     for rung in bench.panel.rungs:
-        assert offered(bench.ladder, rung)
+        first, more = offered(bench.ladder, rung)
+        assert 1 <= len(first) <= 4
+        assert sorted({*first, *more}) == sorted([*first, *more])
+        assert all(rung in BY_KEY[key].rungs for key in (*first, *more))
+
+
+def test_views_beyond_four_stand_under_more(bench: Workbench) -> None:
+    bench.open("anchors")
+    more = [key for _, key in bench.bar.more.options]
+    assert more[0] == ""
+    assert more[1:] == offered(bench.ladder, "anchors")[1]
+    bench.bar.more.value = "priors"
+    assert bench.bar.view == "priors"
+    assert len(bench.picture.figure.axes) == 2
+    bench.bar.choose("relation")
+    assert bench.bar.more.value == ""
+    bench.open("expansion")
+    assert bench.bar.view == "hubble"
 
 
 def test_drag_and_release(bench: Workbench) -> None:
@@ -78,7 +94,9 @@ def test_a_bound_that_was_not_moved_stays(ladder: Ladder) -> None:
 def test_every_control_asks_for_a_change_that_can_be_made(bench: Workbench) -> None:
     """Set each control to another value: choices change, and no control is left behind."""
     for rung, controls in bench.panel.controls.items():
-        for found in controls:
+        for found in [inner for control in controls for inner in control.all()]:
+            if found.box.layout.display == "none":
+                continue
             before = bench.ladder.choices
             widget = found.widget
             if hasattr(widget, "request"):
@@ -131,21 +149,21 @@ def test_a_refused_value_is_explained_and_undone(bench: Workbench) -> None:
 @pytest.mark.parametrize("rung", ["anchors", "cepheids", "supernovae", "expansion"])
 def test_every_view_draws_and_has_a_table(bench: Workbench, rung: str) -> None:
     bench.open(rung)
-    for view in offered(bench.ladder, rung):
-        bench.bar._views[view].value = True
-        bench.bar._chosen(view)
+    first, more = offered(bench.ladder, rung)
+    for view in (*first, *more):
+        bench.bar.choose(view)
         assert bench.bar.view == view
-        assert bench.picture.figure.axes
+        assert bench.picture.figure.axes, bench.frame.table.value
         bench.bar.table.value = True
-        assert "<table" in bench.table.value
-        assert "nan" not in bench.table.value.lower().replace("resonan", "")
+        assert "<table" in bench.frame.table.value
+        assert "nan" not in bench.frame.table.value.lower().replace("resonan", "")
         bench.bar.table.value = False
         assert "went wrong" not in bench.foot.trust.value
 
 
 def test_png_and_pdf(bench: Workbench, tmp_path: Path) -> None:
     for view in ("relation", "moduli", "corner", "column"):
-        bench.bar._chosen(view)
+        bench.bar.choose(view)
         bench.bar.save.click()
         assert (tmp_path / f"{view}-01.png").stat().st_size > 5_000
         assert (tmp_path / f"{view}-01.pdf").stat().st_size > 3_000
@@ -174,8 +192,8 @@ def test_published_values_and_all_numbers(bench: Workbench) -> None:
     bench.publish("slope", -3.26)
     assert "lf-published" in bench.numbers.value
     bench.bar.numbers.value = True
-    assert "−3.26" in bench.table.value or "-3.26" in bench.table.value
-    assert "distance modulus, Q07" in bench.table.value
+    assert "−3.26" in bench.frame.table.value or "-3.26" in bench.frame.table.value
+    assert "distance modulus, Q07" in bench.frame.table.value
     bench.entry.name.value = "hubble_constant"
     bench.entry.value.value = "seventy"
     bench.entry.button.click()
@@ -207,7 +225,7 @@ def test_text_from_tables_is_escaped(ladder: Ladder) -> None:
     bench._pointed(bench.picture.points[0], place, False)
     bench.bar.table.value = True
     assert "<img" not in bench.stars.words.value
-    assert "<img" not in bench.table.value
+    assert "<img" not in bench.frame.table.value
 
 
 def test_a_ladder_of_the_expansion_alone() -> None:

@@ -24,6 +24,7 @@ from ladderfit.workbench.controls import (
     span,
     switch,
 )
+from ladderfit.workbench.parallax_controls import parallax_controls
 from ladderfit.workbench.rungs import WORDS, rungs_present
 
 MOST = 7
@@ -41,7 +42,7 @@ _ROWS = {
 }
 _DISTANCE_PRIORS = [(words, words) for words in ("flat in modulus", "uniform in volume")]
 _OVERTONES = [("drop", "drop"), ("offset of their own", "offset"), ("convert periods", "convert")]
-_MOST_SWITCHES = 4
+_MOST_SWITCHES = 3
 _BREAKS = (5.0, 10.0, 15.0, 20.0, 30.0)
 
 
@@ -75,7 +76,8 @@ class ChoicesPanel:
     def all_controls(self) -> Iterator[Control]:
         """Every control of every rung."""
         for controls in self.controls.values():
-            yield from controls
+            for control in controls:
+                yield from control.all()
 
     def open(self, key: str) -> None:
         """Show one rung's choices."""
@@ -147,21 +149,7 @@ def _of_anchors(ladder: Ladder, every: Ladder) -> Iterator[Control]:
             lambda c: tuple(n for n, anchor in c.anchors.geometric.items() if anchor.use),
             lambda chosen, _: {_use(name): name in chosen for name in names},
         )
-    if anchors.parallaxes is not None:
-        yield switch(
-            "Parallaxes of Milky Way Cepheids",
-            "anchors.parallaxes.use",
-            lambda c: c.anchors.parallaxes is not None and c.anchors.parallaxes.use,
-        )
-        yield menu(
-            "Prior of their distances",
-            _DISTANCE_PRIORS,
-            lambda c: c.anchors.parallaxes.distance_prior if c.anchors.parallaxes else "",
-            lambda value, _: {"anchors.parallaxes.distance_prior": value},
-        )
-        yield from _width(
-            ladder.choices, "parallax_offset", "Prior width of their offset", (0.001, 0.1)
-        )
+    yield from parallax_controls(ladder)
 
 
 def _use(name: str) -> str:
@@ -188,8 +176,7 @@ def _width(choices: Choices, name: str, words: str, ends: tuple[float, float]) -
             return {key: {"half_normal": value}}
         return {key: {"normal": [prior.centre, value]}}
 
-    units = {"parallax_offset": "mas"}
-    yield number(words, ends, read, write, unit=units.get(name, "mag"), log=True)
+    yield number(words, ends, read, write, unit="mag", log=True)
 
 
 def _period_ends(every: Ladder) -> tuple[float, float]:

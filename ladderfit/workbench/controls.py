@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import html
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from typing import Any
 
 import ipywidgets as widgets
@@ -29,6 +29,10 @@ class Control:
         The widget's value for given choices.
     write : callable
         Changes by dotted key, for a value of the widget under given choices.
+    when : callable, optional
+        Whether the choice exists at all under given choices; else it is hidden.
+    under : sequence of Control
+        Choices that come with this one, shown below it.
     """
 
     def __init__(
@@ -36,14 +40,23 @@ class Control:
         widget: Any,
         read: Callable[[Choices], Any],
         write: Callable[[Any, Choices], Changes],
+        when: Callable[[Choices], bool] | None = None,
+        under: Sequence[Control] = (),
     ) -> None:
         self.widget = widget
         self.read = read
         self.write = write
+        self.when = when
+        self.under = tuple(under)
         self.message = widgets.HTML(layout=widgets.Layout(width=_WIDE, margin="0", display="none"))
         self.message.add_class("lf-message")
-        self.box = widgets.VBox([widget, self.message], layout=widgets.Layout(flex="0 0 auto"))
+        below: list[Any] = [control.box for control in self.under]
+        self.box: Any = widgets.VBox(
+            [widget, self.message, *below], layout=widgets.Layout(flex="0 0 auto")
+        )
         self.box.add_class("lf-control")
+        for box in below:
+            box.add_class("lf-under")
         self._choices: Choices | None = None
         self._asked: Asked | None = None
         self._quiet = False
@@ -52,6 +65,12 @@ class Control:
         else:
             widget.observe(self._set, "value")
 
+    def all(self) -> Iterator[Control]:
+        """The control and those under it."""
+        yield self
+        for control in self.under:
+            yield from control.all()
+
     def when_asked(self, asked: Asked) -> None:
         """Call `asked` with this control, its changes, and whether they are settled."""
         self._asked = asked
@@ -59,6 +78,11 @@ class Control:
     def show(self, choices: Choices) -> None:
         """Take the value from the choices."""
         self._choices = choices
+        if self.when is not None:
+            exists = self.when(choices)
+            self.box.layout.display = "" if exists else "none"
+            if not exists:
+                return
         value = self.read(choices)
         self._quiet = True
         try:
@@ -96,11 +120,14 @@ def menu(
     options: Sequence[tuple[str, Any]],
     read: Callable[[Choices], Any],
     write: Callable[[Any, Choices], Changes],
+    *,
+    when: Callable[[Choices], bool] | None = None,
+    under: Sequence[Control] = (),
 ) -> Control:
     """A drop-down of a few values."""
     layout = widgets.Layout(width=_WIDE)
     box = widgets.Dropdown(options=options, description=words, style=_NAMED, layout=layout)
-    return Control(box, read, write)
+    return Control(box, read, write, when, under)
 
 
 def several(
@@ -125,11 +152,16 @@ def number(
     *,
     unit: str = "",
     log: bool = False,
+    when: Callable[[Choices], bool] | None = None,
 ) -> Control:
     """One number on a slider and in a field."""
     box = Range(label=words, unit=unit, low=ends[0], high=ends[1], log=log, value=[ends[0]])
     box.layout.width = _WIDE
-    return Control(box, lambda choices: [read(choices)], lambda value, now: write(value[0], now))
+
+    def written(value: list[float], choices: Choices) -> Changes:
+        return write(value[0], choices)
+
+    return Control(box, lambda choices: [read(choices)], written, when)
 
 
 def span(
@@ -139,6 +171,8 @@ def span(
     read: Callable[[Choices], tuple[float, float]],
     *,
     unit: str = "",
+    log: bool = True,
+    when: Callable[[Choices], bool] | None = None,
 ) -> Control:
     """A lower and a higher bound; a bound beyond the slider's end stays until it is moved."""
     low, high = ends
@@ -152,6 +186,6 @@ def span(
         kept = [b if v == k else v for b, v, k in zip(before, value, known, strict=True)]
         return {key: kept}
 
-    box = Range(label=words, unit=unit, low=low, high=high, log=True, value=list(ends))
+    box = Range(label=words, unit=unit, low=low, high=high, log=log, value=list(ends))
     box.layout.width = _WIDE
-    return Control(box, shown, write)
+    return Control(box, shown, write, when)

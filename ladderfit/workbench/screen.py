@@ -12,23 +12,24 @@ import ipywidgets as widgets
 from ladderfit.errors import LadderfitError
 from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
 from ladderfit.ladder import Ladder
-from ladderfit.residuals import HostResiduals
-from ladderfit.workbench.aside import aside_residuals
 from ladderfit.workbench.axis import LadderAxis
 from ladderfit.workbench.canvas import Picture
 from ladderfit.workbench.choices_panel import ChoicesPanel
 from ladderfit.workbench.controls import Changes, Control
 from ladderfit.workbench.foot import Does, Foot, free, line, text
+from ladderfit.workbench.frame import Frame
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.published import Published
+from ladderfit.workbench.pulse import Pulse, in_kernel
 from ladderfit.workbench.rungs import everything, rungs
 from ladderfit.workbench.star_line import StarLine
 from ladderfit.workbench.state import Drawer, Session, in_words, save_ladder
-from ladderfit.workbench.tables import all_numbers, strip, view_table
+from ladderfit.workbench.tables import strip
 from ladderfit.workbench.view_bar import ViewBar
 from ladderfit.workbench.why import prior_driven, trust, why
 
 P = ParamSpec("P")
+_OFTEN = 200  # ms between two questions of the page whether slow work is done
 _LEFT = 338  # px, of the choices and the gap beside them
 
 
@@ -50,6 +51,8 @@ def _guarded(
                 )
             except Exception as error:  # would be lost in a widget's callback
                 self._say(f"This went wrong inside ladderfit: {error!r}", good=False)
+            finally:
+                self._set_pulse()
 
     return guarded
 
@@ -77,8 +80,8 @@ class Workbench:
         self.session = Session(ladder, drawer)
         self.published: dict[str, float] = {}
         self._every = everything(ladder)
-        self._aside: tuple[object, HostResiduals | None] | None = None
         self.axis = LadderAxis()
+        self.pulse = Pulse()
         self.panel = ChoicesPanel(ladder, self._every, self._asked)
         self.picture = Picture(self._pointed)
         self.bar = ViewBar(ladder, self._view, self._save_view)
@@ -86,16 +89,15 @@ class Workbench:
         self.numbers = widgets.HTML(layout=widgets.Layout(height="74px", margin="0", width="100%"))
         self.numbers.add_class("lf-strip-box")
         self.why = line("lf-why")
-        self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
         self.entry = Published(self.publish)
-        self._scroll = widgets.VBox(
-            [self.entry.widget, self.table],
-            layout=widgets.Layout(width="100%", height="336px", display="none"),
-        )
-        self._scroll.add_class("lf-scroll")
-        self._frame = widgets.Box(
-            [self.picture.canvas, self._scroll],
-            layout=widgets.Layout(height="336px", flex="0 0 auto", overflow="hidden"),
+        self.frame = Frame(
+            self.session,
+            self.bar,
+            self.picture,
+            self.stars,
+            self.entry,
+            self.published,
+            background=in_kernel(),
         )
         self.foot = Foot(ladder, Does(self._pin, self._undo, self._redo, self._save))
         self.widget = self._put_together()
@@ -107,6 +109,7 @@ class Workbench:
         self.axis.observe(self._recoloured, ["dark", "rgb"])
         self.axis.observe(self._resized, "width")
         self.axis.observe(self._stands, "ready")
+        self.pulse.observe(self._beat, "beat")
         self._after(None, settled=True, said=False)
 
     @property
@@ -145,14 +148,14 @@ class Workbench:
         )
         reason.add_class("lf-bar-of-views")
         right = widgets.VBox(
-            [self.numbers, reason, self.bar.widget, self._frame, self.stars.widget],
+            [self.numbers, reason, self.bar.widget, self.frame.widget, self.stars.widget],
             layout=widgets.Layout(flex="1 1 0", min_width="0", height="504px", overflow="hidden"),
         )
         middle = widgets.HBox(
             [self.panel.widget, right], layout=widgets.Layout(width="100%", height="504px")
         )
         root = widgets.VBox(
-            [self.axis, middle, self.foot.widget],
+            [self.axis, middle, self.foot.widget, self.pulse],
             layout=widgets.Layout(
                 width="100%",
                 max_width="1000px",
@@ -169,11 +172,13 @@ class Workbench:
     @_guarded
     def _asked(self, control: Control, changes: Changes, settled: bool) -> None:
         session = self.session
+        self.frame.pause()
         ok = session.settle(changes) if settled else session.attempt(changes)
         self._after(control, settled=settled, ok=ok)
 
     @_guarded
     def _change(self, changes: Changes) -> None:
+        self.frame.pause()
         self._after(None, settled=True, ok=self.session.settle(changes))
 
     @_guarded
@@ -196,43 +201,43 @@ class Workbench:
         words = f"Saved {path.name}"
         if self.session.confirm():
             self._show_numbers()
-            self._show_view()
+            self.frame.show()
             words += f"; its numbers, as shown, are those of: ladderfit calibrate {path.name}"
         self._say(f"{words}.", good=True)
         self.foot.suggest(self.session.settled)
 
     @_guarded
     def _save_view(self) -> None:
-        result = self.session.result
-        if result is None:
-            raise LadderfitError("there is no posterior to show")
-        stem = free(self.bar.view, (".png", ".pdf"))
-        written = self.picture.save(stem, self.bar.view, result, **self._what_view())
+        written = self.frame.save(free(self.bar.view, (".png", ".pdf")))
         self._say(f"Saved {' and '.join(path.name for path in written)}.", good=True)
 
     @_guarded
     def _opened(self, change: Any) -> None:
         self._open(change["new"])
-        self._show_view()
+        self.frame.show()
 
     @_guarded
     def _recoloured(self, _: Any) -> None:
         self.picture.take_colours(self.axis.dark, self.axis.rgb)
-        self._show_view()
+        self.frame.recolour()
 
     @_guarded
     def _resized(self, change: Any) -> None:
         self.picture.resize(change["new"] - _LEFT)
-        self._show_view()
+        self.frame.recolour()
 
     @_guarded
     def _stands(self, _: Any) -> None:
         self.picture.anew()
-        self._show_view()
+        self.frame.recolour()
 
     @_guarded
     def _view(self) -> None:
-        self._show_view()
+        self.frame.show()
+
+    @_guarded
+    def _beat(self, _: Any) -> None:
+        self.frame.progress()
 
     @_guarded
     def _pointed(self, points: Points | None, index: int, clicked: bool) -> None:
@@ -274,7 +279,7 @@ class Workbench:
         leaning = prior_driven(session.result)
         if control is not None and leaning:
             control.say(leaning)
-        self._show_view()
+        self.frame.show()
         self.axis.show(rungs(session.settled, self._every, session.result))
         good, words = trust(session.result)
         self._say(words, good=good)
@@ -297,38 +302,7 @@ class Workbench:
         result = self.session.result
         if result is not None:
             self.numbers.value = strip(result, self.session.pinned, self.published)
-            if self.bar.shows == "numbers":
-                self.table.value = all_numbers(result, self.session.pinned, self.published)
-
-    def _show_view(self) -> None:
-        result, bar = self.session.result, self.bar
-        if result is None:
-            return
-        drawn = bar.shows == "view"
-        self._scroll.layout.display = "none" if drawn else ""
-        self.picture.canvas.layout.display = "" if drawn else "none"
-        self.entry.widget.layout.display = "" if bar.shows == "numbers" else "none"
-        if bar.shows == "numbers":
-            self.entry.offer(result)
-            self.table.value = all_numbers(result, self.session.pinned, self.published)
-        elif bar.shows == "table":
-            self.table.value = view_table(result, bar.view, bar.rung, bar.column)
-        else:
-            self.picture.show(bar.view, result, **self._what_view())
-            self.stars.offer(self.picture.points, self.session.settled)
-
-    def _what_view(self) -> dict[str, Any]:
-        aside = self._aside_stars() if self.bar.view == "relation" else None
-        return {"aside": aside, "rung": self.bar.rung, "column": self.bar.column}
-
-    def _aside_stars(self) -> HostResiduals | None:
-        """Stars set aside, worked out once per posterior."""
-        result = self.session.result
-        if result is None:
-            return None
-        if self._aside is None or self._aside[0] is not result:
-            self._aside = (result, aside_residuals(result))
-        return self._aside[1]
+            self.frame.numbers()
 
     def publish(self, name: str, value: float | None) -> None:
         """Show a published value of a parameter as a tick; None takes it away."""
@@ -337,6 +311,12 @@ class Workbench:
         else:
             self.published[name] = value
         self._show_numbers()
+
+    def _set_pulse(self) -> None:
+        """Have the page ask for news while something is under way."""
+        every = _OFTEN if self.frame.waits else 0
+        if self.pulse.every != every:
+            self.pulse.every = every
 
     def _say(self, words: str, *, good: bool) -> None:
         self.foot.trust.value = text(words, "" if good else "lf-bad")

@@ -133,7 +133,11 @@ class Session:
         """Take the last settled change back, or what was asked for and not made."""
         if self.trouble is not None and not self.trouble.made:
             self.ladder = self._settled
-            return self._draw((), settled=True)
+            known = self._settled_result
+            if known is None or known.source is not self._settled:
+                return self._draw((), settled=True)
+            self.result, self.before, self.trouble = known, known, None
+            return True
         return self._step(self._undo, self._redo)
 
     def redo(self) -> bool:

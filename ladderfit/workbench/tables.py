@@ -1,30 +1,15 @@
-"""Numbers as HTML: the strip of headline numbers, and every view as a table; no widgets."""
+"""Numbers as HTML: the strip of headline numbers, all numbers, tables; no widgets."""
 
 from __future__ import annotations
 
 import html
 from collections.abc import Iterable, Mapping, Sequence
 
-import numpy as np
-
 from ladderfit.names import group_of, parameter
-from ladderfit.plots.moduli import host_moduli
-from ladderfit.plots.relation import binned
-from ladderfit.residuals import (
-    Residuals,
-    cepheid_residuals,
-    flow_residuals,
-    parallax_residuals,
-    peak_residuals,
-    velocity_residuals,
-)
 from ladderfit.result import Result
 from ladderfit.rounding import MINUS, Interval, rounded
-from ladderfit.samples import FloatArray
-from ladderfit.workbench.columns import against_column
 from ladderfit.workbench.why import NUMBERS, in_errors, signed
 
-MOST_ROWS = 60
 _BAR = 132
 _TITLES = {
     "slope": "Slope",
@@ -116,102 +101,6 @@ def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, f
         )
     head = ("parameter", "mean", "sd", "change [sd]", "16 %", "84 %", "unit", "published")
     return table(head, rows)
-
-
-def view_table(result: Result, view: str, rung: str, column: str) -> str:
-    """The numbers of a view."""
-    if view == "moduli":
-        return _moduli(result)
-    if view == "hubble":
-        return _hubble(result)
-    if view == "corner":
-        return _corner(result)
-    if view == "column":
-        found = against_column(result, rung, column)
-        if found is None:
-            return table((), [])
-        return _farthest(found.residuals, found.x, found.column, found.data_unit)
-    return _relation(result)
-
-
-def _relation(result: Result) -> str:
-    stars, parallaxes = cepheid_residuals(result), parallax_residuals(result)
-    text = ""
-    if stars is not None:
-        rows = [(f"{p:.3g}", *_pair(m, e)) for p, m, e in zip(*binned(stars), strict=True)]
-        text += "<h4>Mean residual in bins of period</h4>"
-        text += table(("period [d]", "mean [mag]", "error [mag]"), rows)
-        text += _farthest(stars, 10.0**stars.x, "period [d]", "mag")
-    if parallaxes is not None:
-        text += _farthest(parallaxes, 10.0**parallaxes.x, "period [d]", "mas")
-    return text
-
-
-def _moduli(result: Result) -> str:
-    rows = []
-    for entry in host_moduli(result):
-        value = rounded(entry.interval.mean, entry.interval.sd)
-        rows.append(
-            (
-                entry.host,
-                value.value,
-                value.error,
-                *(
-                    str(rounded(*pair)) if pair else ""
-                    for pair in (entry.geometric, entry.supernovae)
-                ),
-            )
-        )
-    head = ("host", "modulus [mag]", "sd [mag]", "geometry minus it", "supernovae minus it")
-    return table(head, rows)
-
-
-def _hubble(result: Result) -> str:
-    text = ""
-    for found, words, unit in (
-        (peak_residuals(result), "modulus [mag]", "mag"),
-        (flow_residuals(result), "redshift", "mag"),
-        (velocity_residuals(result), "distance [Mpc]", "km/s"),
-    ):
-        if found is not None:
-            text += _farthest(found, found.x, words, unit)
-    return text
-
-
-def _corner(result: Result) -> str:
-    names = [name for name in result.headline if np.ptp(result.draws[name]) > 0.0]
-    if not names:
-        return table((), [])
-    matrix = np.atleast_2d(np.corrcoef(np.stack([result.draws[name] for name in names])))
-    rows = []
-    for place, name in enumerate(names):
-        interval = Interval.of(result.draws[name])
-        cells = [f"{value:.2f}".replace("-", MINUS) for value in matrix[place, : place + 1]]
-        cells += [""] * (len(names) - len(cells))
-        rows.append((name, str(interval), *cells))
-    return "<h4>Numbers and correlations</h4>" + table(("", "mean ± sd", *names), rows)
-
-
-def _farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
-    """Objects by how far they are off, the farthest first."""
-    order = np.argsort(-np.abs(data.standardised))[:MOST_ROWS]
-    rows = [
-        (
-            str(data.name[i]),
-            f"{x[i]:.4g}",
-            *_pair(float(data.residual[i]), float(data.sd[i])),
-            signed(float(data.standardised[i])),
-        )
-        for i in order
-    ]
-    shown = f"the {len(order)} farthest off of {len(data):,}" if len(order) < len(data) else "all"
-    head = ("name", words, f"residual [{unit}]", f"spread [{unit}]", "in spreads")
-    return f"<h4>Residuals: {shown}</h4>" + table(head, rows)
-
-
-def _pair(value: float, error: float) -> tuple[str, str]:
-    found = rounded(value, error)
-    return found.value, found.error
 
 
 def table(head: Sequence[str], rows: Iterable[Sequence[str]]) -> str:

@@ -1,4 +1,4 @@
-"""Which view is on show: at most four per rung, each also as a table."""
+"""Which view is on show: at most four have buttons, the rest stand under "more"."""
 
 from __future__ import annotations
 
@@ -8,54 +8,22 @@ from typing import Any
 import ipywidgets as widgets
 
 from ladderfit.ladder import Ladder
+from ladderfit.workbench.canvas.view import View
 from ladderfit.workbench.columns import numeric_columns
+from ladderfit.workbench.views import BY_KEY, VIEWS, offered
 
-OFFERED = {
-    "anchors": ("relation", "moduli", "column", "corner"),
-    "cepheids": ("relation", "column", "moduli", "corner"),
-    "supernovae": ("hubble", "moduli", "column", "corner"),
-    "expansion": ("hubble", "column", "corner"),
-}
-WORDS = {
-    "relation": "Relation",
-    "column": "Residuals",
-    "moduli": "Moduli",
-    "hubble": "Hubble",
-    "corner": "Corner",
-}
-_TIPS = {
-    "relation": "The relation with its residuals",
-    "column": "Residuals against any column of the table",
-    "moduli": "Distance moduli of the hosts",
-    "hubble": "The Hubble diagram",
-    "corner": "The joint posterior",
-}
-_MOST = 4
-
-
-def offered(ladder: Ladder, rung: str) -> list[str]:
-    """Views of a rung that its data allow."""
-    stars = ladder.cepheids is not None or ladder.choices.anchors.parallaxes is not None
-    allowed = {
-        "relation": stars or ladder.choices.cepheids is not None,
-        "moduli": bool(ladder.hosts),
-        "hubble": ladder.choices.supernovae is not None
-        or (ladder.choices.expansion is not None and ladder.choices.expansion.table is not None),
-        "column": bool(numeric_columns(ladder, rung)),
-        "corner": True,
-    }
-    return [view for view in OFFERED[rung] if allowed[view]][:_MOST]
+_MORE = "more ..."
 
 
 class ViewBar:
-    """Buttons of the views, the column's menu, the table, all numbers, PNG and PDF.
+    """Buttons of the views, the others' menu, the column's menu, the table, PNG and PDF.
 
     Attributes
     ----------
     rung, view, column : str
         What is on show.
     shows : str
-        ``view``, ``table`` or ``numbers``.
+        ``view``, ``table``, or the key of a button that takes the view's place.
     """
 
     def __init__(
@@ -67,7 +35,10 @@ class ViewBar:
         self._changed = changed
         self._quiet = False
         self._ladder = ladder
-        self._views = {view: self._view_button(view) for view in WORDS}
+        self._views = {view.key: self._view_button(view) for view in VIEWS}
+        self.more = widgets.Dropdown(layout=widgets.Layout(width="130px", order="9"))
+        self.more.tooltip = "More views"
+        self.more.observe(self._other, "value")
         self.columns = widgets.Dropdown(
             layout=widgets.Layout(width="96px", display="none", order="10")
         )
@@ -84,10 +55,15 @@ class ViewBar:
         self.save.on_click(lambda _: save())
         spring = widgets.Box(layout=widgets.Layout(flex="1 1 auto", order="11"))
         self.widget = widgets.HBox(
-            [*self._views.values(), self.columns, spring, self.table, self.save],
+            [*self._views.values(), self.more, self.columns, spring, self.table, self.save],
             layout=widgets.Layout(height="30px", flex="0 0 auto"),
         )
         self.widget.add_class("lf-bar-of-views")
+
+    @property
+    def chosen(self) -> View:
+        """The view on show."""
+        return BY_KEY[self.view]
 
     @property
     def column(self) -> str:
@@ -97,24 +73,29 @@ class ViewBar:
     def open(self, rung: str, ladder: Ladder) -> None:
         """Offer a rung's views; keep the one on show where it is among them."""
         self.rung, self._ladder = rung, ladder
-        views = offered(ladder, rung)
-        for view, button in self._views.items():
-            button.layout.display = "" if view in views else "none"
-            button.layout.order = str(views.index(view) if view in views else 9)
+        first, more = offered(ladder, rung)
+        for key, button in self._views.items():
+            button.layout.display = "" if key in first else "none"
+            button.layout.order = str(first.index(key) if key in first else 8)
         self._quiet = True
+        options = [(_MORE, ""), *((BY_KEY[key].words, key) for key in more)]
+        if tuple(options) != tuple(self.more.options):
+            self.more.options = options
+        self.more.layout.display = "" if more else "none"
         self.columns.options = names = numeric_columns(ladder, rung)
         if self.columns.value is None and names:
             self.columns.value = names[0]
         self._quiet = False
-        if self.view not in views or self.view == "corner":
-            self.view = views[0]
+        if self.view not in (*first, *more) or self.view == "corner":
+            self.view = first[0]
         self._mark()
 
-    def _view_button(self, view: str) -> Any:
+    def _view_button(self, view: View) -> Any:
         button = widgets.ToggleButton(
-            description=WORDS[view], tooltip=_TIPS[view], layout=widgets.Layout(width="68px")
+            description=view.words, tooltip=view.tip, layout=widgets.Layout(width="auto")
         )
-        button.observe(lambda change: self._chosen(view), "value")
+        button.add_class("lf-view")
+        button.observe(lambda change: self.choose(view.key), "value")
         return button
 
     def _toggle(self, words: str, tip: str, shows: str, width: str) -> Any:
@@ -125,12 +106,17 @@ class ViewBar:
         button.layout.order = "20"
         return button
 
-    def _chosen(self, view: str) -> None:
+    def choose(self, view: str) -> None:
+        """Show a view."""
         if self._quiet:
             return
         self.view, self.shows = view, "table" if self.shows == "table" else "view"
         self._mark()
         self._changed()
+
+    def _other(self, change: Any) -> None:
+        if not self._quiet and change["new"]:
+            self.choose(change["new"])
 
     def _instead(self, shows: str, pressed: bool) -> None:
         if self._quiet:
@@ -146,10 +132,13 @@ class ViewBar:
     def _mark(self) -> None:
         """Press the button of what is on show."""
         self._quiet = True
+        on_show = self.shows in ("view", "table")
         for view, button in self._views.items():
-            button.value = view == self.view and self.shows != "numbers"
+            button.value = view == self.view and on_show
+        others = [key for _, key in self.more.options]
+        self.more.value = self.view if self.view in others and on_show else ""
         self.table.value = self.shows == "table"
         self.numbers.value = self.shows == "numbers"
         self.columns.layout.display = "" if self.view == "column" else "none"
-        self.save.disabled = self.shows == "numbers"
+        self.save.disabled = not on_show
         self._quiet = False

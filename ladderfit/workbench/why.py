@@ -68,7 +68,8 @@ def _moved(before: Result, after: Result) -> str:
 
 
 def _reason(before: Result, after: Result) -> str:
-    parts = [*_weights(before, after), *_rows(before.ladder, after.ladder)]
+    gone, others = _weights(before, after)
+    parts = [*gone, *_rows(before.ladder, after.ladder), *others]
     if not parts:
         parts = [
             f"{key} {as_written(old)} to {as_written(new)}"
@@ -77,21 +78,24 @@ def _reason(before: Result, after: Result) -> str:
     return "; ".join(parts[:2]) or "the same choices, drawn again"
 
 
-def _weights(before: Result, after: Result) -> list[str]:
-    """Anchors whose weight in the zero point changed, the largest change first."""
+def _weights(before: Result, after: Result) -> tuple[list[str], list[str]]:
+    """Anchors that came or went; others whose weight in the zero point changed, largest first."""
     first, second = anchor_weights(before), anchor_weights(after)
     if first is None or second is None:
-        return []
+        return [], []
     old, new = first.by_name(), second.by_name()
     changes = {name: (old.get(name, 0.0), new.get(name, 0.0)) for name in {**old, **new}}
     gone = {name for name in changes if (name in old) != (name in new)}
-    told = [
-        (name, pair)
-        for name, pair in changes.items()
-        if name in gone or abs(pair[1] - pair[0]) >= _WORTH_SAYING
-    ]
-    told.sort(key=lambda entry: (entry[0] not in gone, -abs(entry[1][1] - entry[1][0])))
-    return [f"{_possessive(name)} weight {_share(a)} to {_share(b)}" for name, (a, b) in told[:2]]
+    told = sorted(changes.items(), key=lambda entry: -abs(entry[1][1] - entry[1][0]))
+    words = {
+        name: f"{_possessive(name)} weight {_share(old)} to {_share(new)}"
+        for name, (old, new) in told
+        if name in gone or abs(new - old) >= _WORTH_SAYING
+    }
+    return (
+        [text for name, text in words.items() if name in gone],
+        [text for name, text in words.items() if name not in gone],
+    )
 
 
 def _possessive(name: str) -> str:

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+import threading
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -11,30 +12,29 @@ from ipympl.backend_nbagg import Canvas, FigureManager
 from matplotlib.figure import Figure
 
 from ladderfit.plots.theme import DARK, LIGHT, Theme
-from ladderfit.residuals import HostResiduals
-from ladderfit.result import Result
-from ladderfit.workbench.canvas import panels
-from ladderfit.workbench.canvas.corner import CornerView, corner_names
-from ladderfit.workbench.canvas.relation import RelationView
+from ladderfit.workbench.canvas.view import Artists, View
 from ladderfit.workbench.points import Points, nearest_of
+from ladderfit.workbench.shown import Shown
 
-__all__ = ["VIEWS", "Picture"]
+__all__ = ["Picture"]
 
-VIEWS = {
-    "relation": "Relation",
-    "column": "Residuals against ...",
-    "moduli": "Host moduli",
-    "hubble": "Hubble diagram",
-    "corner": "Joint posterior",
-}
 WIDTH, HEIGHT = 662, 336
 _DPI = 100
-_PANELS: Mapping[str, Callable[[Figure, Result, Theme], list[Points]]] = {
-    "moduli": panels.moduli,
-    "hubble": panels.hubble,
-}
 
 Pointed = Callable[[Points | None, int, bool], None]
+
+
+class _Canvas(Canvas):  # type: ignore[misc]  # ipympl has no types
+    """A canvas that is never rendered while another thread changes its figure."""
+
+    def __init__(self, figure: Figure, lock: threading.RLock) -> None:
+        self._lock = lock
+        super().__init__(figure)
+
+    def draw(self) -> None:
+        """Render."""
+        with self._lock:
+            super().draw()
 
 
 class Picture:
@@ -49,7 +49,8 @@ class Picture:
 
     def __init__(self, pointed: Pointed) -> None:
         self.figure = Figure(figsize=(WIDTH / _DPI, HEIGHT / _DPI), dpi=_DPI)
-        self.canvas = Canvas(self.figure)
+        self._lock = threading.RLock()
+        self.canvas = _Canvas(self.figure, self._lock)
         FigureManager(self.canvas, 0)
         self.canvas.header_visible = False
         self.canvas.footer_visible = False
@@ -57,13 +58,16 @@ class Picture:
         self.canvas.resizable = False
         self.theme = LIGHT
         self._pointed = pointed
-        self._relation: RelationView | None = None
-        self._corner: CornerView | None = None
+        self._artists: Artists | None = None
         self._shown: tuple[str, Theme] | None = None
         self._under: tuple[Points, int] | None = None
-        self.points: list[Points] = []
         self.canvas.mpl_connect("motion_notify_event", self._hover)
         self.canvas.mpl_connect("button_press_event", self._click)
+
+    @property
+    def points(self) -> list[Points]:
+        """What can be pointed at."""
+        return [] if self._artists is None else self._artists.points
 
     def take_colours(self, dark: bool, rgb: Sequence[float]) -> None:
         """Use the page's own background."""
@@ -84,84 +88,42 @@ class Picture:
         self.canvas.manager.resize(float(size[0]), float(size[1]))
         self.canvas._force_full = True
 
-    def show(
-        self,
-        view: str,
-        result: Result,
-        *,
-        aside: HostResiduals | None = None,
-        rung: str = "",
-        column: str = "",
-    ) -> None:
-        """Draw a view of a posterior."""
-        with self.theme.applied():
-            again = self._shown == (view, self.theme)
-            if not (again and self._kept(view, result)):
-                self.figure.clear()
-                self.figure.set_facecolor(self.theme.paper)
-                self._relation = self._corner = None
-            self._shown = (view, self.theme)
-            self._under = None
-            self.points = self._draw(view, result, aside, rung, column)
+    def show(self, view: View, shown: Shown) -> None:
+        """Draw a view."""
+        with self._lock, self.theme.applied():
+            artists, again = self._artists, self._shown == (view.key, self.theme)
+            if artists is None or not (again and artists.fits(shown)):
+                self._clear()
+                artists = view.make(self.figure, shown, self.theme)
+            self._shown, self._artists = (view.key, self.theme), artists
+            artists.update(shown)
             self.canvas.draw_idle()
 
-    def _kept(self, view: str, result: Result) -> bool:
-        """Whether the axes of a view can stay, and only what is in them changes."""
-        if view == "corner":
-            return self._corner is not None and self._corner.names == corner_names(result)
-        return view == "relation"
+    def say(self, words: str) -> None:
+        """Show a sentence in place of a view."""
+        with self._lock, self.theme.applied():
+            self._clear()
+            self._shown = self._artists = None
+            self.figure.text(0.5, 0.5, words, ha="center", va="center", wrap=True)
+            self.canvas.draw_idle()
 
-    def _draw(
-        self, view: str, result: Result, aside: HostResiduals | None, rung: str, column: str
-    ) -> list[Points]:
-        if view == "relation":
-            if self._relation is None:
-                self._relation = RelationView(self.figure, self.theme)
-            self._relation.update(result, aside)
-            return self._relation.points
-        if view == "corner":
-            if self._corner is None:
-                self._corner = CornerView(self.figure, corner_names(result), self.theme)
-            self._corner.update(result)
-            return []
-        if view == "column":
-            return panels.column(self.figure, result, self.theme, rung, column)
-        return _PANELS[view](self.figure, result, self.theme)
+    def _clear(self) -> None:
+        self.figure.clear()
+        self.figure.set_facecolor(self.theme.paper)
+        self._under = None
 
-    def save(
-        self,
-        stem: Path,
-        view: str,
-        result: Result,
-        *,
-        aside: HostResiduals | None = None,
-        rung: str = "",
-        column: str = "",
-    ) -> list[Path]:
+    def save(self, stem: Path, view: View, shown: Shown) -> list[Path]:
         """Write the view as PNG and PDF, on white; returns the paths."""
         figure = Figure(figsize=(WIDTH / _DPI, HEIGHT / _DPI))
         written = []
         with LIGHT.applied():
             figure.set_facecolor(LIGHT.paper)
-            if view == "relation":
-                RelationView(figure, LIGHT).update(result, aside)
-            elif view == "corner":
-                CornerView(figure, corner_names(result), LIGHT).update(result)
-            elif view == "column":
-                panels.column(figure, result, LIGHT, rung, column)
-            else:
-                _PANELS[view](figure, result, LIGHT)
+            view.make(figure, shown, LIGHT).update(shown)
             for suffix in (".png", ".pdf"):
                 path = stem.with_name(f"{stem.name}{suffix}")
                 figure.savefig(path, dpi=200)
                 written.append(path)
         return written
-
-    def mark(self, found: tuple[Points, int] | None) -> None:
-        """Ring a point of the relation, or none."""
-        if self._relation is not None:
-            self._relation.ring(found)
-            self.canvas.draw_idle()
 
     def _find(self, event: Any) -> tuple[Points, int] | None:
         if event.inaxes is None:

@@ -11,6 +11,8 @@ from ladderfit.plots.corner import joint_panel, marginal_panel, varying
 from ladderfit.plots.theme import Theme, symbol
 from ladderfit.result import Result
 from ladderfit.workbench.canvas.margins import margins, place_label
+from ladderfit.workbench.points import Points
+from ladderfit.workbench.shown import Shown
 
 CORNER = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
 _OTHERS = ("scatter", "parallax_offset", "velocity_constant", "velocity_scatter", "peak_scatter")
@@ -35,8 +37,10 @@ class CornerView:
         The parameters; for others another view is needed.
     """
 
-    def __init__(self, figure: Figure, names: tuple[str, ...], theme: Theme) -> None:
-        self.names, self.theme = names, theme
+    def __init__(self, figure: Figure, shown: Shown, theme: Theme) -> None:
+        self.names = names = corner_names(shown.result)
+        self.theme = theme
+        self.points: list[Points] = []
         size = max(len(names), 1)
         margins(figure, 66, 8, 26, 50, hspace=0.08, wspace=0.08)
         grid = figure.add_gridspec(size, size)
@@ -49,8 +53,13 @@ class CornerView:
             self._tidy(axes, row, column)
         figure.text(0.985, 0.95, _WORDS, ha="right", va="top", fontsize=8)
 
-    def update(self, result: Result) -> None:
+    def fits(self, shown: Shown) -> bool:
+        """Whether the same parameters vary."""
+        return self.names == corner_names(shown.result)
+
+    def update(self, shown: Shown) -> None:
         """Show a posterior."""
+        result = shown.result
         for (row, column), axes in self._axes.items():
             for artist in [*axes.lines, *axes.collections]:
                 artist.remove()

@@ -1,4 +1,4 @@
-"""The other views: host moduli, Hubble diagram, residuals against a column."""
+"""Host moduli, and residuals against a column."""
 
 from __future__ import annotations
 
@@ -7,23 +7,20 @@ from typing import Any
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import MaxNLocator
 
-from ladderfit.plots.hubble import flow_panel, peak_panel, velocity_panel
 from ladderfit.plots.moduli import difference_panel, host_moduli, modulus_panel
 from ladderfit.plots.theme import Theme, brighter_up, plain, symmetric
-from ladderfit.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
-from ladderfit.result import Result
-from ladderfit.workbench.canvas.margins import margins, place_label
+from ladderfit.workbench.canvas.margins import margins
 from ladderfit.workbench.columns import ColumnResiduals, against_column
 from ladderfit.workbench.points import Points
+from ladderfit.workbench.shown import Shown
 
 _MOST_ROWS = 24
 
 
-def moduli(figure: Figure, result: Result, theme: Theme) -> list[Points]:
+def moduli(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
     """Every host's modulus, and what its own evidence says."""
-    entries = host_moduli(result)
+    entries = host_moduli(shown.result)
     if not entries:
         return []
     left, right = figure.subplots(1, 2, width_ratios=[1.0, 1.25])
@@ -46,77 +43,9 @@ def moduli(figure: Figure, result: Result, theme: Theme) -> list[Points]:
     return []
 
 
-def hubble(figure: Figure, result: Result, theme: Theme) -> list[Points]:
-    """Supernovae in hosts and in the expansion, or velocities against distances."""
-    velocities = velocity_residuals(result)
-    if velocities is not None:
-        axes = figure.subplots()
-        margins(figure, 70, 10, 24, 44)
-        velocity_panel(result, axes, theme=theme)
-        axes.set_xlabel("Distance [Mpc]", labelpad=1)
-        return [_points(axes, velocities, "expansion", "km/s")]
-    columns: list[tuple[Residuals, str, str, Any]] = []
-    peaks, flow = peak_residuals(result), flow_residuals(result)
-    if peaks is not None:
-        columns.append((peaks, "supernovae", "Modulus of the host [mag]", peak_panel))
-    if flow is not None:
-        columns.append((flow, "expansion", "Redshift", flow_panel))
-    if not columns:
-        return []
-    both = len(columns) == 2
-    grid = figure.subplots(
-        2,
-        len(columns),
-        sharex="col",
-        height_ratios=[2.2, 1],
-        width_ratios=[1, 1.5] if both else [1],
-        squeeze=False,
-    )
-    margins(figure, 64, 10, 24, 44, hspace=0.07, wspace=0.17)
-    found = []
-    for place, (data, section, words, panel) in enumerate(columns):
-        top, bottom = grid[0, place], grid[1, place]
-        panel(result, top, theme=theme)
-        accent = theme.accent(2 if section == "supernovae" else 0)
-        bottom.axhline(0.0, color=theme.ink, linewidth=0.8)
-        bottom.errorbar(
-            data.x,
-            data.residual,
-            yerr=data.sd,
-            linestyle="none",
-            marker=accent.marker,
-            markersize=2.6,
-            elinewidth=0.7,
-            color=accent.colour,
-            ecolor=theme.tint(accent.colour, 0.45),
-        )
-        symmetric(bottom, np.abs(data.residual) + data.sd, data.sd)
-        brighter_up(bottom)
-        bottom.yaxis.set_major_locator(MaxNLocator(4, prune="both"))
-        bottom.set_xlabel(words, labelpad=1)
-        top.set_ylabel("")
-        for text in top.texts:  # the strip of numbers is right above
-            text.set_visible(False)
-        found.append(_points(top, data, section, "mag", data.data))
-        found.append(_points(bottom, data, section, "mag", data.residual))
-    grid[0, 0].set_ylabel("Peak magnitude [mag]")
-    grid[1, 0].set_ylabel("Residual [mag]")
-    for axes in grid[:, 0]:
-        place_label(axes, 42)
-    return found
-
-
-def _points(axes: Axes, data: Residuals, section: str, unit: str, y: Any = None) -> Points:
-    values = data.data if y is None else y
-    nobody = [""] * len(data)
-    return Points(
-        axes, data.x, values, data.name, nobody, section, data.residual, data.sd, unit=unit
-    )
-
-
-def column(figure: Figure, result: Result, theme: Theme, rung: str, name: str) -> list[Points]:
+def column(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
     """Residuals against a column of the table."""
-    found = against_column(result, rung, name)
+    found = against_column(shown.result, shown.rung, shown.column)
     axes = figure.subplots()
     margins(figure, 70, 10, 22, 44)
     if found is None or not len(found.x):

@@ -24,6 +24,7 @@ from ladderfit.rounding import PROBABILITIES
 from ladderfit.samples import FloatArray
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points
+from ladderfit.workbench.shown import Shown
 
 _ACCENTS = 3
 _STEPS = 80
@@ -32,7 +33,8 @@ _STEPS = 80
 class RelationView:
     """Top: absolute magnitudes, the line and its band.  Bottom: what is left over."""
 
-    def __init__(self, figure: Figure, theme: Theme) -> None:
+    def __init__(self, figure: Figure, shown: Shown, theme: Theme) -> None:
+        del shown
         self.theme = theme
         self.top: Axes
         self.bottom: Axes
@@ -63,9 +65,6 @@ class RelationView:
         self._arms = LineCollection([], colors=theme.ink, linewidths=1.1, zorder=3.3)
         self.bottom.add_collection(self._arms, autolim=False)
         self._aside = [self._mark(axes, "x", 5.0, theme.muted) for axes in (self.top, self.bottom)]
-        self._ring = [self._mark(axes, "o", 9.0, theme.ink) for axes in (self.top, self.bottom)]
-        for ring in self._ring:
-            ring.set_markerfacecolor("none")
         self._label()
         self.points: list[Points] = []
         self._told: list[str] = []
@@ -99,8 +98,14 @@ class RelationView:
         for axes in (self.top, self.bottom):
             place_label(axes, 46)
 
-    def update(self, result: Result, aside: HostResiduals | None) -> None:
-        """Show a posterior; `aside` are stars set aside by hand, shown as crosses."""
+    def fits(self, shown: Shown) -> bool:
+        """Always: only numbers change."""
+        del shown
+        return True
+
+    def update(self, shown: Shown) -> None:
+        """Show a posterior; stars set aside by hand are crosses."""
+        result, aside = shown.result, shown.aside
         stars = cepheid_residuals(result)
         self.points = []
         self._show_stars(result, stars)
@@ -108,16 +113,6 @@ class RelationView:
         reach = self._reach(result)
         self._show_line(result, reach)
         self._limits(reach, stars)
-        self.ring(None)
-
-    def ring(self, found: tuple[Points, int] | None) -> None:
-        """Mark one point, or none."""
-        for axes, ring in zip((self.top, self.bottom), self._ring, strict=True):
-            if found is not None and found[0].axes is axes:
-                points, index = found
-                ring.set_data([points.x[index]], [points.y[index]])
-            else:
-                ring.set_data([], [])
 
     def _show_stars(self, result: Result, stars: HostResiduals | None) -> None:
         told: list[tuple[Any, str]] = []

@@ -1,0 +1,58 @@
+"""The slow work of views: many fits, told piece by piece; no widgets."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from ladderfit.distance_priors import PRIORS, along_distance_priors
+from ladderfit.ladder import Ladder
+from ladderfit.priors import Fixed
+from ladderfit.redshift_cuts import RedshiftCuts, hubble_along_cuts
+from ladderfit.result import Result
+from ladderfit.workbench.shown import Tell
+
+CUT_DRAWS = 1000
+
+
+def priors_of(ladder: Ladder) -> dict[str, Any]:
+    """The distance priors to compare, by words; those chosen stand in place of their like."""
+    stars = ladder.choices.anchors.parallaxes
+    found: dict[str, Any] = dict(PRIORS)
+    if stars is None:
+        return found
+    own = stars.distance_prior
+    if stars.modulus_bounds is not None:
+        words = "flat, {:g} to {:g} mag".format(*stars.modulus_bounds)
+        found = {words if own == key else key: value for key, value in found.items()}
+    length = 2.0 if stars.exponential is None else stars.exponential
+    free = not isinstance(ladder.choices.prior("distance_length"), Fixed)
+    exponential = f"exponential, {'free length' if free else f'{length:g} kpc'}"
+    disc: Mapping[str, Any] | None = None
+    if stars.disc is not None:
+        disc = {
+            "length": stars.disc.length,
+            "height": stars.disc.height,
+            "solar_radius": stars.disc.solar_radius,
+            "solar_height": stars.disc.solar_height,
+        }
+    exchanged: dict[str, Any] = {}
+    for words, value in found.items():
+        kind = next(iter(value)) if isinstance(value, Mapping) else ""
+        if kind == "exponential":
+            exchanged[exponential] = {"exponential": length}
+        elif kind == "disc" and disc is not None:
+            exchanged[f"disc, {disc['length']:g} and {disc['height']:g} kpc"] = {"disc": disc}
+        else:
+            exchanged[words] = value
+    return exchanged
+
+
+def distance_priors(result: Result, tell: Tell) -> dict[str, Result]:
+    """The posterior under each distance prior."""
+    return along_distance_priors(result.ladder, priors_of(result.ladder), progress=tell)
+
+
+def redshift_cuts(result: Result, tell: Tell) -> RedshiftCuts:
+    """The Hubble constant along the redshift cuts."""
+    return hubble_along_cuts(result.ladder, draws=CUT_DRAWS, progress=tell)
