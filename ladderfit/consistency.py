@@ -9,6 +9,7 @@ import numpy as np
 from ladderfit import schema
 from ladderfit.choices import Choices, Group
 from ladderfit.errors import Problem, nearest
+from ladderfit.photometry_notes import photometry_notes
 from ladderfit.relations import break_position, members
 from ladderfit.rows import nearest_few
 from ladderfit.samples import StarSample
@@ -54,7 +55,8 @@ def star_problems(
 
 
 def star_notes(choices: Choices, samples: Sequence[StarSample]) -> Iterator[str]:
-    """Terms that no star informs."""
+    """Terms that no star informs, and what the photometric choices mean."""
+    yield from photometry_notes(choices, samples)
     for name, group in choices.groups.items():
         if _switched_off(choices, group):
             yield f"group {name}: no star takes part, as the parallaxes are not in use"

@@ -104,7 +104,7 @@ _ALL = (
         "intrinsic_colour_term",
         "",
         r"$\eta$",
-        "what intrinsic colour counts for beyond the ratio",
+        "weight of intrinsic colour beyond the ratio",
         2,
         Normal(0.0, 0.3),
     ),

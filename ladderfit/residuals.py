@@ -9,6 +9,7 @@ uncertainty of the fit itself, which is shared by all objects.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 import numpy.typing as npt
@@ -20,6 +21,7 @@ from ladderfit.peak_predictions import expected
 from ladderfit.peak_terms import EXPANSION, HOSTS
 from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
 from ladderfit.posterior.errors_in_inputs import input_errors
+from ladderfit.posterior.indices import Index, index_of
 from ladderfit.posterior.offsets import offset_terms
 from ladderfit.relations import design, scatters
 from ladderfit.result import Result
@@ -88,11 +90,12 @@ def moduli(result: Result) -> FloatArray:
 
 @dataclass(frozen=True)
 class _Predicted:
-    """Absolute magnitudes: the line, what other terms add, and the variance round both."""
+    """Absolute magnitudes: the line, what other terms add, the variance round both; the index."""
 
     line: FloatArray
     terms: FloatArray
     variance: FloatArray
+    index: FloatArray
 
 
 def _predicted(result: Result, stars: StarSample) -> _Predicted:
@@ -105,7 +108,8 @@ def _predicted(result: Result, stars: StarSample) -> _Predicted:
         (line if name in LINE else terms)[:] += mean[name] * column
     names, which = scatters(result.choices, stars, ladder.hosts)
     scatter = np.array([at_mean(result, name) for name in names])
-    variance = stars.variance + scatter[which] ** 2
+    index: Index = index_of(ladder, stars, partial(at_mean, result))
+    variance, terms = index.variance + scatter[which] ** 2, terms + index.pulled
     errors = input_errors(ladder, stars)
     if errors is not None:
         spread = np.array([at_mean(result, "metallicity_spread")])
@@ -114,7 +118,7 @@ def _predicted(result: Result, stars: StarSample) -> _Predicted:
         if effect.pull is not None and effect.weight is not None:
             off = stars.metallicity - _mean_metallicity(result, stars, effect.weight[0])
             terms -= effect.pull[0] * off
-    return _Predicted(line, terms, variance)
+    return _Predicted(line, terms, variance, index.value)
 
 
 def _mean_metallicity(result: Result, stars: StarSample, weight: FloatArray) -> FloatArray:
@@ -179,7 +183,7 @@ def cepheid_residuals(result: Result) -> HostResiduals | None:
     return HostResiduals(
         name=stars.star,
         x=stars.log_period,
-        data=stars.magnitude - moduli(result)[stars.host] - predicted.terms,
+        data=predicted.index - moduli(result)[stars.host] - predicted.terms,
         model=predicted.line,
         sd=np.sqrt(predicted.variance),
         host=stars.host,
@@ -216,7 +220,7 @@ def parallax_residuals(result: Result) -> Residuals | None:
     if stars is None or stars.parallax is None or stars.parallax_error is None:
         return None
     predicted = _predicted(result, stars)
-    modulus = stars.magnitude - predicted.line - predicted.terms
+    modulus = predicted.index - predicted.line - predicted.terms
     photometric = parallax_from_modulus(modulus)
     return Residuals(
         name=stars.star,
@@ -263,7 +267,7 @@ def parallax_magnitudes(
     shown = Residuals(
         name=stars.star[good],
         x=stars.log_period[good],
-        data=(stars.magnitude - predicted.terms)[good] - modulus_from_parallax(value),
+        data=(predicted.index - predicted.terms)[good] - modulus_from_parallax(value),
         model=predicted.line[good],
         sd=np.sqrt(predicted.variance[good] + (error / value / _PER_MAG) ** 2),
     )

@@ -23,13 +23,13 @@ ORDER = """
     select_stars
     peak_inputs select_supernovae
     covariances covariance_rows correlated
-    relations peak_terms ladder_file assembly consistency ladder ladder_copy ranges
+    relations peak_terms ladder_file assembly photometry_notes consistency ladder ladder_copy ranges
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
-    posterior.split posterior.star_terms posterior.shared posterior.limits
+    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.indices
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
