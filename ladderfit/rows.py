@@ -83,6 +83,9 @@ class Rows:
         """Leave out the rows named by hand; `role` is what an entry calls them: star or name."""
         left_out = np.zeros(self.table.rows, bool)
         for number, entry in enumerate(entries, start=1):
+            if hosts is not None and entry.host is not None and entry.whole_host:
+                left_out |= self._whole_host(number, entry.host, hosts)
+                continue
             wanted = entry.star if role == "star" else entry.name
             if wanted is None:
                 self._entry_problem(number, "an entry of another kind", f"{role} = NAME", "")
@@ -103,6 +106,13 @@ class Rows:
             left_out |= hit
         self.judged = ~left_out
         self.leave_out(left_out, "set aside by hand")
+
+    def _whole_host(self, number: int, host: str, hosts: Texts) -> BoolArray:
+        hit = hosts.equal(host)
+        if not hit.any():
+            remedy = nearest_few(host, hosts.known)
+            self._entry_problem(number, repr(host), "a host of this table", remedy)
+        return hit
 
     def _entry_problem(self, number: int, found: str, expected: str, remedy: str) -> None:
         self.problems.append(

@@ -144,6 +144,14 @@ def test_setting_aside_an_ambiguous_star(workshop: Workshop) -> None:
     )
 
 
+def test_setting_aside_an_unknown_host(workshop: Workshop) -> None:
+    workshop.choices["cepheids"]["set_aside"] = [{"host": "Q7", "reason": "crowded"}]
+    assert workshop.complaints() == [
+        f"{workshop.file('cepheids.csv')}, key cepheids.set_aside: found 'Q7' (entry 1); "
+        "expected a host of this table; did you mean 'Q07'?"
+    ]
+
+
 def test_setting_aside_the_wrong_kind(workshop: Workshop) -> None:
     workshop.choices["supernovae"]["set_aside"] = [{"star": "2091a", "reason": "odd"}]
     (line,) = workshop.complaints()

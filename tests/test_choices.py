@@ -242,7 +242,7 @@ BAD_CHANGES: list[tuple[dict[str, Any], str]] = [
     (
         {"cepheids.set_aside": [{"reason": "blended"}]},
         "key cepheids.set_aside: found no name; expected star = NAME for a Cepheid or "
-        "name = NAME for a supernova; name one object",
+        "name = NAME for a supernova or host = NAME for all in a galaxy; name one object",
     ),
 ]
 

@@ -15,19 +15,28 @@ Range = tuple[float, float]
 
 @dataclass(frozen=True)
 class SetAside:
-    """One object left out by hand, with the reason."""
+    """One object left out by hand, or all of one host, with the reason."""
 
     reason: str = choice("why it is set aside")
     star: str | None = choice("the star's name", default=None)
-    host: str | None = choice("the star's host, where the name alone is ambiguous", default=None)
+    host: str | None = choice(
+        "the star's host, where the name alone is ambiguous; alone: the whole host", default=None
+    )
     name: str | None = choice("the supernova's name", default=None)
 
+    @property
+    def whole_host(self) -> bool:
+        """Whether all of a host is meant."""
+        return self.star is None and self.name is None
+
     def check(self) -> Iterator[Problem]:
-        """Exactly one object is named."""
-        if (self.star is None) == (self.name is None):
+        """Exactly one object is named, or a host alone."""
+        named = [known for known in (self.star, self.name) if known is not None]
+        if len(named) > 1 or (not named and self.host is None):
             yield Problem(
-                found="no name" if self.star is None else "two names",
-                expected="star = NAME for a Cepheid or name = NAME for a supernova",
+                found="two names" if named else "no name",
+                expected="star = NAME for a Cepheid or name = NAME for a supernova "
+                "or host = NAME for all in a galaxy",
                 remedy="name one object",
             )
 

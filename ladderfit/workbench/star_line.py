@@ -63,7 +63,9 @@ class StarLine:
                 self._places.setdefault(str(name), (points.section, points.hosts[index]))
         for section in _SECTIONS:
             for entry in entries(ladder.choices, section):
-                self._places.setdefault(entry.star or entry.name or "", (section, entry.host or ""))
+                if not entry.whole_host:
+                    name = entry.star or entry.name or ""
+                    self._places.setdefault(name, (section, entry.host or ""))
         names = tuple(sorted(self._places))
         if self.name.options != names:
             self.name.options = names
