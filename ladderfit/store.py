@@ -29,7 +29,7 @@ from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.names import base_name, group_of, parameter, with_group
-from ladderfit.ranges import calibrated_ranges
+from ladderfit.ranges import Ranges, calibrated_ranges
 from ladderfit.result import Diagnostics, Result, ordered
 
 FloatArray = npt.NDArray[np.float64]
@@ -49,7 +49,7 @@ def write_result(result: Result, folder: Path, ladder_file: Path | None = None) 
     else:
         shutil.copyfile(ladder_file, folder / "ladder.toml")
     provenance = provenance_of(result) | {"ladder_sha256": sha256_of(folder / "ladder.toml")}
-    summary = {**_summary(result), "provenance": provenance}
+    summary = {**summary_of(result), "provenance": provenance}
     _write_json(folder / "summary.json", summary)
     _write_json(folder / "provenance.json", provenance)
     write_ecsv(result, folder / "summary.ecsv")
@@ -86,6 +86,24 @@ def read_result(folder: str | Path) -> Result:
     except (KeyError, TypeError) as error:
         raise _unreadable(folder / "summary.json", error) from None
     return Result(choices, draws, diagnostics, source)
+
+
+def read_ranges(folder: str | Path) -> Ranges | None:
+    """What a saved calibration covers; None where its provenance does not say.
+
+    Raises
+    ------
+    InputError
+        If the provenance cannot be read.
+    """
+    path = Path(folder) / "provenance.json"
+    if not path.is_file():
+        return None
+    covered = _read_json(path).get("calibrated")
+    try:
+        return None if covered is None else Ranges.read(covered)
+    except (TypeError, ValueError, AttributeError) as error:
+        raise _unreadable(path, error) from None
 
 
 def provenance_of(result: Result) -> dict[str, Any]:
@@ -171,7 +189,8 @@ def _numbers(diagnostics: Diagnostics) -> dict[str, float]:
     return {name: value for name, value in found.items() if value is not None}
 
 
-def _summary(result: Result) -> dict[str, Any]:
+def summary_of(result: Result) -> dict[str, Any]:
+    """What ``summary.json`` holds of a result, without its provenance."""
     table = result.summary()
     entries = {
         str(name): {column: _plain(row[column]) for column in table.columns}
