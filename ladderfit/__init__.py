@@ -16,6 +16,7 @@ from importlib import metadata
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from ladderfit.alternatives import run_alternatives
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
     from ladderfit.result import Result
     from ladderfit.sampling.live import Run, open_run, start
@@ -32,6 +33,7 @@ _HOME = {
     "open_run": "ladderfit.sampling.live",
     "start": "ladderfit.sampling.live",
     "read_result": "ladderfit.store",
+    "run_alternatives": "ladderfit.alternatives",
 }
 
 __all__ = [
@@ -44,6 +46,7 @@ __all__ = [
     "open_run",
     "start",
     "read_result",
+    "run_alternatives",
 ]
 
 

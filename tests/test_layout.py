@@ -15,8 +15,8 @@ import pytest
 ORDER = """
     errors rounding
     units files shipped priors names schema cosmologies
-    choices.columns choices.covariance choices.photometry choices.stars choices.relation choices.parallaxes
-    choices.anchors choices.photometry_checks
+    choices.columns choices.covariance choices.photometry choices.outliers choices.stars choices.relation choices.parallaxes
+    choices.anchors choices.photometry_checks choices.outlier_checks
     choices.peak_relation choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
     kinds tables table_columns table_memory table_files rows star_values parallax_inputs host_inputs
@@ -24,12 +24,15 @@ ORDER = """
     peak_inputs select_supernovae
     covariances covariance_rows correlated
     relations peak_terms ladder_file assembly photometry_notes consistency ladder ladder_copy ranges
+    sample_arrays joined_ladders new_objects
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels
+    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
+    kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.parallaxes
-    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.indices
+    posterior.families
+    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
@@ -49,7 +52,7 @@ ORDER = """
     review.claims review.claims_file review.system review.fits review.resampling review.bench
     review.refits review.unstated review.reliance review.checks review.judged review.verdicts
     review.whole review.words review.page review
-    distances compare
+    draw_weights distances distance_files compare
     draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
     draft.make draft
     mock.tables mock.light_curves mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
@@ -57,7 +60,7 @@ ORDER = """
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
     plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots
-    calibration repeat review_folder
+    alternatives_folder calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.tables workbench.view_tables
@@ -69,7 +72,7 @@ ORDER = """
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.frame workbench.screen workbench
     launcher
-    commands.terminal commands.calibrate commands.draft commands.mock commands.workbench commands
+    commands.terminal commands.alternatives commands.calibrate commands.draft commands.review commands.mock commands.workbench commands
     cli __main__
 """.split()
 
