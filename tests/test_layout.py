@@ -52,11 +52,11 @@ ORDER = """
     review.claims review.claims_file review.system review.fits review.resampling review.bench
     review.refits review.unstated review.reliance review.checks review.judged review.verdicts
     review.whole review.words review.page review
-    draw_weights distances distance_files compare
-    draft.facts draft.clues draft.roles draft.magnitudes draft.jobs draft.text draft.entries
+    draw_weights distances distance_files resampling compare compare_files
+    draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves draft.jobs draft.entries
     draft.make draft
     mock.tables mock.light_curves mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
-    mock.peak_redraw mock.restated mock.redraw mock.folder mock mock.__main__
+    mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
     plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots
@@ -72,7 +72,7 @@ ORDER = """
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.frame workbench.screen workbench
     launcher
-    commands.terminal commands.alternatives commands.calibrate commands.draft commands.review commands.mock commands.workbench commands
+    commands.terminal commands.alternatives commands.calibrate commands.distances commands.compare commands.draft commands.review commands.mock commands.workbench commands
     cli __main__
 """.split()
 

@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from ladderfit import schema
 from ladderfit.choices.columns import Range
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
@@ -38,6 +39,8 @@ class Selection:
         ``fundamental``, ``overtone`` or ``both``.
     hosts : tuple of str
         Those that take part; empty is all.
+    parallax_stars : bool
+        Whether stars with parallaxes take part.
     without : str or None
         A host left out.
     set_aside : tuple of str
@@ -52,6 +55,7 @@ class Selection:
     periods: Range = EVERY_PERIOD
     mode: str = "both"
     hosts: tuple[str, ...] = ()
+    parallax_stars: bool = True
     without: str | None = None
     set_aside: tuple[str, ...] = ()
     break_: float | None = None
@@ -117,6 +121,9 @@ class Bench:
             periods=method.periods or EVERY_PERIOD,
             mode=mode,
             hosts=method.hosts,
+            parallax_stars=not method.hosts
+            if method.parallax_stars is None
+            else method.parallax_stars,
             set_aside=method.set_aside,
             break_=method.break_ if method.break_ is not None else in_file,
             metallicity=has_term if method.metallicity is None else method.metallicity,
@@ -148,6 +155,8 @@ class Bench:
         stars = self.stars
         if stars is None:
             return taken
+        if not chosen.parallax_stars:
+            taken[len(stars) :] = system.group[len(stars) :] != STARS
         inside = taken[: len(stars)]
         period = 10.0**stars.log_period
         low, high = chosen.periods
@@ -202,7 +211,7 @@ class Bench:
     def wanted(self, claim: Claim, chosen: Selection, pivot: float | None = None) -> Wanted:
         """What a claim is about, as a sum of coefficients; `pivot` in place of its own."""
         if claim.quantity == "scatter":
-            return Wanted(scatter=True)
+            return Wanted(scatter=True, intrinsic=claim.intrinsic)
         if claim.quantity == "hubble_constant":
             return Wanted({HUBBLE: 1.0})
         if claim.quantity == "modulus":
@@ -288,21 +297,26 @@ class Bench:
         if entries:
             given = self.opened.choices.to_mapping()["cepheids"].get("set_aside", [])
             changes["cepheids.set_aside"] = [*given, *entries]
-        return changes | self._stand_in(stars, taken)
+        if not chosen.parallax_stars and self.opened.parallax_stars is not None:
+            changes["anchors.parallaxes.use"] = False
+        return changes | self._stand_in(chosen, stars, taken)
 
     def _wide_priors(self) -> dict[str, Any]:
         """Priors that say next to nothing, for coefficients on which the file states none."""
         stated = self.opened.choices.priors
         return {f"priors.{name}": prior for name, prior in _WIDE.items() if name not in stated}
 
-    def _stand_in(self, stars: StarSample, taken: BoolArray) -> dict[str, Any]:
+    def _stand_in(self, chosen: Selection, stars: StarSample, taken: BoolArray) -> dict[str, Any]:
         """Without any anchor one host gets a modulus, so that slopes and levels can be drawn."""
-        if self.opened.geometric or self.opened.parallax_stars is not None:
+        present = {int(host) for host in np.unique(stars.host[taken])}
+        if any(anchor.host in present for anchor in self.opened.geometric):
+            return {}
+        if (chosen.parallax_stars and self.opened.parallax_stars is not None) or not present:
             return {}
         host = self.opened.hosts[int(stars.host[taken][0])]
         level = float(np.median(stars.magnitude[taken])) - _STAND_IN
         return {
-            "anchors.geometric": {host: {"modulus": _STAND_IN, "error": 1e-4}},
+            schema.join("anchors.geometric", host): {"modulus": _STAND_IN, "error": 1e-4},
             "priors.zero_point": {"normal": [level, 100.0]},
         }
 
@@ -324,8 +338,8 @@ class Bench:
         values = _posterior_values(result, self.wanted(claim, chosen))
         if values is None:
             return None
-        stars = result.ladder.cepheids or result.ladder.parallax_stars
-        count = 0 if stars is None else len(stars)
+        samples = (result.ladder.cepheids, result.ladder.parallax_stars)
+        count = sum(len(sample) for sample in samples if sample is not None)
         nothing = np.zeros(0)
         made = Estimate(float(np.mean(values)), float(np.std(values)), 0.0, count, nothing, nothing)
         if near is None:
@@ -342,7 +356,7 @@ def _posterior_values(result: Result, wanted: Wanted) -> Any:
         names, which = scatters(result.choices, stars, result.ladder.hosts)
         share = np.bincount(which, minlength=len(names)) / len(stars)
         squares = sum(part * draws[name] ** 2 for part, name in zip(share, names, strict=True))
-        return np.sqrt(squares + float(np.mean(stars.variance)))
+        return np.sqrt(squares + (0.0 if wanted.intrinsic else float(np.mean(stars.variance))))
     if HUBBLE in wanted.coefficients:
         return draws.get("hubble_constant")
     if any(name not in draws for name in wanted.coefficients):

@@ -33,11 +33,14 @@ class Check:
     fault : str or None
         ``too small``, ``too large``, ``another pivot`` or ``note``; None where nothing
         is wrong.
+    pivot : float or None
+        Where the claimed magnitude lies [d], if it is at another pivot.
     """
 
     about: str
     words: str
     fault: str | None = None
+    pivot: float | None = None
 
 
 def error_check(claim: Claim, found: list[Refit]) -> Check | None:
@@ -127,7 +130,7 @@ def pivot_check(bench: Bench, claim: Claim, way: Way, refit: Refit, reach: float
                 f"at {stated:g} d{where} the line has {_short(refit.value, 3)} mag, at {words} "
                 f"{_short(made.value, 3)}, and the claim is {claimed}"
             )
-            return Check("pivot", text, "another pivot")
+            return Check("pivot", text, "another pivot", period)
     implied = _implied(bench, claim, way, refit, stated)
     if implied is None:
         return None
@@ -163,7 +166,7 @@ def rounding_check(claim: Claim) -> Check:
 
 def freedom_check(bench: Bench, claim: Claim, way: Way) -> Check | None:
     """Whether a scatter is the root mean square of N or of N less the coefficients."""
-    if claim.quantity != "scatter":
+    if claim.quantity != "scatter" or claim.intrinsic:
         return None
     try:
         fit = bench.fit(way.selection, way.treatment)

@@ -47,7 +47,8 @@ class Method:
     """What the paper says of its method; a key that is absent was not stated.
 
     Unstated, the refit as described is least squares without weights, clip or cut,
-    of the terms and the pulsation mode that the ladder file has.
+    of the terms and the pulsation mode that the ladder file has.  Stars with
+    parallaxes take part unless the paper names its hosts.
     """
 
     fit: Literal["least squares", "both errors", "hierarchical"] | None = choice(
@@ -62,6 +63,7 @@ class Method:
         "the pulsation mode", default=None
     )
     hosts: tuple[str, ...] = choice("the hosts, where not all take part", default=())
+    parallax_stars: bool | None = choice("whether stars with parallaxes take part", default=None)
     set_aside: tuple[str, ...] = choice("names of stars that the paper leaves out", default=())
     fixed: Mapping[str, float] = choice("coefficients held fixed", default_factory=dict)
     break_: float | None = choice("the period beyond which the slope is another [d]", default=None)
@@ -106,6 +108,8 @@ class Method:
             said.append("both modes" if self.mode == "both" else f"{self.mode} mode")
         if self.hosts:
             said.append("hosts " + ", ".join(self.hosts))
+        if self.parallax_stars is not None:
+            said.append(f"with{'' if self.parallax_stars else 'out'} parallax stars")
         if self.set_aside:
             said.append(f"{len(self.set_aside)} stars set aside")
         said += [f"{name.replace('_', ' ')} fixed at {v:g}" for name, v in self.fixed.items()]
@@ -174,7 +178,8 @@ class Claim:
     Attributes
     ----------
     quantity : str
-        ``scatter`` is the standard deviation of the stars' residuals.
+        ``scatter`` is the standard deviation of the stars' residuals, or with
+        `intrinsic` what is left of it beyond the measurement errors.
     value, error : float
         As printed, in `UNITS`; `error` is None where none is stated.
     decimals, error_decimals : int or None
@@ -186,6 +191,8 @@ class Claim:
         Period of a zero point [d]; None is the ladder file's.
     apparent : bool
         Whether a zero point is an apparent magnitude.
+    intrinsic : bool
+        Whether a scatter is the intrinsic one.
     host : str or None
         Of a modulus, or of an apparent zero point.
     note : str
@@ -199,6 +206,9 @@ class Claim:
     stars: int | None = choice("the number of stars that the paper states", default=None)
     pivot: float | None = choice("the period of the zero point [d]", default=None)
     apparent: bool = choice("whether a zero point is an apparent magnitude", default=False)
+    intrinsic: bool = choice(
+        "whether a scatter is what is left beyond the measurement errors", default=False
+    )
     host: str | None = choice("the host of a modulus or an apparent zero point", default=None)
     paper: str = choice("the paper", default="")
     note: str = choice("how the value is known", default="")
@@ -229,6 +239,13 @@ class Claim:
                 remedy="remove apparent",
                 key="apparent",
             )
+        if self.intrinsic and self.quantity != "scatter":
+            yield Problem(
+                found=f"intrinsic = true for a {WORDS[self.quantity]}",
+                expected="it for a scatter alone",
+                remedy="remove intrinsic",
+                key="intrinsic",
+            )
         if self.quantity == "zero_point" and not self.apparent and self.value > 3.0:
             yield Problem(
                 found=f"an absolute magnitude of {self.value:g}",
@@ -257,7 +274,7 @@ class Claim:
         if self.quantity == "zero_point" and self.apparent:
             what = "apparent magnitude"
         else:
-            what = WORDS[self.quantity]
+            what = ("intrinsic " if self.intrinsic else "") + WORDS[self.quantity]
         place = f" at {self.pivot:g} d" if self.quantity == "zero_point" and self.pivot else ""
         return what + place + (f" of {self.host}" if self.host else "")
 

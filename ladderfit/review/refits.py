@@ -8,7 +8,7 @@ import numpy as np
 
 from ladderfit.errors import LadderfitError
 from ladderfit.review.bench import Bench, Selection
-from ladderfit.review.claims import Claim, Method
+from ladderfit.review.claims import Claim
 from ladderfit.review.fits import Treatment
 from ladderfit.review.resampling import Estimate
 from ladderfit.review.system import STARS
@@ -90,15 +90,21 @@ class Refit:
     within_error: bool
 
 
-def way_described(bench: Bench, method: Method) -> Way:
-    """What the paper says; what it does not say is left undone."""
+def way_described(bench: Bench, claim: Claim) -> Way:
+    """What the paper says; what it does not say is left undone.
+
+    An intrinsic scatter has a meaning only with weights from errors and scatter, which
+    are taken for it where the paper states none.
+    """
+    method = claim.method
     selection = bench.described(method)
     if method.fit == JOINT:
         return Way(selection, Treatment("errors and scatter", method.clip), joint=True)
     if method.fit == "both errors":
         weights = method.weights or "errors and scatter"
         return Way(selection, Treatment(weights, method.clip, period_errors=True))
-    return Way(selection, Treatment(method.weights or "none", method.clip))
+    unstated = "errors and scatter" if claim.intrinsic else "none"
+    return Way(selection, Treatment(method.weights or unstated, method.clip))
 
 
 def other_ways(bench: Bench, described: Way) -> list[Way]:

@@ -22,6 +22,7 @@ from ladderfit.units import LN10
 _REPLICATES = 300
 _CELLS = 1_000_000  # of the array of weights
 _SINGLE = 1e-9
+_LEAST_SCATTER = 1e-3  # mag: below this the slope of t with t^2 is cut off
 _CLIP_ROUNDS = 40
 _RIDGE = 1e-12
 
@@ -30,11 +31,14 @@ _RIDGE = 1e-12
 class Wanted:
     """Which number of a fit is meant: a sum of coefficients, or the stars' scatter.
 
+    The intrinsic scatter is known to fits with weights from errors and scatter alone.
+
     A sum that contains `HUBBLE` stands for the Hubble constant itself.
     """
 
     coefficients: Mapping[str, float] = field(default_factory=dict)
     scatter: bool = False
+    intrinsic: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -115,7 +119,7 @@ def _resampled(fit: Fit) -> BoolArray:
 def number(fit: Fit, wanted: Wanted) -> tuple[float, float, FloatArray] | None:
     """Value, error and gaps of a number; None where the rows do not determine it."""
     if wanted.scatter:
-        return _scatter(fit)
+        return _intrinsic(fit) if wanted.intrinsic else _scatter(fit)
     fixed = fit.system.fixed
     free = {name: c for name, c in wanted.coefficients.items() if name not in fixed}
     constant = sum(c * fixed[name] for name, c in wanted.coefficients.items() if name in fixed)
@@ -147,6 +151,22 @@ def _scatter(fit: Fit) -> tuple[float, float, FloatArray] | None:
     return value, value / float(np.sqrt(2.0 * freedom)), gaps
 
 
+def _intrinsic(fit: Fit) -> tuple[float, float, FloatArray] | None:
+    """The scatter t of sum r^2 / (v + t^2) = degrees of freedom; gaps to first order."""
+    stars, freedom = fit.is_star, fit.freedom
+    if freedom < 1.5 or fit.treatment.weights != "errors and scatter":
+        return None
+    variance = fit.sigma[stars] ** 2
+    squared = max(float(np.median(variance - fit.used.variance[stars])), 0.0)
+    value = float(np.sqrt(squared))
+    squares = fit.found.residuals[stars] ** 2
+    steep = 2.0 * max(value, _LEAST_SCATTER) * float(np.sum(squares / variance**2))
+    rest = np.maximum(1.0 - fit.leverage[stars], _SINGLE)
+    gaps = np.zeros(len(fit.sigma))
+    gaps[stars] = (squares / rest / variance - 1.0) / steep
+    return value, float(np.sqrt(2.0 * freedom)) / steep, gaps
+
+
 class _Clips:
     """Clipped fits under many sets of weights at once.
 
@@ -176,6 +196,9 @@ class _Clips:
 
     def numbers(self, wanted: Wanted) -> FloatArray:
         """Values of a number, shape (replicates,)."""
+        if wanted.intrinsic:
+            errors = float(np.mean(self._fit.used.variance[self._fit.is_star]))
+            return np.sqrt(np.maximum(self._scatter**2 - errors, 0.0))
         if wanted.scatter:
             return self._scatter.copy()
         fixed = self._fit.system.fixed

@@ -128,7 +128,8 @@ def value_verdict(
         return Verdict(ANOTHER_PIVOT, pivot.words)
     if explained is not None:
         mine = explained.refits[0]
-        text = f"as described {_value(claim, first)}; with {explained.words} {_value(claim, mine)}"
+        differs = "" if count_agrees(claim, first.stars) else f" (the paper has {claim.stars:,})"
+        text = f"as described {_value(claim, first)}{differs}; with {explained.words} {_value(claim, mine)}"
         tries = f"{explained.met} of {explained.tried} ways tried meet it"
         text += f", within {_nearness(claim, mine)} ({tries})"
         return Verdict(BY_ANOTHER_METHOD if explained.stated else UNDER_A_CHOICE, text)

@@ -148,7 +148,7 @@ def _opened(bench: Bench, claims: Claims, claim: Claim) -> _Open | ClaimReview:
     if judged.pivot is None and claim.quantity == "zero_point":
         judged = replace(judged, pivot=bench.ladder.choices.relation.pivot)
     try:
-        way = way_described(bench, claim.method)
+        way = way_described(bench, claim)
         made = refits(bench, judged, way)
     except InputError as error:
         return cannot("; ".join(problem.found for problem in error.problems))
@@ -179,7 +179,10 @@ def _judged(bench: Bench, published: Claim, each: _Open, relatives: list[_Open])
     explained = None
     if not meets_description(claim, found):
         explained = _explained(bench, each, relatives)
-    checks = _checks(bench, claim, way, _trusted(found, explained), relatives)
+    trusted = _trusted(found, explained)
+    if pivot is not None and pivot.pivot is not None:
+        trusted = refits(bench, replace(claim, pivot=pivot.pivot), way)
+    checks = _checks(bench, claim, way, trusted, relatives)
     verdicts = [value_verdict(claim, found, explained, pivot)]
     wrong = error_verdict(checks)
     step = claim.error if claim.error is not None else found[0].spread
@@ -219,7 +222,12 @@ def _checks(
     bench: Bench, claim: Claim, way: Way, found: list[Refit], relatives: list[_Open]
 ) -> list[Check]:
     scatter = next(
-        (other.claim.value for other in relatives if other.claim.quantity == "scatter"), None
+        (
+            other.claim.value
+            for other in relatives
+            if other.claim.quantity == "scatter" and not other.claim.intrinsic
+        ),
+        None,
     )
     listed = [
         error_check(claim, found),

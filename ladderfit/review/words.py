@@ -193,8 +193,8 @@ def _smallest(found: ClaimReview) -> str:
     some = "One star of" if one else f"At most {least.size:,} stars of"
     need = "has" if one else "have"
     return (
-        f"{some} {least.of:,} ({share:.2g} %) {need} to go for the value to move by {step}: without "
-        f"{names}{more} it is {_digits(found, least.value)} {found.claim.unit}, by a refit."
+        f"{some} {least.of:,} ({share:.2g} %) {need} to go for the value to move by {step}: "
+        f"without {names}{more} it is {_digits(found, least.value)} {found.claim.unit}, by a refit."
     )
 
 
