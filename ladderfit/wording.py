@@ -40,13 +40,13 @@ def summary_text(result: Result) -> str:
     """
     sections = [("", [printable(result.choices.title)])] if result.choices.title else []
     if result.source is not None:
-        sections.append(("Data", _aligned(data_rows(result.source))))
+        sections.append(("Data", aligned(data_rows(result.source))))
     heading = f"Posterior: mean ± standard deviation of {result.size:,} draws"
-    sections.append((heading, _aligned(headline_rows(result))))
+    sections.append((heading, aligned(headline_rows(result))))
     moduli = modulus_lines(result)
     if moduli:
         sections.append(("Distance moduli [mag]", moduli))
-    sections.append(("Priors in force", _aligned(prior_rows(result))))
+    sections.append(("Priors in force", aligned(prior_rows(result))))
     sections.append(("How far to trust it", trust_lines(result)))
     return "\n\n".join(_paragraph(heading, lines) for heading, lines in sections)
 
@@ -95,7 +95,7 @@ def modulus_lines(result: Result) -> list[str]:
     if len(entries) > _MOST_MODULI:
         return [f"{len(entries)} hosts: see summary.ecsv"]
     entries.sort(key=lambda entry: entry[1].mean)
-    cells = _aligned((printable(host), str(interval)) for host, interval in entries)
+    cells = aligned((printable(host), str(interval)) for host, interval in entries)
     rows = -(-len(cells) // 3)
     width = max((len(cell) for cell in cells), default=0) + 4
     return ["".join(cell.ljust(width) for cell in cells[row::rows]).rstrip() for row in range(rows)]
@@ -172,7 +172,7 @@ def _paragraph(heading: str, lines: Sequence[str]) -> str:
     return "\n".join([heading, *(f"  {line}" for line in lines)])
 
 
-def _aligned(rows: Iterable[Sequence[str]]) -> list[str]:
+def aligned(rows: Iterable[Sequence[str]]) -> list[str]:
     """Columns of equal width, two blanks apart; a long last cell goes on below itself."""
     table = [tuple(row) for row in rows]
     if not table:

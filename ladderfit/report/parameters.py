@@ -160,6 +160,7 @@ def modulus_covariance_table(result: Result) -> PaperTable | None:
 def moduli_covariance(hosts: tuple[str, ...], matrix: FloatArray) -> PaperTable:
     """A covariance of moduli [mag^2] as a table, printed in units of a power of ten."""
     names = tuple(with_group("modulus", host) for host in hosts)
+    matrix = np.atleast_2d(matrix)
     title = "Covariance of the distance moduli"
     table = _covariance("covariance_moduli", title, names, (), ("mag",) * len(hosts), matrix)
     if len(hosts) > _MOST_PRINTED:
