@@ -2,7 +2,8 @@
 
 Stars, periods, metallicities, stated errors, hosts and redshifts stay; magnitudes,
 parallaxes, anchor moduli, peaks and velocities are simulated one object at a
-time.  Magnitudes and indices become one column, W.
+time.  Magnitudes and indices become one column, W; where the ratio of an index is
+free, its bands are simulated one by one.
 
 Parallax stars keep their magnitudes unless a range of moduli is stated: a
 distance prior without ends says what the modulus, and so the parallax, may be
@@ -22,6 +23,14 @@ from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock.peak_redraw import peak_beyond, peak_needs, peaks_again
 from ladderfit.mock.peaks import peak_in_flow
+from ladderfit.mock.photometry_redraw import (
+    Light,
+    band_columns,
+    cepheids_again,
+    free_moduli,
+    photometry_needs,
+    shine_again,
+)
 from ladderfit.mock.restated import beyond, restated
 from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
@@ -117,7 +126,7 @@ def needed(ladder: Ladder) -> tuple[str, ...]:
     names += ["parallax_offset"] if ladder.parallax_stars is not None else []
     if ladder.peaks is not None or (expansion is not None and not linear):
         names += ["peak_magnitude", "peak_scatter"]
-    names += peak_needs(ladder)
+    names += (*peak_needs(ladder), *photometry_needs(ladder))
     names += ["hubble_constant"] if expansion is not None else []
     if expansion is not None and linear:
         names += ["velocity_scatter"]
@@ -139,25 +148,13 @@ def _host_moduli(ladder: Ladder, truth: Mapping[str, float]) -> FloatArray:
     return np.array([truth[with_group("modulus", host)] for host in ladder.hosts])
 
 
-def _measured(mean: FloatArray, scatter: float, error: FloatArray, rng: Rng) -> FloatArray:
-    """Each object's own deviation, and then its measurement."""
-    own = mean + scatter * rng.normal(size=len(mean))
-    return np.asarray(own + error * rng.normal(size=len(mean)))
-
-
-def _magnitudes(
-    ladder: Ladder, stars: StarSample, modulus: FloatArray, truth: Mapping[str, float], rng: Rng
-) -> FloatArray:
-    mean = modulus + absolute(ladder, stars, truth)
-    return _measured(mean, truth["scatter"], np.sqrt(stars.variance), rng)
-
-
-def _star_columns(ladder: Ladder, stars: StarSample, magnitude: FloatArray) -> list[MaskedColumn]:
+def _star_columns(
+    ladder: Ladder, stars: StarSample, photometry: list[MaskedColumn]
+) -> list[MaskedColumn]:
     columns = [
         text_column("ID", stars.star, "star"),
         digits_column("P", 10.0**stars.log_period, 10, "d", "period of pulsation"),
-        digits_column("W", magnitude, 8, "mag", "magnitude or index of the relation"),
-        digits_column("e_W", np.sqrt(stars.variance), 8, "mag", "error of W"),
+        *photometry,
     ]
     if ladder.choices.relation.metallicity != "none":
         columns.append(digits_column("OH", stars.metallicity, 8, "dex", "metallicity"))
@@ -165,8 +162,8 @@ def _star_columns(ladder: Ladder, stars: StarSample, magnitude: FloatArray) -> l
 
 
 def _cepheids(ladder: Ladder, stars: StarSample, truth: Mapping[str, float], rng: Rng) -> Table:
-    modulus = _host_moduli(ladder, truth)[stars.host]
-    columns = _star_columns(ladder, stars, _magnitudes(ladder, stars, modulus, truth, rng))
+    mean = _host_moduli(ladder, truth)[stars.host] + absolute(ladder, stars, truth)
+    columns = _star_columns(ladder, stars, cepheids_again(ladder, stars, mean, truth, rng))
     galaxy = [ladder.hosts[number] for number in stars.host]
     return Table([columns[0], text_column("Galaxy", galaxy, "host galaxy"), *columns[1:]])
 
@@ -181,12 +178,16 @@ def _parallax_stars(
     section = ladder.choices.anchors.parallaxes
     if section is None or stars.parallax_error is None:  # a ladder with such stars has both
         raise AssertionError
-    if moduli is None:
-        modulus = _moduli_given_magnitudes(ladder, stars, truth, str(section.distance_prior), rng)
-        columns = _star_columns(ladder, stars, stars.magnitude)
+    prior, mean = str(section.distance_prior), absolute(ladder, stars, truth)
+    if moduli is not None:
+        modulus = _moduli_between(prior, moduli, len(stars), rng)
+        light = shine_again(ladder, stars, modulus + mean, truth, rng)
+    elif ladder.choices.relation.reddening != "fixed":
+        modulus, light = free_moduli(ladder, stars, mean, truth, rng)
     else:
-        modulus = _moduli_between(str(section.distance_prior), moduli, len(stars), rng)
-        columns = _star_columns(ladder, stars, _magnitudes(ladder, stars, modulus, truth, rng))
+        modulus = _moduli_given_magnitudes(ladder, stars, truth, prior, rng)
+        light = Light({"W": stars.magnitude}, {"W": np.sqrt(stars.variance)})
+    columns = _star_columns(ladder, stars, band_columns(light))
     true = 10.0 ** (2.0 - 0.2 * modulus) + truth["parallax_offset"]
     measured = true + stars.parallax_error * rng.normal(size=len(stars))
     columns += [

@@ -9,10 +9,16 @@ from typing import Any
 import numpy as np
 
 from ladderfit import schema
+from ladderfit.choices import Cepheids, Parallaxes
 from ladderfit.errors import Problem
 from ladderfit.ladder import Ladder
 from ladderfit.ladder_file import as_written
 from ladderfit.mock.peak_redraw import role_columns
+from ladderfit.mock.photometry_redraw import (
+    photometry_beyond,
+    restated_cepheids,
+    restated_magnitude,
+)
 from ladderfit.names import with_group
 from ladderfit.samples import StarSample
 
@@ -42,6 +48,7 @@ _ROWS = (  # decided already which rows take part, and what they hold
     "extinction_max",
     "min_signal",
     "corrected",
+    "shortest",
 )
 _KNOWN: dict[str, tuple[str, ...]] = {
     "": (
@@ -58,8 +65,8 @@ _KNOWN: dict[str, tuple[str, ...]] = {
         "sampling",
         "alternatives",
     ),
-    "cepheids": (*_ROWS, "columns", "magnitude", "periods"),
-    "relation": ("pivot", "metallicity"),
+    "cepheids": (*_ROWS, "columns", "magnitude", "periods", "completeness", "shared"),
+    "relation": ("pivot", "metallicity", "reddening"),
     "anchors": ("geometric", "parallaxes"),
     "anchors.parallaxes": (*_ROWS, "columns", "magnitude", "distance_prior", "periods", "use"),
     "hosts": ("distance_prior",),
@@ -98,6 +105,7 @@ def beyond(ladder: Ladder) -> Iterator[Problem]:
     for key, sample in stars.items():
         if sample is not None:
             yield from _strange_stars(key, sample)
+    yield from photometry_beyond(ladder)
     if ladder.flow is not None and ladder.flow.peculiar_velocity_error is not None:
         yield _problem("errors of single peculiar velocities", "expansion.columns")
 
@@ -143,7 +151,8 @@ def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, 
         plain["expansion"]["columns"] = {role: role for role in ("name", "distance", "velocity")}
     metallic = ladder.choices.relation.metallicity != "none"
     if "cepheids" in plain:
-        plain["cepheids"]["magnitude"] = _MAGNITUDE
+        plain["cepheids"] |= restated_cepheids(plain["cepheids"])
+        plain["cepheids"]["magnitude"] = _magnitude(ladder, ladder.choices.cepheids)
         plain["cepheids"]["columns"] |= {"metallicity": "OH"} if metallic else {}
     plain["anchors"] = _anchors(ladder, truth, rng)
     published = plain.get("expansion", {}).get("intercept")
@@ -153,6 +162,13 @@ def restated(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, 
         plain["expansion"]["intercept"] = {**published, "value": value}
         plain["expansion"]["columns"] = {}
     return plain
+
+
+def _magnitude(ladder: Ladder, section: Cepheids | Parallaxes | None) -> dict[str, Any]:
+    """One column W, or bands and their errors where the ratio is free."""
+    magnitude = None if section is None else section.magnitude
+    bands = None if magnitude is None else restated_magnitude(ladder, magnitude)
+    return _MAGNITUDE if bands is None else bands
 
 
 def _fitted(section: Mapping[str, Any], columns: Mapping[str, str]) -> dict[str, Any]:
@@ -173,7 +189,9 @@ def _anchors(ladder: Ladder, truth: Mapping[str, float], rng: Rng) -> dict[str, 
     anchors: dict[str, Any] = {"geometric": geometric} if geometric else {}
     if ladder.parallax_stars is not None:
         stars = _fitted(plain["parallaxes"], _COLUMNS["anchors.parallaxes"])
-        stars["magnitude"] = _MAGNITUDE
+        own = ladder.choices.anchors.parallaxes
+        has_own = own is not None and own.magnitude is not None
+        stars["magnitude"] = _magnitude(ladder, own if has_own else ladder.choices.cepheids)
         if ladder.choices.relation.metallicity != "none":
             stars["columns"]["metallicity"] = "OH"
         anchors["parallaxes"] = stars
