@@ -28,10 +28,10 @@ ORDER = """
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
+    kernels.downdate
     kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
-    posterior.offsets posterior.parallaxes
-    posterior.families
+    posterior.offsets posterior.families posterior.parallaxes
     posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
@@ -45,7 +45,12 @@ ORDER = """
     peak_predictions residuals running peak_views
     report.cells report.machine report.latex report.parameters report.objects report.choices
     report.html report.files report.sections report.page report.write report
-    redshift_cuts influence anchors distance_priors error_budget
+    influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
+    influence.blocks influence.correlated influence.populations influence.hosts influence.objects
+    influence.reweighting influence.words influence.table influence likelihood predictive
+    power_scaling
+    anchors.weights anchors.tension anchors.comparison anchors
+    redshift_cuts distance_priors error_budget
     sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep
     alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
     alternatives.run alternatives.words alternatives.folder alternatives
