@@ -9,7 +9,7 @@ from ladderfit.errors import LadderfitError
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
 from ladderfit.plots import save_figures
-from ladderfit.report import write_report
+from ladderfit.report.write import move_report, write_report
 from ladderfit.result import Result
 from ladderfit.sampling.direct import Progress
 from ladderfit.sampling.live import Run, start
@@ -101,10 +101,7 @@ def finish(run: Run, progress: Progress | None = None) -> Result:
     save_figures(result, temporary / "figures")
     shutil.copyfile(run.path / "provenance.json", temporary / "provenance.json")
     write_report(result, temporary, name=run.path.name)
-    for name in ("figures", "tables"):
-        shutil.rmtree(run.path / name, ignore_errors=True)
-        (temporary / name).rename(run.path / name)
-    (temporary / "report.html").replace(run.path / "report.html")
+    move_report(temporary, run.path)
     shutil.rmtree(temporary)
     return result
 

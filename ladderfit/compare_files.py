@@ -86,12 +86,12 @@ def method(found: ResultComparison) -> str:
             f"Nothing was resampled: {found.reason}. The error of a shift then lies between the "
             "difference and the sum of the two errors, whatever the results share."
         )
+    known = 100.0 / math.sqrt(2.0 * max(found.resamples - 1, 1))
     return (
         f"{found.resamples:,} joint resamples: an object that several results use comes as often "
-        "in each, and an anchor errs alike in each. The error is the spread of the shift; it "
-        "is itself known to "
-        f"{100.0 / math.sqrt(2.0 * max(found.resamples - 1, 1)):.0f} %, and says how far sampling alone would move it, not "
-        "whether one of the choices is right."
+        "in each, and an anchor errs alike in each. The error is the spread of the shift, itself "
+        f"known to {known:.0f} %; it says how far sampling alone would move it, not whether one "
+        "of the choices is right."
     )
 
 

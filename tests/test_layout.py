@@ -44,7 +44,7 @@ ORDER = """
     classical.least_squares classical.lines classical.parallaxes classical
     peak_predictions residuals running peak_views
     report.cells report.machine report.latex report.parameters report.objects report.choices
-    report.html report.files report.sections report.page report.write report
+    report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
     influence.blocks influence.correlated influence.populations influence.hosts influence.objects
     influence.reweighting influence.words influence.table influence likelihood predictive
@@ -77,7 +77,7 @@ ORDER = """
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.frame workbench.screen workbench
     launcher
-    commands.terminal commands.alternatives commands.calibrate commands.distances commands.compare commands.draft commands.review commands.mock commands.workbench commands
+    commands.terminal commands.alternatives commands.calibrate commands.report commands.distances commands.compare commands.draft commands.review commands.mock commands.workbench commands
     cli __main__
 """.split()
 

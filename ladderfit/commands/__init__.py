@@ -1,5 +1,15 @@
 """One file per command: its options and what it runs; what it needs is imported when it runs."""
 
-from ladderfit.commands import calibrate, compare, distances, draft, mock, review, workbench
+from ladderfit.commands import (
+    calibrate,
+    compare,
+    distances,
+    draft,
+    mock,
+    report,
+    review,
+    workbench,
+)
 
-COMMANDS = (calibrate, draft, review, distances, compare, mock, workbench)  # in the order of --help
+# in the order of --help
+COMMANDS = (calibrate, draft, review, report, distances, compare, mock, workbench)

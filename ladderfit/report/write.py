@@ -3,19 +3,30 @@
 from __future__ import annotations
 
 import json
+import shutil
+import tempfile
 from collections.abc import Sequence
 from pathlib import Path
 
+from ladderfit.errors import InputError, Problem
 from ladderfit.files import write_text_atomically
 from ladderfit.report.cells import PaperTable
 from ladderfit.report.files import tables_of, write_tables
 from ladderfit.report.page import report_page
 from ladderfit.result import Result
 
+PAGE, TABLES, FIGURES = "report.html", "tables", "figures"
+_ORDER = ("relation", "moduli", "parallaxes", "hubble", "corner")
+
 
 def write_report(
-    result: Result, folder: Path, *, name: str | None = None, more: Sequence[PaperTable] = ()
-) -> list[Path]:
+    result: Result,
+    folder: Path,
+    *,
+    name: str | None = None,
+    into: Path | None = None,
+    more: Sequence[PaperTable] = (),
+) -> None:
     """Write the report and the tables of a result whose numbers and figures are written.
 
     Parameters
@@ -25,35 +36,72 @@ def write_report(
         Of the result, with ``provenance.json`` and ``figures/`` in it.
     name : str, optional
         What the folder will be called, if `folder` is a temporary name.
+    into : Path, optional
+        Where to write, if not into `folder`; an existing folder.
     more : sequence of PaperTable
         Further tables, such as those of alternatives.
 
-    Returns
-    -------
-    list of Path
-        The files written.
-
     Raises
     ------
+    InputError
+        If the provenance cannot be read.
     OSError
         If a file cannot be read or written.
     """
+    target = folder if into is None else into
     tables = [*tables_of(result), *more]
-    written = write_tables(tables, folder / "tables", result.choices.title)
-    provenance = json.loads((folder / "provenance.json").read_text(encoding="utf-8"))
-    path = folder / "report.html"
-    text = report_page(
-        result, tables, pictures(folder / "figures"), provenance, name or folder.name
-    )
-    write_text_atomically(path, text)
-    return [*written, path]
+    write_tables(tables, target / TABLES, result.choices.title)
+    found = pictures(folder / FIGURES)
+    text = report_page(result, tables, found, _provenance(folder), name or folder.name)
+    write_text_atomically(target / PAGE, text)
 
 
-ORDER = ("relation", "moduli", "parallaxes", "hubble", "corner")
+def renew_report(result: Result, folder: Path, *, more: Sequence[PaperTable] = ()) -> None:
+    """Make the report and the tables of a result folder again; the old ones go once all is there.
+
+    Raises
+    ------
+    InputError
+        If the provenance cannot be read.
+    OSError
+        If a file cannot be written; the old ones are then as they were.
+    """
+    folder = folder.resolve()
+    temporary = Path(tempfile.mkdtemp(prefix=".report.", suffix=".tmp", dir=folder))
+    try:
+        write_report(result, folder, into=temporary, more=more)
+        move_report(temporary, folder)
+    finally:
+        shutil.rmtree(temporary, ignore_errors=True)
+
+
+def move_report(temporary: Path, folder: Path) -> None:
+    """Put a finished report, its tables and figures in the place of older ones."""
+    for name in (FIGURES, TABLES):
+        if (temporary / name).is_dir():
+            if (folder / name).exists():
+                (folder / name).rename(temporary / f"old-{name}")
+            (temporary / name).rename(folder / name)
+    (temporary / PAGE).replace(folder / PAGE)
+
+
+def _provenance(folder: Path) -> dict[str, object]:
+    path = folder / "provenance.json"
+    try:
+        return dict(json.loads(path.read_text(encoding="utf-8")))
+    except (OSError, ValueError, TypeError):
+        raise InputError(
+            Problem(
+                found="a provenance that cannot be read",
+                expected="a file written by ladderfit calibrate",
+                remedy="repeat the calibration",
+                file=str(path),
+            )
+        ) from None
 
 
 def pictures(folder: Path) -> dict[str, bytes]:
     """The figures of page width in a folder, as PNG, in the order of the report."""
     found = {path.stem: path.read_bytes() for path in sorted(folder.glob("*.png"))}
-    first = [name for name in ORDER if name in found]
+    first = [name for name in _ORDER if name in found]
     return {name: found[name] for name in [*first, *(n for n in found if n not in first)]}
