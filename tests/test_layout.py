@@ -54,8 +54,8 @@ ORDER = """
     sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep
     alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
     alternatives.run alternatives.words alternatives.folder alternatives
-    review.claims review.claims_file review.system review.fits review.resampling review.bench
-    review.refits review.unstated review.reliance review.checks review.judged review.verdicts
+    review.claims review.claims_file review.selection review.system review.fits
+    review.resampling review.joint review.bench review.refits review.unstated review.reliance review.checks review.judged review.verdicts
     review.whole review.words review.page review
     draw_weights distances distance_files resampling compare compare_files
     draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves draft.jobs draft.entries
@@ -68,14 +68,15 @@ ORDER = """
     alternatives_folder calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
-    workbench.tables workbench.view_tables
+    workbench.pins workbench.keeping workbench.long_runs
+    workbench.tables workbench.comparing workbench.view_tables
     workbench.axis workbench.pulse workbench.range workbench.controls workbench.selection_controls
     workbench.parallax_controls workbench.choices_panel
     workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
     workbench.canvas.parallaxes workbench.canvas
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
-    workbench.frame workbench.screen workbench
+    workbench.board_panel workbench.shelf workbench.frame workbench.screen workbench
     launcher
     commands.terminal commands.alternatives commands.calibrate commands.report commands.distances commands.compare commands.draft commands.review commands.mock commands.workbench commands
     cli __main__
