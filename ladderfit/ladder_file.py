@@ -22,6 +22,7 @@ _HEADERS = (
     ("cepheids",),
     ("cepheids", "magnitude"),
     ("relation",),
+    ("peak_relation",),
     ("anchors",),
     ("anchors", "geometric"),
     ("anchors", "geometric", "*"),

@@ -20,6 +20,7 @@ from ladderfit.kinds import (
 )
 from ladderfit.rows import Rows, floats, nearest_few
 from ladderfit.samples import FloatArray, FlowSample, IntArray, PeakInputs, PeakSample
+from ladderfit.tables import and_more
 
 KINDS: dict[str, Kind] = {
     "width": NUMBER,
@@ -216,6 +217,14 @@ def _errors_behind(role: str) -> tuple[str, ...]:
     return f"{first}_error", f"{second}_error"
 
 
+def _largest(correlation: FloatArray, inputs: tuple[str, ...]) -> str:
+    """The role of the largest correlation among peak and inputs."""
+    size = np.abs(np.triu(correlation, 1))
+    first, second = np.unravel_index(int(np.argmax(size)), size.shape)
+    names = ("peak", *inputs)
+    return f"{names[first]}_{names[second]}_covariance"
+
+
 def _impossible(
     section: str, sample: PeakSample | FlowSample, columns: Mapping[str, str], file: str
 ) -> Iterator[Problem]:
@@ -231,10 +240,9 @@ def _impossible(
     shape = whole / (scale[:, :, None] * scale[:, None, :])
     faulty = np.flatnonzero(np.linalg.eigvalsh(shape)[:, 0] <= 0.0)
     if faulty.size:
-        role = next(r for r in sample.inputs.values if r.endswith("_covariance"))
-        more = f" (and {faulty.size - 1:,} more such rows)" if faulty.size > 1 else ""
+        role = _largest(shape[faulty[0]], inputs)
         yield Problem(
-            found=f"covariances that are too large for the errors{more}",
+            found=f"covariances that are too large for the errors{and_more(faulty.size - 1)}",
             expected="correlations between -1 and 1 that fit together",
             remedy="correct errors or covariances, or set the row aside",
             file=file,

@@ -177,6 +177,8 @@ def spread_of(numbers: FloatArray) -> str:
     return f"{low:.4g} to {high:.4g}" if low < high else f"{low:.4g} throughout"
 
 
+SURVEY = "survey|surveyname|idsurvey|surveyid"  # stems of a column that names surveys
+
 # --- columns of text ---------------------------------------------------------------------
 
 _NAMES = (
@@ -203,7 +205,7 @@ def name_clue(column: Facts, hosts: Collection[str]) -> Clue | None:
 
 def host_clue(column: Facts, hosts: Collection[str]) -> Clue | None:
     """How well a column fits the galaxies' names; `hosts` are those of other tables."""
-    if column.numbers is not None or column.error:
+    if column.numbers is not None or column.error or re.fullmatch(SURVEY, column.stem):
         return None
     if all(_as_mode(label) for label in column.labels):
         return None

@@ -11,11 +11,13 @@ import numpy as np
 from ladderfit.draft.facts import Facts
 from ladderfit.draft.jobs import (
     CEPHEIDS,
+    EXPANSION,
     GEOMETRIC,
     PARALLAXES,
     SUPERNOVAE,
     Sketch,
 )
+from ladderfit.draft.light_curves import peak_relation_entries
 from ladderfit.draft.magnitudes import Photometry
 from ladderfit.draft.roles import Choice
 from ladderfit.draft.text import Entry
@@ -48,6 +50,8 @@ def entries(found: Found, tables: Mapping[Path, DataTable], folder: Path) -> Ite
             yield from _magnitude(sketch.photometry, (*section, "magnitude"))
         if job == _last_of_stars(found):
             yield from _relation(found)
+    peaks = {job: found[job][1].columns for job in (SUPERNOVAE, EXPANSION) if job in found}
+    yield from peak_relation_entries({j: c for j, c in peaks.items() if "peak" in c})
 
 
 def _relative(path: Path, folder: Path) -> str:

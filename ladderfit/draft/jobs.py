@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from ladderfit.draft.clues import SURE
 from ladderfit.draft.facts import Facts
+from ladderfit.draft.light_curves import take_light_curves
 from ladderfit.draft.magnitudes import Photometry, is_magnitude, take_magnitudes
 from ladderfit.draft.roles import Choice, Roles, open_choice
 from ladderfit.schema import UNDECIDED
@@ -131,6 +132,7 @@ def _peak(roles: Roles) -> None:
         roles.chosen["peak"] = open_choice([column.name for column in magnitudes])
     roles.need("peak", "a peak magnitude")
     roles.error_of("peak", needed=True)
+    take_light_curves(roles)
 
 
 def _only_label(roles: Roles) -> None:
