@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior
+from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
 
 
 @dataclass(frozen=True)
@@ -60,6 +60,57 @@ _ALL = (
     ),
     Parameter("slope_offset", "mag/dex", r"$\Delta b$", "slope offset", 3, Normal(0.0, 0.5)),
     Parameter("scatter", "mag", r"$t$", "intrinsic scatter of the relation", 3, HalfNormal(0.3)),
+    Parameter(
+        "outlier_fraction",
+        "",
+        r"$f_o$",
+        "fraction of outliers among the Cepheids of hosts",
+        3,
+        Uniform(0.0, 0.5),
+    ),
+    Parameter(
+        "outlier_width",
+        "mag",
+        r"$w_o$",
+        "width of the outliers' deviations beyond that of other stars",
+        2,
+        LogNormal(1.0, 1.5),
+    ),
+    Parameter(
+        "outlier_offset", "mag", r"$\delta_o$", "mean deviation of outliers", 2, Fixed(0.0)
+    ),
+    Parameter(
+        "degrees_of_freedom",
+        "",
+        r"$\nu$",
+        "degrees of freedom of the deviations",
+        1,
+        LogNormal(10.0, 2.5),
+    ),
+    Parameter(
+        "parallax_outlier_fraction",
+        "",
+        r"$f_\varpi$",
+        "fraction of outliers among the parallax stars",
+        3,
+        Uniform(0.0, 0.5),
+    ),
+    Parameter(
+        "parallax_outlier_width",
+        "mag",
+        r"$w_\varpi$",
+        "width of the parallax stars' outliers beyond that of other stars",
+        2,
+        LogNormal(1.0, 1.5),
+    ),
+    Parameter(
+        "parallax_outlier_offset",
+        "mag",
+        r"$\delta_\varpi$",
+        "mean deviation of the parallax stars' outliers",
+        2,
+        Fixed(0.0),
+    ),
     Parameter(
         "metallicity_spread",
         "dex",

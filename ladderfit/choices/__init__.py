@@ -14,6 +14,7 @@ from ladderfit.choices.anchors import (
 )
 from ladderfit.choices.columns import Columns, Range, SetAside
 from ladderfit.choices.covariance import Covariance
+from ladderfit.choices.outliers import Outliers
 from ladderfit.choices.parallaxes import (
     Cluster,
     Correlation,
@@ -54,6 +55,7 @@ __all__ = [
     "Intercept",
     "Magnitude",
     "Metallicity",
+    "Outliers",
     "Overtones",
     "Parallaxes",
     "PeakInput",

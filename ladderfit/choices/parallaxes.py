@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 from ladderfit.choices.columns import Columns, Range, SetAside, range_faults
+from ladderfit.choices.outliers import Outliers
 from ladderfit.choices.stars import Magnitude, Overtones, PeriodRatio, star_faults
 from ladderfit.errors import Problem
 from ladderfit.schema import choice
@@ -180,6 +181,7 @@ class Parallaxes:
         default="Feast & Catchpole 1997",
     )
     set_aside: tuple[SetAside, ...] = choice("stars left out by hand", default=())
+    outliers: Outliers = choice("how stars off the relation are met", default_factory=Outliers)
     use: bool = choice("whether the parallaxes take part", default=True)
 
     @property

@@ -14,6 +14,7 @@ from ladderfit.choices.columns import (
     period_faults,
     range_faults,
 )
+from ladderfit.choices.outliers import Outliers
 from ladderfit.choices.photometry import Completeness, SharedTerm
 from ladderfit.errors import Problem, nearest
 from ladderfit.schema import choice
@@ -153,6 +154,7 @@ class Cepheids:
     shared: Mapping[str, SharedTerm] = choice(
         "photometric errors that a host's stars share", default_factory=dict
     )
+    outliers: Outliers = choice("how stars off the relation are met", default_factory=Outliers)
 
     def check(self) -> Iterator[Problem]:
         """Roles and ranges."""

@@ -11,9 +11,10 @@ from ladderfit import schema
 from ladderfit.choices.anchors import Anchors, Hosts
 from ladderfit.choices.columns import column_faults
 from ladderfit.choices.covariance import Covariance
+from ladderfit.choices.outlier_checks import outlier_faults
 from ladderfit.choices.parallaxes import Parallaxes
-from ladderfit.choices.photometry_checks import completeness_faults, reddening_faults
 from ladderfit.choices.peak_relation import PeakRelation
+from ladderfit.choices.photometry_checks import completeness_faults, reddening_faults
 from ladderfit.choices.relation import Group, Relation
 from ladderfit.choices.sampling import Sampling
 from ladderfit.choices.stars import Cepheids
@@ -160,6 +161,17 @@ class Choices:
         }
         yield from completeness_faults(self.relation, self.cepheids, covariances=covariances)
 
+    def _outlier_faults(self) -> Iterator[Problem]:
+        tied = self.supernovae is not None and self.supernovae.covariance is not None
+        covariances = {
+            "supernovae.covariance": tied,
+            "anchors.covariance": self.anchors.covariance is not None,
+        }
+        stars = self.anchors.parallaxes
+        yield from outlier_faults(
+            self.relation, self.cepheids, stars, self.groups, covariances=covariances
+        )
+
     def check(self) -> Iterator[Problem]:
         """Sections that need one another."""
         yield from _prior_faults(self.priors)
@@ -167,6 +179,7 @@ class Choices:
         yield from _peak_faults(self)
         yield from _magnitude_faults(self.cepheids, self.anchors.parallaxes)
         yield from self._photometry_faults()
+        yield from self._outlier_faults()
         sections = {"cepheids": self.cepheids, "anchors.parallaxes": self.anchors.parallaxes}
         for key, section in sections.items():
             if section is None or self.relation.metallicity == "none":

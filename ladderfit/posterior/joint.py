@@ -29,6 +29,7 @@ from ladderfit.posterior.limits import Limits, limits_of
 from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
 from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
 from ladderfit.posterior.populations import population_blocks
+from ladderfit.posterior.robust import RobustHosts, robust_hosts
 from ladderfit.posterior.shared import SharedBlock, shared_block
 from ladderfit.posterior.split import Split, shared_photometry, split
 from ladderfit.posterior.star_terms import star_by_star, star_terms
@@ -64,6 +65,8 @@ class Posterior:
     parallaxes : ParallaxTerms or None
     limits : Limits or None
         Magnitude limits of hosts.
+    robust : RobustHosts or None
+        The Cepheids, where their outliers are modelled.
     """
 
     ladder: Ladder
@@ -73,6 +76,7 @@ class Posterior:
     constant: Moments
     parallaxes: ParallaxTerms | None
     limits: Limits | None = None
+    robust: RobustHosts | None = None
 
     @property
     def dimension(self) -> int:
@@ -141,9 +145,12 @@ class Posterior:
 
     def solution(self, z: FloatArray) -> Solution:
         """Theta and the evidence of all rows, given phi."""
-        total = self.constant.repeated(len(z))
+        total, values = self.constant.repeated(len(z)), partial(self.split.value, z=z)
         for block in self.blocks:
-            block.add_to(total, partial(self.split.value, z=z))
+            block.add_to(total, values)
+        if self.robust is not None:
+            given = self.split.known_values(z)
+            return self.robust.solution(total, self.split.known, given, values)
         return solve(total, self.split.known, self.split.known_values(z))
 
     def _log_density(self, z: FloatArray) -> FloatArray:
@@ -164,7 +171,11 @@ class Posterior:
 
     def _draw(self, z: FloatArray, white: FloatArray) -> dict[str, FloatArray]:
         solution = self.solution(z)
-        coefficients, local = solution.draw(white)
+        if self.robust is not None:
+            values = partial(self.split.value, z=z)
+            coefficients, local = self.robust.draw(solution, values, white)
+        else:
+            coefficients, local = solution.draw(white)
         if self.limits is not None:
             values = partial(self.split.value, z=z)
             self.limits.redraw(solution, values, local, white[:, -self.frame.hosts :])
@@ -201,7 +212,6 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
     constant = no_moments(1, frame.hosts, len(names), coupled_hosts(ladder))
     constant = constant + _anchors(ladder, frame, names) + _theta_prior(parts, frame)
     constant = constant + _distances(ladder, frame)
-    errors = input_errors(ladder, ladder.cepheids)
     blocks: list[Block] = []
     integrated = population_blocks(ladder, frame, names)
     blocks += integrated
@@ -216,13 +226,11 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
             blocks.append(block)
     done = ("peaks", "flow") if integrated else correlated_samples(ladder)
     found = list(ladder_rows(ladder, frame, names, but=done))
-    if ladder.cepheids is not None and star_by_star(ladder):
-        blocks.append(star_terms(ladder, frame, names))
-    elif ladder.cepheids is not None and errors is not None:
-        blocks.append(noisy_block(ladder, frame, ladder.cepheids, errors))
-    elif ladder.cepheids is not None and shared_photometry(ladder):
-        blocks.append(shared_block(ladder, frame, ladder.cepheids, partial(_largest, ladder)))
-    else:
+    robust = robust_hosts(ladder, frame)
+    summed = None if robust is not None else _star_block(ladder, frame, names)
+    if summed is not None:
+        blocks.append(summed)
+    elif robust is None:
         found += plain_rows(ladder, frame)
     for rows_, scatter in found:
         if scatter is None or scatter in parts.fixed:
@@ -233,7 +241,23 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
             kept = None if before is None else _kept(before.blocks, rows_, scatter, largest)
             blocks.append(kept or ScatterBlock(reduced(rows_, largest), scatter, largest))
     limits = limits_of(ladder, frame, names)
-    return Posterior(ladder, parts, frame, tuple(blocks), constant, parallax_terms(ladder), limits)
+    stars = parallax_terms(ladder)
+    return Posterior(ladder, parts, frame, tuple(blocks), constant, stars, limits, robust)
+
+
+def _star_block(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Block | None:
+    """The Cepheids as a block, where sums over them depend on more than one scatter."""
+    stars = ladder.cepheids
+    if stars is None:
+        return None
+    errors = input_errors(ladder, stars)
+    if star_by_star(ladder):
+        return star_terms(ladder, frame, names)
+    if errors is not None:
+        return noisy_block(ladder, frame, stars, errors)
+    if shared_photometry(ladder):
+        return shared_block(ladder, frame, stars, partial(_largest, ladder))
+    return None
 
 
 def _chunks(values: FloatArray) -> list[FloatArray]:

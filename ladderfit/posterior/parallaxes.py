@@ -10,7 +10,7 @@ that of their normals in parallax.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -21,10 +21,19 @@ from ladderfit.ladder import Ladder
 from ladderfit.posterior.cepheids import Values
 from ladderfit.posterior.colours import PARALLAX_COLOUR, SLOPE, Colours, colours_of
 from ladderfit.posterior.errors_in_inputs import InputErrors, input_errors
+from ladderfit.posterior.families import PARALLAXES, Family, families, outliers_of
 from ladderfit.posterior.moduli import Distances, Sharing, distances_of, product, sharing_of
 from ladderfit.posterior.offsets import offset_terms
 from ladderfit.relations import design, scatters
 from ladderfit.samples import FloatArray, IntArray, StarSample
+
+
+@dataclass(frozen=True)
+class Mixed:
+    """Of every star, shape (b, n): its log density, and the log odds of being an outlier."""
+
+    log_density: FloatArray
+    log_odds: FloatArray
 
 
 @dataclass(frozen=True, eq=False)
@@ -61,6 +70,10 @@ class ParallaxTerms:
         Where the ratio is free.
     x : array, shape (n,)
         log10 of period over pivot.
+    families : tuple of Family
+        Laws of outliers; empty where these are not modelled.
+    family_of : array of int, shape (n,)
+        Which of them each star has.
     """
 
     coefficients: tuple[str, ...]
@@ -84,6 +97,8 @@ class ParallaxTerms:
     headroom: FloatArray | None
     colours: Colours | None
     x: FloatArray
+    families: tuple[Family, ...] = ()
+    family_of: IntArray = field(default_factory=lambda: np.empty(0, dtype=np.int64))
 
     def log_density(self, values: Values) -> FloatArray:
         """Log density of every star or cluster, shape (b, g), at the given parameter values."""
@@ -92,6 +107,8 @@ class ParallaxTerms:
         rate = np.zeros(len(a))
         if self.distances.kind == detection.EXPONENTIAL:
             rate = 1.0 / values("distance_length")
+        if self.families:
+            return measured + self._mixture(values, a, v, offset, err, rate).log_density
         chance = self._log_chance(a, v, offset, err, rate)
         n = len(self.parallax)
         plx = np.concatenate([self.parallax, self.cluster_parallax]) - offset
@@ -110,6 +127,57 @@ class ParallaxTerms:
         if isinstance(measured, float):
             return total
         return total + np.add.reduceat(measured[:, order], starts[:-1], axis=1)
+
+    def log_odds(self, values: Values) -> FloatArray:
+        """Log of a star's odds of being an outlier, shape (b, n); of a mixture alone."""
+        a, v, _ = self._magnitudes(values)
+        offset, err = self._parallaxes(values)
+        rate = np.zeros(len(a))
+        if self.distances.kind == detection.EXPONENTIAL:
+            rate = 1.0 / values("distance_length")
+        return self._mixture(values, a, v, offset, err, rate).log_odds
+
+    def _mixture(
+        self,
+        values: Values,
+        a: FloatArray,
+        v: FloatArray,
+        offset: FloatArray,
+        err: FloatArray,
+        rate: FloatArray,
+    ) -> Mixed:
+        """Both kinds of stars, each with its integral and its chance of being in the sample."""
+        fraction, width, shift = (
+            np.stack([values(name) for name in names], axis=1)[:, self.family_of]
+            for names in zip(*(family.own for family in self.families), strict=True)
+        )
+        plx = self.parallax - offset
+        logs, chances = [], []
+        for share, off, extra in ((1.0 - fraction, 0.0, 0.0), (fraction, shift, width**2)):
+            place, spread = a - off, v + extra
+            with np.errstate(divide="ignore"):
+                weight = np.log(share)
+            logs.append(weight + self.distances.log_integrals(place, spread, plx, err, rate))
+            chances.append(weight + self._log_chance(place, spread, offset, err, rate))
+        total, chance = np.logaddexp(*logs), np.logaddexp(*chances)
+        return Mixed(total - chance, logs[1] - logs[0])
+
+    def measured(
+        self, values: Values
+    ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+        """What each star says of its modulus: by its magnitude and by its parallax.
+
+        Returns
+        -------
+        near, variance : array, shape (b, n)
+            Apparent minus absolute magnitude [mag], and its variance [mag^2].
+        parallax, error : array, shape (b, n)
+            Without offsets, and its error [mas].
+        """
+        near, variance, _ = self._magnitudes(values)
+        offset, error = self._parallaxes(values)
+        parallax = self.parallax - offset[:, : len(self.parallax)]
+        return near, variance, parallax, np.broadcast_to(error, parallax.shape)
 
     def _magnitudes(self, values: Values) -> tuple[FloatArray, FloatArray, FloatArray | float]:
         """Apparent minus absolute magnitudes, variances, and the density of what else is measured.
@@ -208,7 +276,11 @@ def parallax_terms(ladder: Ladder) -> ParallaxTerms | None:
     measured = [section.clusters[name] for _, name in named]
     own = np.array([float(cluster.offset) for cluster in measured])
     sharing = sharing_of(stars, [place for place, _ in named])
+    outliers = outliers_of(ladder.choices, PARALLAXES)
+    laws, law_of = families(ladder, stars, outliers, PARALLAXES) if outliers else ((), which)
     return ParallaxTerms(
+        families=laws,
+        family_of=law_of,
         coefficients=tuple(columns),
         design=np.stack(list(columns.values()), axis=1),
         magnitude=stars.magnitude,

@@ -21,6 +21,7 @@ from ladderfit.names import with_group
 from ladderfit.peak_terms import PeakTerms, peak_terms
 from ladderfit.posterior.colours import colour_coefficients, colour_parameters
 from ladderfit.posterior.errors_in_inputs import input_errors, uses_population
+from ladderfit.posterior.families import outlier_parameters
 from ladderfit.posterior.parallaxes import active_coefficients, parallax_parameters
 from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
 from ladderfit.relations import coefficient_names, scatters
@@ -213,7 +214,7 @@ def _nonlinear(ladder: Ladder) -> set[str]:
         errors = input_errors(ladder, stars)
         if errors is not None:
             found.update(n for n, s in zip(names, errors.sensitive, strict=True) if s)
-    found.update(_beside_limits(ladder))
+    found.update(_integrated_by_host(ladder))
     terms = _peak_terms(ladder)
     if terms.curved:
         found.update(terms.means)
@@ -254,6 +255,7 @@ def has_intercept(choices: Choices) -> bool:
 def _others(ladder: Ladder) -> tuple[str, ...]:
     """Parameters that are no coefficients."""
     names: list[str] = [*colour_parameters(ladder), *shared_photometry(ladder)]
+    names += outlier_parameters(ladder)
     samples = [s for s in (ladder.cepheids, ladder.parallax_stars) if s is not None]
     for stars in samples:
         names += [n for n in scatters(ladder.choices, stars, ladder.hosts)[0] if n not in names]
@@ -273,10 +275,12 @@ def _others(ladder: Ladder) -> tuple[str, ...]:
     return (*names, *_peak_terms(ladder).nonlinear)
 
 
-def _beside_limits(ladder: Ladder) -> Iterator[str]:
-    """Where hosts have magnitude limits, every coefficient that data of hosts depend on."""
+def _integrated_by_host(ladder: Ladder) -> Iterator[str]:
+    """Where hosts have limits or outliers, every coefficient that data of hosts depend on."""
     section = ladder.choices.cepheids
-    if section is None or section.completeness is None or ladder.cepheids is None:
+    if section is None or ladder.cepheids is None:
+        return
+    if section.completeness is None and not section.outliers.robust:
         return
     yield from coefficient_names(ladder.choices)
     yield from (name for name in _expansion_coefficients(ladder) if name == "peak_magnitude")

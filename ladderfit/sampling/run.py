@@ -118,7 +118,9 @@ def prior_notes(ladder: Ladder, draws: Mapping[str, FloatArray]) -> list[str]:
             )
         if isinstance(prior, Uniform):
             edge = _AT_BOUND * (prior.high - prior.low)
-            near = (draws[name] < prior.low + edge) | (draws[name] > prior.high - edge)
+            near = draws[name] > prior.high - edge
+            if not base_name(name).endswith("outlier_fraction"):  # none at all is no bound
+                near |= draws[name] < prior.low + edge
             if np.mean(near) > _CROWDED and ratio**2 <= UNINFORMED:
                 notes.append(
                     f"The posterior of the {words} ({name}) presses against a bound of its "
