@@ -3,78 +3,24 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
 
-from ladderfit import schema
-from ladderfit.choices.columns import Range
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
 from ladderfit.names import base_name, with_group
-from ladderfit.relations import design, scatters
+from ladderfit.relations import design
 from ladderfit.result import Result
-from ladderfit.review.claims import Claim, Method, period_words
+from ladderfit.review.claims import OF_THE_RELATION, Claim, Method
 from ladderfit.review.fits import Fit, Treatment, fit
+from ladderfit.review.joint import NO_THIRD_RUNG, joint_changes, posterior_values
 from ladderfit.review.resampling import Estimate, Resampling, Wanted
-from ladderfit.review.system import HUBBLE, STARS, System, linear_system
+from ladderfit.review.selection import EVERY_PERIOD, Selection, terms
+from ladderfit.review.system import HUBBLE, STARS, System, linear_system, objects
 from ladderfit.samples import BoolArray, StarSample
 from ladderfit.sampling.run import draw
-
-EVERY_PERIOD: Range = (0.0, float("inf"))
-_WIDE = {"slope": {"normal": [-3.3, 5.0]}, "zero_point": {"normal": [-5.9, 10.0]}}
-_STAND_IN = 10.0  # mag: modulus given to a host where nothing sets the scale
-
-
-@dataclass(frozen=True)
-class Selection:
-    """Which stars take part, and which terms the relation has.
-
-    Attributes
-    ----------
-    periods : (float, float)
-        In d, ends included.
-    mode : str
-        ``fundamental``, ``overtone`` or ``both``.
-    hosts : tuple of str
-        Those that take part; empty is all.
-    parallax_stars : bool
-        Whether stars with parallaxes take part.
-    without : str or None
-        A host left out.
-    set_aside : tuple of str
-        Names of stars.
-    break_ : float or None
-        Period beyond which the slope is another [d].
-    metallicity : bool
-    fixed : tuple of (str, float)
-        Coefficients held.
-    """
-
-    periods: Range = EVERY_PERIOD
-    mode: str = "both"
-    hosts: tuple[str, ...] = ()
-    parallax_stars: bool = True
-    without: str | None = None
-    set_aside: tuple[str, ...] = ()
-    break_: float | None = None
-    metallicity: bool = False
-    fixed: tuple[tuple[str, float], ...] = ()
-
-    @property
-    def words(self) -> str:
-        """The selection in one phrase."""
-        said = [period_words(self.periods)]
-        if self.mode != "both":
-            said.append(f"{self.mode} mode")
-        if self.hosts:
-            said.append("hosts " + ", ".join(self.hosts))
-        if self.without:
-            said.append(f"without {self.without}")
-        if self.break_:
-            said.append(f"break at {self.break_:g} d")
-        return ", ".join(said)
 
 
 class Bench:
@@ -93,8 +39,9 @@ class Bench:
         self.seed, self.draws = seed, draws
         self.opened = ladder.change(_opening(ladder))
         self._systems: dict[tuple[Any, ...], System] = {}
+        self._ladders: dict[tuple[Any, ...], Ladder] = {}
         self._fits: dict[tuple[Selection, Treatment], Fit | LadderfitError] = {}
-        self._results: dict[tuple[Selection, Treatment], Result | LadderfitError] = {}
+        self._results: dict[tuple[Any, ...], Result | LadderfitError] = {}
         self._resampling: Resampling | None = None
 
     @property
@@ -138,7 +85,7 @@ class Bench:
         return self._systems[key]
 
     def _with_terms(self, chosen: Selection) -> Ladder:
-        changes = _terms(chosen)
+        changes = terms(chosen)
         relation = self.opened.choices.relation
         same = (relation.break_, relation.metallicity != "none") == (
             changes["relation.break"],
@@ -146,13 +93,20 @@ class Bench:
         )
         if chosen.metallicity and relation.metallicity == "none":
             raise LadderfitError("the ladder file has no metallicity term")
-        return self.opened if same else self.opened.change(changes)
+        key = (chosen.break_, chosen.metallicity)
+        if key not in self._ladders:
+            self._ladders[key] = self.opened if same else self.opened.change(changes)
+        return self._ladders[key]
+
+    def sample(self, chosen: Selection) -> StarSample | None:
+        """The Cepheids, with the terms of a selection: without a metallicity none needs one."""
+        return self._with_terms(chosen).cepheids
 
     def rows(self, chosen: Selection) -> BoolArray:
         """Which rows of the system take part."""
         system = self.system(chosen)
         taken = np.ones(len(system.y), bool)
-        stars = self.stars
+        stars = self.sample(chosen)
         if stars is None:
             return taken
         if not chosen.parallax_stars:
@@ -161,9 +115,9 @@ class Bench:
         period = 10.0**stars.log_period
         low, high = chosen.periods
         inside &= (period >= low * (1.0 - 1e-12)) & (period <= high * (1.0 + 1e-12))
-        if self.overtone is not None and chosen.mode != "both":
-            inside &= self.overtone == (chosen.mode == "overtone")
-        names = np.array(self.opened.hosts)
+        if stars.overtone is not None and chosen.mode != "both":
+            inside &= stars.overtone == (chosen.mode == "overtone")
+        names = np.array(self._with_terms(chosen).hosts)
         if chosen.hosts:
             inside &= np.isin(names[stars.host], chosen.hosts)
         if chosen.without is not None:
@@ -199,8 +153,7 @@ class Bench:
     def resampling(self) -> Resampling:
         """The random weights, the same for every fit of this bench."""
         if self._resampling is None:
-            first = next(iter(self._systems.values()), None) or linear_system(self.opened)
-            self._resampling = Resampling(first, self.seed)
+            self._resampling = Resampling(objects(self.opened), self.seed)
         return self._resampling
 
     def estimate(self, chosen: Selection, treatment: Treatment, claim: Claim) -> Estimate | None:
@@ -247,8 +200,15 @@ class Bench:
         columns = design(ladder.choices, star, ())
         return {name: float(column[0]) for name, column in columns.items() if column[0] != 0.0}
 
-    def joint(self, chosen: Selection, clip: float | None) -> Result:
+    def joint(self, chosen: Selection, clip: float | None, *, alone: bool = False) -> Result:
         """The joint posterior of a selection, stars beyond the clip of least squares set aside.
+
+        Parameters
+        ----------
+        chosen : Selection
+        clip : float or None
+        alone : bool
+            Whether the supernovae are left out, as for a relation of a few hosts.
 
         Raises
         ------
@@ -256,10 +216,12 @@ class Bench:
             If it cannot be drawn.
         """
         treatment = Treatment(clip=clip)
-        key = (chosen, treatment)
+        key = (chosen, treatment, alone)
         if key not in self._results:
             try:
-                ladder = self.opened.change(self._joint_changes(chosen, treatment))
+                sample = None if self.sample(chosen) is None else self._left(chosen, treatment)
+                changes = joint_changes(self.opened, chosen, sample)
+                ladder = self.opened.change(changes | (NO_THIRD_RUNG if alone else {}))
                 self._results[key] = draw(ladder, seed=self.seed, draws=self.draws)
             except LadderfitError as error:
                 self._results[key] = error
@@ -268,57 +230,15 @@ class Bench:
             raise found
         return found
 
-    def _joint_changes(self, chosen: Selection, treatment: Treatment) -> dict[str, Any]:
-        changes = _terms(chosen) | self._wide_priors()
-        changes |= {f"priors.{name}": {"fixed": value} for name, value in chosen.fixed}
-        stars, cepheids = self.stars, self.opened.choices.cepheids
-        if stars is None or cepheids is None:
-            return changes
-        taken = self.rows(chosen)[: len(stars)].copy()
+    def _left(self, chosen: Selection, treatment: Treatment) -> tuple[Ladder, BoolArray]:
+        """The ladder with the terms of a selection, and the Cepheids that a fit leaves."""
+        ladder = self._with_terms(chosen)
+        count = 0 if ladder.cepheids is None else len(ladder.cepheids)
+        taken = self.rows(chosen)[:count].copy()
         if treatment.clip is not None:
-            left = self.fit(chosen, treatment)
-            places = left.used.row
-            taken &= np.isin(np.arange(len(stars)), places[places < len(stars)])
-        aside = ~taken
-        if chosen.periods != EVERY_PERIOD:
-            changes["cepheids.periods"] = list(chosen.periods)
-            period = 10.0**stars.log_period
-            aside &= (period >= chosen.periods[0]) & (period <= chosen.periods[1])
-        if self.overtone is not None and chosen.mode == "fundamental":
-            changes["cepheids.overtones"] = "drop"
-            aside &= ~self.overtone
-        if self.overtone is not None and chosen.mode == "overtone":
-            changes["priors.overtone_offset"] = {"fixed": 0.0}
-        names = self.opened.hosts
-        entries = [
-            {"star": str(stars.star[place]), "host": names[stars.host[place]], "reason": "review"}
-            for place in np.flatnonzero(aside)
-        ]
-        if entries:
-            given = self.opened.choices.to_mapping()["cepheids"].get("set_aside", [])
-            changes["cepheids.set_aside"] = [*given, *entries]
-        if not chosen.parallax_stars and self.opened.parallax_stars is not None:
-            changes["anchors.parallaxes.use"] = False
-        return changes | self._stand_in(chosen, stars, taken)
-
-    def _wide_priors(self) -> dict[str, Any]:
-        """Priors that say next to nothing, for coefficients on which the file states none."""
-        stated = self.opened.choices.priors
-        return {f"priors.{name}": prior for name, prior in _WIDE.items() if name not in stated}
-
-    def _stand_in(self, chosen: Selection, stars: StarSample, taken: BoolArray) -> dict[str, Any]:
-        """Without any anchor one host gets a modulus, so that slopes and levels can be drawn."""
-        present = {int(host) for host in np.unique(stars.host[taken])}
-        if any(anchor.host in present for anchor in self.opened.geometric):
-            return {}
-        if (chosen.parallax_stars and self.opened.parallax_stars is not None) or not present:
-            return {}
-        host = self.opened.hosts[int(stars.host[taken][0])]
-        level = float(np.median(stars.magnitude[taken])) - _STAND_IN
-        return {
-            schema.join("anchors.geometric", host): {"modulus": _STAND_IN, "error": 1e-4},
-            "priors.zero_point": {"normal": [level, 100.0]},
-        }
+            left = self.fit(chosen, treatment).used.row
+            taken &= np.isin(self.system(chosen).row[:count], left)
+        return ladder, taken
 
     def joint_estimate(
         self, chosen: Selection, clip: float | None, claim: Claim
@@ -334,8 +254,9 @@ class Bench:
         near = self.estimate(chosen, treatment, claim)
         if claim.quantity == "zero_point" and not claim.apparent and near is None:
             return None
-        result = self.joint(chosen, clip)
-        values = _posterior_values(result, self.wanted(claim, chosen))
+        alone = bool(chosen.hosts) and claim.quantity in OF_THE_RELATION
+        result = self.joint(chosen, clip, alone=alone)
+        values = posterior_values(result, self.wanted(claim, chosen))
         if values is None:
             return None
         samples = (result.ladder.cepheids, result.ladder.parallax_stars)
@@ -345,31 +266,6 @@ class Bench:
         if near is None:
             return replace(made, spread=made.error)
         return replace(made, spread=near.spread, gaps=near.gaps, deviations=near.deviations)
-
-
-def _posterior_values(result: Result, wanted: Wanted) -> Any:
-    draws = result.draws
-    if wanted.scatter:
-        stars = result.ladder.cepheids or result.ladder.parallax_stars
-        if stars is None:
-            return None
-        names, which = scatters(result.choices, stars, result.ladder.hosts)
-        share = np.bincount(which, minlength=len(names)) / len(stars)
-        squares = sum(part * draws[name] ** 2 for part, name in zip(share, names, strict=True))
-        return np.sqrt(squares + (0.0 if wanted.intrinsic else float(np.mean(stars.variance))))
-    if HUBBLE in wanted.coefficients:
-        return draws.get("hubble_constant")
-    if any(name not in draws for name in wanted.coefficients):
-        return None
-    return sum(factor * draws[name] for name, factor in wanted.coefficients.items())
-
-
-def _terms(chosen: Selection) -> dict[str, Any]:
-    changes: dict[str, Any] = {"relation.break": chosen.break_ or "none"}
-    if not chosen.metallicity:
-        changes["relation.metallicity"] = "none"
-        changes["relation.slope_metallicity"] = False
-    return changes
 
 
 def _opening(ladder: Ladder) -> Mapping[str, Any]:

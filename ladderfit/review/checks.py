@@ -82,11 +82,7 @@ def possible_error(bench: Bench, claim: Claim, way: Way, scatter: float | None) 
     except LadderfitError:
         return None
     used = fit.used
-    stars = bench.stars
-    if stars is None:
-        return None
-    places = used.row[used.group == STARS]
-    x = stars.log_period[places[places < len(stars)]]
+    x = used.log_period[used.group == STARS]
     if x.size < 3 or np.ptp(x) == 0.0:
         return None
     count = claim.stars or fit.stars
@@ -111,11 +107,8 @@ def pivot_check(bench: Bench, claim: Claim, way: Way, refit: Refit, reach: float
         return None
     stated = claim.pivot or bench.opened.choices.relation.pivot
     named = [(period, f"{period:g} d") for period in (*PIVOTS, bench.opened.choices.relation.pivot)]
-    stars = bench.stars
-    if stars is not None:
-        places = fit.used.row[fit.used.row < len(stars)]
-        mean = 10.0 ** float(np.mean(stars.log_period[places]))
-        named.append((mean, f"{mean:.3g} d, the mean of log P"))
+    mean = 10.0 ** float(np.mean(fit.used.log_period[fit.is_star]))
+    named.append((mean, f"{mean:.3g} d, the mean of log P"))
     where = "" if claim.pivot is not None else " (none is stated: the ladder file's)"
     for period, words in sorted(set(named)):
         if abs(np.log10(period / stated)) < _APART:

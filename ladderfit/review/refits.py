@@ -7,10 +7,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ladderfit.errors import LadderfitError
-from ladderfit.review.bench import Bench, Selection
+from ladderfit.review.bench import Bench
 from ladderfit.review.claims import Claim
 from ladderfit.review.fits import Treatment
 from ladderfit.review.resampling import Estimate
+from ladderfit.review.selection import Selection
 from ladderfit.review.system import STARS
 
 CLIPS = (2.5, 3.0)
@@ -49,11 +50,21 @@ class Way:
     def estimate(self, bench: Bench, claim: Claim) -> Estimate | None:
         """The number claimed, this way; None where it is not determined or cannot be had."""
         try:
-            if self.joint:
-                return bench.joint_estimate(self.selection, self.treatment.clip, claim)
-            return bench.estimate(self.selection, self.treatment, claim)
+            return self.made(bench, claim)
         except LadderfitError:
             return None
+
+    def made(self, bench: Bench, claim: Claim) -> Estimate | None:
+        """As `estimate`, with the reason where it cannot be had.
+
+        Raises
+        ------
+        LadderfitError
+            If the fit cannot be made.
+        """
+        if self.joint:
+            return bench.joint_estimate(self.selection, self.treatment.clip, claim)
+        return bench.estimate(self.selection, self.treatment, claim)
 
 
 @dataclass(frozen=True, eq=False)
@@ -151,14 +162,35 @@ def within_rounding(claim: Claim, difference: float) -> bool:
     return abs(difference) <= claim.half_unit * (1.0 + 1e-6) + 1e-12
 
 
-def refits(bench: Bench, claim: Claim, described: Way) -> list[Refit]:
-    """All refits, the one as described first; empty where that cannot be made."""
-    base = described.estimate(bench, claim)
+def refits(
+    bench: Bench, claim: Claim, described: Way, failed: list[str] | None = None
+) -> list[Refit]:
+    """All refits, the one as described first; empty where that does not give the number.
+
+    Parameters
+    ----------
+    bench : Bench
+    claim : Claim
+    described : Way
+    failed : list of str, optional
+        Gets a sentence for each other way that cannot be had.
+
+    Raises
+    ------
+    LadderfitError
+        If the refit as described cannot be made.
+    """
+    base = described.made(bench, claim)
     if base is None:
         return []
     found = [held_against(claim, described, base, base)]
     for way in other_ways(bench, described):
-        made = way.estimate(bench, claim)
+        try:
+            made = way.made(bench, claim)
+        except LadderfitError as error:
+            if failed is not None:
+                failed.append(f"{way.words}: {' '.join(str(error).split())}")
+            continue
         if made is not None:
             found.append(held_against(claim, way, made, base))
     return found

@@ -8,11 +8,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ladderfit.errors import LadderfitError
-from ladderfit.review.bench import Bench, Selection
+from ladderfit.review.bench import Bench
 from ladderfit.review.claims import Claim, period_words
 from ladderfit.review.fits import Fit, without
 from ladderfit.review.refits import Way
 from ladderfit.review.resampling import Estimate, Wanted, number
+from ladderfit.review.selection import Selection
 from ladderfit.review.unstated import BREAK, HIGHEST, LOWEST
 from ladderfit.samples import BoolArray
 
@@ -115,7 +116,7 @@ def _plain(way: Way) -> Way:
 
 def _axes(bench: Bench, way: Way) -> Iterator[tuple[str, str, float, Way]]:
     chosen = way.selection
-    stars = bench.stars
+    stars = bench.sample(chosen)
 
     def changed(**changes: object) -> Way:
         return replace(way, selection=replace(chosen, **changes))  # type: ignore[arg-type]

@@ -15,7 +15,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from ladderfit.review.fits import Fit
-from ladderfit.review.system import HUBBLE, STARS, SUPERNOVAE, System
+from ladderfit.review.system import HUBBLE, STARS, SUPERNOVAE
 from ladderfit.samples import BoolArray, FloatArray
 from ladderfit.units import LN10
 
@@ -69,21 +69,21 @@ class Estimate:
 
 
 class Resampling:
-    """Random weights for every row of a system, drawn once.
+    """Random weights for every object of the tables, drawn once.
 
     Parameters
     ----------
-    system : System
-        The whole system.
+    objects : int
+        Their number, with object 0 for rows that are none and keep the weight 1.
     seed : int
     """
 
-    def __init__(self, system: System, seed: int = 1) -> None:
-        n = len(system.y)
+    def __init__(self, objects: int, seed: int = 1) -> None:
+        n = objects
         self.count = int(np.clip(_CELLS // max(n, 1), 40, _REPLICATES))
         rng = np.random.default_rng(seed)
         self.weights = rng.standard_exponential((self.count, n))
-        self.weights[:, (system.group != STARS) & (system.group != SUPERNOVAE)] = 1.0
+        self.weights[:, 0] = 1.0
         self._clips: dict[int, tuple[Fit, _Clips]] = {}
 
     def estimate(self, fit: Fit, wanted: Wanted) -> Estimate | None:

@@ -15,6 +15,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from scipy.linalg import cholesky, solve_triangular
 
+from ladderfit.assembly import SECTIONS
 from ladderfit.ladder import Ladder
 from ladderfit.names import base_name, with_group
 from ladderfit.physics.expansion import peculiar_variance, peculiar_velocities, term_of
@@ -42,7 +43,9 @@ class System:
     group : array of int, shape (n,)
         `STARS`, `SUPERNOVAE` or `GIVEN`.
     row : array of int, shape (n,)
-        Place in the whole system; the ladder's Cepheids come first, in its order.
+        Which object it is, the same number in every system of one set of tables.
+    log_period : array, shape (n,)
+        log10 of the period [d]; NaN for rows other than stars.
     period_variance : array, shape (n,)
         Of log10 period [dex^2]; 0 where not given.
     label : array of str, shape (n,)
@@ -59,6 +62,7 @@ class System:
     variance: FloatArray
     group: IntArray
     row: IntArray
+    log_period: FloatArray
     period_variance: FloatArray
     label: TextArray
     notes: tuple[str, ...] = ()
@@ -73,6 +77,7 @@ class System:
             variance=self.variance[mask],
             group=self.group[mask],
             row=self.row[mask],
+            log_period=self.log_period[mask],
             period_variance=self.period_variance[mask],
             label=self.label[mask],
         )
@@ -95,6 +100,8 @@ class _Block:
     variance: FloatArray
     group: int
     label: TextArray
+    row: IntArray
+    log_period: FloatArray | None = None
     period_variance: FloatArray | None = None
 
 
@@ -121,7 +128,8 @@ def linear_system(ladder: Ladder) -> System:
         y=np.concatenate([block.y for block in blocks]),
         variance=np.concatenate([block.variance for block in blocks]),
         group=np.concatenate([np.full(len(block.y), block.group) for block in blocks]),
-        row=np.arange(sum(len(block.y) for block in blocks)),
+        row=np.concatenate([block.row for block in blocks]),
+        log_period=np.concatenate([_or_else(block.log_period, block, np.nan) for block in blocks]),
         period_variance=np.concatenate(
             [_or_else(block.period_variance, block, 0.0) for block in blocks]
         ),
@@ -137,6 +145,25 @@ def _filled(block: _Block, names: tuple[str, ...]) -> FloatArray:
 
 def _or_else(values: FloatArray | None, block: _Block, other: float) -> FloatArray:
     return np.full(len(block.y), other) if values is None else values
+
+
+def objects(ladder: Ladder) -> int:
+    """How many objects there are in all tables, and one for rows that are none."""
+    return 1 + sum(source.rows for key, source in ladder.sources.items() if key in SECTIONS)
+
+
+def _rows(ladder: Ladder, section: str, row: IntArray) -> IntArray:
+    """Numbers of a table's objects, tables one after another; 0 is nobody."""
+    before = 0
+    for key in SECTIONS:
+        if key == section:
+            break
+        before += ladder.sources[key].rows if key in ladder.sources else 0
+    return np.asarray(row + before)
+
+
+def _nobody(count: int) -> IntArray:
+    return np.zeros(count, dtype=np.int64)
 
 
 def _moduli(ladder: Ladder, host: IntArray) -> dict[str, FloatArray]:
@@ -155,6 +182,8 @@ def _cepheids(ladder: Ladder, stars: StarSample) -> _Block:
         stars.variance,
         STARS,
         stars.star,
+        _rows(ladder, "cepheids", stars.row),
+        stars.log_period,
         None if error is None else error**2,
     )
 
@@ -190,13 +219,16 @@ def _parallaxes(ladder: Ladder, stars: StarSample, notes: list[str]) -> list[_Bl
             stars.variance[good] + (per * stars.parallax_error[good]) ** 2,
             STARS,
             stars.star[good],
+            _rows(ladder, "anchors.parallaxes", stars.row[good]),
+            stars.log_period[good],
             None if error is None else error[good] ** 2,
         )
     ]
     if isinstance(prior, Normal):
         given = {"parallax_offset": np.ones(1)}
         width = np.array([prior.deviation**2])
-        rows.append(_Block(given, np.array([prior.mean]), width, GIVEN, np.array([""])))
+        mean = np.array([prior.mean])
+        rows.append(_Block(given, mean, width, GIVEN, np.array([""]), _nobody(1)))
     return rows
 
 
@@ -221,7 +253,8 @@ def _anchors(ladder: Ladder) -> _Block:
         for place, host in enumerate(ladder.hosts)
         if np.any(white[:, place])
     }
-    return _Block(columns, white[:, -1], np.ones(len(y)), GIVEN, np.array(names))
+    ones = np.ones(len(y))
+    return _Block(columns, white[:, -1], ones, GIVEN, np.array(names), _nobody(len(y)))
 
 
 def _supernovae(ladder: Ladder) -> list[_Block]:
@@ -230,7 +263,8 @@ def _supernovae(ladder: Ladder) -> list[_Block]:
     if ladder.peaks is not None:
         peaks = ladder.peaks
         columns = {**_moduli(ladder, peaks.host), "peak_magnitude": np.ones(len(peaks))}
-        blocks.append(_Block(columns, peaks.magnitude, peaks.variance, SUPERNOVAE, peaks.name))
+        row = _rows(ladder, "supernovae", peaks.row)
+        blocks.append(_Block(columns, peaks.magnitude, peaks.variance, SUPERNOVAE, peaks.name, row))
     expansion, flow = ladder.choices.expansion, ladder.flow
     if expansion is not None and flow is not None:
         ones = np.ones(len(flow))
@@ -243,6 +277,7 @@ def _supernovae(ladder: Ladder) -> list[_Block]:
                 flow.variance + peculiar_variance(flow.redshift, velocity),
                 SUPERNOVAE,
                 flow.name,
+                _rows(ladder, "expansion", flow.row),
             )
         )
     if expansion is not None and expansion.intercept is not None:
@@ -250,6 +285,13 @@ def _supernovae(ladder: Ladder) -> list[_Block]:
         columns = {"peak_magnitude": -np.ones(1), HUBBLE: np.ones(1)}
         y = np.array([25.0 + 5.0 * given.value])
         blocks.append(
-            _Block(columns, y, np.array([(5.0 * given.error) ** 2]), GIVEN, np.array([""]))
+            _Block(
+                columns,
+                y,
+                np.array([(5.0 * given.error) ** 2]),
+                GIVEN,
+                np.array([""]),
+                _nobody(1),
+            )
         )
     return blocks

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ladderfit.review.bench import EVERY_PERIOD, Bench
+from ladderfit.review.bench import Bench
 from ladderfit.review.claims import Claim, Method, period_words
 from ladderfit.review.refits import (
     Refit,
@@ -18,6 +18,7 @@ from ladderfit.review.refits import (
     other_ways,
 )
 from ladderfit.review.resampling import Estimate
+from ladderfit.review.selection import EVERY_PERIOD
 
 LOWEST = (0.0, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 10.0)  # d
 HIGHEST = (float("inf"), 100.0, 80.0, 60.0, 50.0, 40.0, 30.0)
@@ -81,7 +82,7 @@ def choices_not_stated(bench: Bench, method: Method, described: Way) -> Iterator
 
 def _ranges(bench: Bench, described: Way) -> Iterator[tuple[float, float]]:
     """The file's own range, then round ones, each set of stars once."""
-    stars = bench.stars
+    stars = bench.sample(described.selection)
     if stars is None:
         return
     cepheids = bench.ladder.choices.cepheids

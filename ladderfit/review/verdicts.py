@@ -66,6 +66,8 @@ class ClaimReview:
     variations : tuple of Variation
     smallest : SmallestSet or None
     checks : tuple of Check
+    failed : tuple of str
+        Refits that could not be made, and why.
     """
 
     claim: Claim
@@ -78,6 +80,7 @@ class ClaimReview:
     variations: tuple[Variation, ...] = ()
     smallest: SmallestSet | None = None
     checks: tuple[Check, ...] = ()
+    failed: tuple[str, ...] = ()
 
     @property
     def verdict(self) -> str:
@@ -129,7 +132,8 @@ def value_verdict(
     if explained is not None:
         mine = explained.refits[0]
         differs = "" if count_agrees(claim, first.stars) else f" (the paper has {claim.stars:,})"
-        text = f"as described {_value(claim, first)}{differs}; with {explained.words} {_value(claim, mine)}"
+        text = f"as described {_value(claim, first)}{differs}; "
+        text += f"with {explained.words} {_value(claim, mine)}"
         tries = f"{explained.met} of {explained.tried} ways tried meet it"
         text += f", within {_nearness(claim, mine)} ({tries})"
         return Verdict(BY_ANOTHER_METHOD if explained.stated else UNDER_A_CHOICE, text)

@@ -78,6 +78,7 @@ class _Open:
     claim: Claim
     way: Way
     found: list[Refit]
+    failed: tuple[str, ...]
 
 
 def review(
@@ -149,12 +150,13 @@ def _opened(bench: Bench, claims: Claims, claim: Claim) -> _Open | ClaimReview:
         judged = replace(judged, pivot=bench.ladder.choices.relation.pivot)
     try:
         way = way_described(bench, claim)
-        made = refits(bench, judged, way)
+        failed: list[str] = []
+        made = refits(bench, judged, way, failed)
     except InputError as error:
         return cannot("; ".join(problem.found for problem in error.problems))
     except LadderfitError as error:
         return cannot(str(error))
-    return _Open(judged, way, made) if made else cannot(undetermined(bench, claim))
+    return _Open(judged, way, made, tuple(failed)) if made else cannot(undetermined(bench, claim))
 
 
 def _relatives(each: _Open, opened: list[_Open | ClaimReview]) -> Iterator[_Open]:
@@ -197,6 +199,7 @@ def _judged(bench: Bench, published: Claim, each: _Open, relatives: list[_Open])
         variations=tuple(variations(bench, claim, way, step)) if step > 0.0 else (),
         smallest=smallest_set(bench, claim, way, step) if step > 0.0 else None,
         checks=tuple([*checks, pivot] if pivot else checks),
+        failed=each.failed,
     )
 
 

@@ -104,6 +104,8 @@ def _claim(number: int, found: ClaimReview) -> Iterator[Block]:
     yield refit_table(found)
     text = f"The claim counts as reproduced within {_digits(found, found.reach)} {claim.unit} of "
     yield Paragraph(f"{text}the refit as described ({found.described}).")
+    if found.failed:
+        yield Paragraph(f"{'; '.join(found.failed)}.", "Refits that could not be made.")
     yield Heading("What it rests on", 3)
     yield Paragraph(_smallest(found))
     if found.variations:
