@@ -38,10 +38,15 @@ class Start:
 
 
 def start(baseline: Baseline) -> Start:
-    """Draw the baseline; every worker does so once, and finds the same."""
+    """Draw the baseline; every worker does so once, and finds the same.
+
+    It is drawn once to find it, and once more as the alternatives are, from there, so
+    that it shares their random numbers.
+    """
     drawer = WarmDrawer()
-    result = drawer.draw(baseline.ladder, draws=baseline.draws, seed=baseline.seed)
-    return Start(baseline, drawer, result)
+    drawer.draw(baseline.ladder, draws=baseline.draws, seed=baseline.seed)
+    again = drawer.aside(baseline.ladder, draws=baseline.draws, seed=baseline.seed)
+    return Start(baseline, drawer, again)
 
 
 def fit(state: Start, arguments: Mapping[str, Any]) -> dict[str, Any]:

@@ -31,6 +31,7 @@ _ROUNDS = 4
 _GOOD_EFFICIENCY = 0.5
 _GOOD_K = 0.5
 _OVERSAMPLE = 1.25
+_NEARLY = 0.15  # of the pool: a difference that does not matter
 _BOX = 12.0  # widths round the mode
 _MODE_DISTANCE = 5.0
 _MODE_MASS = 1e-4
@@ -60,6 +61,9 @@ class Target:
         Told the corners of the box in which nearly all draws will lie.
     near : Near, optional
         Where a similar density had its mode: then other modes are not looked for.
+    pool : int, optional
+        How many draws a similar density was given weights for: kept where it fits, so
+        that the two share their random numbers.
     """
 
     log_density: LogDensity
@@ -68,6 +72,7 @@ class Target:
     folded: npt.NDArray[np.bool_]
     focus: Callable[[FloatArray, FloatArray], None] | None = None
     near: Near | None = None
+    pool: int | None = None
 
 
 @dataclass(frozen=True)
@@ -86,6 +91,8 @@ class DirectDraws:
     log_evidence, log_evidence_error : float
     modes : tuple of Mode
         Every separate mode found, by mass.
+    pool : int
+        How many draws had weights.
     """
 
     z: FloatArray
@@ -95,6 +102,7 @@ class DirectDraws:
     log_evidence: float
     log_evidence_error: float
     modes: tuple[Mode, ...]
+    pool: int = 0
 
     @property
     def trusted(self) -> bool:
@@ -223,6 +231,8 @@ def _pool(
     if not last and (efficiency < _GOOD_EFFICIENCY or k > _GOOD_K):
         return z, log_weight, False
     pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
+    if target.pool is not None and abs(pool - target.pool) <= _NEARLY * pool:
+        pool = target.pool
     if pool > _PILOT:
         more, log_more = _weigh(target, proposal, pool - _PILOT, rng)
         z, log_weight = np.concatenate([z, more]), np.concatenate([log_weight, log_more])
@@ -281,4 +291,5 @@ def _resampled(
         log_evidence=top + float(np.log(mean)),
         log_evidence_error=relative_error,
         modes=modes,
+        pool=len(z),
     )

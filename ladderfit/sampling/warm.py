@@ -32,6 +32,7 @@ class WarmDrawer:
         self._last: Posterior | None = None
         self._mode: Mode | None = None
         self._phi: FloatArray | None = None
+        self._pool: int | None = None
 
     @property
     def last(self) -> tuple[Posterior, FloatArray] | None:
@@ -48,6 +49,11 @@ class WarmDrawer:
         SamplingError
             If the posterior cannot be drawn.
         """
+        return self._draw(ladder, draws, seed, None)
+
+    def _draw(
+        self, ladder: Ladder, draws: int | None, seed: int | None, pool: int | None
+    ) -> Result:
         sampling = ladder.choices.sampling
         joint = posterior(ladder, self._last)
         check_determined(joint)
@@ -55,11 +61,11 @@ class WarmDrawer:
         near = self._near(joint, aim)
         result, found = drawn(
             joint,
-            aim if near is None else replace(aim, near=near),
+            aim if near is None else replace(aim, near=near, pool=pool),
             sampling.seed if seed is None else seed,
             sampling.draws if draws is None else draws,
         )
-        self._last, self._phi = joint, found.z
+        self._last, self._phi, self._pool = joint, found.z, found.pool
         self._mode = found.modes[0] if len(found.modes) == 1 else None
         return result
 
@@ -67,7 +73,8 @@ class WarmDrawer:
         """As `draw`, but the drawer stays where it is.
 
         The result depends on where the drawer stands and on the arguments alone, to the
-        last digit, not on what else was drawn aside.
+        last digit, not on what else was drawn aside.  Results drawn so with one seed share
+        their random numbers, so that small differences show.
 
         Raises
         ------
@@ -76,12 +83,12 @@ class WarmDrawer:
         SamplingError
             If the posterior cannot be drawn.
         """
-        place = self._last, self._mode, self._phi
+        place = self._last, self._mode, self._phi, self._pool
         kept = [(tables, list(tables)) for tables in _tables(self._last)]
         try:
-            return self.draw(ladder, draws=draws, seed=seed)
+            return self._draw(ladder, draws, seed, self._pool)
         finally:
-            self._last, self._mode, self._phi = place
+            self._last, self._mode, self._phi, self._pool = place
             for tables, before in kept:  # finer ones were put in for other scatters
                 tables[:] = before
 
