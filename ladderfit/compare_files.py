@@ -11,7 +11,15 @@ import numpy as np
 from ladderfit.compare import ResultComparison, headline_shifts
 from ladderfit.ladder_file import as_written
 from ladderfit.names import base_name, parameter
-from ladderfit.report.cells import Cell, PaperTable, Words, number_column, quoted, text_column
+from ladderfit.report.cells import (
+    Cell,
+    PaperTable,
+    Symbol,
+    Words,
+    number_column,
+    quoted,
+    text_column,
+)
 from ladderfit.report.files import write_tables
 from ladderfit.resampling import SAMPLES
 from ladderfit.rounding import last_place, rounded, to_place
@@ -149,7 +157,7 @@ def shift_table(found: ResultComparison, place: int) -> PaperTable:
         error = row["most"] if not np.isfinite(row["error"]) else row["error"]
         bounds = f"{_rounded(row['least'], error)} to {_rounded(row['most'], error)}"
         own = _rounded(row["error"], error) if np.isfinite(row["error"]) else ""
-        rows.append((Words(str(name)), _rounded(row["shift"], error), own, _ratio(row), bounds))
+        rows.append((Symbol(str(name)), _rounded(row["shift"], error), own, _ratio(row), bounds))
     return PaperTable(
         name=f"shifts_{place}",
         title=f"Shifts from {found.labels[0]} to {found.labels[place]}",

@@ -14,7 +14,6 @@ from ladderfit.report.cells import (
     Cell,
     PaperTable,
     Symbol,
-    Unit,
     Words,
     number_column,
     text_column,
@@ -22,6 +21,7 @@ from ladderfit.report.cells import (
 from ladderfit.rounding import to_place
 
 SHARE = "_share"
+_PRINTED = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
 
 
 def alternative_tables(folder: str | Path) -> list[PaperTable]:
@@ -72,17 +72,21 @@ def systematics_table(table: Table) -> PaperTable:
     spread = _numbers(table, "spread")
     value = [str(value) for value in table["of"]]
     rows: list[tuple[Cell, ...]] = []
+    last = ""
     for place, name in enumerate(names):
+        if base_name(name) not in _PRINTED:
+            continue
         digits = -_digits(name)
+        again = axes[place] == last
+        last = axes[place]
         rows.append(
             (
-                Words(axes[place]),
+                Words("" if again else axes[place]),
                 _symbol(name),
                 _shown(largest[place], digits),
                 _shown(errors[place], -1),
-                Words(value[place]),
+                Words(value[place].removeprefix(f"{axes[place]} = ")),
                 _shown(spread[place], digits),
-                Unit(_unit(name)),
             )
         )
     return PaperTable(
@@ -98,11 +102,11 @@ def systematics_table(table: Table) -> PaperTable:
             number_column("spread", spread, words="standard deviation over the values"),
             text_column("unit", [_unit(name) for name in names]),
         ),
-        head=("Choice", "", "Largest shift", "In errors", "By the value", "Spread", "Unit"),
+        head=("Choice", "", "Largest shift", "In errors", "By the value", "Spread"),
         rows=tuple(rows),
         notes=(
             "Shifts are from the baseline; the data are mostly the same, so that they are "
-            "systematic, not random.",
+            "systematic, not random. Units are those of the parameters.",
         ),
     )
 

@@ -123,7 +123,23 @@ def cell(value: Cell) -> str:
         return unit(value.text)
     if isinstance(value, Scientific):
         return scientific(value.value)
-    return escaped(value.text if isinstance(value, Words) else value)
+    return breakable(value.text) if isinstance(value, Words) else escaped(value)
+
+
+def breakable(text: str) -> str:
+    """Text that may also be broken into lines after the dots of a key or the parts of a path."""
+    if len(text) <= _SHORT:
+        return escaped(text)
+    return r"\allowbreak{}".join(escaped(part) for part in _BREAKS.split(text))
+
+
+_BREAKS = re.compile(r"(?<=[._/=\[])(?=[^\s._/=])")
+
+
+def _pieces(text: str) -> list[str]:
+    """What stays on one line, the shortest text in one."""
+    words = text.split() or [""]
+    return words if len(text) <= _SHORT else [p for word in words for p in _BREAKS.split(word)]
 
 
 def _quoted(value: Quoted) -> str:
@@ -205,9 +221,11 @@ def _columns(table: PaperTable, columns: Sequence[int]) -> str:
     letters = []
     for column in columns:
         cells = [row[column] for row in table.rows]
-        longest = max((len(value.text) for value in cells if isinstance(value, Words)), default=0)
+        texts = [value.text for value in cells if isinstance(value, Words)]
+        longest = max((len(text) for text in texts), default=0)
         if longest > _SHORT:
-            share = min(0.26, 0.011 * longest)
+            piece = max(len(part) for text in texts for part in _pieces(text))
+            share = min(0.60, max(min(0.25, 0.011 * longest), 0.0135 * piece))
             letters.append(rf">{{\raggedright\arraybackslash}}p{{{share:.2f}\linewidth}}")
         elif cells and all(is_number(value) for value in cells):
             letters.append("r")
