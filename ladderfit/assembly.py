@@ -9,7 +9,8 @@ from typing import Any, TypeVar, cast
 
 import numpy as np
 
-from ladderfit.choices import Choices, Covariance, Parallaxes, PeakRelation
+from ladderfit.choices import Choices, Covariance, Outliers, Parallaxes, PeakRelation
+from ladderfit.clipping import clipped
 from ladderfit.correlated import Given, Supernovae, anchors_together, supernovae_together
 from ladderfit.covariances import Matrix, read_covariance
 from ladderfit.errors import InputError, Problem
@@ -131,12 +132,17 @@ class Assembly:
         if section is None:
             return None
         term = self.choices.relation.metallicity != "none"
-        return self.select(
+        found = self.select(
             "cepheids",
             section.table,
-            (section, term),
+            (replace(section, outliers=Outliers()), term),
             lambda table: select_cepheids(table, section, metallicity=term),
         )
+        try:
+            return None if found is None else clipped(self.choices, found)
+        except InputError as error:
+            self.problems.extend(error.problems)
+            return None
 
     def parallaxes(self) -> ParallaxSelection | None:
         """The parallax stars that take part."""

@@ -23,8 +23,9 @@ ORDER = """
     select_stars
     peak_inputs select_supernovae
     covariances covariance_rows correlated
-    relations peak_terms ladder_file assembly photometry_notes consistency ladder ladder_copy ranges
-    sample_arrays joined_ladders new_objects
+    sample_arrays classical.least_squares classical.lines classical.parallaxes classical
+    relations clipping peak_terms ladder_file assembly photometry_notes consistency ladder ladder_copy ranges
+    joined_ladders new_objects
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
@@ -41,8 +42,7 @@ ORDER = """
     sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
     sampling.progress sampling.launch sampling.live
     sampling
-    classical.least_squares classical.lines classical.parallaxes classical
-    peak_predictions residuals running peak_views
+    peak_predictions residuals running peak_views outliers
     report.cells report.machine report.latex report.parameters report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets

@@ -1,9 +1,10 @@
-"""What older papers did, for comparison only: no fit of a ladder uses anything of this package.
+"""What older papers did, for comparison only.
 
 Least squares with and without weights, iterative clipping, straight lines with
 errors in both coordinates or with outliers, Lutz-Kelker corrections, and the
 astrometry-based luminosity.  Each estimates a few numbers from one table; none
-propagates what the joint posterior does.
+propagates what the joint posterior does.  No fit of a ladder uses anything of this
+package, unless its file asks for Cepheids to be clipped as in older papers.
 """
 
 from ladderfit.classical.least_squares import (
