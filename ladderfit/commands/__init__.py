@@ -1,6 +1,7 @@
 """One file per command: its options and what it runs; what it needs is imported when it runs."""
 
 from ladderfit.commands import (
+    alternatives,
     calibrate,
     compare,
     distances,
@@ -12,4 +13,4 @@ from ladderfit.commands import (
 )
 
 # in the order of --help
-COMMANDS = (calibrate, draft, review, report, distances, compare, mock, workbench)
+COMMANDS = (calibrate, alternatives, draft, review, report, distances, compare, mock, workbench)
