@@ -43,7 +43,7 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     peak_predictions residuals running peak_views outliers
-    report.cells report.machine report.latex report.parameters report.objects report.choices
+    report.cells report.machine report.latex_text report.latex report.parameters report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
     influence.blocks influence.correlated influence.populations influence.hosts influence.objects
@@ -60,7 +60,7 @@ ORDER = """
     draw_weights distances distance_files resampling compare compare_files
     draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves draft.jobs draft.entries
     draft.make draft
-    mock.tables mock.light_curves mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
+    mock.tables mock.light_curves mock.contamination mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
     mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli

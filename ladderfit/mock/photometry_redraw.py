@@ -17,9 +17,10 @@ from astropy.table import MaskedColumn
 from ladderfit.choices import Magnitude
 from ladderfit.errors import Problem
 from ladderfit.ladder import Ladder
-from ladderfit.mock.tables import digits_column
+from ladderfit.mock.contamination import off_relation
+from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
-from ladderfit.samples import FloatArray, StarSample
+from ladderfit.samples import BoolArray, FloatArray, StarSample
 
 Rng = np.random.Generator
 SEEN = "seen"  # the column in which limits act
@@ -28,10 +29,11 @@ _BANDS = ("blue", "red", "band")
 
 @dataclass(frozen=True)
 class Light:
-    """Simulated photometry of stars, by column [mag]."""
+    """Simulated photometry of stars, by column [mag], and which of them are outliers."""
 
     measured: Mapping[str, FloatArray]
     errors: Mapping[str, FloatArray]
+    outlier: BoolArray | None = None
 
 
 def photometry_beyond(ladder: Ladder) -> Iterator[Problem]:
@@ -118,8 +120,9 @@ def shine_again(
     deviation = truth["scatter"] * rng.normal(size=len(stars))
     if treatment == "fixed":
         error = np.sqrt(stars.variance)
-        index = mean + deviation + error * rng.normal(size=len(stars))
-        return Light({"W": index}, {"W": error})
+        noise = deviation + error * rng.normal(size=len(stars))
+        noise, outlier = off_relation(ladder, stars, noise, truth, rng)
+        return Light({"W": mean + noise}, {"W": error}, outlier)
     if light is None or light.band_variance is None or light.colour_variance is None:
         raise AssertionError  # a ladder with a free ratio has both
     colour, inner = _colours(ladder, stars, truth, rng)
@@ -209,6 +212,9 @@ def band_columns(light: Light) -> list[MaskedColumn]:
     for name, values in light.measured.items():
         columns.append(digits_column(name, values, 8, "mag", f"magnitude {name}, simulated"))
         columns.append(digits_column(f"e_{name}", light.errors[name], 8, "mag", f"error of {name}"))
+    if light.outlier is not None:
+        told = np.where(light.outlier, "yes", "no")
+        columns.append(text_column("outlier", told, "whether it was simulated as an outlier"))
     return columns
 
 

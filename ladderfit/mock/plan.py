@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from astropy.table import Table
 
+from ladderfit.mock.contamination import Contamination
 from ladderfit.mock.light_curves import LightCurves
 from ladderfit.names import with_group
 
@@ -87,6 +88,8 @@ class Plan:
         Number of rows that lack one value.
     light_curves : LightCurves or None
         Widths and colours of the supernovae; None where peaks are standardised.
+    contamination : Contamination or None
+        Cepheids of hosts that do not follow the relation.
     """
 
     hosts: tuple[Host, ...]
@@ -115,6 +118,7 @@ class Plan:
     missing_cepheids: int = 12
     missing_parallax_stars: int = 3
     light_curves: LightCurves | None = None
+    contamination: Contamination | None = None
 
     def truth(self) -> dict[str, float]:
         """True values by parameter name, host moduli included."""

@@ -21,6 +21,11 @@ from astropy.table import MaskedColumn, Table
 
 from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.mock.contamination import (
+    contamination_beyond,
+    contamination_needs,
+    outliers_given_magnitudes,
+)
 from ladderfit.mock.peak_redraw import peak_beyond, peak_needs, peaks_again
 from ladderfit.mock.peaks import peak_in_flow
 from ladderfit.mock.photometry_redraw import (
@@ -92,7 +97,7 @@ def redraw(
     parallax_moduli: tuple[float, float] | None = None,
 ) -> Redrawn:
     """Choices and tables of `mock_from_ladder`, before they are put together."""
-    raise_if([*beyond(ladder), *peak_beyond(ladder)])
+    raise_if([*beyond(ladder), *peak_beyond(ladder), *contamination_beyond(ladder)])
     lacking = [name for name in needed(ladder) if name not in truth]
     if lacking:
         raise InputError(
@@ -126,7 +131,7 @@ def needed(ladder: Ladder) -> tuple[str, ...]:
     names += ["parallax_offset"] if ladder.parallax_stars is not None else []
     if ladder.peaks is not None or (expansion is not None and not linear):
         names += ["peak_magnitude", "peak_scatter"]
-    names += (*peak_needs(ladder), *photometry_needs(ladder))
+    names += (*peak_needs(ladder), *photometry_needs(ladder), *contamination_needs(ladder))
     names += ["hubble_constant"] if expansion is not None else []
     if expansion is not None and linear:
         names += ["velocity_scatter"]
@@ -201,9 +206,10 @@ def _moduli_given_magnitudes(
     ladder: Ladder, stars: StarSample, truth: Mapping[str, float], prior: str, rng: Rng
 ) -> FloatArray:
     """Moduli as prior and magnitude have them: normal, and farther where volume counts."""
-    variance = stars.variance + truth["scatter"] ** 2
-    farther = 0.0 if prior == "flat in modulus" else 0.6 * np.log(10.0) * variance
-    mean = stars.magnitude - absolute(ladder, stars, truth) + farther
+    tilt = 0.0 if prior == "flat in modulus" else 0.6 * np.log(10.0)
+    offset, extra = outliers_given_magnitudes(ladder, stars, truth, tilt, rng)
+    variance = stars.variance + truth["scatter"] ** 2 + extra
+    mean = stars.magnitude - absolute(ladder, stars, truth) - offset + tilt * variance
     return np.asarray(mean + np.sqrt(variance) * rng.normal(size=len(stars)))
 
 

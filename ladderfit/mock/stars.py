@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from astropy.table import MaskedColumn, Table
 
 from ladderfit.mock.plan import Host, Plan
 from ladderfit.mock.tables import number_column, text_column
-from ladderfit.priors import FloatArray
+from ladderfit.samples import BoolArray, FloatArray
 
 BANDS = ("V", "I", "H")
 
@@ -43,6 +43,8 @@ class Stars:
         12+log(O/H).
     magnitudes : mapping of str to array
         Apparent magnitude in V, I, H with dust, without noise [mag].
+    outlier : array of bool, or None
+        Whether the star does not follow the relation; None where all do.
     """
 
     period: FloatArray
@@ -50,6 +52,7 @@ class Stars:
     overtone: np.ndarray[tuple[int], np.dtype[np.bool_]]
     metallicity: FloatArray
     magnitudes: dict[str, FloatArray]
+    outlier: BoolArray | None = None
 
 
 def periods(rng: np.random.Generator, size: int, shortest: float, longest: float) -> FloatArray:
@@ -116,7 +119,12 @@ def host_stars(plan: Plan, rng: np.random.Generator, host: Host) -> Stars:
     radius = rng.random(n)
     metallicity = np.round(host.metallicity - host.gradient * radius, 3)
     modulus = np.full(n, host.modulus)
-    return _pulsate(plan, rng, fundamental, metallicity, modulus, host.reddening, host.overtones)
+    stars = _pulsate(plan, rng, fundamental, metallicity, modulus, host.reddening, host.overtones)
+    if plan.contamination is None:
+        return stars
+    off, shift = plan.contamination.draw(rng, stars.period)
+    light = {band: values + shift for band, values in stars.magnitudes.items()}
+    return replace(stars, magnitudes=light, outlier=off)
 
 
 def milky_way_stars(plan: Plan, rng: np.random.Generator) -> tuple[Stars, FloatArray]:
@@ -147,15 +155,17 @@ def photometry(stars: Stars, rng: np.random.Generator) -> dict[str, MaskedColumn
 def star_table(names: list[str], stars: Stars, rng: np.random.Generator) -> Table:
     """Table of stars with names, periods, modes, metallicities and photometry."""
     seen = photometry(stars, rng)
-    return Table(
-        [
-            text_column("ID", names, "star"),
-            number_column("P", stars.period, 4, "d", "period of pulsation"),
-            text_column("Mode", np.where(stars.overtone, "1O", "F"), "F fundamental, 1O overtone"),
-            number_column("OH", stars.metallicity, 3, "dex", "12+log(O/H)"),
-            *(seen[key] for band in BANDS for key in (band, f"e_{band}")),
-        ]
-    )
+    columns = [
+        text_column("ID", names, "star"),
+        number_column("P", stars.period, 4, "d", "period of pulsation"),
+        text_column("Mode", np.where(stars.overtone, "1O", "F"), "F fundamental, 1O overtone"),
+        number_column("OH", stars.metallicity, 3, "dex", "12+log(O/H)"),
+        *(seen[key] for band in BANDS for key in (band, f"e_{band}")),
+    ]
+    if stars.outlier is not None:
+        told = np.where(stars.outlier, "yes", "no")
+        columns.append(text_column("outlier", told, "whether it was simulated as an outlier"))
+    return Table(columns)
 
 
 def _pulsate(
