@@ -147,6 +147,9 @@ def _decimals(value: Any) -> int | None:
     """Digits behind the point of a number as it was written."""
     if isinstance(value, bool) or not isinstance(value, int | float):
         return None
-    text = value.text if isinstance(value, _Written) else repr(value)
+    if isinstance(value, _Written):
+        text = value.text
+    else:
+        text = repr(int(value) if isinstance(value, int) else float(value))
     exponent = Decimal(text.replace("_", "")).as_tuple().exponent
     return -exponent if isinstance(exponent, int) else None

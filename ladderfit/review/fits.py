@@ -79,6 +79,8 @@ class Fit:
         Change of each coefficient per change of y.
     leverage : array, shape (kept,)
     treatment : Treatment
+    extra : float
+        Variance of the stars beyond their errors, with weights from errors and scatter.
     """
 
     system: System
@@ -90,6 +92,7 @@ class Fit:
     gain: FloatArray
     leverage: FloatArray
     treatment: Treatment
+    extra: float = 0.0
 
     @property
     def used(self) -> System:
@@ -183,18 +186,21 @@ def _near(made: Fit, clip: float) -> BoolArray:
         spread = np.full(len(system.y), np.inf)
         spread[made.kept] = made.sigma
         stars = system.group == STARS
-        spread[stars] = _spread_of_stars(made, system.variance[stars])
+        spread[stars] = _spread_of_stars(made, system, stars)
         pulls = (made.found.residuals / made.sigma)[made.is_star]
         spread[stars] *= max(float(np.sqrt(np.mean(pulls**2))), 1e-12)
     return np.asarray((np.abs(residual) < clip * spread) | (system.group != STARS))
 
 
-def _spread_of_stars(made: Fit, variance: FloatArray) -> FloatArray:
-    """The spread that a weighted fit gives stars of any measurement variance."""
-    given, used = made.sigma[made.is_star] ** 2, made.used.variance[made.is_star]
+def _spread_of_stars(made: Fit, system: System, stars: BoolArray) -> FloatArray:
+    """The spread that a weighted fit gives stars, whether it used them or not."""
+    variance = system.variance[stars]
     if made.treatment.weights == "errors":
+        given, used = made.sigma[made.is_star] ** 2, made.used.variance[made.is_star]
         return np.asarray(np.sqrt(variance * float(np.median(given / used))))
-    return np.asarray(np.sqrt(variance + max(float(np.median(given - used)), 0.0)))
+    if made.treatment.period_errors:
+        variance = variance + _slope(made) ** 2 * system.period_variance[stars]
+    return np.asarray(np.sqrt(variance + made.extra))
 
 
 def _fit_rows(system: System, kept: BoolArray, treatment: Treatment) -> Fit:
@@ -210,6 +216,8 @@ def _fit_rows(system: System, kept: BoolArray, treatment: Treatment) -> Fit:
             break
         before = made
         made = _solved(system, rows, kept, _spreads(rows, made, treatment, extra), treatment)
+    if treatment.weights == "errors and scatter":
+        made = replace(made, extra=extra[STARS])
     return _scaled(made, treatment)
 
 
@@ -309,7 +317,37 @@ def _solved(
     Q, R = np.linalg.qr(X / sigma[:, None])
     gain = solve_triangular(R, Q.T) / sigma
     leverage = np.sum(Q**2, axis=1)
-    return Fit(system, kept, columns, span, found, sigma, gain, leverage, treatment)
+    made = Fit(system, kept, columns, span, found, sigma, gain, leverage, treatment)
+    return _along_the_normal(made, rows, X) if treatment.period_errors else made
+
+
+def _along_the_normal(made: Fit, rows: System, X: FloatArray) -> Fit:
+    """The line with errors in both coordinates, for given spreads of the rows.
+
+    The iteration of York et al. (2004, American Journal of Physics 72, 367), written for
+    any further columns: the slope's column is taken at the adjusted period
+    x + b s_x^2 r / sigma^2 on the left of the normal equations alone.
+    """
+    names = [rows.names[place] for place in made.columns]
+    if "slope" not in names:
+        return made
+    place, weight = names.index("slope"), made.sigma**-2
+    values: FloatArray = made.found.values
+    gain = made.gain
+    for _ in range(_ROUNDS):
+        residual = rows.y - X @ values
+        adjusted = X.copy()
+        adjusted[:, place] += values[place] * rows.period_variance * weight * residual
+        left = (adjusted * weight[:, None]).T
+        gain = np.linalg.solve(left @ X, left)
+        before, values = values, np.asarray(gain @ rows.y, dtype=np.float64)
+        if np.max(np.abs(values - before)) <= 1e-11 * (1.0 + np.max(np.abs(values))):
+            break
+    covariance = (gain * made.sigma**2) @ gain.T
+    residual = rows.y - X @ values
+    found = replace(made.found, values=values, covariance=covariance, residuals=residual)
+    leverage = np.einsum("ij,ji->i", X, gain)
+    return replace(made, found=found, gain=gain, leverage=leverage)
 
 
 def _scaled(made: Fit, treatment: Treatment) -> Fit:

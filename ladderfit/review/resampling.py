@@ -157,8 +157,7 @@ def _intrinsic(fit: Fit) -> tuple[float, float, FloatArray] | None:
     if freedom < 1.5 or fit.treatment.weights != "errors and scatter":
         return None
     variance = fit.sigma[stars] ** 2
-    squared = max(float(np.median(variance - fit.used.variance[stars])), 0.0)
-    value = float(np.sqrt(squared))
+    value = float(np.sqrt(fit.extra))
     squares = fit.found.residuals[stars] ** 2
     steep = 2.0 * max(value, _LEAST_SCATTER) * float(np.sum(squares / variance**2))
     rest = np.maximum(1.0 - fit.leverage[stars], _SINGLE)
