@@ -17,7 +17,11 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from ladderfit.alternatives import run_alternatives
+    from ladderfit.anchors import compare_anchors
+    from ladderfit.influence import leave_one_out
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
+    from ladderfit.power_scaling import prior_sensitivity
+    from ladderfit.predictive import compare_fits, predictive_fit
     from ladderfit.result import Result
     from ladderfit.sampling.live import Run, open_run, start
     from ladderfit.sampling.run import draw
@@ -33,6 +37,11 @@ _HOME = {
     "open_run": "ladderfit.sampling.live",
     "start": "ladderfit.sampling.live",
     "read_result": "ladderfit.store",
+    "compare_anchors": "ladderfit.anchors",
+    "leave_one_out": "ladderfit.influence",
+    "predictive_fit": "ladderfit.predictive",
+    "compare_fits": "ladderfit.predictive",
+    "prior_sensitivity": "ladderfit.power_scaling",
     "run_alternatives": "ladderfit.alternatives",
 }
 
@@ -46,6 +55,11 @@ __all__ = [
     "open_run",
     "start",
     "read_result",
+    "compare_anchors",
+    "leave_one_out",
+    "predictive_fit",
+    "compare_fits",
+    "prior_sensitivity",
     "run_alternatives",
 ]
 

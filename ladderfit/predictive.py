@@ -12,6 +12,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -21,6 +22,7 @@ from ladderfit.influence import KINDS, leave_one_out
 from ladderfit.influence.reweighting import NOT_TRUSTED
 from ladderfit.influence.sets import CEPHEID, FLOW, HOST, PEAK, STAR, VELOCITY
 from ladderfit.influence.table import Progress
+from ladderfit.influence.without import Left, without
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.errors_in_inputs import uses_population
 from ladderfit.result import Result
@@ -144,6 +146,34 @@ def compare_fits(first: PredictiveFit, second: PredictiveFit) -> PredictiveDiffe
     return PredictiveDifference(float(terms.sum()), _error(terms), len(terms), trusted)
 
 
+def on_same_objects(first: Ladder, second: Ladder) -> tuple[Ladder, Ladder]:
+    """Both ladders cut down to the objects that take part in both, to be compared.
+
+    A choice may let other objects in (stars without a metallicity, say, where the
+    relation has no such term).  The cut ladders are for drawing: their choices do not
+    say what was left out.
+
+    Parameters
+    ----------
+    first, second : Ladder
+
+    Returns
+    -------
+    two Ladders
+    """
+    cuts: list[dict[str, Any]] = [{}, {}]
+    for name in ("cepheids", "parallax_stars", "peaks", "flow", "velocities"):
+        one, other = getattr(first, name), getattr(second, name)
+        if one is None or other is None:
+            continue
+        labels = [_names(one), _names(other)]
+        for cut, own, others in zip(cuts, labels, reversed(labels), strict=True):
+            known = set(others)
+            strange = [place for place, label in enumerate(own) if label not in known]
+            cut[name] = np.array(strange, dtype=np.int64)
+    return without(first, Left(**cuts[0])), without(second, Left(**cuts[1]))
+
+
 def differing(first: Ladder, second: Ladder) -> Iterator[str]:
     """Where the data of two ladders differ, in words, one after another."""
     kinds: dict[str, tuple[str, tuple[str, ...]]] = {
@@ -175,8 +205,10 @@ def _differing_samples(
     if names[0] != names[1]:
         left, right = (set(each) for each in names)
         count = len(left ^ right)
+        example = min(left ^ right, default=("", 0))[0]
         yield (
-            f"{count:,} objects of kind {kind!r} take part in one of them only"
+            f"{count:,} objects of kind {kind!r} ({example!r}, say) take part in one of them "
+            "only; on_same_objects leaves these out"
             if count
             else f"objects of kind {kind!r} are in another order"
         )

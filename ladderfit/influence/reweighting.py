@@ -97,10 +97,8 @@ def refitted(given: Given, left: Left, before: Moved, seed: int, ess: float) -> 
         Effective number of the draws of `given`.
     """
     nothing = dict.fromkeys(given.base, float("nan"))
-    try:
-        rest = posterior_without(given.joint, left)
-        check_determined(rest)
-    except UndeterminedError:
+    rest = _determined(given, left)
+    if rest is None:
         return Moved(UNDETERMINED, before.k, float("nan"), nothing, nothing)
     aim = target(rest)
     same = rest.split.phi_names == given.joint.split.phi_names
@@ -111,10 +109,9 @@ def refitted(given: Given, left: Left, before: Moved, seed: int, ess: float) -> 
     alone = Given(rest, found.z, given.targets)
     shift, error = {}, {}
     for name, base in given.base.items():
-        new = alone.base.get(name)
-        shift[name] = float("nan") if new is None else float(new.mean() - base.mean())
-        spread = 0.0 if new is None else float(np.var(new)) / found.ess
-        error[name] = float(np.sqrt(spread + float(np.var(base)) / ess))
+        new = alone.base[name]
+        shift[name] = float(new.mean() - base.mean())
+        error[name] = float(np.sqrt(np.var(new) / found.ess + np.var(base) / ess))
     elpd = before.elpd
     if same:
         ratio = given.joint.log_density(found.z) - rest.log_density(found.z)
@@ -123,10 +120,20 @@ def refitted(given: Given, left: Left, before: Moved, seed: int, ess: float) -> 
     return Moved(how, before.k, elpd, shift, error)
 
 
-def undetermined_without(joint: Posterior, left: Left) -> bool:
-    """Whether the ladder without some objects leaves the distance scale open."""
+def undetermined_without(given: Given, left: Left) -> bool:
+    """Whether the ladder without some objects leaves a target or the distance scale open."""
+    return _determined(given, left) is None
+
+
+def _determined(given: Given, left: Left) -> Posterior | None:
+    """The posterior without some objects; None where it leaves a target or the scale open."""
+    rest = posterior_without(given.joint, left)
+    parts = rest.split
+    known = {*parts.coefficients, *parts.phi_names, *parts.fixed}
+    if not known.issuperset(given.targets):
+        return None
     try:
-        check_determined(posterior_without(joint, left))
+        check_determined(rest)
     except UndeterminedError:
-        return True
-    return False
+        return None
+    return rest

@@ -189,7 +189,7 @@ class _Work:
     def _settled(self, batch: Batch, number: int, moved: Moved, refit: bool) -> Moved:
         left = batch.left(number)
         decisive = batch.kind == HOST or self.objects.count(batch.kind) == 1
-        if decisive and undetermined_without(self.given.joint, left):
+        if decisive and undetermined_without(self.given, left):
             nothing = dict.fromkeys(moved.shift, float("nan"))
             return Moved(UNDETERMINED, moved.k, moved.elpd, nothing, nothing)
         if moved.how == NOT_TRUSTED and refit:
