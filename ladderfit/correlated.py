@@ -14,7 +14,11 @@ import numpy as np
 from ladderfit.choices import Expansion
 from ladderfit.covariance_rows import Members, check_definite, places
 from ladderfit.covariances import Matrix
-from ladderfit.physics.expansion import magnitudes_per_velocity, peculiar_velocities
+from ladderfit.physics.expansion import (
+    magnitudes_per_velocity,
+    peculiar_variance,
+    peculiar_velocities,
+)
 from ladderfit.samples import FloatArray, FlowSample, PeakSample, frozen
 from ladderfit.select_supernovae import ExpansionSelection, PeakSelection
 
@@ -42,11 +46,14 @@ class Supernovae:
         Of the peak magnitudes less their prediction, without intrinsic scatter
         [mag^2]: the peaks in hosts first, then those of the expansion, peculiar
         velocities included.  None where all are independent.
+    single : array, shape (n,), or None
+        The part of its diagonal that comes from single errors [mag^2].
     """
 
     peaks: PeakSample | None
     flow: FlowSample | None
     matrix: FloatArray | None
+    single: FloatArray | None = None
 
 
 def supernovae_together(
@@ -84,11 +91,14 @@ def supernovae_together(
     samples = [sample for sample in (near, flow) if sample is not None]
     total = np.diag(np.concatenate([sample.variance for sample in samples]))
     split = 0 if near is None else len(near)
+    single = np.diag(total).copy()
     if magnitudes is not None:
         _add_magnitudes(total, split, peaks, expansion, magnitudes, same_table=same_table)
     variance = np.diag(total).copy()
     if flow is not None and expansion is not None and section is not None:
         total[split:, split:] += _of_velocities(flow, expansion, section, velocities)
+        if velocities is None or velocities.adds:
+            single[split:] += peculiar_variance(flow.redshift, peculiar_velocities(flow, section))
     named = [str(name) for sample in samples for name in sample.name]
     blamed = magnitudes or velocities
     if blamed is not None:
@@ -97,6 +107,7 @@ def supernovae_together(
         None if near is None else replace(near, variance=frozen(variance[:split])),
         None if flow is None else replace(flow, variance=frozen(variance[split:])),
         frozen(total),
+        frozen(single),
     )
 
 

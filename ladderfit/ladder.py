@@ -60,6 +60,8 @@ class Ladder:
         Of peak magnitudes less their prediction, without intrinsic scatter [mag^2]:
         `peaks` first, then `flow`, peculiar velocities included; None where all are
         independent.
+    peak_single : array, shape (n,), or None
+        The part of its diagonal that comes from single errors [mag^2].
     kept : mapping of str to Kept
         By section: how many rows take part, and why the others do not.
     notes : tuple of str
@@ -83,6 +85,7 @@ class Ladder:
     notes: tuple[str, ...]
     sources: Mapping[str, Source]
     _parts: Parts = field(repr=False)
+    peak_single: FloatArray | None = None
 
     def __repr__(self) -> str:
         """The title and how much of each table takes part."""
@@ -286,6 +289,7 @@ def _assemble(choices: Choices, path: Path | None, before: Parts) -> Ladder:
         geometric=geometric,
         anchor_covariance=anchors,
         peak_covariance=together.matrix,
+        peak_single=together.single,
         kept={key: selection.kept for key, selection in selections.items() if selection},
         notes=(
             *(f"Cepheids: {note}" for note in (cepheids.notes if cepheids else ())),

@@ -28,7 +28,7 @@ ORDER = """
     joined_ladders new_objects
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
+    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels.wide
     kernels.downdate
     kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli

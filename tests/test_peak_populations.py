@@ -16,9 +16,11 @@ from peak_ladders import (
 from test_covariance_posterior import correlated
 from test_log_density import log_prior_of_phi, prior_draws
 
+from ladderfit.kernels.wide import LowRankCovariance
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.physics.expansion import distance_term, peculiar_variance
 from ladderfit.posterior.joint import Posterior, posterior
+from ladderfit.posterior.populations import PopulationBlock
 
 FREE_CORRELATION = {"priors.shape_colour_correlation": {"uniform": [-0.95, 0.95]}}
 
@@ -78,6 +80,31 @@ def test_with_a_full_covariance(scatter: str, adds: bool) -> None:
     choices["supernovae"] |= {"covariance": {"adds": adds}, "scatter": scatter}
     matrix = correlated(n, 0.2)
     agree(build_ladder(choices, tables | {"supernovae.covariance": matrix}))
+
+
+@pytest.mark.parametrize("scatter", ["common", "apart"])
+def test_with_a_covariance_of_few_patterns(scatter: str) -> None:
+    choices, tables = parts_with("flow", EVERYTHING)
+    n = len(tables["supernovae"]) + len(tables["expansion"])
+    choices["supernovae"] |= {"covariance": {"adds": True}, "scatter": scatter}
+    patterns = 0.1 * np.random.default_rng(3).normal(size=(n, 3))
+    matrix = patterns @ patterns.T
+    ladder = build_ladder(choices, tables | {"supernovae.covariance": matrix})
+    (block,) = [b for b in posterior(ladder).blocks if isinstance(b, PopulationBlock)]
+    assert isinstance(block.shared, LowRankCovariance)
+    agree(ladder)
+
+
+def test_what_was_found_out_about_a_covariance_is_kept() -> None:
+    choices, tables = parts_with("flow", TRIPP)
+    n = len(tables["supernovae"]) + len(tables["expansion"])
+    choices["supernovae"] |= {"covariance": {"adds": True}}
+    ladder = build_ladder(choices, tables | {"supernovae.covariance": correlated(n, 0.1)})
+    first = posterior(ladder)
+    again = posterior(ladder.change({"peak_relation.host_mass": {}}), first)
+    shared = [b.shared for j in (first, again) for b in j.blocks if isinstance(b, PopulationBlock)]
+    assert len(shared) == 2
+    assert shared[0] is shared[1]
 
 
 def test_with_a_covariance_of_the_expansion_alone() -> None:

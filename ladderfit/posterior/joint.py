@@ -213,11 +213,11 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
     constant = constant + _anchors(ladder, frame, names) + _theta_prior(parts, frame)
     constant = constant + _distances(ladder, frame)
     blocks: list[Block] = []
-    integrated = population_blocks(ladder, frame, names)
+    earlier = () if before is None else before.blocks
+    integrated = population_blocks(ladder, frame, names, earlier)
     blocks += integrated
     correlated = None if integrated else supernova_data(ladder, frame, names)
     if correlated is not None:
-        earlier = () if before is None else before.blocks
         reach = {name: _largest(ladder, name) for name in ladder.choices.peak_scatters}
         block = supernova_block(ladder, correlated, parts.fixed, reach, earlier)
         if isinstance(block, Moments):

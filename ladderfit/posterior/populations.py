@@ -8,17 +8,17 @@ add differs from one supernova to the next.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from scipy.linalg import lapack
 
-from ladderfit.kernels.arrow import LOG_2PI, Moments
+from ladderfit.kernels.arrow import Moments
 from ladderfit.kernels.compiling import in_halves
 from ladderfit.kernels.coupled import CoupledData, add_products
 from ladderfit.kernels.populations import CURVED, LINEAR, WIDENED, add_rows, condition
+from ladderfit.kernels.wide import Covariance, FullCovariance, LowRankCovariance, covariance_of
 from ladderfit.ladder import Ladder
 from ladderfit.peak_terms import EXPANSION, HOSTS, PeakTerms
 from ladderfit.posterior.cepheids import Block, Values
@@ -53,9 +53,11 @@ class PopulationBlock:
     scatters : tuple of str
         Name of the scatter of each population's supernovae.
     rows : CoupledData
-        Columns in the frame, y last, and the covariance of the peaks.
+        Columns in the frame, y last.
     independent : array, shape (n,), or None
         Variances, where the covariance is diagonal.
+    shared : Covariance or None
+        The covariance, where it is not.
     x, errors, with_peak : array, shape (n, p), (n, p, p), (n, p)
         Measured inputs less references, covariances of their errors, and with the peak.
     """
@@ -67,6 +69,7 @@ class PopulationBlock:
     scatters: tuple[str, ...]
     rows: CoupledData
     independent: FloatArray | None
+    shared: Covariance | None
     x: FloatArray
     errors: FloatArray
     with_peak: FloatArray
@@ -170,28 +173,21 @@ class PopulationBlock:
         shift: FloatArray,
         extra: FloatArray,
     ) -> None:
-        """Factor the covariance in every draw."""
-        n, m = len(self.x), len(self.rows.inside)
-        diagonal = np.arange(n)
-        right = np.asfortranarray(np.hstack([self.rows.indicators(), self.rows.columns]))
-        y = right[:, -1].copy()
-        products = np.empty((len(extra), right.shape[1], right.shape[1]))
+        """By what the covariance is made of."""
+        if self.shared is None:
+            raise ValueError("independent rows have no covariance")
+        m = len(self.rows.inside)
+        columns = np.hstack([self.rows.indicators(), self.rows.columns])
+        y = columns[:, -1].copy()
+        products = np.empty((len(extra), columns.shape[1], columns.shape[1]))
         constant = np.empty(len(extra))
         for draw in range(len(extra)):
-            matrix = self.rows.covariance.copy(order="F")
-            matrix[diagonal, diagonal] += extra[draw]
-            factor, bad = lapack.dpotrf(matrix, lower=1, overwrite_a=1)
-            if bad:
-                products[draw], constant[draw] = np.nan, np.nan
-                continue
             if self._levers:
                 for number, places in enumerate(self.means):
                     mine = self.group == number
-                    right[np.ix_(mine, m + places)] = lever[draw, mine]
-            right[:, -1] = y - shift[draw]
-            solved, _ = lapack.dtrtrs(factor, right, lower=1)
-            products[draw] = solved.T @ solved
-            constant[draw] = -float(np.log(np.diagonal(factor)).sum()) - 0.5 * n * LOG_2PI
+                    columns[np.ix_(mine, m + places)] = lever[draw, mine]
+            columns[:, -1] = y - shift[draw]
+            products[draw], constant[draw] = self.shared.products(extra[draw], columns)
         views = Moments(
             total.local[part],
             total.cross[part],
@@ -242,10 +238,13 @@ class _Known:
                 self.mean[:, number, i] = values(name)
 
 
-def population_blocks(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> list[Block]:
+def population_blocks(
+    ladder: Ladder, frame: Frame, names: tuple[str, ...], before: Iterable[Block] = ()
+) -> list[Block]:
     """The supernovae as blocks, where errors of their inputs are met; else none.
 
-    Supernovae that a covariance correlates are one block.
+    Supernovae that a covariance correlates are one block.  From blocks of an earlier
+    posterior, `before`, what was found out about the same covariance is taken over.
     """
     terms = terms_of(ladder)
     if not terms.noisy:
@@ -253,9 +252,9 @@ def population_blocks(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> l
     correlated = correlated_samples(ladder)
     groups = [group for group in terms.groups if _KINDS[group] in correlated]
     alone = [(group,) for group in terms.groups if group not in groups]
-    blocks: list[Block] = [_block(ladder, frame, names, terms, one, dense=False) for one in alone]
+    blocks: list[Block] = [_block(ladder, frame, names, terms, one, None) for one in alone]
     if groups:
-        blocks.append(_block(ladder, frame, names, terms, tuple(groups), dense=True))
+        blocks.append(_block(ladder, frame, names, terms, tuple(groups), before))
     return blocks
 
 
@@ -265,20 +264,20 @@ def _block(
     names: tuple[str, ...],
     terms: PeakTerms,
     groups: tuple[str, ...],
-    *,
-    dense: bool,
+    before: Iterable[Block] | None,
 ) -> PopulationBlock:
     samples: dict[str, Any] = {HOSTS: ladder.peaks, EXPANSION: ladder.flow}
     parts = [terms.noisy_inputs(samples[group]) for group in groups]
     x, errors, with_peak = (np.concatenate(arrays) for arrays in zip(*parts, strict=True))
     kinds = tuple(_KINDS[group] for group in groups)
     host, columns, y = supernova_arrays(ladder, kinds, names)
-    covariance, independent = np.empty((0, 0)), None
-    if dense and ladder.peak_covariance is not None:
+    shared, independent = None, None
+    if before is not None and ladder.peak_covariance is not None:
         split = 0 if ladder.peaks is None else len(ladder.peaks)
         start = 0 if HOSTS in groups else split
         stop = len(ladder.peak_covariance) if EXPANSION in groups else split
-        covariance = ladder.peak_covariance[start:stop, start:stop]
+        part = slice(start, stop)
+        shared = _shared(ladder.peak_covariance[part, part], ladder.peak_single, part, before)
     elif groups == (HOSTS,):
         independent = samples[HOSTS].variance
     else:
@@ -293,12 +292,27 @@ def _block(
         CoupledData(
             host,
             frame.columns(host, columns, y),
-            covariance,
+            np.empty((0, 0)),
             frame.hosts,
             coupled_hosts(ladder),
         ),
         independent,
+        shared,
         x,
         errors,
         with_peak,
     )
+
+
+def _shared(
+    matrix: FloatArray, single: FloatArray | None, part: slice, before: Iterable[Block]
+) -> Covariance:
+    """What the covariance is made of; as found out before, where it is the same."""
+    own = None if single is None else single[part]
+    for block in before:
+        earlier = block.shared if isinstance(block, PopulationBlock) else None
+        if isinstance(earlier, FullCovariance) and np.array_equal(earlier.matrix, matrix):
+            return earlier
+        if isinstance(earlier, LowRankCovariance) and np.array_equal(earlier.whole, matrix):
+            return earlier
+    return covariance_of(matrix, own)
