@@ -124,7 +124,9 @@ def _fitted(ladder: Ladder, stars: StarSample) -> list[FloatArray]:
 
 def identity_of(baseline: Baseline, version: str) -> dict[str, Any]:
     """What outcomes depend on besides their own changes, for the head of their file."""
-    choices = json.dumps(baseline.ladder.choices.to_mapping(), sort_keys=True, default=str)
+    mapping = baseline.ladder.choices.to_mapping()
+    told = {key: value for key, value in mapping.items() if key not in ("title", "sampling")}
+    choices = json.dumps(told, sort_keys=True, default=str)
     return {
         "choices": hashlib.sha256(choices.encode()).hexdigest(),
         "tables": {key: source.sha256 for key, source in baseline.ladder.sources.items()},
