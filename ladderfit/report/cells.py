@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
@@ -140,9 +140,8 @@ class PaperTable:
     rows : tuple of tuple of Cell
     notes : tuple of str
         Below the table.
-    panels : tuple of int
-        Widths of the panels into which printed columns, but for the first, are cut;
-        empty for all in one.
+    cut : bool
+        Whether printed columns, but for the first, are cut into panels that fit a line.
     """
 
     name: str
@@ -151,7 +150,7 @@ class PaperTable:
     head: tuple[Cell, ...] = ()
     rows: tuple[tuple[Cell, ...], ...] = ()
     notes: tuple[str, ...] = ()
-    panels: tuple[int, ...] = field(default=())
+    cut: bool = False
 
     def __len__(self) -> int:
         """Number of rows for machines."""
@@ -166,10 +165,3 @@ def text_column(name: str, values: list[str], words: str = "") -> Column:
 def number_column(name: str, values: npt.ArrayLike, unit: str = "", words: str = "") -> Column:
     """A column of numbers."""
     return Column(name, np.asarray(values, dtype=np.float64), unit, words)
-
-
-def in_panels(columns: int, most: int) -> tuple[int, ...]:
-    """Widths of as few panels as hold `columns`, none wider than `most`, about equal."""
-    count = max(1, -(-columns // most))
-    small, extra = divmod(columns, count)
-    return tuple(small + (1 if place < extra else 0) for place in range(count))

@@ -11,7 +11,7 @@ from pathlib import Path
 
 from ladderfit.names import group_of, parameter
 from ladderfit.report.cells import Cell, PaperTable, Quoted, Scientific, Symbol, Unit, Words
-from ladderfit.report.latex import is_number
+from ladderfit.report.latex_text import is_number
 from ladderfit.rounding import MINUS, Rounded
 from ladderfit.wording import printable
 
@@ -67,7 +67,7 @@ def mathtext(source: str) -> Safe:
     made = ""
     for script, grouped, single in tokens:
         word = grouped or single
-        upright = word.startswith("\x01") or word.isdigit()
+        upright = word.startswith("\x01") or word.isdigit() or word == "Δ"
         shown = text(word.lstrip("\x01"))
         body = shown if upright or not word.isalpha() else Safe(f"<i>{shown}</i>")
         tag = {"_": "sub", "^": "sup"}.get(script)

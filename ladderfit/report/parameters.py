@@ -17,7 +17,6 @@ from ladderfit.report.cells import (
     Symbol,
     Unit,
     Words,
-    in_panels,
     number_column,
     quoted,
     text_column,
@@ -25,7 +24,6 @@ from ladderfit.report.cells import (
 from ladderfit.result import Result
 from ladderfit.rounding import to_place
 
-_WIDEST, _WIDEST_SCIENTIFIC = 7, 4  # printed columns of a covariance
 _MOST_PRINTED = 60  # rows of a covariance worth printing
 
 ERRORS_NOTE = (
@@ -175,7 +173,7 @@ def moduli_covariance(hosts: tuple[str, ...], matrix: FloatArray) -> PaperTable:
         title=f"{title} (in 1e{power} square magnitudes)",
         head=("", *hosts),
         rows=rows,
-        panels=in_panels(len(hosts), _WIDEST),
+        cut=True,
         notes=(),
     )
 
@@ -221,7 +219,7 @@ def _covariance(
         columns,
         head=("", *heads),
         rows=rows,
-        panels=in_panels(len(names), _WIDEST_SCIENTIFIC),
+        cut=True,
     )
 
 
