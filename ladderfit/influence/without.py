@@ -59,15 +59,19 @@ def without(ladder: Ladder, left: Left) -> Ladder:
         if left.host >= 0 and name in ("cepheids", "peaks") and sample is not None:
             stay &= sample.host != left.host
         stays[name] = stay
-    covariance = ladder.peak_covariance
+    covariance, single = ladder.peak_covariance, ladder.peak_single
+    together = np.concatenate([stays["peaks"], stays["flow"]])
     if covariance is not None:
-        together = np.concatenate([stays["peaks"], stays["flow"]])
         covariance = covariance[np.ix_(together, together)]
+    if single is not None:
+        single = single[together]
     samples: dict[str, Any] = {
         name: None if sample is None or not stays[name].any() else taken(sample, stays[name])
         for name, sample in sizes.items()
     }
-    return _renumbered(replace(ladder, peak_covariance=covariance, **samples), left.host)
+    return _renumbered(
+        replace(ladder, peak_covariance=covariance, peak_single=single, **samples), left.host
+    )
 
 
 def taken(sample: S, stay: BoolArray) -> S:

@@ -308,7 +308,8 @@ def _shared(
     matrix: FloatArray, single: FloatArray | None, part: slice, before: Iterable[Block]
 ) -> Covariance:
     """What the covariance is made of; as found out before, where it is the same."""
-    own = None if single is None else single[part]
+    known = single is not None and len(single) >= part.stop
+    own = single[part] if known and single is not None else None
     for block in before:
         earlier = block.shared if isinstance(block, PopulationBlock) else None
         if isinstance(earlier, FullCovariance) and np.array_equal(earlier.matrix, matrix):
