@@ -7,10 +7,13 @@ from pathlib import Path
 from typing import Any
 
 from ladderfit.files import new_folder
+from ladderfit.ladder import Ladder
 from ladderfit.plots.review import review_figure
 from ladderfit.plots.theme import LIGHT
-from ladderfit.review import ClaimReview, Review
+from ladderfit.review import ClaimReview, Claims, Review
+from ladderfit.review import review as review_claims
 from ladderfit.review.page import html_page, markdown_page
+from ladderfit.review.whole import Progress
 
 _DOTS_PER_INCH = 200
 
@@ -36,16 +39,39 @@ def write_review(review: Review, folder: str | Path) -> Path:
     OSError
         If it cannot be written.
     """
-    target = Path(folder)
-    with new_folder(target) as made:
-        names = _figures(review, made / "figures")
-        images = {number: (made / "figures" / name).read_bytes() for number, name in names.items()}
-        paths = {number: f"figures/{name}" for number, name in names.items()}
-        (made / "review.html").write_text(html_page(review, images), encoding="utf-8")
-        (made / "review.md").write_text(markdown_page(review, paths), encoding="utf-8")
-        text = json.dumps(verdicts_of(review), indent=2, ensure_ascii=False)
-        (made / "verdicts.json").write_text(text + "\n", encoding="utf-8")
-    return target
+    with new_folder(folder) as made:
+        _fill(review, made)
+    return Path(folder)
+
+
+def review_into(
+    folder: str | Path,
+    ladder: Ladder,
+    claims: Claims,
+    *,
+    seed: int = 1,
+    progress: Progress | None = None,
+) -> Review:
+    """Review claims and write them into a new folder, refused before any work if it exists.
+
+    Parameters and errors are those of `ladderfit.review.review` and `write_review`.
+    """
+    with new_folder(folder) as made:
+        found = review_claims(ladder, claims, seed=seed, progress=progress)
+        if progress is not None:
+            progress("drawing figures", 0.0)
+        _fill(found, made)
+    return found
+
+
+def _fill(review: Review, folder: Path) -> None:
+    names = _figures(review, folder / "figures")
+    images = {number: (folder / "figures" / name).read_bytes() for number, name in names.items()}
+    paths = {number: f"figures/{name}" for number, name in names.items()}
+    (folder / "review.html").write_text(html_page(review, images), encoding="utf-8")
+    (folder / "review.md").write_text(markdown_page(review, paths), encoding="utf-8")
+    text = json.dumps(verdicts_of(review), indent=2, ensure_ascii=False)
+    (folder / "verdicts.json").write_text(text + "\n", encoding="utf-8")
 
 
 def _figures(review: Review, folder: Path) -> dict[int, str]:

@@ -31,15 +31,15 @@ def add(add_parser: Add) -> None:
 def _review(chosen: argparse.Namespace) -> int:
     from ladderfit.files import first_free
     from ladderfit.ladder import read_ladder
-    from ladderfit.review import read_claims, review
-    from ladderfit.review_folder import write_review
+    from ladderfit.review import read_claims
+    from ladderfit.review_folder import review_into
 
     path = Path(chosen.file)
     claims = read_claims(chosen.claims)
     ladder = read_ladder(path)
+    free = first_free(Path(f"{path.stem}-review"))
+    folder = free if chosen.out is None else Path(chosen.out)
     with terminable(), progress_on(sys.stderr) as report:
-        found = review(ladder, claims, seed=chosen.seed, progress=report)
-        free = first_free(Path(f"{path.stem}-review")) if chosen.out is None else chosen.out
-        folder = write_review(found, free)
+        found = review_into(folder, ladder, claims, seed=chosen.seed, progress=report)
     say(f"{found.summary()}\n\nWritten to {folder}", sys.stdout)
     return 0

@@ -21,7 +21,7 @@ from ladderfit.samples import BoolArray, FloatArray, IntArray
 
 _ROUNDS = 200
 _SETTLED = 1e-9
-_SAME = 1e-9  # a column closer to the span of those before it is dropped
+_SAME = 3e-5  # a column of length 1 closer to the span of those before it is dropped
 
 
 @dataclass(frozen=True)
@@ -288,21 +288,22 @@ def independent(X: FloatArray) -> tuple[IntArray, FloatArray]:
     """Columns not in the span of those before, and the others as their combinations."""
     scale = np.linalg.norm(X, axis=0)
     scaled = X / np.where(scale > 0.0, scale, 1.0)
-    R = np.linalg.qr(scaled, mode="r")
+    R = np.asarray(np.linalg.qr(scaled, mode="r"))
     if X.shape[0] >= X.shape[1] and np.all(np.abs(np.diag(R)) > 1e-7) and np.all(scale > 0.0):
         return np.arange(X.shape[1]), np.zeros((0, X.shape[1]))
     good: list[int] = []
-    basis = np.zeros((X.shape[0], 0))
+    basis = np.zeros((len(R), 0))  # R has the geometry of the columns, and few rows
     for place in range(X.shape[1]):
-        rest = scaled[:, place] - basis @ (basis.T @ scaled[:, place])
+        rest = R[:, place] - basis @ (basis.T @ R[:, place])
         rest = rest - basis @ (basis.T @ rest)
         norm = float(np.linalg.norm(rest))
-        if norm > _SAME**0.5 and basis.shape[1] < X.shape[0]:
+        if norm > _SAME and basis.shape[1] < X.shape[0]:
             good.append(place)
             basis = np.column_stack([basis, rest / norm])
     dropped = [place for place in range(X.shape[1]) if place not in good]
-    span = np.linalg.lstsq(X[:, good], X[:, dropped], rcond=None)[0].T
-    return np.array(good, dtype=np.int64), np.asarray(span).reshape(len(dropped), len(good))
+    combined = np.linalg.lstsq(R[:, good], R[:, dropped], rcond=None)[0].T
+    span = combined.reshape(len(dropped), len(good)) * scale[dropped].reshape(-1, 1) / scale[good]
+    return np.array(good, dtype=np.int64), np.asarray(span)
 
 
 def _solved(
@@ -332,16 +333,17 @@ def _along_the_normal(made: Fit, rows: System, X: FloatArray) -> Fit:
     if "slope" not in names:
         return made
     place, weight = names.index("slope"), made.sigma**-2
-    values: FloatArray = made.found.values
+    values = made.found.values.copy()
     gain = made.gain
     for _ in range(_ROUNDS):
         residual = rows.y - X @ values
         adjusted = X.copy()
         adjusted[:, place] += values[place] * rows.period_variance * weight * residual
         left = (adjusted * weight[:, None]).T
-        gain = np.linalg.solve(left @ X, left)
-        before, values = values, np.asarray(gain @ rows.y, dtype=np.float64)
-        if np.max(np.abs(values - before)) <= 1e-11 * (1.0 + np.max(np.abs(values))):
+        gain = np.asarray(np.linalg.solve(left @ X, left), dtype=np.float64)
+        change = gain @ rows.y - values
+        values += change
+        if np.max(np.abs(change)) <= 1e-11 * (1.0 + np.max(np.abs(values))):
             break
     covariance = (gain * made.sigma**2) @ gain.T
     residual = rows.y - X @ values

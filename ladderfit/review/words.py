@@ -107,7 +107,7 @@ def _claim(number: int, found: ClaimReview) -> Iterator[Block]:
     if found.failed:
         yield Paragraph(f"{'; '.join(found.failed)}.", "Refits that could not be made.")
     yield Heading("What it rests on", 3)
-    yield Paragraph(_smallest(found))
+    yield Paragraph(fewest(found))
     if found.variations:
         yield variation_table(found)
     yield Heading("The claim itself", 3)
@@ -183,7 +183,8 @@ def _variation(found: ClaimReview, each: Variation) -> tuple[str, ...]:
     )
 
 
-def _smallest(found: ClaimReview) -> str:
+def fewest(found: ClaimReview) -> str:
+    """How few stars carry the value, in one sentence."""
     step = "one of its errors" if found.judged.error is not None else "one spread"
     least = found.smallest
     if least is None:
