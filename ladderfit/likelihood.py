@@ -2,7 +2,8 @@
 
 The draws have everything but the moduli of parallax stars and, where the inputs have
 errors, true metallicities: these are integrated out, with the populations that are
-part of the data's model.
+part of the data's model.  Where outliers are modelled, moduli of hosts are integrated
+out too, as each is then one integral over its host's mixture of stars.
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ from scipy.special import log_ndtr
 
 from ladderfit.errors import LadderfitError
 from ladderfit.influence.given import Given, coordinates
+from ladderfit.kernels.arrow import LOG_2PI
 from ladderfit.names import base_name, with_group
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
@@ -61,7 +63,8 @@ def log_terms(result: Result, most: int = 4000) -> LogTerms:
         joint.focus(z.min(axis=0), z.max(axis=0))
     step = max(1, -(-result.size // most))
     draws = {name: values[::step] for name, values in result.draws.items()}
-    gaussian = _gaussian(joint, z, draws)
+    integrated = joint.robust is not None
+    gaussian = (_integrated if integrated else _gaussian)(joint, z, draws)
     parts = joint.split
     priors, of_theta = {}, np.zeros(len(z))
     for name in (*parts.coefficients, *parts.phi_names):
@@ -76,7 +79,9 @@ def log_terms(result: Result, most: int = 4000) -> LogTerms:
             of_theta += density
         if base_name(name) not in OF_THE_DATA:
             priors[name] = density
-    likelihood = gaussian - of_theta - _log_modulus_priors(joint, draws)
+    likelihood = gaussian - of_theta
+    if not integrated:
+        likelihood = likelihood - _log_modulus_priors(joint, draws)
     if joint.parallaxes is not None:
         likelihood = likelihood + joint.log_parallaxes(z).sum(axis=1)
     return LogTerms(draws, priors, likelihood)
@@ -128,6 +133,20 @@ def _gaussian(joint: Posterior, z: FloatArray, draws: dict[str, FloatArray]) -> 
     if len(z) and not np.allclose(whole, joint.log_density(z), rtol=0.0, atol=1e-6):
         _refuse()
     return found
+
+
+def _integrated(joint: Posterior, z: FloatArray, draws: dict[str, FloatArray]) -> FloatArray:
+    """Log density of data and theta at the draws, moduli integrated out.
+
+    It is the evidence of phi times the density of theta given phi.
+    """
+    solution, names = joint.solution(z), joint.split.coefficients
+    columns = [_coefficient(joint, names[i], draws[names[i]]) for i in solution.free.tolist()]
+    off = np.stack(columns, axis=1) - solution.mean if columns else solution.mean
+    white = np.einsum("sji,sj->si", solution.factor, off)
+    logs = np.log(np.diagonal(solution.factor, axis1=1, axis2=2)).sum(axis=1)
+    normal = logs - 0.5 * np.sum(white**2, axis=1) - 0.5 * white.shape[1] * LOG_2PI
+    return np.asarray(solution.log_evidence + normal)
 
 
 def _check(square: FloatArray, freedom: int) -> None:

@@ -14,6 +14,7 @@ import numpy as np
 import pytest
 import test_covariance_posterior as covariances
 import test_limits as limits
+from contaminated import MIXTURE, STUDENT
 from peak_ladders import EVERYTHING, RATE, TRIPP, ladder_with
 from photometry_ladders import ladder as in_bands
 from relation_ladders import made
@@ -44,6 +45,8 @@ OTHERS = {
         "all rungs", adds=False, scatter="apart"
     )[0],
     "limits": lambda: limits.limited("H", 0.1),
+    "outliers as a mixture": lambda: small_ladder("flow").change(MIXTURE),
+    "outliers as tails": lambda: small_ladder("anchors and parallaxes").change(STUDENT),
 }
 
 

@@ -46,7 +46,8 @@ ORDER = """
     report.cells report.machine report.latex_text report.latex report.parameters report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
-    influence.blocks influence.correlated influence.populations influence.hosts influence.objects
+    influence.blocks influence.correlated influence.populations influence.hosts influence.outliers
+    influence.objects
     influence.reweighting influence.words influence.table influence likelihood predictive
     power_scaling
     anchors.weights anchors.tension anchors.comparison anchors
@@ -64,7 +65,8 @@ ORDER = """
     mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
-    plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots
+    plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots.anchors
+    plots.influence plots.priors plots
     alternatives_folder calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works

@@ -174,6 +174,19 @@ def test_prior_times_likelihood_is_the_joint_density(case: str) -> None:
     assert abs(np.var(ratio) - 0.5 * freedom) < 5.0 * spread + 0.1
 
 
+@pytest.mark.parametrize("treatment", ["mixture", "Student-t"])
+def test_outliers_are_part_of_the_likelihood(treatment: str) -> None:
+    """All coefficients are in phi: prior times likelihood is the density of phi itself."""
+    ladder = small_ladder("anchors").change({"cepheids.outliers.treatment": treatment})
+    result = draw(ladder, draws=200)
+    terms, joint = log_terms(result), posterior(ladder)
+    z = points_of(joint, result)
+    jacobian = joint.split.log_prior(z) - sum(terms.priors.values())
+    whole = sum(terms.priors.values()) + terms.likelihood
+    np.testing.assert_allclose(whole + jacobian, joint.log_density(z), atol=1e-6)
+    assert prior_sensitivity(result).table.loc["slope", "likelihood"] > 0.05
+
+
 def test_limits_are_part_of_the_likelihood() -> None:
     """Every star of a host with a limit counts with its density over its chance."""
     ladder = limits.limited("H", 0.1)

@@ -143,7 +143,7 @@ def tension(
         except UndeterminedError:
             raise NoTensionError(f"without {anchor} nothing fixes the distance scale") from None
     joint = posterior(full)
-    if joint.limits is not None:
+    if joint.limits is not None or joint.robust is not None:
         return _from_draws(full, anchor, without)
     given = Given(joint, coordinates(joint, without, without.size), ())
     anchors = correlated_anchors(given)
@@ -159,9 +159,11 @@ def tension(
 
 
 def _from_draws(full: Ladder, anchor: str, without: Result) -> Tension:
-    """From draws of the modulus, where that is not normal given phi (magnitude limits)."""
+    """From draws of the modulus, where that is not normal given phi (limits, outliers)."""
     if full.anchor_covariance is not None:
-        raise NoTensionError("a covariance of anchors beside magnitude limits is not covered")
+        raise NoTensionError(
+            "a covariance of anchors beside magnitude limits or outliers is not covered"
+        )
     own = next(each for each in full.geometric if each.name == anchor)
     predicted, variance = without.draws[with_group("modulus", anchor)], own.error**2
     for name, shared in full.choices.anchors.shared_errors.items():

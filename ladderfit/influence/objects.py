@@ -13,6 +13,7 @@ from ladderfit.influence.blocks import star_block, stars_one_by_one, supernovae_
 from ladderfit.influence.correlated import correlated
 from ladderfit.influence.given import Given, Taken
 from ladderfit.influence.hosts import Hosts
+from ladderfit.influence.outliers import log_ratios
 from ladderfit.influence.parallaxes import log_factors
 from ladderfit.influence.populations import places_of_host, stars_of_host
 from ladderfit.influence.rebuilding import rebuilt
@@ -137,6 +138,7 @@ class Objects:
             if kind == CEPHEID:
                 yield from self._noisy()
                 yield from self._star_by_star()
+                yield from self._robust()
 
     def _batch(self, kind: str, place: IntArray, taken: Taken) -> Batch:
         return Batch(kind, place, self.given, taken)
@@ -204,6 +206,19 @@ class Objects:
                 yield self._batch(CEPHEID, np.array([place]), self.hosts.taken(host))
             else:
                 yield Batch(CEPHEID, np.array([place]), self.coarse, taken)
+
+    def _robust(self) -> Iterator[Batch]:
+        robust = self.given.joint.robust
+        if robust is None:
+            return
+        seen: list[int] = []
+        for place, _, ratio in log_ratios(self.coarse, robust):
+            seen.append(place)
+            taken = self.coarse.unchanged(ratio[:, None])
+            yield Batch(CEPHEID, np.array([place]), self.coarse, taken)
+        for place in np.setdiff1d(np.arange(self.count(CEPHEID)), seen).tolist():
+            taken = rebuilt(self.coarse, left_out(CEPHEID, place))
+            yield Batch(CEPHEID, np.array([place]), self.coarse, taken)
 
     def _populations(self, kind: str) -> Iterator[Batch]:
         """Supernovae whose inputs have errors; each block is of one kind."""

@@ -67,7 +67,8 @@ def row_sets(joint: Posterior) -> list[RowSet]:
     ladder, frame, names = joint.ladder, joint.frame, joint.split.coefficients
     found: list[RowSet] = []
     stars, others = ladder.cepheids, {type(block) for block in joint.blocks}
-    if stars is not None and not others & {NoisyBlock, StarTerms, SharedBlock}:
+    special = joint.robust is not None or others & {NoisyBlock, StarTerms, SharedBlock}
+    if stars is not None and not special:
         which = scatters(ladder.choices, stars, ladder.hosts)[1]
         for number, (rows, scatter) in enumerate(plain_rows(ladder, frame)):
             place = np.flatnonzero(which == number)
@@ -181,12 +182,15 @@ def data_moments(given: Given, sets: list[RowSet]) -> Moments:
 def slow_kinds(joint: Posterior) -> frozenset[str]:
     """Kinds whose objects cannot be taken out of sums: the ladder is built without each.
 
-    Those are hosts with magnitude limits, and supernovae that both have errors of
-    their inputs and are correlated.
+    Those are hosts with magnitude limits, hosts whose Cepheids deviate as no normal
+    does (but for single Cepheids), and supernovae that both have errors of their
+    inputs and are correlated.
     """
     found: set[str] = set()
     if joint.limits is not None:
         found |= {CEPHEID, PEAK, HOST}
+    if joint.robust is not None:
+        found |= {PEAK, HOST}
     for block in joint.blocks:
         if isinstance(block, PopulationBlock) and block.independent is None:
             found |= {PEAK, FLOW, HOST}

@@ -69,9 +69,8 @@ def without(ladder: Ladder, left: Left) -> Ladder:
         name: None if sample is None or not stays[name].any() else taken(sample, stays[name])
         for name, sample in sizes.items()
     }
-    return _renumbered(
-        replace(ladder, peak_covariance=covariance, peak_single=single, **samples), left.host
-    )
+    cut = replace(ladder, peak_covariance=covariance, peak_single=single, **samples)
+    return _renumbered(cut, left.host)
 
 
 def taken(sample: S, stay: BoolArray) -> S:
