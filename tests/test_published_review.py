@@ -10,6 +10,7 @@ from typing import Any
 
 import pandas as pd
 import pytest
+from test_published_ladder import CHOICES, peaks
 
 import ladderfit as lf
 from ladderfit.ladder import Ladder
@@ -144,6 +145,23 @@ def test_riess_2019(published_tables: Path) -> None:
     assert level.refits[0].within_rounding
     assert slope.names == (CANNOT_BE_JUDGED,)
     assert "fixed" in slope.verdicts[0].evidence
+
+
+# Riess et al. 2016, ApJ 826, 56: 72.25 +- 2.51 from NGC 4258 alone (read); the ladder is that
+# of ``test_published_ladder``, whose computed value is 72.4 +- 2.4.
+
+
+def test_riess_2016_hubble_constant(published_tables: Path) -> None:
+    table = pd.read_csv(published_tables / "riess2016_table4.csv", dtype={"ID": str})
+    tables = {"cepheids": table[table["Gal"] != "M31"], "supernovae": peaks()}
+    claims = [{"quantity": "hubble_constant", "value": 72.25, "error": 2.51}]
+    (found,) = reviewed(lf.build_ladder(CHOICES, tables), claims, method={"weights": "errors"})
+    assert found.names == (AS_DESCRIBED,)
+    assert found.refits[0].value == pytest.approx(72.4, abs=0.3)
+    assert found.refits[0].error == pytest.approx(2.4, abs=0.2)
+    assert "(" in found.smallest.stars[0]  # the host stands beside the star
+    hosts = [each for each in found.variations if each.axis == "host left out"]
+    assert len(hosts) == 19  # of 20: without the anchor there is no Hubble constant
 
 
 def test_leavitt_1912(published_tables: Path) -> None:

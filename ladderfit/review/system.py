@@ -49,7 +49,7 @@ class System:
     period_variance : array, shape (n,)
         Of log10 period [dex^2]; 0 where not given.
     label : array of str, shape (n,)
-        Star or supernova.
+        Star, with its host where there are several, or supernova.
     notes : tuple of str
         What a reader has to know of the rows.
     fixed : mapping of str to float
@@ -181,11 +181,19 @@ def _cepheids(ladder: Ladder, stars: StarSample) -> _Block:
         stars.magnitude,
         stars.variance,
         STARS,
-        stars.star,
+        _star_names(ladder, stars),
         _rows(ladder, "cepheids", stars.row),
         stars.log_period,
         None if error is None else error**2,
     )
+
+
+def _star_names(ladder: Ladder, stars: StarSample) -> TextArray:
+    """Names of stars, with their hosts where there are several."""
+    if len(np.unique(stars.host)) < 2:
+        return stars.star
+    hosts = np.array([f" ({host})" for host in ladder.hosts])
+    return np.asarray(np.strings.add(stars.star, hosts[stars.host]))
 
 
 def _parallaxes(ladder: Ladder, stars: StarSample, notes: list[str]) -> list[_Block]:
