@@ -36,7 +36,7 @@ def alternatives_figure(comparison: Comparison, *, theme: Theme = LIGHT) -> Figu
     many = len(comparison.fits) > MOST_ROWS
     rows = len(comparison.axes) if many else 1 + len(comparison.fits)
     with theme.applied():
-        figure = new_figure(1.0 + _ROW * max(rows, 3) * (1.6 if many else 1.0))
+        figure = _framed(1.0 + _ROW * max(rows, 3) * (1.6 if many else 1.0))
         panels = figure.subplots(1, len(comparison.shown), squeeze=False)[0]
         for place, (name, axes) in enumerate(zip(comparison.shown, panels, strict=True)):
             if many:
@@ -156,7 +156,7 @@ def budget_figure(budget: pd.DataFrame, *, theme: Theme = LIGHT) -> Figure | Non
     if not names:
         return None
     with theme.applied():
-        figure = new_figure(0.9 + 0.24 * max(len(sources), 3))
+        figure = _framed(0.9 + 0.24 * max(len(sources), 3))
         panels = figure.subplots(1, len(names), squeeze=False, sharey=True)[0]
         for place, (name, axes) in enumerate(zip(names, panels, strict=True)):
             accent = theme.accent(place)
@@ -179,6 +179,13 @@ def comparison_figures(
     figure = budget_figure(budget, theme=theme)
     if figure is not None:
         yield "budget", figure
+
+
+def _framed(height: float) -> Figure:
+    """A figure with some air beside its long names."""
+    figure = new_figure(height)
+    figure.set_layout_engine("constrained", w_pad=0.09)
+    return figure
 
 
 def _per_cent(share: float) -> str:
