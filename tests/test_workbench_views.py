@@ -186,6 +186,7 @@ def test_a_slow_view_works_beside_the_page(bench: Workbench) -> None:
     assert len(bench.picture.figure.axes) == 2
     shown = {name: str(np.mean(r.draws["zero_point"])) for name, r in job.value.items()}
     assert len(shown) == len(set(shown.values())) == 4
+    assert job.value["flat in modulus"] is bench.result  # the same numbers as on show
     bench.bar.choose("relation")
     bench.bar.choose("priors")
     assert bench.frame.slow.current is None

@@ -26,6 +26,7 @@ class Does:
     undo: Click
     redo: Click
     save: Click
+    sample: Click
 
 
 class Foot:
@@ -36,12 +37,18 @@ class Foot:
         self.undo = button("Undo", "Take the last change back", does.undo)
         self.redo = button("Redo", "Make it again", does.redo)
         self.save = button("Save ladder file", "Write every choice", does.save, "106px")
+        self.sample = button(
+            "Sample in full",
+            "Start a long run that goes on without this page",
+            does.sample,
+            "98px",
+        )
         self.name = widgets.Text(
             tooltip="Name of the file to save", layout=widgets.Layout(width="128px")
         )
         self.trust = line("lf-trust")
         self.widget = widgets.HBox(
-            [self.pin, self.undo, self.redo, self.name, self.save, self.trust],
+            [self.pin, self.undo, self.redo, self.name, self.save, self.sample, self.trust],
             layout=widgets.Layout(width="100%", height="40px", align_items="center"),
         )
         self.widget.add_class("lf-foot")
@@ -51,7 +58,7 @@ class Foot:
         """Enable what can be done."""
         self.undo.disabled = not session.can_undo
         self.redo.disabled = not session.can_redo
-        self.pin.disabled = session.trouble is not None
+        self.pin.disabled = self.sample.disabled = session.trouble is not None
 
     def suggest(self, ladder: Ladder) -> None:
         """Offer a name that is free."""

@@ -14,6 +14,7 @@ from ladderfit.workbench.aside import aside_residuals
 from ladderfit.workbench.canvas import Picture
 from ladderfit.workbench.canvas.view import View
 from ladderfit.workbench.published import Published
+from ladderfit.workbench.shelf import Shelf
 from ladderfit.workbench.shown import Shown
 from ladderfit.workbench.slow import Job, Slow
 from ladderfit.workbench.star_line import StarLine
@@ -37,8 +38,8 @@ class Frame:
     entry : Published
     published : dict
         Published values, by parameter.
-    background : bool
-        Whether slow work is done beside the page.
+    shelf : Shelf
+        Pins and long runs.
     """
 
     def __init__(
@@ -49,19 +50,18 @@ class Frame:
         stars: StarLine,
         entry: Published,
         published: dict[str, float],
-        *,
-        background: bool,
+        shelf: Shelf,
     ) -> None:
         self.session, self.bar, self.picture, self.stars = session, bar, picture, stars
-        self.entry, self.published = entry, published
-        self.slow = Slow(background=background)
+        self.entry, self.published, self.shelf = entry, published, shelf
+        self.slow = Slow(background=shelf.runs.background)
         self._aside: tuple[object, HostResiduals | None] | None = None
         self._drawn = ""
         self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
         self.busy = widgets.HTML(layout=widgets.Layout(display="none", margin="0"))
         self.busy.add_class("lf-busy")
         self._scroll = widgets.VBox(
-            [entry.widget, self.table],
+            [entry.widget, self.table, shelf.panel.widget],
             layout=widgets.Layout(width="100%", height=HEIGHT, display="none"),
         )
         self._scroll.add_class("lf-scroll")
@@ -80,10 +80,11 @@ class Frame:
         self._scroll.layout.display = "none" if drawn else ""
         self.picture.canvas.layout.display = "" if drawn else "none"
         self.entry.widget.layout.display = "" if bar.shows == "numbers" else "none"
-        if bar.shows == "numbers":
+        self.table.layout.display = "none" if bar.shows == "board" else ""
+        self.shelf.panel.widget.layout.display = "" if bar.shows == "board" else "none"
+        if bar.shows in ("numbers", "board"):
             self.pause()
-            self.entry.offer(result)
-            self.table.value = all_numbers(result, self.session.pinned, self.published)
+            self.numbers()
             return
         view = bar.chosen
         worked = self._worked(view)
@@ -97,10 +98,14 @@ class Frame:
             self.table.value = view.table(self._shown(worked))
 
     def numbers(self) -> None:
-        """Bring the table of all numbers up to date, where it is on show."""
-        if self.bar.shows == "numbers" and self.session.result is not None:
-            result, pinned = self.session.result, self.session.pinned
-            self.table.value = all_numbers(result, pinned, self.published)
+        """Bring the table of all numbers, or the board, up to date where it is on show."""
+        session = self.session
+        if self.bar.shows == "board":
+            self.shelf.panel.refresh()
+        elif self.bar.shows == "numbers" and session.result is not None:
+            self.entry.offer(session.result)
+            full = self.shelf.full()
+            self.table.value = all_numbers(session.result, session.pinned, self.published, full)
 
     def pause(self) -> None:
         """Let go of slow work: something newer is coming."""
@@ -175,9 +180,8 @@ class Frame:
         if result is None:
             raise LadderfitError("there is no posterior to show")
         aside = self._aside_stars() if self.bar.view == "relation" else None
-        return Shown(
-            result, self.bar.rung, self.bar.column, aside, worked, published=self.published
-        )
+        full = self.shelf.full()
+        return Shown(result, self.bar.rung, self.bar.column, aside, worked, full, self.published)
 
     def _aside_stars(self) -> HostResiduals | None:
         """Stars set aside, worked out once per posterior."""

@@ -9,6 +9,7 @@ from typing import Any, Concatenate, ParamSpec
 
 import ipywidgets as widgets
 
+from ladderfit.choices import Choices
 from ladderfit.errors import LadderfitError
 from ladderfit.kernels.compiling import WORDS_WHEN_COLD, is_cold
 from ladderfit.ladder import Ladder
@@ -18,10 +19,12 @@ from ladderfit.workbench.choices_panel import ChoicesPanel
 from ladderfit.workbench.controls import Changes, Control
 from ladderfit.workbench.foot import Does, Foot, free, line, text
 from ladderfit.workbench.frame import Frame
+from ladderfit.workbench.pins import changes_to
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.published import Published
 from ladderfit.workbench.pulse import Pulse, in_kernel
 from ladderfit.workbench.rungs import everything, rungs
+from ladderfit.workbench.shelf import Shelf
 from ladderfit.workbench.star_line import StarLine
 from ladderfit.workbench.state import Drawer, Session, in_words, save_ladder
 from ladderfit.workbench.tables import strip
@@ -30,6 +33,7 @@ from ladderfit.workbench.why import prior_driven, trust, why
 
 P = ParamSpec("P")
 _OFTEN = 200  # ms between two questions of the page whether slow work is done
+_SELDOM = 1000  # ms, where only a long run is under way
 _LEFT = 338  # px, of the choices and the gap beside them
 
 
@@ -53,6 +57,7 @@ def _guarded(
                 self._say(f"This went wrong inside ladderfit: {error!r}", good=False)
             finally:
                 self._set_pulse()
+                self.shelf.keep(self.bar.rung, self.bar.view)
 
     return guarded
 
@@ -90,6 +95,13 @@ class Workbench:
         self.numbers.add_class("lf-strip-box")
         self.why = line("lf-why")
         self.entry = Published(self.publish)
+        self.shelf = Shelf(
+            self.session,
+            self.published,
+            background=in_kernel(),
+            asked=self._board_asks,
+            go_back=self._go_back,
+        )
         self.frame = Frame(
             self.session,
             self.bar,
@@ -97,20 +109,28 @@ class Workbench:
             self.stars,
             self.entry,
             self.published,
-            background=in_kernel(),
+            self.shelf,
         )
-        self.foot = Foot(ladder, Does(self._pin, self._undo, self._redo, self._save))
+        self.foot = Foot(ladder, Does(self._pin, self._undo, self._redo, self._save, self._sample))
         self.widget = self._put_together()
         if is_cold():
             print(f"{WORDS_WHEN_COLD[0].upper()}{WORDS_WHEN_COLD[1:]} ...")
         self.session.start()
-        self._open("cepheids" if "cepheids" in self.panel.rungs else self.panel.rungs[0])
+        taken_up = self.shelf.take_up()
+        left = self.shelf.restored
+        usual = "cepheids" if "cepheids" in self.panel.rungs else self.panel.rungs[0]
+        self._open(left.rung if left is not None and left.rung in self.panel.rungs else usual)
+        if left is not None:
+            self.bar.prefer(left.view)
         self.axis.observe(self._opened, "rung")
         self.axis.observe(self._recoloured, ["dark", "rgb"])
         self.axis.observe(self._resized, "width")
         self.axis.observe(self._stands, "ready")
         self.pulse.observe(self._beat, "beat")
         self._after(None, settled=True, said=False)
+        self._set_pulse()
+        if taken_up:
+            self._say(taken_up, good=True)
 
     @property
     def ladder(self) -> Ladder:
@@ -143,7 +163,7 @@ class Workbench:
 
     def _put_together(self) -> Any:
         reason = widgets.HBox(
-            [self.why, self.bar.numbers],
+            [self.why, self.bar.board, self.bar.numbers],
             layout=widgets.Layout(height="32px", flex="0 0 auto", align_items="center"),
         )
         reason.add_class("lf-bar-of-views")
@@ -191,9 +211,30 @@ class Workbench:
 
     @_guarded
     def _pin(self, _: Any = None) -> None:
-        self.session.pin()
+        words = self.shelf.pin()
         self._show_numbers()
-        self._say("Pinned: changes are counted from these numbers.", good=True)
+        self._say(words, good=True)
+
+    @_guarded
+    def _sample(self, _: Any = None) -> None:
+        words = self.shelf.sample()
+        self.bar.show_board()
+        self._say(words, good=True)
+
+    @_guarded
+    def _board_asks(self, action: Callable[[], str]) -> None:
+        words = action()
+        self._show_numbers()
+        if words:
+            self._say(words, good=True)
+
+    @_guarded
+    def _go_back(self, choices: Choices, name: str) -> None:
+        self.frame.pause()
+        ok = self.session.settle(changes_to(choices))
+        self._after(None, settled=True, ok=ok)
+        if ok:
+            self._say(f"The choices of {name} are in force; Undo takes them back.", good=True)
 
     @_guarded
     def _save(self, _: Any = None) -> None:
@@ -238,6 +279,12 @@ class Workbench:
     @_guarded
     def _beat(self, _: Any) -> None:
         self.frame.progress()
+        if self.shelf.runs.waits and self.shelf.runs.look():
+            self._show_numbers()
+            words = self.shelf.ended()
+            if words:
+                self._say(words, good=True)
+                self.frame.show()
 
     @_guarded
     def _pointed(self, points: Points | None, index: int, clicked: bool) -> None:
@@ -301,7 +348,8 @@ class Workbench:
     def _show_numbers(self) -> None:
         result = self.session.result
         if result is not None:
-            self.numbers.value = strip(result, self.session.pinned, self.published)
+            full = self.shelf.full()
+            self.numbers.value = strip(result, self.session.pinned, self.published, full)
             self.frame.numbers()
 
     def publish(self, name: str, value: float | None) -> None:
@@ -314,7 +362,7 @@ class Workbench:
 
     def _set_pulse(self) -> None:
         """Have the page ask for news while something is under way."""
-        every = _OFTEN if self.frame.waits else 0
+        every = _OFTEN if self.frame.waits else _SELDOM if self.shelf.runs.waits else 0
         if self.pulse.every != every:
             self.pulse.every = every
 

@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any, Protocol
 
-from ladderfit.assembly import SECTIONS
+from ladderfit.assembly import PATHS
 from ladderfit.errors import InputError, LadderfitError, Problem
 from ladderfit.ladder import Ladder
 from ladderfit.ladder_copy import copy_ladder
@@ -73,6 +73,8 @@ class Session:
         The posterior of the settled choices before the last change.
     pinned : Result or None
         What changes are measured against.
+    pinned_name : str
+        Its pin; "" for the posterior that the session began with.
     trouble : Trouble or None
         Set while `result` is not the posterior of the choices asked for.
     """
@@ -82,6 +84,7 @@ class Session:
         self.result: Result | None = None
         self.before: Result | None = None
         self.pinned: Result | None = None
+        self.pinned_name = ""
         self.trouble: Trouble | None = None
         self._drawer = WarmDrawer() if drawer is None else drawer
         self._settled = ladder
@@ -98,6 +101,11 @@ class Session:
     def settled(self) -> Ladder:
         """The choices without a trial."""
         return self._settled
+
+    @property
+    def settled_result(self) -> Result | None:
+        """The posterior of the settled choices; None where they have none."""
+        return None if self.trouble is not None else self._settled_result
 
     @property
     def can_undo(self) -> bool:
@@ -144,17 +152,39 @@ class Session:
         """Make the last change that was taken back again."""
         return self._step(self._redo, self._undo)
 
-    def pin(self) -> None:
+    def pin(self, name: str = "") -> Result:
         """Measure changes against the posterior on show from now on.
+
+        Parameters
+        ----------
+        name : str
+            Of the pin.
+
+        Returns
+        -------
+        Result
+            What is pinned.
 
         Raises
         ------
         LadderfitError
             If the posterior on show is not that of the choices.
         """
-        if self.trouble is not None or self._settled_result is None:
+        found = self.settled_result
+        if found is None:
             raise LadderfitError("nothing to pin: these choices have no posterior")
-        self.pinned = self._settled_result
+        self.pinned, self.pinned_name = found, name
+        return found
+
+    def measure_against(self, changes: Mapping[str, Any], name: str) -> None:
+        """Measure changes against the posterior of other choices from now on.
+
+        Raises
+        ------
+        LadderfitError
+            If these have no posterior.
+        """
+        self.pinned, self.pinned_name = draw(self._settled.change(changes)), name
 
     def confirm(self) -> bool:
         """Draw the settled choices as the command line does, from nothing, to the same digits.
@@ -268,13 +298,13 @@ def save_ladder(ladder: Ladder, path: Path) -> Path:
         copy_ladder(ladder, folder)
         return folder / "ladder.toml"
     changes = {}
-    for section in SECTIONS:
+    for key in PATHS:
         try:
-            written = ladder.choices.value(f"{section}.table")
+            written = ladder.choices.value(key)
         except KeyError:
             continue
-        table = os.path.relpath(ladder.base / written, path.parent.resolve())
-        changes[f"{section}.table"] = Path(table).as_posix()
+        place = os.path.relpath((ladder.base / written).resolve(), path.parent.resolve())
+        changes[key] = Path(place).as_posix()
     moved = ladder.choices.change(changes)
     if ladder.path is not None and ladder.path.is_file():
         shutil.copyfile(ladder.path, path)

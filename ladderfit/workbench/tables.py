@@ -20,8 +20,13 @@ _TITLES = {
 _REACH = 4.0  # errors of the pinned posterior that the small bars show
 
 
-def strip(result: Result, pinned: Result | None, published: Mapping[str, float]) -> str:
-    """The headline numbers, what they were when pinned, and published values."""
+def strip(
+    result: Result,
+    pinned: Result | None,
+    published: Mapping[str, float],
+    full: Result | None = None,
+) -> str:
+    """The headline numbers, what they were when pinned, published values, and a long run."""
     cells = []
     for name in NUMBERS:
         if name not in result.draws:
@@ -31,18 +36,30 @@ def strip(result: Result, pinned: Result | None, published: Mapping[str, float])
         moved = "" if change is None else f"{signed(change)} of pinned error"
         if change is not None and abs(change) < 0.05:
             moved = "as pinned"
+        run = Interval.of(full.draws[name]) if full is not None and name in full.draws else None
         title = _TITLES[name]
         cells.append(
             f'<div class="lf-number" data-name="{name}"><div class="lf-what">{title} '
             f"<span>[{parameter(name).unit}]</span></div>"
             f'<div class="lf-value">{interval}</div>'
-            f"{_bar(interval, name, pinned, published.get(name))}"
-            f'<div class="lf-moved">{moved}</div></div>'
+            f"{_bar(interval, name, pinned, published.get(name), run)}"
+            f'<div class="lf-moved">{moved}</div>{_in_full(run)}</div>'
         )
-    return f'<div class="lf-strip" role="status">{"".join(cells)}</div>'
+    room = " lf-with-run" if full is not None else ""
+    return f'<div class="lf-strip{room}" role="status">{"".join(cells)}</div>'
 
 
-def _bar(interval: Interval, name: str, pinned: Result | None, published: float | None) -> str:
+def _in_full(run: Interval | None) -> str:
+    return "" if run is None else f'<div class="lf-run">in full {run}</div>'
+
+
+def _bar(
+    interval: Interval,
+    name: str,
+    pinned: Result | None,
+    published: float | None,
+    run: Interval | None,
+) -> str:
     base = interval
     if pinned is not None and name in pinned.draws:
         base = Interval.of(pinned.draws[name])
@@ -50,6 +67,8 @@ def _bar(interval: Interval, name: str, pinned: Result | None, published: float 
     ends = [base.mean - _REACH * spread, base.mean + _REACH * spread, interval.low, interval.high]
     if published is not None:
         ends.append(published)
+    if run is not None:
+        ends += [run.low, run.high]
     low, high = min(ends), max(ends)
 
     def x(value: float) -> str:
@@ -69,6 +88,13 @@ def _bar(interval: Interval, name: str, pinned: Result | None, published: float 
         at = x(published)
         parts.append(f'<path class="lf-published" d="M {at} 6 l 3.2 6 h -6.4 Z"/>')
         words += f"; published {published:g}"
+    if run is not None:
+        long = (_BAR - 4.0) * (run.high - run.low) / (high - low)
+        parts.append(
+            f'<rect class="lf-full" x="{x(run.low)}" y="9.6" width="{max(long, 1):.1f}" '
+            'height="1.8"/>'
+        )
+        words += f"; in full {run}"
     words = words.replace("-", MINUS)
     return (
         f'<svg viewBox="0 0 {_BAR} 12" role="img" aria-label="{words}">'
@@ -76,7 +102,12 @@ def _bar(interval: Interval, name: str, pinned: Result | None, published: float 
     )
 
 
-def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, float]) -> str:
+def all_numbers(
+    result: Result,
+    pinned: Result | None,
+    published: Mapping[str, float],
+    full: Result | None = None,
+) -> str:
     """Every parameter and host modulus."""
     rows = []
     for name, draws in result.draws.items():
@@ -92,6 +123,7 @@ def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, f
                 words,
                 value.value,
                 value.error or "fixed",
+                *(_of_run(full, name) if full is not None else ()),
                 "" if change is None else signed(change),
                 rounded(interval.low, interval.sd).value,
                 rounded(interval.high, interval.sd).value,
@@ -99,8 +131,14 @@ def all_numbers(result: Result, pinned: Result | None, published: Mapping[str, f
                 "" if told is None else f"{told:g}",
             )
         )
-    head = ("parameter", "mean", "sd", "change [sd]", "16 %", "84 %", "unit", "published")
+    more = ("in full",) if full is not None else ()
+    head = ("parameter", "mean", "sd", *more, "change [sd]", "16 %", "84 %", "unit", "published")
     return table(head, rows)
+
+
+def _of_run(full: Result, name: str) -> tuple[str]:
+    """A parameter in a long run."""
+    return (str(Interval.of(full.draws[name])) if name in full.draws else "",)
 
 
 def table(head: Sequence[str], rows: Iterable[Sequence[str]]) -> str:

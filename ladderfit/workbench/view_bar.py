@@ -46,6 +46,7 @@ class ViewBar:
         self.columns.observe(self._picked, "value")
         self.table = self._toggle("Table", "The view's numbers as a table", "table", "50px")
         self.numbers = self._toggle("All numbers", "Every parameter", "numbers", "88px")
+        self.board = self._toggle("Pins, runs", "The board of pins and long runs", "board", "84px")
         self.save = widgets.Button(
             description="PNG, PDF",
             tooltip="Save the view beside the notebook",
@@ -90,6 +91,13 @@ class ViewBar:
             self.view = first[0]
         self._mark()
 
+    def prefer(self, view: str) -> None:
+        """Show a view where the open rung offers it."""
+        first, more = offered(self._ladder, self.rung)
+        if view in (*first, *more):
+            self.view = view
+            self._mark()
+
     def _view_button(self, view: View) -> Any:
         button = widgets.ToggleButton(
             description=view.words, tooltip=view.tip, layout=widgets.Layout(width="auto")
@@ -102,7 +110,7 @@ class ViewBar:
         button = widgets.ToggleButton(
             description=words, tooltip=tip, layout=widgets.Layout(width=width)
         )
-        button.observe(lambda change: self._instead(shows, change["new"]), "value")
+        button.observe(lambda change: self._instead(shows, pressed=change["new"]), "value")
         button.layout.order = "20"
         return button
 
@@ -118,7 +126,11 @@ class ViewBar:
         if not self._quiet and change["new"]:
             self.choose(change["new"])
 
-    def _instead(self, shows: str, pressed: bool) -> None:
+    def show_board(self) -> None:
+        """Show the board of pins and runs."""
+        self._instead("board", pressed=True)
+
+    def _instead(self, shows: str, *, pressed: bool) -> None:
         if self._quiet:
             return
         self.shows = shows if pressed else "view"
@@ -139,6 +151,7 @@ class ViewBar:
         self.more.value = self.view if self.view in others and on_show else ""
         self.table.value = self.shows == "table"
         self.numbers.value = self.shows == "numbers"
+        self.board.value = self.shows == "board"
         self.columns.layout.display = "" if self.view == "column" else "none"
         self.save.disabled = not on_show
         self._quiet = False

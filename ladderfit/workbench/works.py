@@ -10,6 +10,7 @@ from ladderfit.ladder import Ladder
 from ladderfit.priors import Fixed
 from ladderfit.redshift_cuts import RedshiftCuts, hubble_along_cuts
 from ladderfit.result import Result
+from ladderfit.schema import written
 from ladderfit.workbench.shown import Tell
 
 CUT_DRAWS = 1000
@@ -49,8 +50,15 @@ def priors_of(ladder: Ladder) -> dict[str, Any]:
 
 
 def distance_priors(result: Result, tell: Tell) -> dict[str, Result]:
-    """The posterior under each distance prior."""
-    return along_distance_priors(result.ladder, priors_of(result.ladder), progress=tell)
+    """The posterior under each distance prior; under the one in force it is that on show."""
+    stars = result.choices.anchors.parallaxes
+    known = priors_of(result.ladder)
+    force = None if stars is None else written(stars.distance_prior)
+    own = next((words for words, value in known.items() if value == force), "")
+    others = {words: value for words, value in known.items() if words != own}
+    found = along_distance_priors(result.ladder, others, progress=tell) if others else {}
+    shown = {own: result, **found} if own else found
+    return {words: shown[words] for words in known if words in shown}
 
 
 def redshift_cuts(result: Result, tell: Tell) -> RedshiftCuts:

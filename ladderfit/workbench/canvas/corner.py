@@ -2,14 +2,19 @@
 
 from __future__ import annotations
 
+from typing import Any
+
+import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from ladderfit.names import parameter
 from ladderfit.plots.corner import joint_panel, marginal_panel, varying
+from ladderfit.plots.density import Density
 from ladderfit.plots.theme import Theme, symbol
 from ladderfit.result import Result
+from ladderfit.rounding import PROBABILITIES
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown
@@ -17,6 +22,8 @@ from ladderfit.workbench.shown import Shown
 CORNER = ("slope", "zero_point", "metallicity", "peak_magnitude", "hubble_constant")
 _OTHERS = ("scatter", "parallax_offset", "velocity_constant", "velocity_scatter", "peak_scatter")
 _LEAST = 3
+_CELLS = 60
+_IN_FULL = "\ndotted: the long run of the same choices"
 _WORDS = "filled: smallest regions with 68 % and 95 % of the probability"
 
 
@@ -51,7 +58,7 @@ class CornerView:
         }
         for (row, column), axes in self._axes.items():
             self._tidy(axes, row, column)
-        figure.text(0.985, 0.95, _WORDS, ha="right", va="top", fontsize=8)
+        self._words = figure.text(0.985, 0.95, _WORDS, ha="right", va="top", fontsize=8)
 
     def fits(self, shown: Shown) -> bool:
         """Whether the same parameters vary."""
@@ -59,7 +66,8 @@ class CornerView:
 
     def update(self, shown: Shown) -> None:
         """Show a posterior."""
-        result = shown.result
+        result, full = shown.result, shown.full
+        self._words.set_text(_WORDS + (_IN_FULL if full is not None else ""))
         for (row, column), axes in self._axes.items():
             for artist in [*axes.lines, *axes.collections]:
                 artist.remove()
@@ -68,6 +76,28 @@ class CornerView:
                 axes.set_title("")
             else:
                 joint_panel(result, self.names[column], self.names[row], axes, theme=self.theme)
+            if full is not None:
+                self._outline(full, self.names[column], self.names[row], axes)
+
+    def _outline(self, full: Result, across: str, up: str, axes: Axes) -> None:
+        """A long run's density or regions as dotted lines, within the limits that there are."""
+        if not {across, up} <= set(varying(full)):
+            return
+        style: dict[str, Any] = {"linestyles": ":", "linewidths": 1.1}
+        x = np.linspace(*axes.get_xlim(), _CELLS)
+        if across == up:
+            draws = full.draws[across][None, :]
+            height = Density.of(draws, (-np.inf,)).at(x[None, :])
+            live = np.asarray(axes.lines[0].get_xydata())  # drawn to the same area
+            height *= np.trapezoid(live[:, 1], live[:, 0]) / np.trapezoid(height, x)
+            axes.plot(x, height, color=self.theme.ink, linestyle=":", linewidth=1.1)
+            return
+        draws = np.stack([full.draws[across], full.draws[up]])
+        density = Density.of(draws, (-np.inf, -np.inf))
+        y = np.linspace(*axes.get_ylim(), _CELLS)
+        levels = sorted(density.level(draws, chance) for chance in PROBABILITIES)
+        height = density.at(np.stack(np.meshgrid(x, y)))
+        axes.contour(x, y, height, levels=levels, colors=[self.theme.ink], zorder=3.5, **style)
 
     def _tidy(self, axes: Axes, row: int, column: int) -> None:
         across, up = self.names[column], self.names[row]
