@@ -33,7 +33,7 @@ ORDER = """
     kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.families posterior.parallaxes
-    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices
+    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices posterior.deviations
     posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
@@ -42,6 +42,7 @@ ORDER = """
     sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
     sampling.progress sampling.launch sampling.live
     sampling
+    checks completeness
     peak_predictions residuals running peak_views outliers
     report.cells report.machine report.latex_text report.latex report.parameters report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
@@ -65,7 +66,7 @@ ORDER = """
     mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage
     plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
-    plots.hubble plots.peaks plots.cuts plots.alternatives plots.review plots.anchors
+    plots.hubble plots.peaks plots.cuts plots.checks plots.alternatives plots.review plots.anchors
     plots.influence plots.priors plots
     alternatives_folder calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside

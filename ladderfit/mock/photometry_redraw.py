@@ -15,7 +15,7 @@ import numpy as np
 from astropy.table import MaskedColumn
 
 from ladderfit.choices import Magnitude
-from ladderfit.errors import Problem
+from ladderfit.errors import InputError, Problem
 from ladderfit.ladder import Ladder
 from ladderfit.mock.contamination import off_relation
 from ladderfit.mock.tables import digits_column, text_column
@@ -24,6 +24,7 @@ from ladderfit.samples import BoolArray, FloatArray, StarSample
 
 Rng = np.random.Generator
 SEEN = "seen"  # the column in which limits act
+_ROUNDS = 3000  # of drawing again what is not seen
 _BANDS = ("blue", "red", "band")
 
 
@@ -235,7 +236,7 @@ def _found(
     light = shine_again(ladder, stars, mean, truth, rng)
     measured = {name: values.copy() for name, values in light.measured.items()}
     lost = np.ones(len(stars), bool)
-    while True:
+    for _ in range(_ROUNDS):
         seen = measured[place] + difference
         lost &= seen + softness * rng.normal(size=len(stars)) > limit
         if not lost.any():
@@ -243,3 +244,11 @@ def _found(
         again = shine_again(ladder, stars, mean, truth, rng)
         for name, values in again.measured.items():
             measured[name][lost] = values[lost]
+    raise InputError(
+        Problem(
+            found=f"{int(lost.sum())} stars that the limits would hardly ever let in",
+            expected="limits and a truth under which each star may be seen",
+            remedy="cut those stars, or correct the limits",
+            key="cepheids.completeness",
+        )
+    )
