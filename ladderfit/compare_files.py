@@ -121,11 +121,9 @@ def _shift_rows(found: ResultComparison, place: int) -> list[tuple[str, ...]]:
 
 def _ratio(row: Any) -> str:
     """A shift in its errors, unless both are Monte Carlo noise."""
-    if not math.isfinite(row["ratio"]):
-        return ""
     if row["error"] < row["mcse"]:
         return "less than the Monte Carlo error"
-    return to_place(row["ratio"], -1)
+    return to_place(row["ratio"], -1) if math.isfinite(row["ratio"]) else ""
 
 
 def _rounded(value: float, error: float) -> str:
