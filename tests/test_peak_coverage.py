@@ -6,10 +6,12 @@ from dataclasses import replace
 from typing import Any
 
 import numpy as np
+import pandas as pd
 import pytest
 
 import ladderfit as lf
 from ladderfit.ladder import Ladder
+from ladderfit.mock import mock_from_ladder, plain_truth
 from ladderfit.mock.light_curves import LightCurves, Population
 from ladderfit.mock.peaks import flow_supernovae, host_supernovae
 from ladderfit.mock.plan import Host, Plan
@@ -120,3 +122,46 @@ def test_a_selection_that_depends_on_colour_biases_beta(in_full: bool) -> None:
         result = draw(ladder.change({"expansion.set_aside": aside}), draws=DRAWS)
         found.append((result.mean("beta") - truth["beta"]) / result.sd("beta"))
     assert np.mean(found) < -1.0, np.mean(found)
+
+
+def rates(seed: int) -> tuple[Ladder, dict[str, float]]:
+    """Decline rates instead of widths, with a square; drawn again from populations."""
+    rng, n, hosts = np.random.default_rng([SEED, seed]), 200, 12
+    table = pd.DataFrame({"SN": [f"F{i}" for i in range(n)], "zcmb": rng.uniform(0.025, 0.14, n)})
+    table["e_mB"], table["e_d"] = rng.uniform(0.04, 0.1, n), rng.uniform(0.03, 0.1, n)
+    table["e_c"] = rng.uniform(0.02, 0.05, n)
+    table = table.assign(mB=20.0, d=1.1, c=0.0, mc=0.5 * table["e_mB"] * table["e_c"])
+    near = table[:hosts].assign(Galaxy=[f"Isle{i:02d}" for i in range(hosts)])
+    columns = {"name": "SN", "peak": "mB", "peak_error": "e_mB", "colour": "c"}
+    columns |= {"decline_rate": "d", "decline_rate_error": "e_d", "colour_error": "e_c"}
+    columns |= {"peak_colour_covariance": "mc"}
+    choices: dict[str, Any] = {
+        "anchors": {
+            "geometric": {
+                name: {"modulus": 30.0 + 0.1 * i, "error": ANCHOR_ERROR}
+                for i, name in enumerate(near["Galaxy"])
+            }
+        },
+        "supernovae": {"columns": columns | {"host": "Galaxy"}},
+        "expansion": {"columns": columns | {"redshift": "zcmb"}},
+        "peak_relation": {"decline_rate": {"quadratic": True}, "colour": {}},
+    }
+    ladder = lf.build_ladder(choices, {"supernovae": near, "expansion": table})
+    truth = plain_truth(ladder) | {"decline_curvature": 0.6, "beta": 3.1, "peak_scatter": 0.1}
+    truth |= {f"decline_rate_spread[{g}]": 0.17 for g in ("hosts", "expansion")}
+    truth |= {f"colour_spread[{g}]": 0.09 for g in ("hosts", "expansion")}
+    return mock_from_ladder(ladder, truth, rng), truth
+
+
+@pytest.mark.full
+def test_a_square_in_the_decline_rate_is_recovered(in_full: bool) -> None:
+    names = ("decline_slope", "decline_curvature", "beta")
+    found: dict[str, list[list[float]]] = {"population": [], "ignored": []}
+    for seed in range(100 if in_full else 8):
+        ladder, truth = rates(seed)
+        for errors, pulls_of in found.items():
+            result = draw(ladder.change({"peak_relation.errors": errors}), draws=DRAWS)
+            pulls_of.append([(result.mean(n) - truth[n]) / result.sd(n) for n in names])
+    mean = {errors: np.mean(each, axis=0) for errors, each in found.items()}
+    assert np.all(np.abs(mean["population"]) < (0.3 if in_full else 1.1)), mean["population"]
+    assert np.all(mean["ignored"][[0, 2]] < -1.2)  # negative control
