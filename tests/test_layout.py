@@ -30,7 +30,7 @@ ORDER = """
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels.wide
     kernels.downdate
-    kernels.robust kernels.robust_draw kernels
+    kernels.robust_rows kernels.robust_nodes kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.families posterior.parallaxes
     posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices posterior.deviations

@@ -63,6 +63,11 @@ class Case:
             chosen,
         )
         law = [self.scatter**2, self.fraction, self.width**2, self.offset, self.freedom]
+        if self.law == "mixture":
+            law.append(-0.5 * np.log(2.0 * np.pi))
+        else:
+            norm = t.logpdf(0.0, self.freedom)
+            law.append(norm)
         whole = np.ones((draws, 1))
         shape = np.tile(np.array(law), (draws, 1, 1))
         return (

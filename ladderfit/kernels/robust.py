@@ -23,155 +23,42 @@ geometrically for smooth integrands that vanish at both ends, takes it:
 from __future__ import annotations
 
 import math
-from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled
+from ladderfit.kernels.robust_nodes import WORK_ROWS, regular_nodes
+from ladderfit.kernels.robust_rows import (
+    CANDIDATES,
+    IN,
+    KIND,
+    MIXTURE,
+    PLACE,
+    PREPARED,
+    STUDENT,
+    HostStars,
+    log_rows,
+    prepare,
+    pull,
+)
+
+__all__ = ["CANDIDATES", "MIXTURE", "STUDENT", "HostStars", "integrate_hosts"]
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 LOG_2PI = math.log(2.0 * math.pi)
 
-MIXTURE, STUDENT = 0, 1
-CANDIDATES = 9  # rows of a host that are tried as places of a maximum
-
 _FLOOR = 18.0  # the march ends where the log integrand is this far below its peak
 _COUNTS = 25.0  # a maximum this far below the highest is left out
 _STEP = 1.0  # widths of the narrowest maximum, between nodes
 _ONE_ROW = 0.35  # the same in widths of the sharpest row: its complex poles lie near by
-_SETTLED = 0.15  # widths: the climb ends at a step shorter than this
+_SETTLED = 0.3  # widths: the climb ends at a step shorter than this
 _CLIMB = 40
 MOST_NODES = 20_000  # nodes to each side
-_LARGE, _TINY = 1e200, 1e-200
-_FAR = 40.0  # log ratio beyond which the second part is all
-
-# columns of a prepared row
-_A, _IN, _OUT, _SHIFT, _REST, _RHO, _KIND = 0, 1, 2, 3, 4, 5, 6
-PREPARED = 7
-
-
-class HostStars(NamedTuple):
-    """Rows of hosts whose deviations are not normal, sorted by host.
-
-    Attributes
-    ----------
-    y, variance : array, shape (n,)
-    columns : array, shape (n, k)
-    sensitivity : array, shape (q, n, k)
-        Times the coefficients: what is added in quadrature to a row's deviation.
-    family : array of int, shape (n,)
-        Which law each row has.
-    kinds : array of int, shape (families,)
-        `MIXTURE` or `STUDENT`.
-    starts : array of int, shape (h + 1,)
-    chosen : array of int, shape (h, CANDIDATES)
-        Rows of each host whose places are tried as maxima; -1 where there are fewer.
-    """
-
-    y: FloatArray
-    variance: FloatArray
-    columns: FloatArray
-    sensitivity: FloatArray
-    family: IntArray
-    kinds: IntArray
-    starts: IntArray
-    chosen: IntArray
-
-
-@compiled
-def prepare(
-    stars: HostStars,
-    shape: FloatArray,
-    coefficients: FloatArray,
-    start: int,
-    stop: int,
-    out: FloatArray,
-) -> float:
-    """Bring rows start to stop to the form of one draw; returns the log of their norms.
-
-    `shape` holds for every family: squared scatter, fraction, squared width, shift,
-    degrees of freedom.
-    """
-    total = 0.0
-    for place in range(start, stop):
-        here, j = place - start, stars.family[place]
-        a = stars.y[place]
-        for k in range(coefficients.shape[0]):
-            a -= stars.columns[place, k] * coefficients[k]
-        v = stars.variance[place] + shape[j, 0]
-        for q in range(stars.sensitivity.shape[0]):
-            slope = 0.0
-            for k in range(coefficients.shape[0]):
-                slope += stars.sensitivity[q, place, k] * coefficients[k]
-            v += slope * slope
-        out[here, _A] = a
-        out[here, _KIND] = stars.kinds[j]
-        if stars.kinds[j] == MIXTURE:
-            wide = v + shape[j, 2]
-            out[here, _IN] = 0.5 / v
-            out[here, _OUT] = 0.5 / wide
-            out[here, _SHIFT] = shape[j, 3]
-            out[here, _REST] = 1.0 - shape[j, 1]
-            out[here, _RHO] = shape[j, 1] * math.sqrt(v / wide)
-            total -= 0.5 * (math.log(v) + LOG_2PI)
-        else:
-            nu = shape[j, 4]
-            out[here, _IN] = 1.0 / (nu * v)
-            out[here, _OUT] = 0.5 * (nu + 1.0)
-            total += math.lgamma(0.5 * (nu + 1.0)) - math.lgamma(0.5 * nu)
-            total -= 0.5 * math.log(math.pi * nu * v)
-    return total
-
-
-@compiled
-def log_rows(u: float, rows: FloatArray, n: int) -> float:
-    """Log density of prepared rows at a local u, without their norms."""
-    total, product = 0.0, 1.0
-    for i in range(n):
-        r = rows[i, _A] - u
-        inner = r * r * rows[i, _IN]
-        if rows[i, _KIND] == MIXTURE:
-            d = r - rows[i, _SHIFT]
-            ratio = inner - d * d * rows[i, _OUT]
-            total -= inner
-            if ratio > _FAR and rows[i, _RHO] > 0.0:
-                total += ratio + math.log(rows[i, _RHO])
-            else:
-                product *= rows[i, _REST] + rows[i, _RHO] * math.exp(ratio)
-        else:
-            total -= rows[i, _OUT] * math.log1p(inner)
-        if product > _LARGE or product < _TINY:
-            total += math.log(product)
-            product = 1.0
-    return total + math.log(product)
-
-
-@compiled
-def _pull(u: float, rows: FloatArray, n: int) -> tuple[float, float]:
-    """Sum of weight times place, and of weights, of the rows at u."""
-    linear, weight = 0.0, 0.0
-    for i in range(n):
-        a = rows[i, _A]
-        r = a - u
-        inner = r * r * rows[i, _IN]
-        if rows[i, _KIND] == MIXTURE:
-            d = r - rows[i, _SHIFT]
-            ratio = inner - d * d * rows[i, _OUT]
-            chance = 0.0
-            if rows[i, _RHO] > 0.0:
-                against = rows[i, _REST] / rows[i, _RHO]
-                chance = 1.0 / (1.0 + against * math.exp(-min(ratio, 700.0)))
-            close, wide = 2.0 * (1.0 - chance) * rows[i, _IN], 2.0 * chance * rows[i, _OUT]
-            linear += close * a + wide * (a - rows[i, _SHIFT])
-            weight += close + wide
-        else:
-            close = 2.0 * rows[i, _OUT] * rows[i, _IN] / (1.0 + inner)
-            linear += close * a
-            weight += close
-    return linear, weight
+MANY = 12  # rows from which nodes about one maximum are taken all at once
+_REGULAR = 7  # of these, to each side
 
 
 @compiled
@@ -185,7 +72,7 @@ def _climb(u: float, rows: FloatArray, n: int, A: float, B: float) -> tuple[floa
     """The maximum above u, and the precision there of rows with their weights."""
     precision = 0.0
     for _ in range(_CLIMB):
-        linear, weight = _pull(u, rows, n)
+        linear, weight = pull(u, rows, n)
         precision = A + weight
         step = (B + linear) / precision - u
         u += step
@@ -205,7 +92,7 @@ def _candidates(
         count = 1
     for place in chosen:
         if place >= 0:
-            places[count] = rows[place, _A]
+            places[count] = rows[place, PLACE]
             count += 1
     for i in range(1, count):  # insertion sort
         value, j = places[i], i - 1
@@ -234,11 +121,14 @@ def _maxima(
     for i in range(count):
         if (i > 0 and values[i] < values[i - 1]) or (i + 1 < count and values[i] < values[i + 1]):
             continue
-        u, precision = _climb(places[i], rows, n, A, B)
-        height = log_local(u, rows, n, A, B)
-        tops[found], heights[found], steps[found] = u, height, _STEP / math.sqrt(precision)
-        best = max(best, height)
+        tops[found], precision = _climb(places[i], rows, n, A, B)
+        steps[found] = _STEP / math.sqrt(precision)
         found += 1
+    if found == 1:
+        return tops[0], tops[0], min(_ONE_ROW * _sharpest(rows, n), steps[0])
+    for i in range(found):
+        heights[i] = log_local(tops[i], rows, n, A, B)
+        best = max(best, heights[i])
     low, high, step = np.inf, -np.inf, _ONE_ROW * _sharpest(rows, n)
     for i in range(found):
         if heights[i] > best - _COUNTS:
@@ -251,9 +141,30 @@ def _sharpest(rows: FloatArray, n: int) -> float:
     """Width of the narrowest row."""
     most = 0.0
     for i in range(n):
-        scale = 2.0 if rows[i, _KIND] == MIXTURE else 1.0
-        most = max(most, scale * rows[i, _IN])
+        scale = 2.0 if rows[i, KIND] == MIXTURE else 1.0
+        most = max(most, scale * rows[i, IN])
     return 1.0 / math.sqrt(most)
+
+
+@compiled
+def _about(
+    rows: FloatArray,
+    n: int,
+    A: float,
+    B: float,
+    u: float,
+    step: float,
+    work: FloatArray,
+    nodes: FloatArray,
+) -> bool:
+    """Fill the nodes about one maximum; whether the integrand has died away at both ends."""
+    here = nodes[MOST_NODES - _REGULAR : MOST_NODES + _REGULAR + 1]
+    regular_nodes(rows, n, u, step, _REGULAR, work[5:], here)
+    for j in range(len(here)):
+        place = u + (j - _REGULAR) * step
+        here[j] += B * place - 0.5 * A * place * place
+    ends = max(here[0], here[-1])
+    return bool(ends < here.max() - _FLOOR)
 
 
 @compiled
@@ -269,8 +180,9 @@ def march(
     """Log integrand at nodes origin + j step: fills nodes[first:stop], j = 0 at MOST_NODES."""
     low, high, step = _maxima(rows, n, chosen, A, B, work)
     step = max(step, (high - low) / (0.5 * MOST_NODES))
-    top = -np.inf
-    stop = MOST_NODES
+    if n >= MANY and low == high and _about(rows, n, A, B, low, step, work, nodes):
+        return low, step, MOST_NODES - _REGULAR, MOST_NODES + _REGULAR + 1
+    top, stop = -np.inf, MOST_NODES
     while stop < 2 * MOST_NODES:
         u = low + (stop - MOST_NODES) * step
         value = log_local(u, rows, n, A, B)
@@ -302,6 +214,12 @@ def _log_sum(nodes: FloatArray, first: int, stop: int) -> float:
 
 
 @compiled
+def workspace(longest: int) -> FloatArray:
+    """Room for `march`, for hosts of at most so many rows."""
+    return np.empty((5 + WORK_ROWS, max(longest, CANDIDATES + 1)))
+
+
+@compiled
 def integrate_hosts(
     stars: HostStars,
     shape: FloatArray,
@@ -312,7 +230,7 @@ def integrate_hosts(
 ) -> None:
     """Add to `out` the log of every draw's integrals over all hosts' locals.
 
-    Shapes: `shape` (b, families, 5), `coefficients` (b, k), `local` and `linear` (b, h),
+    Shapes: `shape` (b, families, 6), `coefficients` (b, k), `local` and `linear` (b, h),
     `out` (b,).
     """
     hosts = len(stars.starts) - 1
@@ -320,7 +238,7 @@ def integrate_hosts(
     for h in range(hosts):
         longest = max(longest, stars.starts[h + 1] - stars.starts[h])
     rows = np.empty((longest, PREPARED))
-    nodes, work = np.empty(2 * MOST_NODES), np.empty((5, CANDIDATES + 1))
+    nodes, work = np.empty(2 * MOST_NODES), workspace(longest)
     for b in range(len(out)):
         for h in range(hosts):
             A, B = local[b, h], linear[b, h]

@@ -14,15 +14,8 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled
-from ladderfit.kernels.robust import (
-    CANDIDATES,
-    MOST_NODES,
-    PREPARED,
-    HostStars,
-    log_local,
-    march,
-    prepare,
-)
+from ladderfit.kernels.robust import MOST_NODES, log_local, march, workspace
+from ladderfit.kernels.robust_rows import PREPARED, HostStars, prepare
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -140,7 +133,7 @@ def draw_hosts(
     for h in range(hosts):
         longest = max(longest, stars.starts[h + 1] - stars.starts[h])
     rows = np.empty((longest, PREPARED))
-    nodes, work = np.empty(2 * MOST_NODES), np.empty((5, CANDIDATES + 1))
+    nodes, work = np.empty(2 * MOST_NODES), workspace(longest)
     fine, area = np.empty(2 * MOST_NODES * _FINE + 1), np.empty(2 * MOST_NODES * _FINE + 1)
     state = np.empty(1, np.uint64)
     for b in range(len(out)):

@@ -11,6 +11,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
+from scipy.special import gammaln
 
 from ladderfit.choices.outliers import MIXTURE
 from ladderfit.kernels import robust
@@ -22,6 +23,8 @@ from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.families import Family, families, outliers_of
 from ladderfit.posterior.frame import Frame, star_columns
 from ladderfit.samples import FloatArray, IntArray, StarSample
+
+_OF_MANY = 5  # places of a maximum that are tried where a host has many stars
 
 
 @dataclass(frozen=True, eq=False)
@@ -62,16 +65,19 @@ class RobustHosts:
         return coefficients, local
 
     def shape(self, values: Values) -> FloatArray:
-        """Scatter squared, fraction, width squared, offset and freedom, shape (b, families, 5)."""
+        """What the kernels want to know of every law, shape (b, families, 6)."""
         parts = []
         for family in self.families:
             t2 = values(family.scatter) ** 2
             nothing = np.zeros(len(t2))
             if family.treatment == MIXTURE:
-                width2 = values(family.width) ** 2
-                own = (values(family.fraction), width2, values(family.offset), nothing)
+                fraction, width2 = values(family.fraction), values(family.width) ** 2
+                norm = nothing - 0.5 * robust.LOG_2PI
+                own = (fraction, width2, values(family.offset), nothing, norm)
             else:
-                own = (nothing, nothing, nothing, values(family.freedom))
+                freedom = values(family.freedom)
+                norm = gammaln(0.5 * freedom + 0.5) - gammaln(0.5 * freedom)
+                own = (nothing, nothing, nothing, freedom, norm - 0.5 * np.log(np.pi * freedom))
             parts.append(np.stack([t2, *own], axis=1))
         return np.ascontiguousarray(np.stack(parts, axis=1))
 
@@ -140,6 +146,9 @@ def _chosen(whole: FloatArray, starts: IntArray) -> IntArray:
         stop = starts[host + 1]
         n = stop - start
         order = start + np.argsort(residual[start:stop])
-        count = min(n, robust.CANDIDATES)
-        chosen[host, :count] = order[np.linspace(0, n - 1, count).round().astype(int)] - start
+        few = min(n, robust.CANDIDATES)
+        many = n >= robust.MANY
+        spread = np.linspace(0.1, 0.9, _OF_MANY) if many else np.linspace(0.0, 1.0, few)
+        places = np.round(spread * (n - 1)).astype(int)
+        chosen[host, : len(places)] = order[places] - start
     return chosen
