@@ -8,14 +8,15 @@ import numpy as np
 import pandas as pd
 import pytest
 from review_papers import CEPHEIDS, table
+from test_published_small import FREEDMAN
 
 import ladderfit as lf
 from ladderfit.ladder import Ladder
 from ladderfit.review import VERDICTS, ClaimReview, claims_from, review
 from ladderfit.review import verdicts as v
+from ladderfit.review.words import fewest
 
-PERIOD = {"star": "ID", "host": "Galaxy", "period": "P"}
-ONE_BAND = {"band": "W", "bands": {"W": "W"}, "errors": {"W": "e_W"}}
+SLOPE = {"quantity": "slope", "value": -3.3}
 
 
 @pytest.fixture(scope="module")
@@ -220,6 +221,21 @@ def test_cannot_be_judged(ladder: Ladder, claim: dict[str, Any], words: str) -> 
     assert found.names == (v.CANNOT_BE_JUDGED,)
     assert words in found.verdicts[0].evidence
     assert found.refits == ()
+
+
+def test_a_number_that_the_joint_fit_alone_knows() -> None:
+    """Velocities against distances, Freedman et al. 2001: 76.6 +- 4.0 km/s/Mpc (read)."""
+    claim = {"quantity": "hubble_constant", "value": 76.6, "error": 4.0}
+    found = reviewed(FREEDMAN.ladder(), claim, claim | {"value": 96.6}, SLOPE)
+    assert [each.verdict for each in found] == [
+        v.AS_DESCRIBED,
+        v.NOT_REPRODUCED,
+        v.CANNOT_BE_JUDGED,
+    ]
+    assert [refit.words for refit in found[0].refits] == ["hierarchical fit"]
+    assert found[0].variations == ()
+    assert "no Cepheids" in found[2].verdicts[0].evidence
+    assert "single choices were not tried" in fewest(found[0])
 
 
 def test_systems(stars: pd.DataFrame, line: Any) -> None:

@@ -22,6 +22,8 @@ from ladderfit.review.system import HUBBLE, STARS, System, linear_system, object
 from ladderfit.samples import BoolArray, StarSample
 from ladderfit.sampling.run import draw
 
+_THIRD_RUNG = ("peak_magnitude", "hubble_constant")
+
 
 class Bench:
     """A ladder opened for review: no period cut, both modes at hand.
@@ -158,6 +160,8 @@ class Bench:
 
     def estimate(self, chosen: Selection, treatment: Treatment, claim: Claim) -> Estimate | None:
         """The number that a claim is about; None where the rows do not determine it."""
+        if not len(self.system(chosen).y):
+            return None
         found = self.fit(chosen, treatment)
         return self.resampling.estimate(found, self.wanted(claim, chosen))
 
@@ -240,6 +244,12 @@ class Bench:
             taken &= np.isin(self.system(chosen).row[:count], left)
         return ladder, taken
 
+    @property
+    def _scaled(self) -> bool:
+        """Whether something sets the absolute scale, or none is needed."""
+        anchored = bool(self.opened.geometric) or self.opened.parallax_stars is not None
+        return anchored or self.stars is None
+
     def joint_estimate(
         self, chosen: Selection, clip: float | None, claim: Claim
     ) -> Estimate | None:
@@ -252,7 +262,7 @@ class Bench:
         """
         treatment = Treatment("errors and scatter", clip)
         near = self.estimate(chosen, treatment, claim)
-        if claim.quantity == "zero_point" and not claim.apparent and near is None:
+        if near is None and (claim.quantity not in _THIRD_RUNG or not self._scaled):
             return None
         alone = bool(chosen.hosts) and claim.quantity in OF_THE_RELATION
         result = self.joint(chosen, clip, alone=alone)

@@ -57,8 +57,9 @@ def error_check(claim: Claim, found: list[Refit]) -> Check | None:
     low, high = min(possible), max(possible)
     half = claim.error_half_unit
     stated = fixed_point(claim.error, claim.error_decimals)
+    whose = f"{found[0].stars:,} stars allow" if found[0].stars else "the table allows"
     text = (
-        f"{found[0].stars:,} stars allow errors of {_short(low)} to {_short(high)} {claim.unit} "
+        f"{whose} errors of {_short(low)} to {_short(high)} {claim.unit} "
         f"(formulas and resampling of all refits); stated is {stated}"
     )
     if claim.error + half < _TOO_SMALL * low:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from ladderfit.choices import Magnitude, Wesenheit
 from ladderfit.ladder import Ladder
 from ladderfit.review.bench import Bench
-from ladderfit.review.claims import WORDS, Claim
+from ladderfit.review.claims import OF_THE_RELATION, WORDS, Claim
 
 _MORE = 1.1  # times the stars of the table: a paper with more had another table
 
@@ -86,6 +86,8 @@ def beyond_the_table(bench: Bench, claim: Claim) -> str | None:
     """Why the table cannot tell the number claimed; None where nothing speaks against it."""
     ladder, stars = bench.opened, bench.stars
     choices = ladder.choices
+    if claim.quantity in OF_THE_RELATION and stars is None and ladder.parallax_stars is None:
+        return "the ladder file has no Cepheids"
     if claim.quantity in claim.method.fixed:
         return f"the paper holds the {WORDS[claim.quantity]} fixed; no star speaks on it"
     unknown = [host for host in claim.method.hosts if host not in ladder.hosts]

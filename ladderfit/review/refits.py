@@ -16,6 +16,7 @@ from ladderfit.review.system import STARS
 
 CLIPS = (2.5, 3.0)
 JOINT = "hierarchical"
+JOINT_WEIGHTS = "errors and scatter"  # of the least squares nearest to the joint fit
 _LEVEL = 2.576  # two-sided 1 % of a normal distribution
 _LEAST, _MOST = 0.25, 1.0  # bounds of the tolerance, in spreads of the value
 _NEAR = 0.25  # of a spread: how near another explanation has to come
@@ -110,7 +111,7 @@ def way_described(bench: Bench, claim: Claim) -> Way:
     method = claim.method
     selection = bench.described(method)
     if method.fit == JOINT:
-        return Way(selection, Treatment("errors and scatter", method.clip), joint=True)
+        return Way(selection, Treatment(JOINT_WEIGHTS, method.clip), joint=True)
     if method.fit == "both errors":
         weights = method.weights or "errors and scatter"
         return Way(selection, Treatment(weights, method.clip, period_errors=True))
@@ -133,7 +134,7 @@ def other_ways(bench: Bench, described: Way) -> list[Way]:
         treatments.append(Treatment("errors and scatter", None, period_errors=True))
     ways = [Way(described.selection, treatment) for treatment in treatments]
     if bench.draws:
-        ways.append(Way(described.selection, Treatment("errors and scatter"), joint=True))
+        ways.append(Way(described.selection, Treatment(JOINT_WEIGHTS), joint=True))
     return [way for way in ways if way != described]
 
 
@@ -141,7 +142,8 @@ def held_against(claim: Claim, way: Way, made: Estimate, base: Estimate | None) 
     """One refit with its difference from the claim."""
     difference = claim.value - made.value
     paired = 0.0
-    if base is not None and base is not made and len(base.deviations) == len(made.deviations):
+    paired_with = base is not None and base is not made and len(made.deviations) > 0
+    if base is not None and paired_with and len(base.deviations) == len(made.deviations):
         paired = float(np.std(made.deviations - base.deviations))
     return Refit(
         words=way.words,
@@ -205,7 +207,7 @@ def tolerance(claim: Claim, found: list[Refit]) -> float:
     """
     spread = found[0].spread
     others = [refit.paired for refit in found[1:]]
-    typical = _LEVEL * float(np.median(others)) if others else 0.0
+    typical = _LEVEL * float(np.median(others)) if others else _MOST * spread
     return claim.half_unit + float(np.clip(typical, _LEAST * spread, _MOST * spread))
 
 

@@ -106,7 +106,7 @@ class _Block:
 
 
 def linear_system(ladder: Ladder) -> System:
-    """All rows of a ladder; dense covariances of supernovae have none here, which a note says."""
+    """All rows of a ladder; some supernovae have none here, which a note says."""
     blocks: list[_Block] = []
     notes: list[str] = []
     if ladder.cepheids is not None:
@@ -115,10 +115,14 @@ def linear_system(ladder: Ladder) -> System:
         blocks += _parallaxes(ladder, ladder.parallax_stars, notes)
     if ladder.geometric:
         blocks.append(_anchors(ladder))
-    if ladder.peak_covariance is not None:
-        notes.append("correlated supernovae: the third rung is refitted by the joint fit alone")
+    if ladder.peak_covariance is not None or ladder.choices.peak_relation.roles:
+        kind = "correlated" if ladder.peak_covariance is not None else "not standardised"
+        notes.append(f"The supernovae are {kind}: they are refitted by the joint fit alone.")
     else:
         blocks += _supernovae(ladder)
+    if not blocks:
+        notes.append("The table has no row of the linear system: the joint fit alone is made.")
+        blocks.append(_Block({}, np.zeros(0), np.zeros(0), GIVEN, np.zeros(0, "U1"), _nobody(0)))
     names = tuple(dict.fromkeys(name for block in blocks for name in block.columns))
     moduli = tuple(name for name in names if base_name(name) == "modulus")
     names = moduli + tuple(name for name in names if name not in moduli)
@@ -139,8 +143,10 @@ def linear_system(ladder: Ladder) -> System:
 
 
 def _filled(block: _Block, names: tuple[str, ...]) -> FloatArray:
-    nothing = np.zeros(len(block.y))
-    return np.stack([block.columns.get(name, nothing) for name in names], axis=1)
+    filled = np.zeros((len(block.y), len(names)))
+    for name, column in block.columns.items():
+        filled[:, names.index(name)] = column
+    return filled
 
 
 def _or_else(values: FloatArray | None, block: _Block, other: float) -> FloatArray:
@@ -211,7 +217,7 @@ def _parallaxes(ladder: Ladder, stars: StarSample, notes: list[str]) -> list[_Bl
     if not good.all():
         notes.append(
             f"{int(np.sum(~good)):,} parallaxes below {LEAST_SIGNAL:g} errors are left to the "
-            "joint fit"
+            "joint fit."
         )
     columns = {
         name: column[good] for name, column in design(ladder.choices, stars, ladder.hosts).items()

@@ -167,7 +167,8 @@ def _reproduced(claim: Claim, refit: Refit) -> str:
 def _value(claim: Claim, refit: Refit) -> str:
     places = 6 if claim.decimals is None else max(claim.decimals, 0) + 1
     value, error = fixed_point(refit.value, places), fixed_point(refit.error, places)
-    return f"{value} ± {error} {claim.unit} from {refit.stars:,} stars"
+    stars = f" from {refit.stars:,} stars" if refit.stars else ""
+    return f"{value} ± {error} {claim.unit}{stars}"
 
 
 def _nearness(claim: Claim, refit: Refit) -> str:
@@ -178,7 +179,8 @@ def _nearness(claim: Claim, refit: Refit) -> str:
 
 
 def _off(claim: Claim, refit: Refit) -> str:
-    text = f"off by {abs(refit.difference):.2g} {claim.unit}"
+    places = 6 if claim.decimals is None else max(claim.decimals, 0)
+    text = f"off by {fixed_point(abs(refit.difference), places)} {claim.unit}"
     if claim.error is not None:
         text += f", {abs(refit.difference) / claim.error:.1f} of its errors"
     if refit.spread > 0.0:

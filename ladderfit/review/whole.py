@@ -17,8 +17,17 @@ from ladderfit.review.checks import (
     rounding_check,
 )
 from ladderfit.review.claims import OF_THE_RELATION, Claim, Claims
+from ladderfit.review.fits import Treatment
 from ladderfit.review.judged import beyond_the_table, refusal, undetermined
-from ladderfit.review.refits import Refit, Way, moved, refits, tolerance, way_described
+from ladderfit.review.refits import (
+    JOINT_WEIGHTS,
+    Refit,
+    Way,
+    moved,
+    refits,
+    tolerance,
+    way_described,
+)
 from ladderfit.review.reliance import smallest_set, variations
 from ladderfit.review.unstated import Explanation, explanation
 from ladderfit.review.verdicts import (
@@ -152,6 +161,9 @@ def _opened(bench: Bench, claims: Claims, claim: Claim) -> _Open | ClaimReview:
         way = way_described(bench, claim)
         failed: list[str] = []
         made = refits(bench, judged, way, failed)
+        if not made and bench.draws and not way.joint:
+            way = Way(way.selection, Treatment(JOINT_WEIGHTS, way.treatment.clip), joint=True)
+            made = refits(bench, judged, way, failed)
     except InputError as error:
         return cannot("; ".join(problem.found for problem in error.problems))
     except LadderfitError as error:

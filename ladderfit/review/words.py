@@ -187,6 +187,8 @@ def fewest(found: ClaimReview) -> str:
     """How few stars carry the value, in one sentence."""
     step = "one of its errors" if found.judged.error is not None else "one spread"
     least = found.smallest
+    if not found.variations:
+        return "This number is known to the joint fit alone; single choices were not tried."
     if least is None:
         return f"No half of the stars, taken out by influence, moves the value by {step}."
     names = ", ".join(least.stars[:_NAMED])
