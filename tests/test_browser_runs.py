@@ -23,7 +23,7 @@ from ladderfit.sampling.live import open_run
 pytest_plugins = ("lab_fixtures",)
 
 ENTRIES = ".lf-scroll select[size]"
-GOAL = "[title='Effective draws of the worst parameter'] input"
+GOAL = "input[title='Effective draws of the worst parameter']"
 
 pytestmark = [
     pytest.mark.browser,
