@@ -72,12 +72,12 @@ ORDER = """
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.pins workbench.keeping workbench.long_runs
-    workbench.tables workbench.comparing workbench.view_tables
+    workbench.tables workbench.comparing workbench.view_tables workbench.trial_tables
     workbench.axis workbench.pulse workbench.range workbench.controls workbench.selection_controls
     workbench.parallax_controls workbench.choices_panel
     workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
-    workbench.canvas.parallaxes workbench.canvas
+    workbench.canvas.parallaxes workbench.canvas.trials workbench.canvas.checks workbench.canvas
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.board_panel workbench.shelf workbench.frame workbench.screen workbench
     launcher
