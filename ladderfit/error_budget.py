@@ -30,7 +30,7 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 
-from ladderfit.names import base_name, with_group
+from ladderfit.names import base_name, parameter, with_group
 from ladderfit.posterior.joint import Posterior, posterior
 from ladderfit.priors import Fixed
 from ladderfit.residuals import (
@@ -252,7 +252,7 @@ def _of_priors(result: Result, means: Mapping[str, float], way: Direction) -> di
     """Curvature of the log priors of parameters; those of shared errors belong to the data."""
     total = 0.0
     for name, change in way.items():
-        if base_name(name) in ("shared_error", "parallax_field", "modulus", "intercept"):
+        if base_name(name) in ("shared_error", "parallax_field") or parameter(name).prior is None:
             continue
         prior = result.choices.prior(name)
         if isinstance(prior, Fixed):

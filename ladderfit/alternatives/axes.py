@@ -73,6 +73,8 @@ def alternatives_of(
     faults = [_no_list(key, values) for key, values in given.items() if not _is_list(values)]
     if faults:
         raise InputError(faults)
+    if grid:
+        _refuse_too_large(given)
     tried = {key: _new_values(bare, key, values) for key, values in given.items()}
     tried = {key: values for key, values in tried.items() if values}
     if not tried:
@@ -87,7 +89,15 @@ def _one_by_one(tried: Mapping[str, Sequence[Any]]) -> Iterator[Alternative]:
 
 
 def _combinations(tried: Mapping[str, Sequence[Any]]) -> Iterator[Alternative]:
-    size = math.prod(1 + len(values) for values in tried.values())
+    levels = [[{}, *({key: value} for value in values)] for key, values in tried.items()]
+    for combination in itertools.product(*levels):
+        changes = {key: value for level in combination for key, value in level.items()}
+        if changes:
+            yield Alternative(changes)
+
+
+def _refuse_too_large(given: Mapping[str, Sequence[Any]]) -> None:
+    size = math.prod(1 + len(values) for values in given.values())
     if size > LARGEST_GRID:
         raise InputError(
             Problem(
@@ -97,11 +107,6 @@ def _combinations(tried: Mapping[str, Sequence[Any]]) -> Iterator[Alternative]:
                 key="alternatives",
             )
         )
-    levels = [[{}, *({key: value} for value in values)] for key, values in tried.items()]
-    for combination in itertools.product(*levels):
-        changes = {key: value for level in combination for key, value in level.items()}
-        if changes:
-            yield Alternative(changes)
 
 
 def _new_values(choices: Choices, key: str, values: Sequence[Any]) -> list[Any]:

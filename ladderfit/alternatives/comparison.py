@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
 
 import pandas as pd
@@ -57,7 +57,7 @@ class Fit:
         return math.nan if pair is None else float(pair[place])
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class Comparison:
     """A baseline and its alternatives, fitted.
 
@@ -78,7 +78,14 @@ class Comparison:
     baseline: Fit
     fits: tuple[Fit, ...]
     current: Mapping[str, Any]
-    result: Result = field(repr=False)
+    result: Result
+
+    def __repr__(self) -> str:
+        """The title and how many fits there are; `table` has the numbers."""
+        return (
+            f"<Comparison {self.title!r}: {len(self.fits):,} alternatives, "
+            f"{len(self.failed):,} without numbers; see .table()>"
+        )
 
     @property
     def failed(self) -> tuple[Fit, ...]:

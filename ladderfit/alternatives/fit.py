@@ -83,9 +83,10 @@ def data_mark(ladder: Ladder) -> str:
     """A mark that two ladders share if they are fitted to the same data.
 
     Data are the numbers that have a density in the likelihood: magnitudes, parallaxes,
-    peaks, velocities, geometric moduli, a published intercept, and metallicities
-    where they have populations; with whose they are.  Periods, redshifts, errors
-    and other metallicities are given, not fitted: they belong to the model.
+    peaks and what standardises them, velocities, geometric moduli, a published
+    intercept, and metallicities and colours where they have populations; with whose
+    they are.  Periods, redshifts, errors and other metallicities are given, not
+    fitted: they belong to the model.
     """
     mark = hashlib.sha256()
 
@@ -103,7 +104,8 @@ def data_mark(ladder: Ladder) -> str:
     for name in ("peaks", "flow"):
         sample = getattr(ladder, name)
         if sample is not None:
-            add([name], sample.row, sample.magnitude)
+            inputs = sample.inputs.values
+            add([name, *inputs], sample.row, sample.magnitude, *inputs.values())
     if ladder.velocities is not None:
         add(["velocities"], ladder.velocities.row, ladder.velocities.velocity)
     add(*([a.name, repr(a.modulus)] for a in ladder.geometric))
@@ -119,6 +121,8 @@ def _fitted(ladder: Ladder, stars: StarSample) -> list[FloatArray]:
         columns.append(stars.parallax)
     if uses_population(ladder, stars):
         columns.append(stars.metallicity)
+    if stars.photometry is not None:  # colours have a density of their own
+        columns += [stars.photometry.band, stars.photometry.colour]
     return columns
 
 
