@@ -44,6 +44,17 @@ def test_density_is_the_one_written_out(more: dict[str, Any], stars: int) -> Non
     assert faults(found).max() < 1e-8
 
 
+@pytest.mark.parametrize("scatter", [0.0, 0.07])
+def test_a_fixed_scatter(scatter: float) -> None:
+    found = ladder(3, {**SKY, "priors.scatter": {"fixed": scatter}}, stars=40)
+    joint = posterior(found)
+    places = [{"shared_photometry[sky]": width} for width in (0.02, 0.1, 0.3)]
+    z = np.stack([joint.coordinates(place) for place in places])
+    fast = joint.log_density(z) - joint.split.log_prior(z)
+    slow = [dense(found, {**place, "scatter": scatter}) for place in places]
+    np.testing.assert_allclose(fast, slow, rtol=1e-8)
+
+
 def test_tables_over_a_range_are_as_good() -> None:
     found = ladder(3, SKY, stars=40)
     joint, places = posterior(found), points(found, 5)

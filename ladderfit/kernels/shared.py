@@ -142,6 +142,9 @@ class SharedRows:
 
     def unpacked(self, extra: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """As `SharedSums.unpacked`, at extra variances of shape (b,)."""
+        if not self.tables and len(extra) > 1 and np.all(extra == extra[0]):  # a fixed scatter
+            packed = self.sums.packed(extra[:1])
+            return self.sums.unpacked(np.repeat(packed, len(extra), axis=0))
         return self.sums.unpacked(interpolated(self.sums, self.tables, extra))
 
     def focus(self, low: float, high: float) -> None:

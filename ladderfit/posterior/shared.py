@@ -17,6 +17,7 @@ from ladderfit.ladder import Ladder
 from ladderfit.posterior.cepheids import Values
 from ladderfit.posterior.frame import Frame, star_rows
 from ladderfit.posterior.split import shared_photometry
+from ladderfit.priors import Fixed
 from ladderfit.relations import scatters
 from ladderfit.samples import StarSample
 
@@ -76,7 +77,8 @@ def shared_block(
         chosen = which == place
         mine = star_rows(ladder, frame, stars, chosen)  # keeps the order: sorted by host
         sums = shared_sums(mine, np.ascontiguousarray(stars.loadings[chosen]))
-        rows.append(SharedRows(sums, tables_of(sums, largest(name))))
+        fixed = isinstance(ladder.choices.prior(name), Fixed)
+        rows.append(SharedRows(sums, [] if fixed else tables_of(sums, largest(name))))
         places.append([host for host, _, _ in mine.slices])
     widths = shared_photometry(ladder)
     return SharedBlock(tuple(rows), names, tuple(places), widths, frame.hosts)
