@@ -35,7 +35,7 @@ def reviewed(paper: Paper, entry: dict[str, Any], rng: np.random.Generator) -> C
 
 
 def test_honest_claims_are_reproduced(in_full: bool) -> None:
-    count, allowed = (200, 6) if in_full else (24, 1)
+    count, allowed = (200, 6) if in_full else (16, 1)
     failed = []
     for number in range(count):
         rng = np.random.default_rng([SEED, 0, number])
@@ -80,7 +80,7 @@ Spoil = Callable[[Paper, np.random.Generator], dict[str, Any]]
     ],
 )
 def test_spoiled_claims_are_found(spoil: Spoil, verdict: str, in_full: bool) -> None:
-    count = 200 if in_full else 10
+    count = 200 if in_full else 6
     missed = []
     for number in range(count):
         rng = np.random.default_rng([SEED, 1, number])
