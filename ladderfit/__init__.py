@@ -18,6 +18,8 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from ladderfit.alternatives import run_alternatives
     from ladderfit.anchors import compare_anchors
+    from ladderfit.compare import compare_results
+    from ladderfit.distances import distances_of
     from ladderfit.influence import leave_one_out
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
     from ladderfit.power_scaling import prior_sensitivity
@@ -38,6 +40,8 @@ _HOME = {
     "start": "ladderfit.sampling.live",
     "read_result": "ladderfit.store",
     "compare_anchors": "ladderfit.anchors",
+    "compare_results": "ladderfit.compare",
+    "distances_of": "ladderfit.distances",
     "leave_one_out": "ladderfit.influence",
     "predictive_fit": "ladderfit.predictive",
     "compare_fits": "ladderfit.predictive",
@@ -56,6 +60,8 @@ __all__ = [
     "start",
     "read_result",
     "compare_anchors",
+    "compare_results",
+    "distances_of",
     "leave_one_out",
     "predictive_fit",
     "compare_fits",

@@ -102,7 +102,7 @@ def megaparsecs(modulus: FloatArray) -> FloatArray:
     return np.asarray(10.0 ** (0.2 * modulus - 5.0))
 
 
-def distances(
+def distances_of(
     result: Result,
     tables: Sequence[Any],
     *,

@@ -80,12 +80,14 @@ def test_calibrate_leaves_a_whole_folder(
     out = folder / "small-01"
     names = {str(path.relative_to(out)) for path in out.rglob("*") if path.is_file()}
     figures = {
-        f"figures/{name}.{kind}"
+        f"figures/{name}{kind}"
         for name in ("relation", "parallaxes", "corner", "moduli", "hubble")
-        for kind in ("pdf", "png")
+        for kind in (".pdf", ".png", "_column.pdf")
     }
     files = {"summary.json", "summary.ecsv", "posterior.nc", "ladder.toml", "provenance.json"}
-    assert names == files | figures
+    tables = {name for name in names if name.startswith("tables/")}
+    assert names - tables == files | figures | {"report.html"}
+    assert {f"tables/parameters{kind}" for kind in (".tex", ".ecsv", ".csv")} <= tables
     assert not list(folder.glob(".*"))  # nothing temporary is left
 
 

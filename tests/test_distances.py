@@ -15,7 +15,7 @@ from small_ladders import small_ladder
 
 from ladderfit.cli import main
 from ladderfit.distance_files import distance_table, distances_text, write_distances
-from ladderfit.distances import Distances, distances, megaparsecs
+from ladderfit.distances import Distances, distances_of, megaparsecs
 from ladderfit.errors import InputError, LadderfitError
 from ladderfit.joined_ladders import together
 from ladderfit.ladder import build_ladder, read_ladder
@@ -45,7 +45,7 @@ def joint(survey: held_out.Survey) -> Result:
 
 @pytest.fixture(scope="module")
 def found(base: Result, survey: held_out.Survey) -> Distances:
-    return distances(base, [survey.cepheids, survey.supernovae])
+    return distances_of(base, [survey.cepheids, survey.supernovae])
 
 
 def agree(one: Distances, joint: Result, error: float = 4.0) -> None:
@@ -104,7 +104,7 @@ def test_more_stars_in_a_known_host_join_it(base: Result, survey: held_out.Surve
     offset = 31.033 - 30.608
     for band in ("Hmag", "Vmag", "Imag"):
         more[band] = more[band] + offset
-    joined = distances(base, [more])
+    joined = distances_of(base, [more])
     assert joined.route == "fit"
     assert any("Hestrin: in the calibration already" in note for note in joined.notes)
     before = base.sd("modulus[Hestrin]")
@@ -116,7 +116,7 @@ def test_supernovae_alone_have_the_peak_magnitude_s_error(base: Result) -> None:
     new = Table({"SN": ["N1"], "Galaxy": ["Nowhere"], "mB": [13.0], "e_mB": [0.1]})
     for name in ("mB", "e_mB"):
         new[name].unit = "mag"
-    alone = distances(base, [new])
+    alone = distances_of(base, [new])
     peak, scatter = base.draws["peak_magnitude"], base.draws["peak_scatter"]
     expected = np.sqrt(np.var(peak) + 0.01 + np.mean(scatter**2))
     assert alone.ess > 0.9 * DRAWS
@@ -129,7 +129,7 @@ def test_supernovae_alone_have_the_peak_magnitude_s_error(base: Result) -> None:
 def test_errors_of_the_inputs_count_too() -> None:
     """Periods and metallicities with errors, populations of metallicity: the same posterior."""
     whole, less, new = _noisy()
-    one = distances(draw(less, seed=2, draws=DRAWS), [new])
+    one = distances_of(draw(less, seed=2, draws=DRAWS), [new])
     agree(one, draw(whole, seed=3, draws=2 * DRAWS), error=5.0)
 
 
@@ -156,7 +156,7 @@ def test_the_prior_of_distances_is_the_calibration_s(survey: held_out.Survey) ->
     volume = draw(
         survey.ladder.change({"hosts.distance_prior": "uniform in volume"}), seed=2, draws=2000
     )
-    one, other = (distances(result, [few]) for result in (flat, volume))
+    one, other = (distances_of(result, [few]) for result in (flat, volume))
     moved = float(other.draws["Vestow"].mean() - one.draws["Vestow"].mean())
     own = np.var(one.draws["Vestow"])
     push = 0.6 * np.log(10.0) * own + (flat.mean("zero_point") - volume.mean("zero_point"))
@@ -168,7 +168,7 @@ def test_the_prior_of_distances_is_the_calibration_s(survey: held_out.Survey) ->
 
 def test_what_lies_outside_is_told(base: Result, survey: held_out.Survey) -> None:
     ranges = Ranges(period=(20.0, 60.0), metallicity=(8.7, 8.8), colour=(1.0, 1.2))
-    told = distances(base, [survey.cepheids], ranges=ranges).warnings
+    told = distances_of(base, [survey.cepheids], ranges=ranges).warnings
     for words in ("period, 20 to 60 d", "metallicity, 8.7 to 8.8 dex", "colour, 1 to 1.2 mag"):
         assert any(words in warning for warning in told), words
     assert len({warning.split(":")[0] for warning in told}) == len(held_out.HELD_OUT)
@@ -176,7 +176,7 @@ def test_what_lies_outside_is_told(base: Result, survey: held_out.Survey) -> Non
 
 def test_what_lies_inside_is_not(base: Result, survey: held_out.Survey) -> None:
     wide = Ranges(period=(1.0, 200.0), metallicity=(7.0, 10.0), colour=(-2.0, 5.0))
-    assert not distances(base, [survey.cepheids], ranges=wide).warnings
+    assert not distances_of(base, [survey.cepheids], ranges=wide).warnings
 
 
 def test_the_ranges_are_those_of_the_stars(base: Result, survey: held_out.Survey) -> None:
@@ -196,7 +196,7 @@ def test_a_strange_photometric_system_is_told() -> None:
     del plain["anchors"]["parallaxes"], tables["anchors.parallaxes"]
     result = draw(build_ladder(plain, tables), seed=1, draws=500)
     new = stars[stars["Galaxy"] == "Q07"].assign(Galaxy="New", Sys="far")
-    told = distances(result, [new]).warnings
+    told = distances_of(result, [new]).warnings
     assert [w for w in told if "12 of 12 Cepheids in the photometric system 'far'" in w]
 
 
@@ -205,7 +205,7 @@ def test_data_that_disagree_are_told(base: Result, survey: held_out.Survey) -> N
     tilt = -1.0 * (np.log10(steep["P"]) - 1.0)
     for band in ("Hmag", "Vmag", "Imag"):
         steep[band] = steep[band] + tilt
-    notes = distances(base, [steep]).notes
+    notes = distances_of(base, [steep]).notes
     assert any("slope" in note and "look whether they belong together" in note for note in notes)
 
 
@@ -215,9 +215,9 @@ def test_data_that_disagree_are_told(base: Result, survey: held_out.Survey) -> N
 def test_stars_of_the_calibration_do_not_count_twice(survey: held_out.Survey) -> None:
     result = draw(survey.whole, seed=1, draws=500)
     with pytest.raises(InputError, match=r"the star 'Bre-001' of 'Brelin' and \d+ more, in the"):
-        distances(result, [survey.cepheids])
+        distances_of(result, [survey.cepheids])
     with pytest.raises(InputError, match="the supernova 'ES-001'"):
-        distances(result, [survey.supernovae])
+        distances_of(result, [survey.supernovae])
 
 
 @pytest.mark.parametrize(
@@ -233,16 +233,16 @@ def test_changes_that_do_not_fit(
     base: Result, survey: held_out.Survey, changes: dict, words: str
 ) -> None:
     with pytest.raises(InputError, match=words):
-        distances(base, [survey.cepheids], changes=changes)
+        distances_of(base, [survey.cepheids], changes=changes)
 
 
 def test_tables_that_do_not_fit(base: Result, survey: held_out.Survey) -> None:
     with pytest.raises(InputError, match=r"no column 'Galaxy' \(host\)"):
-        distances(base, [survey.cepheids["ID", "P", "Mode", "OH", "Vmag", "Imag", "Hmag"]])
+        distances_of(base, [survey.cepheids["ID", "P", "Mode", "OH", "Vmag", "Imag", "Hmag"]])
     with pytest.raises(InputError, match="a second table of Cepheids"):
-        distances(base, [survey.cepheids, survey.cepheids])
+        distances_of(base, [survey.cepheids, survey.cepheids])
     with pytest.raises(InputError, match="no table"):
-        distances(base, [])
+        distances_of(base, [])
 
 
 def test_renamed_columns_are_named_anew(
@@ -251,7 +251,7 @@ def test_renamed_columns_are_named_anew(
     other = survey.cepheids.copy()
     other.rename_columns(["Galaxy", "Vmag"], ["Gal", "F555W"])
     changes = {"cepheids.columns.host": "Gal", "cepheids.magnitude.bands.V": "F555W"}
-    again = distances(base, [other, survey.supernovae], changes=changes)
+    again = distances_of(base, [other, survey.supernovae], changes=changes)
     np.testing.assert_array_equal(again.draws["Vestow"], found.draws["Vestow"])
 
 
@@ -260,20 +260,20 @@ def test_without_the_calibration_s_tables(
 ) -> None:
     """Saved draws suffice, unless a new host is an old one."""
     alone = dataclasses.replace(base, source=None)
-    same = distances(alone, [survey.cepheids, survey.supernovae])
+    same = distances_of(alone, [survey.cepheids, survey.supernovae])
     np.testing.assert_array_equal(same.draws["Vestow"], found.draws["Vestow"])
     more = survey.cepheids.copy()
     more["Galaxy"] = "Hestrin"
     with pytest.raises(LadderfitError, match="tables are missing or changed"):
-        distances(alone, [more])
+        distances_of(alone, [more])
 
 
 def test_a_calibration_by_parallaxes_alone() -> None:
     result = draw(small_ladder("parallaxes"), seed=1, draws=1000)
     new = builders.tables()["cepheids"].rename(columns={"Hmag": "W", "e_H": "e_W"})
     with pytest.raises(InputError, match=r"--set cepheids\.columns\.host=NAME"):
-        distances(result, [new])
-    found = distances(result, [new], changes={"cepheids.columns.host": "Galaxy"})
+        distances_of(result, [new])
+    found = distances_of(result, [new], changes={"cepheids.columns.host": "Galaxy"})
     assert set(found.hosts) == set(builders.HOSTS)
     assert "zero_point" in found.parameters
 

@@ -16,7 +16,7 @@ import pandas as pd
 import pytest
 from test_published_parallaxes import BOTH_FREE, ladder
 
-from ladderfit.distances import Distances, distances
+from ladderfit.distances import Distances, distances_of
 from ladderfit.sampling.run import draw
 
 pytestmark = pytest.mark.published
@@ -48,7 +48,7 @@ def test_fixed_relation_against_the_weighted_mean(
 ) -> None:
     """With slope, metallicity term and scatter held, the modulus is a weighted mean."""
     result = draw(ladder(calibrating), seed=1, draws=8000)
-    found = distances(result, [cloud], changes=COLUMNS)
+    found = distances_of(result, [cloud], changes=COLUMNS)
     weight = 1.0 / (cloud["e_mWH"] ** 2 + 0.06**2)
     level = np.average(cloud["mWH"] + 3.26 * (cloud["logP"] - 1.0), weights=weight)
     expected = level - (result.mean("zero_point") - 0.17 * METALLICITY)
@@ -60,7 +60,7 @@ def test_fixed_relation_against_the_weighted_mean(
 def test_the_geometric_distance_is_met(calibrating: pd.DataFrame, cloud: pd.DataFrame) -> None:
     free = BOTH_FREE | {"priors.scatter": {"half_normal": 0.3}}
     result = draw(ladder(calibrating).change(free), seed=1, draws=8000)
-    found: Distances = distances(result, [cloud], changes=COLUMNS)
+    found: Distances = distances_of(result, [cloud], changes=COLUMNS)
     apart = found.draws["Cloud"].mean() - GEOMETRY[0]
     assert abs(apart) < 2.0 * np.hypot(found.draws["Cloud"].std(), GEOMETRY[1])
     metals = calibrating["FeH"]

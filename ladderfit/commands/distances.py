@@ -44,12 +44,12 @@ def add(add_parser: Add) -> None:
 
 def _distances(chosen: argparse.Namespace) -> int:
     from ladderfit.distance_files import distances_text, write_distances
-    from ladderfit.distances import distances
+    from ladderfit.distances import distances_of
     from ladderfit.files import new_folder
     from ladderfit.store import read_ranges, read_result
 
     result = read_result(chosen.result)
-    found = distances(
+    found = distances_of(
         result,
         [Path(name) for name in chosen.tables],
         changes=dict(_change(text) for text in chosen.changes),
