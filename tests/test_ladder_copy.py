@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import dataclasses
 from pathlib import Path
 
 import astropy.units as u
@@ -10,6 +9,7 @@ import builders
 import numpy as np
 import pytest
 from astropy.table import QTable
+from same_data import assert_same_sample
 from small_ladders import SMALL, small_ladder
 
 from ladderfit import ladder_copy
@@ -26,10 +26,7 @@ def assert_same_data(one: Ladder, two: Ladder) -> None:
         mine, theirs = getattr(one, name), getattr(two, name)
         assert (mine is None) == (theirs is None)
         if mine is not None:
-            for field in dataclasses.fields(mine):
-                np.testing.assert_array_equal(
-                    getattr(mine, field.name), getattr(theirs, field.name)
-                )
+            assert_same_sample(mine, theirs)
 
 
 @pytest.mark.parametrize("name", SMALL)
