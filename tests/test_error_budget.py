@@ -14,7 +14,7 @@ from ladderfit.error_budget import TOTAL, error_budget
 from ladderfit.ladder import Ladder, build_ladder
 
 FIXED = {"scatter": {"fixed": 0.07}, "peak_scatter": {"fixed": 0.1}}
-DRAWS = 40_000
+DRAWS = 20_000
 
 
 def gaussian_ladder(**more: Any) -> Ladder:
@@ -140,7 +140,7 @@ def test_what_a_rungs_noise_does(in_full: bool) -> None:
     """
     ladder = gaussian_ladder()
     result = lf.draw(ladder, draws=DRAWS, seed=6)
-    budget, count = error_budget(result), 400 if in_full else 100
+    budget, count = error_budget(result), 400 if in_full else 80
     peaks = builders.tables()["supernovae"]
     rng = np.random.default_rng(8)
     names = ["peak_magnitude", "zero_point"]
