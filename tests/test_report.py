@@ -14,10 +14,15 @@ import hostile
 import pandas as pd
 import pytest
 from astropy.table import Table
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.text import Text
 from small_ladders import small_ladder
 
-from ladderfit import schema
+from ladderfit import plots, schema
 from ladderfit.errors import InputError
+from ladderfit.ladder import build_ladder
+from ladderfit.plots.moduli import moduli_figure
+from ladderfit.plots.relation import relation_figure
 from ladderfit.priors import Normal
 from ladderfit.report import html
 from ladderfit.report.budget import alternative_tables
@@ -263,3 +268,21 @@ def test_a_browser_prints_the_page_without_complaint(page: str, tmp_path: Path) 
     )
     assert (tmp_path / "report.pdf").stat().st_size > 10_000
     assert "CONSOLE" not in done.stderr, done.stderr  # a policy that stops the style would say so
+
+
+@pytest.mark.parametrize("width", [plots.COLUMN, plots.WIDTH])
+def test_names_that_attack_are_only_drawn(width: float) -> None:
+    """Hosts as labels of figures: shown letter by letter, none read as mathematics."""
+    names = {**hostile.HOSTS, "Q07": r"$\frac{a}{0}$_^%"}
+    plain, tables = hostile.choices(), hostile.tables()
+    for section in ("cepheids", "supernovae"):
+        column = tables[section]["Galaxy"]
+        tables[section]["Galaxy"] = column.replace(hostile.HOSTS["Q07"], names["Q07"])
+    attacked = draw(build_ladder(plain, tables), seed=4, draws=200)
+    for maker in (moduli_figure, relation_figure):
+        figure = maker(attacked, width=width)
+        assert figure is not None
+        FigureCanvasAgg(figure).draw()
+        shown = [t.get_text().replace(r"\$", "$") for t in figure.findobj(Text)]
+        for name in names.values():
+            assert any(name in text for text in shown), name
