@@ -48,14 +48,28 @@ class Problem:
             for text, known in (
                 (self.file, self.file),
                 (f"row {self.row}", self.row),
-                (f"column {self.column!r}", self.column),
-                (f"key {self.key}", self.key),
+                (f"column {_short(repr(self.column))}", self.column),
+                (f"key {_short(self.key or '')}", self.key),
             )
             if known is not None
         ]
-        sentence = f"found {self.found}; expected {self.expected}; {self.remedy}"
+        found, expected, remedy = (
+            _short(text, 400) for text in (self.found, self.expected, self.remedy)
+        )
+        sentence = f"found {found}; expected {expected}; {remedy}"
         line = f"{', '.join(str(part) for part in place)}: {sentence}" if place else sentence
-        return " ".join(line.split())
+        return _one_line(line)
+
+
+def _short(text: str, most: int = 120) -> str:
+    """The text, its middle left out where it is long."""
+    return text if len(text) <= most else f"{text[: most - 40]} ... {text[-30:]}"
+
+
+def _one_line(text: str) -> str:
+    """One line, without characters that a terminal obeys or hides."""
+    words = " ".join(text.split())
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in words)
 
 
 class LadderfitError(Exception):

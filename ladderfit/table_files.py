@@ -24,7 +24,7 @@ from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
 from ladderfit.table_columns import ColumnsOnDemand
 from ladderfit.table_memory import from_astropy, from_series, parsed_unit
-from ladderfit.tables import Column, DataTable
+from ladderfit.tables import Column, DataTable, shown
 
 _PIECE = 100_000  # rows of a text table parsed at once
 
@@ -191,7 +191,7 @@ def _ecsv_fault(path: Path) -> Problem | None:
                 float(cell or "nan")
             except ValueError:
                 return Problem(
-                    found=repr(cell),
+                    found=shown(str(cell)),
                     expected="a number, as the header declares",
                     remedy="correct the cell, or leave it empty where the value is missing",
                     file=str(path),

@@ -218,7 +218,17 @@ def _weigh(
     target: Target, proposal: Proposal, size: int, rng: np.random.Generator
 ) -> tuple[FloatArray, FloatArray]:
     z = proposal.draw(rng, size)
-    return z, target.log_density(z) - proposal.log_density(z)
+    log_weight = target.log_density(z) - proposal.log_density(z)
+    _need_finite(float(np.max(log_weight)))
+    return z, log_weight
+
+
+def _need_finite(value: float) -> None:
+    if not np.isfinite(value):
+        raise SamplingError(
+            "no draw has a finite density; look for absurd numbers in the tables, "
+            "and check the priors' bounds against the data"
+        )
 
 
 def _pool(
@@ -228,6 +238,7 @@ def _pool(
     z, log_weight = _weigh(target, proposal, _PILOT, rng)
     weights, k = smoothed_weights(log_weight)
     efficiency = weights_ess(weights) / len(z)
+    _need_finite(efficiency)
     if not last and (efficiency < _GOOD_EFFICIENCY or k > _GOOD_K):
         return z, log_weight, False
     pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
@@ -274,8 +285,6 @@ def _resampled(
     weights, k = smoothed_weights(log_weight)
     pool_ess = weights_ess(weights)
     top = float(np.max(log_weight))
-    if not np.isfinite(top):
-        raise SamplingError("no draw has a finite density; check the priors against the data")
     ratio = np.exp(log_weight - top)
     mean = float(ratio.mean())
     relative_error = float(ratio.std() / (mean * np.sqrt(len(ratio))))
