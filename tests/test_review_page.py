@@ -90,7 +90,9 @@ def test_figures(found: Review) -> None:
     left, right = listed.get_xlim()
     assert all(left < refit.value - refit.spread for refit in first.refits)
     assert all(refit.value + refit.spread < right for refit in first.refits)
-    assert review_figure(pivot) is not None
+    away = review_figure(pivot).axes[0]  # a claim far off is pointed at
+    assert any("claim 15.868" in text.get_text() for text in away.texts)
+    assert not any("claim" in text.get_text() for text in listed.texts)
     assert review_figure(refused) is None
 
 

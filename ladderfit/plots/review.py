@@ -11,7 +11,7 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import NullLocator
 
 from ladderfit.plots.theme import LIGHT, Accent, Theme, new_figure, plain
-from ladderfit.review.claims import WORDS
+from ladderfit.review.claims import WORDS, fixed_point
 from ladderfit.review.refits import Refit
 from ladderfit.review.reliance import Variation
 from ladderfit.review.verdicts import ClaimReview
@@ -20,6 +20,7 @@ from ladderfit.samples import FloatArray
 
 _ROW = 0.19  # inches
 _MOST_ROWS = 30
+_FAR = 12.0  # errors from which on a claim is only pointed at
 _CUTS = ("shortest period [d]", "longest period [d]")
 _BRIEF = {"clip [s.d.]": "clip", "host left out": "without", "star left out": "without"}
 
@@ -84,11 +85,21 @@ def _list(axes: Axes, found: ClaimReview, rows: list[Variation], theme: Theme) -
 
 def _ends(found: ClaimReview) -> tuple[float, float]:
     """Limits that hold the claim, every refit, and choices that move it by a few errors."""
-    centre, step = found.judged.value, found.step
-    reach = max(abs(refit.difference) + 1.2 * refit.spread for refit in found.refits)
-    near = [abs(v.value - centre) for v in found.variations if v.axis not in _CUTS]
-    reach = max(reach, min(max(near, default=0.0), 5.0 * step), 2.0 * step)
-    return centre - 1.12 * reach, centre + 1.12 * reach
+    step = found.step
+    low = min(refit.value - refit.spread for refit in found.refits)
+    high = max(refit.value + refit.spread for refit in found.refits)
+    if not _far(found):
+        low, high = min(low, found.judged.value - step), max(high, found.judged.value + step)
+    near = [v.value for v in found.variations if v.axis not in _CUTS]
+    near = [value for value in near if low - 4.0 * step < value < high + 4.0 * step]
+    low, high = min([low, *near]), max([high, *near])
+    return low - 0.06 * (high - low), high + 0.06 * (high - low)
+
+
+def _far(found: ClaimReview) -> bool:
+    """Whether the claim lies so far off that it would squeeze everything else together."""
+    first = found.refits[0]
+    return abs(first.difference) > _FAR * max(found.step, first.spread)
 
 
 def _choices(
@@ -158,12 +169,16 @@ def _brief(refit: Refit) -> str:
         return f"hierarchical{clip}"
     if way.treatment.period_errors:
         return f"both errors{clip}"
-    return f"weights: {way.treatment.weights}{clip}"
+    return f"weights: {way.treatment.weights.replace(' and ', ', ')}{clip}"
 
 
 def _band(axes: Axes, found: ClaimReview, theme: Theme, *, vertical: bool) -> None:
     """The claim and its error."""
     claim = found.judged
+    if _far(found):
+        if vertical:
+            _pointed_at(axes, found, theme)
+        return
     line, span = (axes.axvline, axes.axvspan) if vertical else (axes.axhline, axes.axhspan)
     half = claim.error if claim.error is not None else claim.half_unit
     words = "claim and its error" if claim.error is not None else "claim and its rounding"
@@ -175,6 +190,22 @@ def _band(axes: Axes, found: ClaimReview, theme: Theme, *, vertical: bool) -> No
         label=words if vertical else None,
     )
     line(claim.value, color=theme.ink, linewidth=0.9)
+
+
+def _pointed_at(axes: Axes, found: ClaimReview, theme: Theme) -> None:
+    """A claim beyond the limits, as an arrow to its side."""
+    right = found.refits[0].difference > 0.0
+    words = f"claim {fixed_point(found.judged.value, found.claim.decimals)}"
+    axes.text(
+        0.98 if right else 0.02,
+        1.01,
+        f"{words}  \N{RIGHTWARDS ARROW}" if right else f"\N{LEFTWARDS ARROW}  {words}",
+        transform=axes.transAxes,
+        ha="right" if right else "left",
+        va="bottom",
+        fontsize=7.5,
+        color=theme.ink,
+    )
 
 
 def _cut(axes: Axes, found: ClaimReview, axis: str, theme: Theme) -> None:
