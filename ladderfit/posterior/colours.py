@@ -25,7 +25,7 @@ from dataclasses import dataclass
 
 from ladderfit.choices import Reddening
 from ladderfit.ladder import Ladder
-from ladderfit.samples import FloatArray, StarSample
+from ladderfit.samples import FloatArray, IntArray, StarSample
 
 Values = Callable[[str], FloatArray]
 
@@ -78,6 +78,18 @@ class Colours:
     covariance: FloatArray
     treatment: Reddening
     spread: str
+
+    def only(self, chosen: IntArray) -> Colours:
+        """The same for some of the stars."""
+        return Colours(
+            self.band[chosen],
+            self.colour[chosen],
+            self.band_variance[chosen],
+            self.colour_variance[chosen],
+            self.covariance[chosen],
+            self.treatment,
+            self.spread,
+        )
 
     def at(self, values: Values) -> ColourEffect:
         """The effect at given parameter values, `values(name)` of shape (b,)."""

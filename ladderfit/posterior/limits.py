@@ -30,21 +30,20 @@ class Limits:
     Attributes
     ----------
     terms : StarTerms
-        Of all Cepheids.
-    chosen : array of int, shape (n,)
         The stars of hosts with limits, sorted by host.
-    runs : array of int, shape (r, 3)
-        Host, first star and one past the last, among `chosen`.
     headroom : array, shape (n,)
         Limit minus magnitude in its band [mag].
     softness : float
     """
 
     terms: StarTerms
-    chosen: IntArray
-    runs: IntArray
     headroom: FloatArray
     softness: float
+
+    @property
+    def runs(self) -> IntArray:
+        """Host, first star and one past the last, shape (r, 3)."""
+        return self.terms.runs
 
     def log_factor(self, solution: Solution, values: Values) -> FloatArray:
         """What the limits add to the log density, shape (b,)."""
@@ -79,10 +78,9 @@ class Limits:
     def leads(self, values: Values, coefficients: FloatArray) -> tuple[FloatArray, FloatArray]:
         """The local at which each star would be at the limit, and its width, shape (b, n)."""
         rows = self.terms.at(values)
-        mean = coefficients @ self.terms.columns[self.chosen].T
-        variance = 1.0 / rows.weight[:, self.chosen]
-        width = np.sqrt(variance + self.softness**2)
-        return rows.y[:, self.chosen] + self.headroom - mean, width
+        mean = coefficients @ self.terms.columns.T
+        width = np.sqrt(1.0 / rows.weight + self.softness**2)
+        return rows.y + self.headroom - mean, width
 
 
 def limits_of(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Limits | None:
@@ -100,4 +98,5 @@ def limits_of(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Limits | 
     if terms.nuisances:
         raise TypeError("limits where hosts have nuisances")  # refused by the choices
     softness = section.completeness.softness
-    return Limits(terms, chosen, runs.astype(np.int64), stars.headroom[chosen], softness)
+    mine = terms.only(chosen, runs.astype(np.int64))
+    return Limits(mine, stars.headroom[chosen], softness)

@@ -8,7 +8,7 @@ number of stars.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -80,6 +80,36 @@ class StarTerms:
                 return values(name)[at]
 
             add_stars(total, self.at(here), self.runs, at)
+
+    def only(self, chosen: IntArray, runs: IntArray) -> StarTerms:
+        """The same for some of the stars; `runs` says where their hosts lie among them."""
+
+        def taken(values: FloatArray | None) -> FloatArray | None:
+            return None if values is None else values[chosen]
+
+        errors, colours = self.errors, self.colours
+        return replace(
+            self,
+            columns=self.columns[chosen],
+            y=self.y[chosen],
+            variance=self.variance[chosen],
+            origin=self.origin[chosen],
+            metallicity=self.metallicity[chosen],
+            runs=runs,
+            scatter_of=self.scatter_of[chosen],
+            errors=None
+            if errors is None
+            else InputErrors(
+                taken(errors.period_slope),
+                taken(errors.period_error),
+                taken(errors.metallicity_slope),
+                taken(errors.metallicity_error),
+                errors.population,
+            ),
+            colours=None if colours is None else colours.only(chosen),
+            x=self.x[chosen],
+            loadings=taken(self.loadings),
+        )
 
     @property
     def nuisances(self) -> int:
