@@ -17,7 +17,7 @@ import numpy as np
 import pandas as pd
 
 from ladderfit.diagnostics import TRUSTED_K
-from ladderfit.draw_weights import Found, needed, weighted
+from ladderfit.draw_weights import Found, needed, understood, weighted
 from ladderfit.errors import LadderfitError, raise_if
 from ladderfit.joined_ladders import repeated, together
 from ladderfit.ladder import Ladder
@@ -151,8 +151,8 @@ def distances_of(
     if not shared:
         joint = posterior(new.ladder)
         absent = [name for name in needed(joint) if name not in result.draws]
-        if absent:
-            reason = f"the calibration has no {', '.join(absent)}"
+        if absent or not understood(joint):
+            reason = f"the calibration has no {', '.join(absent) or 'draws of all it needs'}"
         else:
             found = weighted(result, joint, np.random.default_rng(seed))
             if found.pareto_k > TRUSTED_K:

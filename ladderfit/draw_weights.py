@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from typing import Any, Literal
 
 import numpy as np
@@ -16,6 +16,9 @@ from ladderfit.result import Result
 from ladderfit.samples import FloatArray
 
 _CHUNK = 512  # draws evaluated at once
+_KNOWN = frozenset(
+    {"ladder", "split", "frame", "blocks", "constant", "parallaxes", "limits", "robust"}
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -32,6 +35,12 @@ class Found:
 def needed(joint: Posterior) -> tuple[str, ...]:
     """What the density of the new data depends on, beside new moduli."""
     return (*joint.split.coefficients, *joint.split.phi_names)
+
+
+def understood(joint: Posterior) -> bool:
+    """Whether the density of new data is made of parts that are known here."""
+    parts = {field.name for field in fields(joint)}
+    return all(getattr(joint, name) is None for name in parts - _KNOWN)
 
 
 def weighted(result: Result, joint: Posterior, rng: np.random.Generator) -> Found:
@@ -85,7 +94,10 @@ def _solution(joint: Posterior, part: _Part) -> Solution:
     total = joint.constant.repeated(len(part.coefficients))
     for block in joint.blocks:
         block.add_to(total, part.value)
-    return solve(total, np.arange(len(joint.split.coefficients)), part.coefficients)
+    known = np.arange(len(joint.split.coefficients))
+    if joint.robust is not None:
+        return joint.robust.solution(total, known, part.coefficients, part.value)
+    return solve(total, known, part.coefficients)
 
 
 def _log_density(joint: Posterior, part: _Part) -> FloatArray:
@@ -108,7 +120,10 @@ def _moduli(joint: Posterior, part: _Part, rng: np.random.Generator) -> FloatArr
     """Moduli drawn given every coefficient, shape (b, h)."""
     solution = _solution(joint, part)
     white = rng.standard_normal((len(part.coefficients), joint.frame.hosts))
-    _, local = solution.draw(white)
+    if joint.robust is not None:
+        _, local = joint.robust.draw(solution, part.value, white)
+    else:
+        _, local = solution.draw(white)
     if joint.limits is not None:
         joint.limits.redraw(solution, part.value, local, white)
     return joint.frame.modulus(local, part.coefficients)

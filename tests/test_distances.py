@@ -331,3 +331,19 @@ def test_the_command(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None
     (tmp_path / "cepheids.csv").unlink()
     assert read_result(saved).source is None
     assert main(["distances", saved, new]) == 0  # the tables behind the result may be gone
+
+
+@pytest.mark.parametrize("treatment", ["mixture", "Student-t"])
+def test_outliers_in_the_new_stars_are_met_as_in_the_fit(treatment: str) -> None:
+    """Stars that lie off count as the calibration's own outliers do."""
+    plain, tables = builders.choices(), builders.tables()
+    plain["cepheids"]["outliers"] = {"treatment": treatment}
+    del plain["anchors"]["parallaxes"], tables["anchors.parallaxes"]
+    for section in ("supernovae", "expansion"):
+        del plain[section], tables[section]
+    stars = tables["cepheids"]
+    stars.loc[[3, 15, 30], "Hmag"] += [0.9, -1.1, 1.0]
+    out = stars["Galaxy"] == "Q07"
+    less = build_ladder(plain, {"cepheids": stars[~out]})
+    one = distances_of(draw(less, seed=2, draws=DRAWS), [stars[out]])
+    agree(one, draw(build_ladder(plain, tables), seed=3, draws=2 * DRAWS), error=6.0)
