@@ -4,11 +4,31 @@ from __future__ import annotations
 
 from collections.abc import Collection, Iterator, Mapping
 
+from ladderfit import schema
 from ladderfit.choices.outliers import CLIPPING, MIXTURE, STUDENT
 from ladderfit.choices.parallaxes import Parallaxes
 from ladderfit.choices.relation import Relation
 from ladderfit.choices.stars import Cepheids
 from ladderfit.errors import Problem, nearest
+from ladderfit.names import base_name
+from ladderfit.priors import Fixed, Prior
+
+POSITIVE = ("outlier_width", "parallax_outlier_width", "degrees_of_freedom")
+_FRACTIONS = ("outlier_fraction", "parallax_outlier_fraction")
+
+
+def fraction_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:
+    """Priors of fractions that reach beyond 0 and 1."""
+    for name, prior in priors.items():
+        if base_name(name) in _FRACTIONS:
+            low, high = (prior.centre,) * 2 if isinstance(prior, Fixed) else prior.bounds
+            if low < 0.0 or high > 1.0:
+                yield Problem(
+                    found=str(prior),
+                    expected="a prior between 0 and 1",
+                    remedy="write {uniform = [0.0, 0.5]}, say",
+                    key=schema.join("priors", name),
+                )
 
 
 def outlier_faults(

@@ -11,7 +11,7 @@ from ladderfit import schema
 from ladderfit.choices.anchors import Anchors, Hosts
 from ladderfit.choices.columns import column_faults
 from ladderfit.choices.covariance import Covariance
-from ladderfit.choices.outlier_checks import outlier_faults
+from ladderfit.choices.outlier_checks import POSITIVE, fraction_faults, outlier_faults
 from ladderfit.choices.parallaxes import Parallaxes
 from ladderfit.choices.peak_relation import PeakRelation
 from ladderfit.choices.photometry_checks import completeness_faults, reddening_faults
@@ -168,6 +168,7 @@ class Choices:
             "anchors.covariance": self.anchors.covariance is not None,
         }
         stars = self.anchors.parallaxes
+        yield from fraction_faults(self.priors)
         yield from outlier_faults(
             self.relation, self.cepheids, stars, self.groups, covariances=covariances
         )
@@ -222,6 +223,9 @@ def _default_of_file(choices: Choices, name: str) -> Prior | None:
     return None
 
 
+_POSITIVE = ("parallax_error_scale", "distance_length", *POSITIVE)
+
+
 def _prior_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:
     known = [name for name, p in PARAMETERS.items() if p.prior is not None]
     for name in priors:
@@ -232,7 +236,7 @@ def _prior_faults(priors: Mapping[str, Prior]) -> Iterator[Problem]:
                 remedy=nearest(name, known),
                 key=schema.join("priors", name),
             )
-        elif base_name(name) in ("parallax_error_scale", "distance_length"):
+        elif base_name(name) in _POSITIVE:
             prior = priors[name]
             lowest = prior.value if isinstance(prior, Fixed) else prior.bounds[0]
             if lowest < 0.0 or (isinstance(prior, Fixed) and lowest == 0.0):
