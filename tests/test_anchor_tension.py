@@ -12,9 +12,11 @@ from scipy.stats import kstest
 from small_ladders import MODULI, TRUTH, small_ladder
 
 from ladderfit.anchors import PARALLAXES, NoTensionError, Tension, tension
+from ladderfit.anchors.tension import _from_draws
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock.redraw import mock_from_ladder
 from ladderfit.posterior.joint import posterior
+from ladderfit.sampling.run import draw
 
 SEED = 12
 TRUE = TRUTH | {f"modulus[{host}]": modulus for host, modulus in MODULI.items()}
@@ -83,6 +85,26 @@ def test_a_shared_error_brings_anchors_together() -> None:
     )
     together, independent = (tension(each, "Tavin", draws=200) for each in (shared, apart))
     assert together.error < 0.8 * independent.error
+
+
+@pytest.mark.parametrize("case", ["independent", "an error they share"])
+def test_draws_of_the_modulus_say_the_same(case: str) -> None:
+    """What is done where the modulus is not normal given phi: limits, outliers."""
+    ladder = CASES[case]()
+    without = draw(ladder.change({"anchors.geometric.Tavin.use": False}), draws=4000)
+    exact = tension(ladder, "Tavin", without=without)
+    found = _from_draws(ladder, "Tavin", without)
+    assert found.difference == pytest.approx(exact.difference, abs=4.0 * exact.error / 60.0)
+    assert found.error == pytest.approx(exact.error, rel=0.05)
+    assert found.deviations == pytest.approx(exact.deviations, abs=0.1)
+
+
+def test_an_anchor_that_the_outliers_do_not_touch() -> None:
+    """Modelling outliers that are not there leaves the tension nearly as it is."""
+    ladder = small_ladder("anchors")
+    plain = tension(ladder, "Tavin", seed=1)
+    robust = tension(ladder.change({"cepheids.outliers.treatment": "mixture"}), "Tavin", seed=1)
+    assert robust.difference == pytest.approx(plain.difference, abs=plain.error)
 
 
 def test_an_anchor_out_of_use_is_compared_too() -> None:
