@@ -23,6 +23,7 @@ from ladderfit.workbench.tables import all_numbers
 from ladderfit.workbench.view_bar import ViewBar
 
 HEIGHT = "336px"
+_AGAIN = 2  # beats after slow work with which its picture is sent once more
 
 
 class Frame:
@@ -57,6 +58,7 @@ class Frame:
         self.slow = Slow(background=shelf.runs.background)
         self._aside: tuple[object, HostResiduals | None] | None = None
         self._drawn = ""
+        self._again = 0
         self.table = widgets.HTML(layout=widgets.Layout(margin="0"))
         self.busy = widgets.HTML(layout=widgets.Layout(display="none", margin="0"))
         self.busy.add_class("lf-busy")
@@ -79,7 +81,8 @@ class Frame:
         drawn = bar.shows == "view"
         self._scroll.layout.display = "none" if drawn else ""
         self.picture.canvas.layout.display = "" if drawn else "none"
-        self.entry.widget.layout.display = "" if bar.shows == "numbers" else "none"
+        entered = bar.shows == "numbers" or (bar.view == "published" and bar.shows == "table")
+        self.entry.widget.layout.display = "" if entered else "none"
         self.table.layout.display = "none" if bar.shows == "board" else ""
         self.shelf.panel.widget.layout.display = "" if bar.shows == "board" else "none"
         if bar.shows in ("numbers", "board"):
@@ -114,13 +117,21 @@ class Frame:
 
     @property
     def waits(self) -> bool:
-        """Whether slow work is under way, or done and not shown yet."""
-        return self.slow.current is not None
+        """Whether slow work is under way, or done and perhaps not seen yet."""
+        return self.slow.current is not None or self._again > 0
 
     def progress(self) -> None:
-        """Say how far slow work is, or show what it gave."""
+        """Say how far slow work is, or show what it gave.
+
+        A page that is still taking in a picture drops word of a newer one, so that
+        the outcome is sent once more with the next beats.
+        """
         job = self.slow.current
-        if job is not None and job.done:
+        if job is None and self._again > 0:
+            self._again -= 1
+            self.picture.canvas.draw_idle()
+        elif job is not None and job.done:
+            self._again = _AGAIN
             self.show()
         elif job is not None:
             self._tell(self.bar.chosen, job)

@@ -32,7 +32,7 @@ def column(shown: Shown) -> str:
     found = against_column(shown.result, shown.rung, shown.column)
     if found is None:
         return table((), [])
-    return _farthest(found.residuals, found.x, found.column, found.data_unit)
+    return farthest(found.residuals, found.x, found.column, found.data_unit)
 
 
 def relation(shown: Shown) -> str:
@@ -44,9 +44,9 @@ def relation(shown: Shown) -> str:
         rows = [(f"{p:.3g}", *_pair(m, e)) for p, m, e in zip(*binned(stars), strict=True)]
         text += "<h4>Mean residual in bins of period</h4>"
         text += table(("period [d]", "mean [mag]", "error [mag]"), rows)
-        text += _farthest(stars, 10.0**stars.x, "period [d]", "mag")
+        text += farthest(stars, 10.0**stars.x, "period [d]", "mag")
     if parallaxes is not None:
-        text += _farthest(parallaxes, 10.0**parallaxes.x, "period [d]", "mas")
+        text += farthest(parallaxes, 10.0**parallaxes.x, "period [d]", "mas")
     return text
 
 
@@ -81,7 +81,7 @@ def hubble(shown: Shown) -> str:
         (velocity_residuals(result), "distance [Mpc]", "km/s"),
     ):
         if found is not None:
-            text += _farthest(found, found.x, words, unit)
+            text += farthest(found, found.x, words, unit)
     return text
 
 
@@ -108,7 +108,7 @@ def parallaxes(shown: Shown) -> str:
     if stars is None or sample is None:
         return table((), [])
     photometric = stars.model - parallax_offsets(result, sample)
-    return corner(shown) + _farthest(stars, photometric, "photometric parallax [mas]", "mas")
+    return corner(shown) + farthest(stars, photometric, "photometric parallax [mas]", "mas")
 
 
 def priors(shown: Shown) -> str:
@@ -152,7 +152,7 @@ def _number(result: Result, name: str) -> str:
     return str(Interval.of(result.draws[name])) if name in result.draws else ""
 
 
-def _farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
+def farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
     """Objects by how far they are off, the farthest first."""
     order = np.argsort(-np.abs(data.standardised))[:MOST_ROWS]
     rows = [

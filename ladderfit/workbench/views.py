@@ -6,10 +6,12 @@ stand under "more".
 
 from __future__ import annotations
 
+from ladderfit.anchors import anchor_names
 from ladderfit.ladder import Ladder
+from ladderfit.peak_views import VIEWS as TERMS_SEEN
+from ladderfit.workbench import trial_tables, works
 from ladderfit.workbench import view_tables as tables
-from ladderfit.workbench import works
-from ladderfit.workbench.canvas import hubble, panels, parallaxes
+from ladderfit.workbench.canvas import checks, hubble, panels, parallaxes, trials
 from ladderfit.workbench.canvas.corner import CornerView
 from ladderfit.workbench.canvas.relation import RelationView
 from ladderfit.workbench.canvas.view import View
@@ -33,6 +35,11 @@ def _has_peaks(ladder: Ladder, _: str) -> bool:
     expansion = ladder.choices.expansion
     objects = expansion is not None and expansion.table is not None
     return ladder.choices.supernovae is not None or objects
+
+
+def _has_terms(ladder: Ladder, _: str) -> bool:
+    relation = ladder.choices.peak_relation
+    return any(getattr(relation, name) != "none" for name in TERMS_SEEN)
 
 
 def _has_flow(ladder: Ladder, _: str) -> bool:
@@ -108,6 +115,79 @@ VIEWS: tuple[View, ...] = (
         doing="fitting with other redshift cuts",
     ),
     View(
+        "anchors",
+        "Anchors",
+        "Each anchor alone and left out, and how far it is from the others",
+        ("anchors",),
+        lambda ladder, _: len(anchor_names(ladder)) > 1,
+        trial_tables.anchors,
+        draw=trials.anchors,
+        work=works.anchors,
+        doing="fitting with each anchor alone and without it",
+    ),
+    View(
+        "influence",
+        "Influence",
+        "What moves the numbers most when it is left out",
+        EVERY,
+        lambda ladder, rung: True,
+        trial_tables.influence,
+        draw=trials.influence,
+        work=works.influence,
+        doing="leaving out every object in turn",
+    ),
+    View(
+        "sensitivity",
+        "Priors",
+        "What each number owes to its priors and to the data",
+        EVERY,
+        lambda ladder, rung: True,
+        trial_tables.sensitivity,
+        draw=trials.sensitivity,
+        work=works.sensitivity,
+        doing="raising priors and data to a power",
+    ),
+    View(
+        "alternatives",
+        "Alternatives",
+        "The alternatives of the ladder file to the choices in force",
+        EVERY,
+        lambda ladder, rung: bool(ladder.choices.alternatives),
+        trial_tables.alternatives,
+        draw=trials.alternatives,
+        work=works.alternatives,
+        doing="fitting one alternative after another",
+    ),
+    View(
+        "checks",
+        "Checks",
+        "Predictive checks of what the model leaves over, and outliers",
+        EVERY,
+        lambda ladder, rung: True,
+        trial_tables.checks,
+        draw=checks.checks,
+        work=works.checks,
+        doing="checking against replications",
+    ),
+    View(
+        "peaks",
+        "Peak terms",
+        "Peaks against width, decline rate, colour and host mass",
+        PEAKS,
+        _has_terms,
+        trial_tables.peaks,
+        draw=checks.peaks,
+    ),
+    View(
+        "published",
+        "Published",
+        "Published values beside the posterior",
+        EVERY,
+        lambda ladder, rung: True,
+        trial_tables.published,
+        draw=checks.published,
+    ),
+    View(
         "corner",
         "Corner",
         "The joint posterior",
@@ -119,7 +199,7 @@ VIEWS: tuple[View, ...] = (
 )
 
 FIRST = {
-    "anchors": ("relation", "parallaxes", "moduli", "corner"),
+    "anchors": ("relation", "parallaxes", "anchors", "corner", "moduli"),
     "cepheids": ("relation", "column", "moduli", "corner"),
     "supernovae": ("hubble", "moduli", "column", "corner"),
     "expansion": ("hubble", "cuts", "column", "corner"),

@@ -5,8 +5,13 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+from ladderfit.alternatives import Comparison, run_alternatives
+from ladderfit.anchors import AnchorComparison, compare_anchors
+from ladderfit.checks import Checks, predictive_checks
 from ladderfit.distance_priors import PRIORS, along_distance_priors
+from ladderfit.influence import Influence, leave_one_out
 from ladderfit.ladder import Ladder
+from ladderfit.power_scaling import PriorSensitivity, prior_sensitivity
 from ladderfit.priors import Fixed
 from ladderfit.redshift_cuts import RedshiftCuts, hubble_along_cuts
 from ladderfit.result import Result
@@ -64,3 +69,31 @@ def distance_priors(result: Result, tell: Tell) -> dict[str, Result]:
 def redshift_cuts(result: Result, tell: Tell) -> RedshiftCuts:
     """The Hubble constant along the redshift cuts."""
     return hubble_along_cuts(result.ladder, draws=CUT_DRAWS, progress=tell)
+
+
+def anchors(result: Result, tell: Tell) -> AnchorComparison:
+    """The anchors against each other."""
+    return compare_anchors(result.ladder, base=result, progress=lambda _, share: tell(share))
+
+
+def influence(result: Result, tell: Tell) -> Influence:
+    """What every object does when it is left out."""
+    return leave_one_out(result, progress=lambda _, share: tell(share))
+
+
+def sensitivity(result: Result, tell: Tell) -> PriorSensitivity:
+    """What the priors do."""
+    tell(0.1)
+    return prior_sensitivity(result)
+
+
+def alternatives(result: Result, tell: Tell) -> Comparison:
+    """The ladder file's alternatives to the choices in force, one after another."""
+    ladder = result.ladder
+    return run_alternatives(ladder, workers=1, progress=lambda _, share: tell(share))
+
+
+def checks(result: Result, tell: Tell) -> Checks:
+    """Predictive checks."""
+    tell(0.1)
+    return predictive_checks(result)

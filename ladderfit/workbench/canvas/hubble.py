@@ -113,7 +113,10 @@ def cuts(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
     known = parameter("hubble_constant")
     left.set_ylabel(f"{known.words} [{known.unit}]")
     place_label(left, 46)
-    for axes in (left, right):
-        axes.xaxis.labelpad = 1
-    left.legend(loc="best")
+    ends = zip((left, right), ("Lower", "Upper"), shown.worked.chosen, strict=True)
+    for axes, words, chosen in ends:
+        axes.set_xlabel(f"{words} redshift cut ({chosen:g} chosen)", labelpad=1)
+    low, high = left.get_ylim()
+    left.set_ylim(low, high + 0.2 * (high - low))  # room for the legend
+    left.legend(loc="upper left", borderaxespad=0.1)
     return []
