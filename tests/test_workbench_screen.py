@@ -24,9 +24,14 @@ def ladder() -> Ladder:
     return build_ladder(builders.choices(), builders.tables()).change({"sampling.draws": 600})
 
 
-@pytest.fixture
-def bench(ladder: Ladder, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Workbench:
+@pytest.fixture(autouse=True)
+def _elsewhere(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A workbench writes beside its notebook."""
     monkeypatch.chdir(tmp_path)
+
+
+@pytest.fixture
+def bench(ladder: Ladder) -> Workbench:
     return Workbench(ladder)
 
 

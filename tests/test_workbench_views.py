@@ -37,9 +37,14 @@ def ladder() -> Ladder:
     return build_ladder(choices, tables).change({"sampling.draws": 600})
 
 
-@pytest.fixture
-def bench(ladder: Ladder, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Workbench:
+@pytest.fixture(autouse=True)
+def _elsewhere(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A workbench writes beside its notebook."""
     monkeypatch.chdir(tmp_path)
+
+
+@pytest.fixture
+def bench(ladder: Ladder) -> Workbench:
     made = Workbench(ladder)
     made.open("anchors")
     return made
@@ -136,7 +141,7 @@ def test_selection_is_switched_on_changed_and_off(bench: Workbench) -> None:
     assert stars_of(bench).selection is None
 
 
-def test_what_the_file_says_of_the_selection_is_shown(ladder: Ladder, tmp_path: Path) -> None:
+def test_what_the_file_says_of_the_selection_is_shown(ladder: Ladder) -> None:
     stated = {"band": "H", "limit": 25.0, "softness": 0.1}
     bench = Workbench(ladder.change({PRIOR: "uniform in volume", SELECTION: stated}))
     assert control(bench, "Selection").widget.value == "magnitude limit"
@@ -197,8 +202,7 @@ def test_a_slow_view_works_beside_the_page(bench: Workbench) -> None:
     assert bench.pulse.every == 0
 
 
-def test_terms_of_the_peaks(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.chdir(tmp_path)
+def test_terms_of_the_peaks() -> None:
     made = ladder_with("all rungs", EVERYTHING).change({"sampling.draws": 600})
     bench = Workbench(made)
     bench.open("supernovae")
