@@ -18,7 +18,9 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from ladderfit.alternatives import run_alternatives
     from ladderfit.anchors import compare_anchors
+    from ladderfit.checks import predictive_checks
     from ladderfit.compare import compare_results
+    from ladderfit.completeness import propose_period_cuts
     from ladderfit.distances import distances_of
     from ladderfit.influence import leave_one_out
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
@@ -43,6 +45,8 @@ _HOME = {
     "compare_results": "ladderfit.compare",
     "distances_of": "ladderfit.distances",
     "leave_one_out": "ladderfit.influence",
+    "predictive_checks": "ladderfit.checks",
+    "propose_period_cuts": "ladderfit.completeness",
     "predictive_fit": "ladderfit.predictive",
     "compare_fits": "ladderfit.predictive",
     "prior_sensitivity": "ladderfit.power_scaling",
@@ -63,6 +67,8 @@ __all__ = [
     "compare_results",
     "distances_of",
     "leave_one_out",
+    "predictive_checks",
+    "propose_period_cuts",
     "predictive_fit",
     "compare_fits",
     "prior_sensitivity",

@@ -110,4 +110,5 @@ def table(folder: Path, repeats: int = 3) -> pd.DataFrame:
 
 
 if __name__ == "__main__":
-    print(table(Path(os.environ["LADDERFIT_TABLES"])).to_string())
+    repeats = int(sys.argv[1]) if len(sys.argv) > 1 else 3
+    print(table(Path(os.environ["LADDERFIT_TABLES"]), repeats).to_string())
