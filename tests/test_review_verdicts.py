@@ -187,6 +187,18 @@ def test_numbers_of_one_relation_are_explained_together(stars: pd.DataFrame) -> 
         ({"quantity": "slope", "value": -3.3, "method": {"fixed": {"slope": -3.3}}}, "fixed"),
         ({"quantity": "slope", "value": -3.3, "method": {"mode": "overtone"}}, "does not tell"),
         (
+            {"quantity": "slope", "value": -3.3, "method": {"set_aside": ["Orr-001", "X"]}},
+            "the paper sets aside X, which the table does not have",
+        ),
+        (
+            {"quantity": "slope", "value": -3.3, "method": {"fixed": {"metallicity": -0.2}}},
+            "the paper holds metallicity fixed, a term the ladder file lacks",
+        ),
+        (
+            {"quantity": "slope", "value": -3.3, "method": {"metallicity": True}},
+            "the ladder file none",
+        ),
+        (
             {"quantity": "slope", "value": -3.3, "method": {"periods": [500.0, 600.0]}},
             "no star is left",
         ),

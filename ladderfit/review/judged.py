@@ -95,10 +95,18 @@ def beyond_the_table(bench: Bench, claim: Claim) -> str | None:
         unknown.append(claim.host)
     if unknown:
         return f"the table has no host {', '.join(sorted(set(unknown)))}"
+    known = set() if stars is None else {str(name) for name in stars.star}
+    strangers = [name for name in claim.method.set_aside if name not in known]
+    if strangers:
+        return f"the paper sets aside {', '.join(strangers)}, which the table does not have"
     if claim.quantity == "metallicity" and choices.relation.metallicity == "none":
         return "the ladder file has no metallicity term"
     if claim.method.metallicity and choices.relation.metallicity == "none":
         return "the paper has a metallicity term, the ladder file none"
+    terms = bench.system(bench.described(claim.method)).names
+    strangers = [name for name in claim.method.fixed if name not in terms]
+    if strangers:
+        return f"the paper holds {', '.join(strangers)} fixed, a term the ladder file lacks"
     if claim.method.mode == "overtone" and bench.overtone is None:
         return "the table does not tell overtone pulsators"
     if claim.apparent and claim.host is None and len(ladder.hosts) > 1:

@@ -16,7 +16,7 @@ from ladderfit.review.checks import (
     possible_error,
     rounding_check,
 )
-from ladderfit.review.claims import OF_THE_RELATION, Claim, Claims
+from ladderfit.review.claims import OF_THE_RELATION, Claim, Claims, Method
 from ladderfit.review.fits import Treatment
 from ladderfit.review.judged import beyond_the_table, refusal, undetermined
 from ladderfit.review.refits import (
@@ -139,9 +139,8 @@ def review(
         else:
             published = claims.claims[number]
             found.append(_judged(bench, published, each, list(_relatives(each, opened))))
-    stars = bench.stars
-    notes = () if stars is None else bench.system(bench.described(claims.claims[0].method)).notes
-    return Review(claims.title, ladder, tuple(found), seed, draws, tuple(notes))
+    notes = bench.system(bench.described(Method())).notes
+    return Review(claims.title, ladder, tuple(found), seed, draws, notes)
 
 
 def _opened(bench: Bench, claims: Claims, claim: Claim) -> _Open | ClaimReview:
