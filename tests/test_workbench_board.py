@@ -144,6 +144,9 @@ def test_a_label_and_taking_off(bench: Workbench) -> None:
     assert "the <first>" in listed(bench)[0]  # a list of plain text
     assert json.loads(Path("mine.pins/pin-01.json").read_text())["label"] == "the <first>"
     panel.remove.click()
+    assert panel.remove.description == "Really?"
+    assert len(listed(bench)) == 1
+    panel.remove.click()
     assert listed(bench) == []
     assert "Nothing is pinned yet" in panel.details.value
     assert not list(Path("mine.pins").glob("pin-01*"))
@@ -321,6 +324,13 @@ def test_sampled_in_full_and_shown_beside(small: Workbench) -> None:
     assert "in full" not in small.numbers.value  # the run is of other choices
     small.foot.undo.click()
     assert "in full" in small.numbers.value
+    table = small.ladder.base / "supernovae.csv"
+    before = table.read_text()
+    table.write_text(before.replace("10.1", "10.2"))
+    other = Workbench(read_ladder(small.ladder.path).change({"anchors.parallaxes": None}))  # type: ignore[arg-type]
+    assert "in full" not in other.numbers.value
+    assert "tables have changed" in other.shelf.runs.find("run-01").words
+    table.write_text(before)
     small.bar.show_board()
     small.shelf.panel.choose("run-01")
     assert "No choice differs" in small.shelf.panel.details.value

@@ -27,6 +27,7 @@ from ladderfit.workbench.state import Session
 
 NOW, BASE, LEFT = "now", "baseline", "left"
 _HEADLINE = (("hubble_constant", "H0"), ("zero_point", "zero point"))
+_OFF, _SURE = "Take off", "Really?"
 _LABEL = widgets.Layout(width="196px")
 
 
@@ -59,13 +60,14 @@ class BoardPanel:
         self._asks = asks
         self._start = session.ladder.choices
         self._quiet = False
+        self._doubted: str | None = None  # the pin that is about to go
         self.entries = widgets.Select(
             options=[], rows=4, layout=widgets.Layout(width="99%", height="80px")
         )
         self.entries.tooltip = "Pins and runs"
         self.back = button("Go back to it", "Make these choices", self._go_back, "92px")
         self.against = button("Count from it", "Count changes from it", self._measure, "94px")
-        self.remove = button("Take off", "Take the pin off, and its files away", self._off, "66px")
+        self.remove = button(_OFF, "Take the pin off, and its files away", self._off, "66px")
         self.label = widgets.Text(
             placeholder="label", tooltip="Label of the pin", continuous_update=False, layout=_LABEL
         )
@@ -145,6 +147,8 @@ class BoardPanel:
     def _show(self) -> None:
         """What can be done with the entry chosen, and how it compares."""
         name = self.entries.value
+        if name != self._doubted:
+            self.remove.description, self._doubted = _OFF, None
         pin, run = self._pin(), self._run()
         for item in self._of_pin:
             item.layout.display = "" if pin is not None else "none"
@@ -218,9 +222,13 @@ class BoardPanel:
 
     def _off(self, _: Any) -> None:
         pin = self._pin()
-        if pin is not None:
-            self.board.remove(pin)
-            self.refresh()
+        if pin is None:
+            return
+        if self.remove.description != _SURE:
+            self.remove.description, self._doubted = _SURE, pin.name
+            return
+        self.board.remove(pin)
+        self.refresh()
 
     def _labelled(self, change: Any) -> None:
         pin = self._pin()

@@ -200,7 +200,9 @@ class LongRuns:
             choices = moved(read_choices(place / "ladder.toml"), place, self._ladder)
         progress = run.progress()
         result = run.result() if progress.state == "finished" else None
-        return LongRun(name, choices, progress, result)
+        changed = result is not None and result.source is None
+        words = "Its tables have changed since: it does not stand beside the live numbers."
+        return LongRun(name, choices, progress, result, words if changed else "")
 
 
 def _trouble(done: Future[Any]) -> str:

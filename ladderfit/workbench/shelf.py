@@ -122,9 +122,10 @@ class Shelf:
         return f"{name} has started; it goes on without this page, in {self.board.folder.name}."
 
     def full(self) -> Result | None:
-        """The finished run of the choices in force; None where there is none."""
+        """The finished run of the choices and tables in force; None where there is none."""
         run = self.runs.of(self.session.settled.choices)
-        return None if run is None else run.result
+        stale = run is None or run.result is None or run.result.source is None
+        return None if stale or run is None else run.result
 
     def ended(self) -> str:
         """What to say of runs that have ended since this was asked last."""
