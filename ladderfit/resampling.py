@@ -239,7 +239,8 @@ def _noise_of(result: Result) -> Noise:
     known = [(part, name) for part, name in zip(parts, result.choices.peak_scatters, strict=True)]
     scatter = [np.full(len(part), at_mean(result, name)) for part, name in known if part]
     matrix = cast("FloatArray", result.ladder.peak_covariance)
-    factor = np.linalg.cholesky(matrix + np.diag(np.concatenate(scatter) ** 2))
+    whole = matrix + np.diag(np.concatenate(scatter) ** 2)
+    factor = np.asarray(np.linalg.cholesky(whole), dtype=np.float64)
     return Noise(np.concatenate([part.model for part in parts if part is not None]), factor)
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, fields, replace
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -191,5 +192,8 @@ def _with_host_values(sample: StarSample, values: HostValues, left: IntArray) ->
 def _taken_photometry(whole: Photometry | None, left: IntArray) -> Photometry | None:
     if whole is None:
         return None
-    parts = (getattr(whole, part.name) for part in fields(whole))
-    return Photometry(*(None if part is None else floats(part[left]) for part in parts))
+    parts = {part.name: getattr(whole, part.name) for part in fields(whole)}
+    taken: dict[str, Any] = {
+        name: None if values is None else floats(values[left]) for name, values in parts.items()
+    }
+    return replace(whole, **taken)

@@ -23,7 +23,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled, in_halves
-from ladderfit.kernels.quadrature import K
+from ladderfit.kernels.narrow import K
 from ladderfit.kernels.sightlines import VOLUME_TILT, log_falloff
 
 FloatArray = npt.NDArray[np.float64]

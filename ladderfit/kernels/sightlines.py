@@ -24,7 +24,8 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled, in_halves
-from ladderfit.kernels.quadrature import LOG_2PI, K, log_stretched, y_of
+from ladderfit.kernels.narrow import K
+from ladderfit.kernels.quadrature import LOG_2PI, log_stretched, y_of
 
 FloatArray = npt.NDArray[np.float64]
 

@@ -9,6 +9,7 @@ is left to it.
 from __future__ import annotations
 
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
 
@@ -110,5 +111,6 @@ class WarmDrawer:
 
 def _tables(joint: Posterior | None) -> list[list[SumTable]]:
     """The tabulated sums of a posterior, which later ones share with it."""
-    rows = () if joint is None else (getattr(block, "rows", None) for block in joint.blocks)
+    blocks = () if joint is None else joint.blocks
+    rows: list[Any] = [getattr(block, "rows", None) for block in blocks]
     return [each.tables for each in rows if hasattr(each, "tables")]
