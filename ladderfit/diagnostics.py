@@ -38,7 +38,7 @@ def smoothed_weights(log_weight: FloatArray) -> tuple[FloatArray, float]:
     if np.ptp(log_weight[finite]) < 1e-12:
         weights[finite] = 1.0 / finite.sum()
         return weights, 0.0
-    with np.errstate(divide="ignore", invalid="ignore"):
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         # the library takes log likelihoods left out, that is, minus the log weights
         smoothed, k = array_stats.psislw(-log_weight[finite])
     weights[finite] = np.exp(smoothed - smoothed.max())
