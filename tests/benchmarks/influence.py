@@ -16,13 +16,13 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
-sys.path[:0] = [str(Path(__file__).parent), str(Path(__file__).parent.parent)]
-
-import covariance
-from ladders import reference_ladder
-
 import ladderfit as lf
 from ladderfit.shipped import sample_ladder
+
+sys.path[:0] = [str(Path(__file__).parent), str(Path(__file__).parent.parent)]
+
+import covariance  # noqa: E402
+from ladders import reference_ladder  # noqa: E402
 
 MIXTURE = {"cepheids.outliers.treatment": "mixture"}
 
