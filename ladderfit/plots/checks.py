@@ -16,7 +16,7 @@ _WORDS = {
     "period": "log period [d]",
     "colour": "colour [mag]",
     "metallicity": "metallicity [dex]",
-    "distance": "modulus of the host [mag]",
+    "distance": "host modulus [mag]",
     "stated error": "stated error [mag]",
 }
 _MOST = 8  # groups of neighbours along a quantity

@@ -54,8 +54,8 @@ def plain_ladder(folder: Path) -> Ladder:
     return lf.build_ladder(CHOICES, {"cepheids": cepheids(folder), "supernovae": peaks()})
 
 
-def treatments(base: Ladder) -> dict[str, Mapping[str, Any]]:
-    """Changes by name of the treatment."""
+def treatments(base: Ladder, *, limits: bool = True) -> dict[str, Mapping[str, Any]]:
+    """Changes by name of the treatment; those with limits take a fit to find."""
     stars, faintest = base.cepheids, {}
     for place, host in enumerate(base.hosts):
         faintest[host] = float(stars.photometry.band[stars.host == place].max())
@@ -63,17 +63,19 @@ def treatments(base: Ladder) -> dict[str, Mapping[str, Any]]:
         how: {**BANDS, "relation.reddening": {"colours": how}}
         for how in ("in the variance", "one population", "intrinsic relation")
     }
-    limits = {"cepheids.completeness": {"band": "F160W", "limits": faintest}}
-    return {
+    found: dict[str, Mapping[str, Any]] = {
         "plain": {},
         **{f"ratio free, {how}": changes for how, changes in free.items()},
         "shared, 0.1 per mag of error": {
             "cepheids.shared": {"crowding": {"loading": "e_tot", "error": 0.1}}
         },
         "shared, width free": {"cepheids.shared": {"crowding": {"loading": "e_tot"}}},
-        "limits at the faintest": limits,
-        "limits cut": propose_period_cuts(draw(base.change(limits), seed=1)).changes,
     }
+    if limits:
+        changes = {"cepheids.completeness": {"band": "F160W", "limits": faintest}}
+        cuts = propose_period_cuts(draw(base.change(changes), seed=1))
+        found |= {"limits at the faintest": changes, "limits cut": cuts.changes}
+    return found
 
 
 def timed(ladder: Ladder, repeats: int = 3) -> tuple[Result, float]:
