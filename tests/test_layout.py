@@ -64,11 +64,11 @@ ORDER = """
     draft.make draft
     mock.tables mock.light_curves mock.contamination mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
     mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
-    coverage
-    plots.theme plots.density plots.relation plots.corner plots.parallax plots.moduli
+    coverage.design coverage.ranks coverage.quantities coverage.outcome coverage.experiment coverage.words coverage.folder coverage
+    plots.theme plots.density plots.relation plots.outliers plots.corner plots.parallax plots.moduli
     plots.hubble plots.peaks plots.cuts plots.checks plots.alternatives plots.review plots.anchors
-    plots.influence plots.priors plots
-    alternatives_folder calibration repeat review_folder
+    plots.influence plots.priors plots.coverage plots
+    alternatives_folder coverage_folder calibration repeat review_folder
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.pins workbench.keeping workbench.long_runs
@@ -81,7 +81,7 @@ ORDER = """
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.board_panel workbench.shelf workbench.frame workbench.screen workbench
     launcher
-    commands.terminal commands.alternatives commands.calibrate commands.report commands.distances commands.compare commands.draft commands.review commands.mock commands.workbench commands
+    commands.terminal commands.alternatives commands.calibrate commands.report commands.distances commands.compare commands.coverage commands.draft commands.review commands.mock commands.workbench commands
     cli __main__
 """.split()
 

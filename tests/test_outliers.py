@@ -15,6 +15,8 @@ from ladderfit.ladder import Ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.mock import mock_from_ladder
 from ladderfit.outliers import outlier_table
+from ladderfit.plots import figures
+from ladderfit.plots.outliers import outlier_figure
 from ladderfit.posterior.joint import posterior
 from ladderfit.sampling.run import draw
 from ladderfit.sampling.warm import WarmDrawer
@@ -173,3 +175,23 @@ def test_clipping_is_told_and_only_for_comparing() -> None:
     full, cut = draw(known, draws=500), draw(known.change(tighter), draws=500)
     assert cut.mean("scatter") < full.mean("scatter") - 3.0 * full.sd("scatter")
     assert cut.sd("slope") < full.sd("slope")
+
+
+@pytest.mark.parametrize("treatment", ["mixture", "Student-t"])
+def test_the_figure_marks_every_star(treatment: str) -> None:
+    ladder, table = survey(1)
+    result = draw(ladder.change({CEPHEIDS: treatment}), seed=1, draws=400)
+    figure = outlier_figure(result)
+    words = [text.get_text() for legend in figure.legends for text in legend.get_texts()]
+    counts = [
+        int(w.rpartition("(")[2].split()[0]) for w in words if w.endswith(("star)", "stars)"))
+    ]
+    assert sum(counts) == len(ladder.cepheids)
+    known = {row["ID"] for row in table if row["outlier"] == "yes"}
+    if treatment == "mixture":
+        assert abs(counts[1] + counts[2] - len(known)) <= 6
+    named = {text.get_text() for text in figure.axes[1].texts}
+    assert named <= known
+    assert len(named) > 2
+    assert outlier_figure(draw(ladder, seed=1, draws=200)) is None
+    assert "outliers" in figures(result)

@@ -10,6 +10,7 @@ from matplotlib.figure import Figure
 from ladderfit.plots.corner import corner_figure
 from ladderfit.plots.hubble import hubble_figure
 from ladderfit.plots.moduli import moduli_figure
+from ladderfit.plots.outliers import outlier_figure
 from ladderfit.plots.parallax import parallax_figure
 from ladderfit.plots.peaks import peaks_figure
 from ladderfit.plots.relation import relation_figure
@@ -25,6 +26,7 @@ _MAKERS = {
     "moduli": moduli_figure,
     "hubble": hubble_figure,
     "peaks": peaks_figure,
+    "outliers": outlier_figure,
 }
 DOTS_PER_INCH = 200
 
@@ -42,8 +44,8 @@ def figures(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH) -> di
     Returns
     -------
     dict of str to Figure
-        Among ``relation``, ``parallaxes``, ``corner``, ``moduli``, ``hubble`` and ``peaks``, in
-        this order.
+        Among ``relation``, ``parallaxes``, ``corner``, ``moduli``, ``hubble``, ``peaks`` and
+        ``outliers``, in this order.
     """
     return dict(_made(result, theme, width))
 

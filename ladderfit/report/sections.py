@@ -35,6 +35,8 @@ CAPTIONS = {
     "regions that hold 68 % and 95 %.",
     "moduli": "Distance moduli, and what each host's own geometry and supernovae say.",
     "hubble": "Supernovae in hosts and the expansion, and what is left over.",
+    "outliers": "Stars by their probability of being outliers (or, under a Student-t, by their "
+    "weight in the fit), and the farthest of them by name.",
     "peaks": "The peak-magnitude relation term by term, all other terms taken off: the line is in "
     "true values, dashed what is expected of measured ones.",
 }

@@ -16,7 +16,7 @@ from ladderfit.report.page import report_page
 from ladderfit.result import Result
 
 PAGE, TABLES, FIGURES = "report.html", "tables", "figures"
-_ORDER = ("relation", "moduli", "parallaxes", "hubble", "peaks", "corner")
+_ORDER = ("relation", "outliers", "moduli", "parallaxes", "hubble", "peaks", "corner")
 
 
 def write_report(
