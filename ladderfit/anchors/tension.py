@@ -165,7 +165,10 @@ def _from_draws(full: Ladder, anchor: str, without: Result) -> Tension:
             "a covariance of anchors beside magnitude limits or outliers is not covered"
         )
     own = next(each for each in full.geometric if each.name == anchor)
-    predicted, variance = without.draws[with_group("modulus", anchor)], own.error**2
+    name = with_group("modulus", anchor)
+    if name not in without.draws:
+        raise NoTensionError(f"without its anchor nothing of {anchor} takes part")
+    predicted, variance = without.draws[name], own.error**2
     for name, shared in full.choices.anchors.shared_errors.items():
         size = shared.error * shared.loads.get(anchor, 0.0)
         drawn = without.draws.get(with_group("shared_error", name))
