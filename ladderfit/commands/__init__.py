@@ -4,6 +4,7 @@ from ladderfit.commands import (
     alternatives,
     calibrate,
     compare,
+    coverage,
     distances,
     draft,
     mock,
@@ -13,4 +14,15 @@ from ladderfit.commands import (
 )
 
 # in the order of --help
-COMMANDS = (calibrate, alternatives, draft, review, report, distances, compare, mock, workbench)
+COMMANDS = (
+    calibrate,
+    alternatives,
+    draft,
+    review,
+    report,
+    distances,
+    compare,
+    mock,
+    coverage,
+    workbench,
+)

@@ -10,6 +10,7 @@ from ladderfit.commands.terminal import (
     EXIT_FAILED,
     EXIT_INTERRUPTED,
     Add,
+    count,
     progress_on,
     say,
     seed,
@@ -50,7 +51,7 @@ def add(add_parser: Add) -> None:
     where = command.add_mutually_exclusive_group()
     where.add_argument(
         "--workers",
-        type=_count,
+        type=count,
         metavar="N",
         help="processes (default: as many as there are cores, fewer for few fits)",
     )
@@ -58,12 +59,6 @@ def add(add_parser: Add) -> None:
         "--dask", metavar="ADDRESS", help="work on a Dask cluster, by its scheduler's address"
     )
     command.set_defaults(run=_alternatives)
-
-
-def _count(text: str) -> int:
-    if not text.isdecimal() or int(text) < 1:
-        raise argparse.ArgumentTypeError(f"found {text!r}, expected a whole number from 1 up")
-    return int(text)
 
 
 def _alternatives(chosen: argparse.Namespace) -> int:

@@ -75,6 +75,13 @@ def seed(text: str) -> int:
     return int(text)
 
 
+def count(text: str) -> int:
+    """The number of an option that asks for at least one of something."""
+    if not text.isdecimal() or int(text) < 1:
+        raise argparse.ArgumentTypeError(f"found {text!r}, expected a whole number from 1 up")
+    return int(text)
+
+
 def refuse_besides(option: str, chosen: argparse.Namespace, others: Sequence[str]) -> None:
     """Refuse options that say what `option` already says."""
     given = [name for name in others if getattr(chosen, name) is not None]

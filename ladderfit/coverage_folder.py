@@ -1,0 +1,55 @@
+"""A coverage experiment with its chart: what the command writes."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+from ladderfit.coverage.folder import coverage_in_folder
+from ladderfit.coverage.outcome import Experiment
+from ladderfit.ladder import Ladder
+from ladderfit.plots import DOTS_PER_INCH
+from ladderfit.plots.coverage import coverage_figure
+from ladderfit.plots.theme import LIGHT
+from ladderfit.sampling.direct import Progress
+
+
+def coverage_with_figure(
+    ladder: Ladder,
+    folder: str | Path,
+    repeats: int = 200,
+    *,
+    seed: int = 1,
+    fixed: bool = False,
+    workers: Any = None,
+    progress: Progress | None = None,
+) -> Experiment:
+    """As `ladderfit.coverage.folder.coverage_in_folder`; ``coverage.pdf`` and ``.png`` beside.
+
+    Raises
+    ------
+    InputError
+        If the folder holds something else, or the simulator does not know a term.
+    UndeterminedError, SamplingError
+        If the ladder itself cannot be fitted.
+    OSError
+        If the folder cannot be written.
+    """
+    experiment = coverage_in_folder(
+        ladder, folder, repeats, seed=seed, fixed=fixed, workers=workers, progress=progress
+    )
+    save_coverage_figure(experiment, Path(folder))
+    return experiment
+
+
+def save_coverage_figure(experiment: Experiment, folder: Path) -> list[Path]:
+    """Write the chart as PDF and PNG; gives the files written."""
+    figure, written = coverage_figure(experiment), []
+    with LIGHT.applied():
+        for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
+            path = folder / f"coverage{suffix}"
+            figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
+            figure.set_layout_engine("none")  # laid out once, for both files
+            written.append(path)
+    figure.clear()
+    return written
