@@ -15,7 +15,8 @@ import pytest
 ORDER = """
     errors rounding
     units files shipped priors names schema cosmologies
-    choices.columns choices.covariance choices.photometry choices.outliers choices.stars choices.relation choices.parallaxes
+    choices.columns choices.covariance choices.photometry choices.outliers choices.stars
+    choices.relation choices.parallaxes
     choices.anchors choices.photometry_checks choices.outlier_checks
     choices.peak_relation choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
@@ -24,17 +25,21 @@ ORDER = """
     peak_inputs select_supernovae
     covariances covariance_rows correlated
     sample_arrays classical.least_squares classical.lines classical.parallaxes classical
-    relations clipping peak_terms ladder_file assembly photometry_notes consistency ladder ladder_copy ranges
+    relations clipping peak_terms ladder_file assembly photometry_notes consistency ladder
+    ladder_copy ranges
     joined_ladders new_objects
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
-    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations kernels.wide
+    kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
+    kernels.wide
     kernels.downdate
     kernels.robust_rows kernels.robust_nodes kernels.robust kernels.robust_draw kernels
     posterior.frame posterior.errors_in_inputs posterior.colours posterior.cepheids posterior.moduli
     posterior.offsets posterior.families posterior.parallaxes
-    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust posterior.indices posterior.deviations
-    posterior.supernovae posterior.coupled posterior.populations posterior.joint posterior.determined posterior
+    posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust
+    posterior.indices posterior.deviations
+    posterior.supernovae posterior.coupled posterior.populations posterior.joint
+    posterior.determined posterior
     diagnostics result wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file
@@ -44,7 +49,8 @@ ORDER = """
     sampling
     checks completeness
     peak_predictions residuals running peak_views outliers
-    report.cells report.machine report.latex_text report.latex report.parameters report.objects report.choices
+    report.cells report.machine report.latex_text report.latex report.parameters
+    report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
     influence.blocks influence.correlated influence.populations influence.hosts influence.outliers
@@ -57,14 +63,18 @@ ORDER = """
     alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
     alternatives.run alternatives.words alternatives.folder alternatives
     review.claims review.claims_file review.selection review.system review.fits
-    review.resampling review.joint review.bench review.refits review.unstated review.reliance review.checks review.judged review.verdicts
+    review.resampling review.joint review.bench review.refits review.unstated review.reliance
+    review.checks review.judged review.verdicts
     review.whole review.words review.page review
     draw_weights distances distance_files resampling compare compare_files
-    draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves draft.jobs draft.entries
-    draft.make draft
-    mock.tables mock.light_curves mock.contamination mock.plan mock.stars mock.peaks mock.survey mock.parallax_survey mock.tripp mock.scenario
+    draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves
+    draft.jobs draft.entries
+    draft.make draft.answers draft.asking draft.questions draft.settle draft.example draft
+    mock.tables mock.light_curves mock.contamination mock.plan mock.stars mock.peaks
+    mock.survey mock.parallax_survey mock.tripp mock.scenario
     mock.peak_redraw mock.photometry_redraw mock.restated mock.redraw mock.folder mock mock.__main__
-    coverage.design coverage.ranks coverage.quantities coverage.outcome coverage.experiment coverage.words coverage.folder coverage
+    coverage.design coverage.ranks coverage.quantities coverage.outcome coverage.experiment
+    coverage.words coverage.folder coverage
     plots.theme plots.density plots.relation plots.outliers plots.corner plots.parallax plots.moduli
     plots.hubble plots.peaks plots.cuts plots.checks plots.alternatives plots.review plots.anchors
     plots.influence plots.priors plots.coverage plots
@@ -79,9 +89,12 @@ ORDER = """
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
     workbench.canvas.parallaxes workbench.canvas.trials workbench.canvas.checks workbench.canvas
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
-    workbench.board_panel workbench.shelf workbench.frame workbench.screen workbench
+    workbench.board_panel workbench.shelf workbench.frame workbench.screen
+    workbench.question_box workbench.draft_page workbench
     launcher
-    commands.terminal commands.alternatives commands.calibrate commands.report commands.distances commands.compare commands.coverage commands.draft commands.review commands.mock commands.workbench commands
+    commands.terminal commands.alternatives commands.calibrate commands.report
+    commands.distances commands.compare commands.coverage commands.draft commands.review
+    commands.mock commands.workbench commands
     cli __main__
 """.split()
 

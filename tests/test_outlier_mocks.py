@@ -13,8 +13,10 @@ from ladderfit.outliers import outlier_table
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw
 
+pytestmark = pytest.mark.timeout(1500)  # at full length
+
 NAMES = ("slope", "zero_point")
-BRIEF, FULL = 5, 100
+BRIEF, FULL = 5, 60
 TRUTH = PLAN.truth() | {"outlier_fraction": 0.05}
 
 
