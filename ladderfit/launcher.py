@@ -16,6 +16,7 @@ from ladderfit.errors import InputError, Problem
 from ladderfit.shipped import sample_ladder, shipped
 
 FIRST = "01_calibrate.ipynb"
+OWN_TABLES = "05_your_own_tables.ipynb"  # asks what a draft left undecided
 _SETTINGS = Path(__file__).resolve().parent / "workbench" / "lab"
 _LONGEST_SOCKET = 107  # bytes, sun_path of Linux
 _SOCKET_NAME = len(f"/kernel-{uuid4()}-ipc-5")
@@ -89,8 +90,10 @@ def with_file(notebook: str, path: str) -> str:
     return json.dumps(content, indent=1, ensure_ascii=False) + "\n"
 
 
-def command(folder: Path, *, port: int | None = None, browser: bool = True) -> list[str]:
-    """The command that starts JupyterLab: this machine only, with its token, quiet."""
+def command(
+    folder: Path, *, port: int | None = None, browser: bool = True, first: str = FIRST
+) -> list[str]:
+    """The command that starts JupyterLab on a notebook: here only, with its token, quiet."""
     words = [
         sys.executable,
         "-m",
@@ -99,7 +102,7 @@ def command(folder: Path, *, port: int | None = None, browser: bool = True) -> l
         "--ServerApp.ip=127.0.0.1",
         "--LabApp.extension_manager=readonly",
         "--LabApp.check_for_updates_class=jupyterlab.NeverCheckForUpdate",
-        f"--LabApp.default_url=/lab/tree/{FIRST}",
+        f"--LabApp.default_url=/lab/tree/{first}",
     ]
     if sys.platform.startswith("linux") and sockets_fit(Path(jupyter_runtime_dir())):
         words.append("--KernelManager.transport=ipc")
@@ -130,9 +133,12 @@ def default_folder(file: Path | None = None) -> Path:
     return Path(f"workbench-{(sample_ladder() if file is None else file).stem}")
 
 
-def launch(folder: Path, *, port: int | None = None, browser: bool = True) -> int:
+def launch(
+    folder: Path, *, port: int | None = None, browser: bool = True, first: str = FIRST
+) -> int:
     """Become JupyterLab in a folder; where a process cannot, run it and return its exit code."""
-    words, variables = command(folder, port=port, browser=browser), environment()
+    words = command(folder, port=port, browser=browser, first=first)
+    variables = environment()
     if os.name == "posix":
         sys.stdout.flush()
         os.execve(words[0], words, variables)

@@ -122,8 +122,8 @@ class Lab:
     def __init__(self, page: Any, address: str, token: str) -> None:
         self.page, self.address, self.token = page, address, token
 
-    def run(self, notebook: str) -> None:
-        """Open a notebook and run all its cells by the menu."""
+    def run(self, notebook: str, shows: str = ".lf-workbench") -> None:
+        """Open a notebook, run all its cells by the menu and look for what it shows."""
         from playwright.sync_api import expect
 
         page = self.page
@@ -136,8 +136,8 @@ class Lab:
         self._menu("Run All Cells").click()
         page.wait_for_function(_ALL_RUN, timeout=120_000)
         assert page.locator("[data-mime-type='application/vnd.jupyter.error']").count() == 0
-        expect(page.locator(".lf-workbench")).to_be_visible()
-        page.locator(".lf-workbench").scroll_into_view_if_needed()
+        expect(page.locator(shows)).to_be_visible()
+        page.locator(shows).scroll_into_view_if_needed()
 
     def picture(self) -> list[int]:
         """Hash of the pixels, how many are not background, and the background's colour."""

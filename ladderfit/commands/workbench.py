@@ -27,14 +27,27 @@ def add(add_parser: Add) -> None:
 
 
 def _workbench(chosen: argparse.Namespace) -> int:
-    from ladderfit.launcher import default_folder, launch, prepare
+    from ladderfit.launcher import FIRST, OWN_TABLES, default_folder, launch, prepare
 
-    file = None if chosen.file is None else Path(chosen.file)
+    file, first = None if chosen.file is None else Path(chosen.file), FIRST
     if file is not None:
-        from ladderfit.ladder import read_ladder
+        if _undecided(file):
+            first = OWN_TABLES
+            say(f"{file} is a draft; what is undecided is asked in {first}", sys.stdout)
+        else:
+            from ladderfit.ladder import read_ladder
 
-        read_ladder(file)  # what is wrong with it is said here, not in the browser
+            read_ladder(file)  # what is wrong with it is said here, not in the browser
     folder = default_folder(file) if chosen.folder is None else Path(chosen.folder)
     prepare(folder, file)
     say(f"Notebooks in {folder}; to stop, press Ctrl-C twice", sys.stdout)
-    return launch(folder, port=chosen.port, browser=not chosen.no_browser)
+    return launch(folder, port=chosen.port, browser=not chosen.no_browser, first=first)
+
+
+def _undecided(file: Path) -> bool:
+    """Whether a draft left something open in the file."""
+    if not file.is_file():
+        return False
+    from ladderfit.draft.settle import open_keys
+
+    return bool(open_keys(file))

@@ -37,7 +37,7 @@ def entries(found: Found, tables: Mapping[Path, DataTable], folder: Path) -> Ite
     yield Entry((), "title", Choice(title))
     for job, (path, sketch) in found.items():
         if job == GEOMETRIC:
-            yield from _geometric(sketch, tables[path], _hosts(found))
+            yield from anchor_entries(sketch, tables[path], hosts_of(found))
             continue
         section = tuple(job.split("."))
         yield Entry(
@@ -147,7 +147,7 @@ def _metallicity(scale: str | None, section: tuple[str, ...]) -> Iterator[Entry]
         yield Entry(section, "reference", Choice(0.0, "dex; the zero point is stated here: solar"))
 
 
-def _hosts(found: Found) -> frozenset[str]:
+def hosts_of(found: Found) -> frozenset[str]:
     """Galaxies that the tables of Cepheids and supernovae name."""
     names: set[str] = set()
     for job in (CEPHEIDS, SUPERNOVAE):
@@ -157,8 +157,8 @@ def _hosts(found: Found) -> frozenset[str]:
     return frozenset(names)
 
 
-def _geometric(sketch: Sketch, table: DataTable, hosts: frozenset[str]) -> Iterator[Entry]:
-    """One anchor for each galaxy of a table of moduli."""
+def anchor_entries(sketch: Sketch, table: DataTable, hosts: frozenset[str]) -> Iterator[Entry]:
+    """One anchor for each galaxy of a table of moduli; `hosts` are those of other tables."""
     host = sketch.columns["host"]
     if host.undecided:
         text = f"{UNDECIDED} the galaxies' names stand in {', '.join(host.offers) or 'no column'}"
@@ -191,4 +191,7 @@ def _cell(sketch: Sketch, table: DataTable, role: str, rows: IntArray) -> Choice
         return Choice(values[0][1], f"mag; {columns[0]}")
     if not values:
         return Choice(f"{UNDECIDED} the {words} is missing in the table")
-    return Choice(f"{UNDECIDED} {' or '.join(text for text, _ in values)}?")
+    return Choice(
+        f"{UNDECIDED} {' or '.join(text for text, _ in values)}?",
+        offers=tuple(f"{value:.6g}" for _, value in values),
+    )

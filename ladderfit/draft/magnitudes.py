@@ -114,6 +114,18 @@ def is_colour(column: Facts) -> bool:
     return all(re.fullmatch(_BAND, _letters(part)) is not None for part in parts.groups())
 
 
+def recipes(band: str, colour: Sequence[str]) -> list[tuple[float, str]]:
+    """Ratios that papers adopt for an index, with their sources."""
+    found: list[tuple[float, str]] = []
+    for main, blue, red, text in _RECIPES:
+        ends = [_letters(name) for name in colour]
+        fits = len(ends) == 2 and ends[0] in blue and ends[1] in red
+        if fits and _letters(band) in main:
+            parts = re.findall(r"([\d.]+) \(([^()]*)\)", text)
+            found += [(float(value), source) for value, source in parts]
+    return found
+
+
 def _letters(label: str) -> str:
     return label.lower().replace("_", "")
 
