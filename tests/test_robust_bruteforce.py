@@ -40,10 +40,10 @@ def test_direct_agrees_with_sampling_of_labels(name: str, law: str, *, in_full: 
         pytest.skip("other ladders are sampled with LADDERFIT_FULL=1")
     ladder = contaminated(name, law)
     assert len(ladder.cepheids) == LADDERS[name]
-    found = draw(ladder, seed=4, draws=60_000 if in_full else 8_000)
+    found = draw(ladder, seed=4, draws=60_000 if in_full else 16_000)
     assert found.diagnostics.pareto_k < 0.7
     sampler = Gibbs(ladder, 24, np.random.default_rng(8))
-    chains = sampler.run(4000 if in_full else 700, 200)
+    chains = sampler.run(4000 if in_full else 1200, 300)
     for parameter, values in chains.items():
         mine, theirs = found.draws[parameter], values
         if parameter in HEAVY:
