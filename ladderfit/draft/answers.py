@@ -97,7 +97,7 @@ class Pages:
         item = self._item(place)
         if item is None:
             return
-        plain = " ".join(printable(words).split())
+        plain = printable(" ".join(words.split()))
         if plain:
             item.comment(plain)
             item.trivia.comment_ws = "  "

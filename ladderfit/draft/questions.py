@@ -131,7 +131,8 @@ def _column(entry: Entry, base: Question, path: Path, sketch: Sketch) -> Questio
         saw = f"{_listed(offers)} fit about equally well by name, unit and values."
     else:
         saw = _sentence(text)
-    taken = {str(c.value) for c in sketch.columns.values() if not c.undecided}
+    light = sketch.photometry.told if sketch.photometry else {}
+    taken = {str(c.value) for c in (*sketch.columns.values(), *light.values())}
     likely = offers or [n for n, c in columns.items() if c.error and n not in taken][:5]
     options = [_take(base.place, columns[name]) for name in likely]
     if optional:

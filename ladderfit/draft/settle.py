@@ -55,6 +55,7 @@ class Settling:
                 problem = Problem("neither a file nor tables", "one of them", "name your tables")
                 raise InputError(replace(problem, file=str(self.file)))
             write_draft(named, self.file)
+        self._further: dict[Place, Question] = {}  # that no draft explains, while this lives
         self.pages = Pages(self.file, {})
         here = self.file.parent
         stated = [here / name for name in tables_of(self.pages.value(()))]
@@ -79,7 +80,10 @@ class Settling:
         """What is asked, settled or not, in the draft's order."""
         asked = [] if self.draft is None else questions_of(self.draft)
         known = {place for question in asked for place in question.places}
-        return asked + [unknown(at, text) for at, text in self.pages.open() if at not in known]
+        for place, text in self.pages.open():
+            if place not in known:
+                self._further.setdefault(place, unknown(place, text))
+        return asked + list(self._further.values())
 
     @property
     def open(self) -> list[Place]:

@@ -18,6 +18,7 @@ from ladderfit.draft.questions import Option
 from ladderfit.draft.settle import Settling
 from ladderfit.errors import InputError, LadderfitError, Problem
 from ladderfit.ladder import Ladder
+from ladderfit.schema import split
 from ladderfit.workbench.axis import ASSETS
 from ladderfit.workbench.foot import button
 from ladderfit.workbench.question_box import Does, QuestionBox
@@ -176,8 +177,7 @@ class DraftPage:
         """Each problem beside the question it belongs to, the others at the foot."""
         rest = []
         for problem in problems:
-            keys = {".".join(place): box for box in self.boxes for place in box.question.places}
-            box = keys.get(problem.key or "")
+            box = next((box for box in self.boxes if _concerns(problem, box)), None)
             if box is None:
                 rest.append(str(problem))
             else:
@@ -238,6 +238,12 @@ def settle_in_page(file: str | Path, tables: Sequence[str | Path] = ()) -> Draft
         return DraftPage(Settling(file, tables))
     except (LadderfitError, OSError) as error:
         return Refused(error)
+
+
+def _concerns(problem: Problem, box: QuestionBox) -> bool:
+    """Whether a problem stands at a key of a question, or at a section around it."""
+    around = tuple(split(problem.key)) if problem.key else ()
+    return bool(around) and any(at[: len(around)] == around for at in box.question.places)
 
 
 def _lines(lines: Sequence[str], role: str) -> str:
