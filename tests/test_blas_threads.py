@@ -36,6 +36,24 @@ def test_overlapping_blocks_leave_the_number_of_threads_as_it_was() -> None:
     assert blas_threads() == before
 
 
+def test_the_limit_holds_in_any_thread() -> None:
+    """Whoever set it before: a limit may belong to the thread that set it first."""
+    before, inside = blas_threads(), list[list[int]]()
+
+    def other() -> None:
+        with one_blas_thread():
+            inside.append(blas_threads())
+
+    for _ in range(3):
+        other()
+        thread = threading.Thread(target=other)
+        thread.start()
+        thread.join(20)
+        assert blas_threads() == before
+    assert len(inside) == 6
+    assert {count for counts in inside for count in counts} == {1}
+
+
 def test_work_in_the_background_keeps_to_its_thread_and_can_be_ended() -> None:
     seen: list[int] = []
     calls = 0

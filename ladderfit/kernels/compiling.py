@@ -98,11 +98,17 @@ _WITHIN: list[Any] = [0, None]  # threads within the block, and what lifts the l
 def one_blas_thread() -> Iterator[None]:
     """Keep BLAS to one thread for a while: its idle threads spin on the core a kernel needs.
 
-    Threads may overlap in it: the first sets the limit and the last lifts it.
+    Threads may overlap in it: the first has the limit set and the last has it lifted.
+    A pool that all threads share obeys one thread alone, so that one does both.
     """
+    if not _shares_its_pool():
+        with _controller().limit(limits=1, user_api="blas"):
+            yield
+        return
+    keeper = _keeper(os.getpid())
     with _OVERLAP:
         if _WITHIN[0] == 0:
-            _WITHIN[1] = _controller().limit(limits=1, user_api="blas")
+            _WITHIN[1] = keeper.submit(_limited).result()
         _WITHIN[0] += 1
     try:
         yield
@@ -110,7 +116,27 @@ def one_blas_thread() -> Iterator[None]:
         with _OVERLAP:
             _WITHIN[0] -= 1
             if _WITHIN[0] == 0:
-                _WITHIN[1].restore_original_limits()
+                keeper.submit(_WITHIN[1].__exit__, None, None, None).result()
+
+
+@cache
+def _shares_its_pool() -> bool:
+    """Whether BLAS has one pool for all threads, not one for each."""
+    layers = [
+        one.get("threading_layer") for one in _controller().info() if one["user_api"] == "blas"
+    ]
+    return all(layer == "pthreads" for layer in layers)
+
+
+@cache
+def _keeper(process: int) -> ThreadPoolExecutor:
+    """The thread that sets and lifts limits; one per process, as in `_pool`."""
+    del process
+    return ThreadPoolExecutor(1, thread_name_prefix="ladderfit-blas")
+
+
+def _limited() -> Any:
+    return _controller().limit(limits=1, user_api="blas").__enter__()
 
 
 @contextmanager
