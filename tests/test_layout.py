@@ -14,7 +14,7 @@ import pytest
 # stands after its own modules.  A new module must be given its place here.
 ORDER = """
     errors rounding
-    units files shipped priors names schema cosmologies
+    units files packed shipped priors names schema cosmologies
     choices.columns choices.covariance choices.photometry choices.outliers choices.stars
     choices.relation choices.parallaxes
     choices.anchors choices.photometry_checks choices.outlier_checks

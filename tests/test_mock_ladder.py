@@ -187,19 +187,12 @@ def test_a_missing_truth_is_named(sample: Ladder) -> None:
 @pytest.mark.parametrize(
     ("changes", "complaint"),
     [
-        ({"relation.break": 10.0}, "key relation.break: found 10;"),
-        ({"relation.curvature": True}, "key relation.curvature: found true"),
         (
-            {"anchors.shared_errors": {"s": {"error": 0.02, "loads": {"Tavin": 1, "Orsell": 1}}}},
-            "key anchors.shared_errors: found {s",
-        ),
-        (
-            {"anchors.parallaxes.modulus_bounds": [5.0, 15.0]},
-            "key anchors.parallaxes.modulus_bounds: found [5, 15]",
-        ),
-        (
-            {"anchors.parallaxes.distance_prior": {"exponential": 2.0}},
-            "key anchors.parallaxes.distance_prior: found {exponential = 2}",
+            {
+                "anchors.parallaxes.offset_slope": True,
+                "anchors.parallaxes.columns.g_magnitude": "Vmag",
+            },
+            "key anchors.parallaxes.offset_slope: found true;",
         ),
     ],
 )
@@ -210,22 +203,16 @@ def test_a_term_the_simulator_does_not_know_is_refused(
         mock_from_ladder(sample.change(changes), TRUTH, np.random.default_rng(1))
 
 
-@pytest.mark.parametrize(
-    ("part", "complaint"),
-    [
-        ("log_period_error", "found errors of the periods"),
-        ("metallicity_error", "found errors of the metallicity"),
-        ("overtone", "found overtones with an offset"),
-    ],
-)
-def test_stars_the_simulator_does_not_know_are_refused(
-    sample: Ladder, part: str, complaint: str
-) -> None:
-    stars = sample.cepheids
+@pytest.mark.parametrize("part", ["log_period_error", "metallicity_error"])
+def test_errors_of_inputs_in_an_endless_volume_are_refused(sample: Ladder, part: str) -> None:
+    volume = sample.change({"anchors.parallaxes.distance_prior": "uniform in volume"})
+    stars = volume.parallax_stars
     assert stars is not None
-    odd = dataclasses.replace(stars, **{part: np.zeros(len(stars))})
-    with pytest.raises(InputError, match=complaint):
-        mock_from_ladder(dataclasses.replace(sample, cepheids=odd), TRUTH, np.random.default_rng(1))
+    odd = dataclasses.replace(stars, **{part: np.full(len(stars), 0.01)})
+    ladder = dataclasses.replace(volume, parallax_stars=odd)
+    truth = TRUTH | {"metallicity_spread": 0.1, "parallax_metallicity": 0.0}
+    with pytest.raises(InputError, match="errors of periods or metallicities in an endless volume"):
+        mock_from_ladder(ladder, truth, np.random.default_rng(1))
 
 
 def test_plain_truth_is_near_the_data(sample: Ladder) -> None:

@@ -15,7 +15,6 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from ladderfit.errors import InputError, Problem
 from ladderfit.names import base_name, group_of, with_group
 from ladderfit.priors import Fixed, HalfNormal, LogNormal, Normal, Prior, Uniform
 from ladderfit.result import Result
@@ -24,6 +23,7 @@ from ladderfit.samples import FloatArray
 WIDEN = 5.0
 _CLEAR = 4.0  # errors by which a scatter must differ from zero to be logarithmic
 _NEAR_ZERO = 2.0  # root mean squares, for a scatter that may be zero
+_COVARIANCE = "anchors.covariance"
 _WIDEST = 1.5  # mag of 5 log10 of a scatter: a factor of two
 
 
@@ -49,35 +49,31 @@ class Design:
             found[with_group("modulus", host)] = float(prior.draw(rng, 1)[0])
         return found
 
-    def imposed(self, choices: Mapping[str, Any]) -> dict[str, Any]:
-        """Choices of a mock with this prior in place of the ladder's own.
+    def imposed(
+        self, choices: Mapping[str, Any], tables: Mapping[str, Any]
+    ) -> tuple[dict[str, Any], dict[str, Any]]:
+        """Choices and tables of a mock with this prior in place of the ladder's own.
 
-        A normal prior on a modulus and a measured modulus are both normal in it: their
-        product is one normal, which stands as that host's geometric anchor.
-
-        Raises
-        ------
-        InputError
-            If errors of anchors are correlated.
+        A normal prior on moduli and measured ones are both normal in them: their
+        product is one normal, which stands as the hosts' geometric anchors.  Errors that
+        anchors share are summed over, so that they are no parameters any more.
         """
         anchors = dict(choices.get("anchors", {}))
-        tied = [key for key in ("covariance", "shared_errors") if anchors.get(key)]
-        if tied:
-            raise InputError(
-                Problem(
-                    found="anchors whose errors are correlated",
-                    expected="independent ones, for truths drawn from a prior",
-                    remedy="use fixed truths, or take the correlation out",
-                    key=f"anchors.{tied[0]}",
-                )
-            )
+        shared = anchors.pop("shared_errors", {})
+        tied = bool(shared) or anchors.pop("covariance", None) is not None
         measured = dict(anchors.get("geometric", {}))
-        anchors["geometric"] = {
-            host: _product(prior, measured.get(host)) for host, prior in self.moduli.items()
-        }
+        kept = {key: table for key, table in tables.items() if key != _COVARIANCE}
+        if tied:
+            whole = _covariance(measured, shared, tables.get(_COVARIANCE))
+            anchors["geometric"], kept[_COVARIANCE] = _joint_product(self.moduli, measured, whole)
+        else:
+            anchors["geometric"] = {
+                host: _product(prior, measured.get(host)) for host, prior in self.moduli.items()
+            }
         hosts = {**choices.get("hosts", {}), "distance_prior": "flat in modulus"}
         priors = {name: prior.written() for name, prior in self.priors.items()}
-        return {**choices, "anchors": anchors, "hosts": hosts, "priors": priors}
+        imposed = {**choices, "anchors": anchors, "hosts": hosts, "priors": priors}
+        return imposed, kept
 
     def table(self) -> pd.DataFrame:
         """One row per parameter: name and prior."""
@@ -106,6 +102,8 @@ def design_of(result: Result, widen: float = WIDEN) -> Design:
             spread = widen * float(np.std(draws, ddof=1))
             moduli[str(group_of(name))] = Normal(float(np.mean(draws)), spread)
     for name in result.headline:
+        if base_name(name) == "shared_error":  # summed over in the fits
+            continue
         priors[name] = _wider(result.choices.prior(name), result.draws[name], widen)
     return Design(priors, moduli)
 
@@ -131,3 +129,36 @@ def _product(prior: Normal, measured: Mapping[str, Any] | None) -> dict[str, Any
         own = float(measured["error"]) ** -2
         weight, total = weight + own, total + own * float(measured["modulus"])
     return {"modulus": total / weight, "error": float(weight**-0.5), "use": True}
+
+
+def _covariance(
+    measured: Mapping[str, Any], shared: Mapping[str, Any], given: FloatArray | None
+) -> FloatArray:
+    """Of the measured moduli, shared errors included, shape (n, n) [mag^2]."""
+    errors = np.array([float(anchor["error"]) for anchor in measured.values()])
+    whole = np.diag(errors**2) if given is None else np.array(given)
+    for term in shared.values():
+        loads = np.array([float(term["loads"].get(host, 0.0)) for host in measured])
+        whole = whole + float(term["error"]) ** 2 * np.outer(loads, loads)
+    return np.asarray(whole)
+
+
+def _joint_product(
+    moduli: Mapping[str, Normal], measured: Mapping[str, Any], covariance: FloatArray
+) -> tuple[dict[str, Any], FloatArray]:
+    """Prior and correlated measurements as one normal: anchors, and their covariance."""
+    hosts = list(moduli)
+    weight = np.diag([prior.deviation**-2 for prior in moduli.values()])
+    total = weight @ np.array([prior.mean for prior in moduli.values()])
+    places = [hosts.index(host) for host in measured]
+    own = np.linalg.inv(covariance)
+    weight[np.ix_(places, places)] += own
+    total[places] += own @ np.array([float(each["modulus"]) for each in measured.values()])
+    whole = np.linalg.inv(weight)
+    whole = 0.5 * (whole + whole.T)
+    mean, errors = whole @ total, np.sqrt(np.diag(whole))
+    anchors = {
+        host: {"modulus": float(m), "error": float(e), "use": True}
+        for host, m, e in zip(hosts, mean, errors, strict=True)
+    }
+    return anchors, whole

@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 
 from ladderfit import schema
+from ladderfit.assembly import IN_MEMORY, MATRICES
 from ladderfit.coverage.design import WIDEN, Design, design_of
 from ladderfit.coverage.outcome import Experiment, experiment_of
 from ladderfit.coverage.quantities import ranks
@@ -64,15 +65,17 @@ class Setup:
         rng = np.random.default_rng(task_seed(self.seed, f"mock {number}"))
         truth = dict(self.truth) if self.design is None else self.design.truth(rng)
         drawn = redraw(self.ladder, truth, rng)
-        choices = dict(drawn.choices)
+        choices, tables = dict(drawn.choices), dict(drawn.tables)
         if self.design is not None:
-            choices = self.design.imposed(choices)
+            choices, tables = self.design.imposed(choices, tables)
+            for key in tables.keys() & MATRICES:
+                choices = schema.with_value(choices, key, {"file": IN_MEMORY})
         for key, value in self.changes.items():
             choices = schema.with_value(choices, key, value)
         if self.told:
             fixed = {name: {"fixed": part * truth[name]} for name, part in self.told.items()}
             choices["priors"] = {**choices.get("priors", {}), **fixed}
-        return build_ladder(choices, drawn.tables), truth
+        return build_ladder(choices, tables), truth
 
 
 @dataclass(frozen=True, eq=False)

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from ladderfit import schema
+from ladderfit.assembly import MATRICES
 from ladderfit.choices import Choices
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import new_folder
@@ -87,7 +88,10 @@ def write_mock(
     remark = "Simulated after the ladder file beside this one."
     with new_folder(out) as folder:
         for section, table in drawn.tables.items():
-            (folder / _FILES[section]).write_text(ecsv(table), encoding="utf-8")
+            if section in MATRICES:
+                np.savetxt(folder / _matrix_file(section), table)
+            else:
+                (folder / _FILES[section]).write_text(ecsv(table), encoding="utf-8")
         (folder / "truth.toml").write_text(truth_toml(true, seed, remark), encoding="utf-8")
         write_choices(choices, folder / "ladder.toml")
         read_ladder(folder / "ladder.toml")
@@ -95,8 +99,15 @@ def write_mock(
 
 
 def _with_files(drawn: Redrawn) -> dict[str, Any]:
-    """The choices with the name of each table's file."""
+    """The choices with the name of each table's and each matrix's file."""
     plain = dict(drawn.choices)
     for section in drawn.tables:
-        plain = schema.with_value(plain, f"{section}.table", _FILES[section])
+        if section in MATRICES:
+            plain = schema.with_value(plain, section, {"file": _matrix_file(section)})
+        else:
+            plain = schema.with_value(plain, f"{section}.table", _FILES[section])
     return plain
+
+
+def _matrix_file(key: str) -> str:
+    return f"{key.replace('.', '_')}.txt"

@@ -15,6 +15,7 @@ from ladderfit.names import with_group
 from ladderfit.samples import FloatArray, FlowSample, PeakInputs, PeakSample
 
 Rng = np.random.Generator
+_LIGHT = 299792.458  # km/s
 _COLUMNS = {  # column and unit of each role that may occur
     "width": ("w", None),
     "width_error": ("e_w", None),
@@ -65,6 +66,13 @@ def peak_beyond(ladder: Ladder) -> Iterator[Problem]:
             'simulate with errors = "population", and change that of the copy',
             key="peak_relation.errors",
         )
+    if ladder.peak_covariance is not None and _measured(ladder.choices.peak_relation, *samples):
+        yield Problem(
+            "measured widths or colours beside a covariance of peaks",
+            "one of the two",
+            "take the covariance out to simulate the rest",
+            key="peak_relation",
+        )
 
 
 def role_columns(inputs: PeakInputs) -> dict[str, str]:
@@ -80,6 +88,7 @@ def peaks_again(
     bare: FloatArray,
     truth: Mapping[str, float],
     rng: Rng,
+    shared: FloatArray | None = None,
 ) -> list[MaskedColumn]:
     """Columns of peaks and of what belongs to them.
 
@@ -94,6 +103,8 @@ def peaks_again(
         Mean peaks without terms [mag].
     truth : mapping of str to float
     rng : Generator
+    shared : array, shape (n,), optional
+        Errors of the peaks [mag], where they are correlated and so drawn already.
     """
     relation, inputs, n = choices.peak_relation, sample.inputs, len(sample)
     error = np.sqrt(sample.variance)
@@ -101,7 +112,11 @@ def peaks_again(
     true = {name: inputs.values[name] for name in relation.inputs}
     true |= _true_inputs(relation, names, group, n, truth, rng) if names else {}
     peak = bare + _effect(relation, inputs, true, truth, n)
-    peak = peak + truth["peak_scatter"] * rng.normal(size=n)
+    scatter = truth[choices.peak_scatters[0 if group == "hosts" else 1]]
+    peak = peak + scatter * rng.normal(size=n)
+    if shared is not None:
+        bare_inputs = [*_input_columns(inputs.values), *_survey_columns(inputs)]
+        return [*_peak_columns(peak + shared, error), *bare_inputs]
     if not inputs.values and inputs.survey is None:
         return _peak_columns(peak + error * rng.normal(size=n), error)
     noise = _noise(inputs, names, error, rng)
@@ -109,12 +124,52 @@ def peaks_again(
     for place, name in enumerate(names, start=1):
         seen[name] = true[name] + noise[:, place]
     columns = _peak_columns(peak + noise[:, 0], error)
-    for role, values in seen.items():
+    return [*columns, *_input_columns(seen), *_survey_columns(inputs)]
+
+
+def correlated_errors(
+    ladder: Ladder, rng: Rng
+) -> tuple[dict[str, FloatArray], dict[str, FloatArray]]:
+    """Errors of peaks drawn from their covariance, by group, and the matrix by its key.
+
+    The matrix is of what takes part, single errors included, peculiar velocities not.
+    """
+    whole, given = ladder.peak_covariance, ladder.choices.peak_covariance
+    if whole is None or given is None:
+        return {}, {}
+    matrix, key = np.array(whole), given[0]
+    near = 0 if ladder.peaks is None else len(ladder.peaks)
+    if ladder.flow is not None:
+        factor = _magnitudes_per_velocity(ladder.flow.redshift)
+        expansion = ladder.choices.expansion
+        velocity = 0.0 if expansion is None else expansion.peculiar_velocity
+        places = np.arange(near, len(matrix))
+        matrix[places, places] -= (factor * velocity) ** 2
+    errors = np.linalg.cholesky(matrix) @ rng.normal(size=len(matrix))
+    drawn = {}
+    if ladder.peaks is not None:
+        drawn["hosts"] = errors[:near]
+    if ladder.flow is not None:
+        drawn["expansion"] = errors[near:]
+    kept = matrix[near:, near:] if key.startswith("expansion") else matrix
+    return drawn, {key: kept}
+
+
+def _magnitudes_per_velocity(redshift: FloatArray) -> FloatArray:
+    """Change of magnitude per km/s of velocity along the line of sight."""
+    return np.asarray(5.0 / np.log(10.0) / (_LIGHT * redshift))
+
+
+def _input_columns(values: Mapping[str, FloatArray]) -> list[MaskedColumn]:
+    columns = []
+    for role, each in values.items():
         column, unit = _COLUMNS[role]
-        columns.append(digits_column(column, values, 10, unit, role.replace("_", " ")))
-    if inputs.survey is not None:
-        columns.append(text_column("Survey", inputs.survey, "survey"))
+        columns.append(digits_column(column, each, 10, unit, role.replace("_", " ")))
     return columns
+
+
+def _survey_columns(inputs: PeakInputs) -> list[MaskedColumn]:
+    return [] if inputs.survey is None else [text_column("Survey", inputs.survey, "survey")]
 
 
 def _measured(relation: PeakRelation, *inputs: PeakInputs) -> tuple[str, ...]:

@@ -18,6 +18,7 @@ from ladderfit.choices import Magnitude
 from ladderfit.errors import InputError, Problem
 from ladderfit.ladder import Ladder
 from ladderfit.mock.contamination import off_relation
+from ladderfit.mock.star_law import scatter_of
 from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
 from ladderfit.samples import BoolArray, FloatArray, StarSample
@@ -118,7 +119,7 @@ def shine_again(
     """Magnitudes in every band of stars whose index would be `mean` on average [mag]."""
     treatment = ladder.choices.relation.reddening
     light = stars.photometry
-    deviation = truth["scatter"] * rng.normal(size=len(stars))
+    deviation = scatter_of(ladder, stars, truth) * rng.normal(size=len(stars))
     if treatment == "fixed":
         error = np.sqrt(stars.variance)
         noise = deviation + error * rng.normal(size=len(stars))

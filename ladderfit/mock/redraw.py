@@ -21,35 +21,36 @@ from astropy.table import MaskedColumn, Table
 
 from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.ladder import Ladder, build_ladder
-from ladderfit.mock.contamination import (
-    contamination_beyond,
-    contamination_needs,
-    outliers_given_magnitudes,
+from ladderfit.mock.contamination import contamination_beyond, contamination_needs
+from ladderfit.mock.parallax_redraw import (
+    cluster_parallaxes,
+    parallax_beyond,
+    parallax_needs,
+    parallaxes_again,
 )
-from ladderfit.mock.peak_redraw import peak_beyond, peak_needs, peaks_again
+from ladderfit.mock.peak_redraw import correlated_errors, peak_beyond, peak_needs, peaks_again
 from ladderfit.mock.peaks import peak_in_flow
-from ladderfit.mock.photometry_redraw import (
-    Light,
-    band_columns,
-    cepheids_again,
-    free_moduli,
-    photometry_needs,
-    shine_again,
-)
+from ladderfit.mock.photometry_redraw import cepheids_again, photometry_needs
 from ladderfit.mock.restated import beyond, restated
+from ladderfit.mock.star_law import absolute, law_needs, stars_again
 from ladderfit.mock.tables import digits_column, text_column
 from ladderfit.names import with_group
 from ladderfit.samples import FloatArray, FlowSample, PeakSample, StarSample, VelocitySample
+
+__all__ = ["Redrawn", "absolute", "mock_from_ladder", "needed", "redraw"]
 
 Rng = np.random.Generator
 
 
 @dataclass(frozen=True)
 class Redrawn:
-    """A simulated ladder on its way: choices as a nested mapping, tables by section."""
+    """A simulated ladder on its way: choices as a nested mapping, tables by section.
+
+    Covariances are among the tables, as arrays under their dotted keys.
+    """
 
     choices: Mapping[str, Any]
-    tables: Mapping[str, Table]
+    tables: Mapping[str, Any]
 
 
 def mock_from_ladder(
@@ -97,40 +98,47 @@ def redraw(
     parallax_moduli: tuple[float, float] | None = None,
 ) -> Redrawn:
     """Choices and tables of `mock_from_ladder`, before they are put together."""
-    raise_if([*beyond(ladder), *peak_beyond(ladder), *contamination_beyond(ladder)])
+    strange = (beyond, parallax_beyond, peak_beyond, contamination_beyond)
+    raise_if([problem for each in strange for problem in each(ladder)])
     lacking = [name for name in needed(ladder) if name not in truth]
     if lacking:
         raise InputError(
             Problem("no true value", f"one for {name}", "add it to the truth") for name in lacking
         )
     of_hosts, of_stars, of_peaks, of_flow, of_anchors = rng.spawn(5)
-    tables: dict[str, Table] = {}
+    tables: dict[str, Any] = {}
     if ladder.cepheids is not None:
         tables["cepheids"] = _cepheids(ladder, ladder.cepheids, truth, of_hosts)
+    clusters: dict[str, float] = {}
     if ladder.parallax_stars is not None:
-        tables["anchors.parallaxes"] = _parallax_stars(
+        stars, clusters = _parallax_stars(
             ladder, ladder.parallax_stars, truth, of_stars, parallax_moduli
         )
+        tables["anchors.parallaxes"] = stars
+    shared, matrices = correlated_errors(ladder, of_peaks)
+    tables |= matrices
     if ladder.peaks is not None:
-        tables["supernovae"] = _peaks(ladder, ladder.peaks, truth, of_peaks)
+        tables["supernovae"] = _peaks(ladder, ladder.peaks, truth, shared, of_peaks)
     if ladder.flow is not None:
-        tables["expansion"] = _flow(ladder, ladder.flow, truth, of_flow)
+        tables["expansion"] = _flow(ladder, ladder.flow, truth, shared, of_flow)
     if ladder.velocities is not None:
         tables["expansion"] = _velocities(ladder.velocities, truth, of_flow)
-    return Redrawn(restated(ladder, truth, of_anchors), tables)
+    if ladder.anchor_covariance is not None:
+        tables["anchors.covariance"] = ladder.anchor_covariance
+    return Redrawn(restated(ladder, truth, clusters, of_anchors), tables)
 
 
 def needed(ladder: Ladder) -> tuple[str, ...]:
     """Names of the parameters that need a true value."""
     expansion = ladder.choices.expansion
     linear = expansion is not None and expansion.linear
-    names: list[str] = []
-    if ladder.cepheids is not None or ladder.parallax_stars is not None:
-        names += ["slope", "zero_point", "scatter"]
-        names += ["metallicity"] if ladder.choices.relation.metallicity != "none" else []
-    names += ["parallax_offset"] if ladder.parallax_stars is not None else []
+    names = [*law_needs(ladder), *parallax_needs(ladder)]
     if ladder.peaks is not None or (expansion is not None and not linear):
-        names += ["peak_magnitude", "peak_scatter"]
+        names.append("peak_magnitude")
+    if ladder.peaks is not None or ladder.flow is not None:
+        names += dict.fromkeys(ladder.choices.peak_scatters)
+    elif expansion is not None and not linear:
+        names.append("peak_scatter")
     names += (*peak_needs(ladder), *photometry_needs(ladder), *contamination_needs(ladder))
     names += ["hubble_constant"] if expansion is not None else []
     if expansion is not None and linear:
@@ -139,36 +147,40 @@ def needed(ladder: Ladder) -> tuple[str, ...]:
     return (*names, *(with_group("modulus", host) for host in ladder.hosts))
 
 
-def absolute(ladder: Ladder, stars: StarSample, truth: Mapping[str, float]) -> FloatArray:
-    """Mean absolute magnitude of each star [mag], shape (n,), by the true relation."""
-    relation = ladder.choices.relation
-    dex = stars.log_period - np.log10(relation.pivot)
-    mean = truth["zero_point"] + truth["slope"] * dex
-    if relation.metallicity != "none":
-        mean = mean + truth["metallicity"] * (stars.metallicity - relation.metallicity.reference)
-    return np.asarray(mean)
-
-
 def _host_moduli(ladder: Ladder, truth: Mapping[str, float]) -> FloatArray:
     return np.array([truth[with_group("modulus", host)] for host in ladder.hosts])
 
 
 def _star_columns(
-    ladder: Ladder, stars: StarSample, photometry: list[MaskedColumn]
+    ladder: Ladder, stars: StarSample, metallicity: FloatArray, photometry: list[MaskedColumn]
 ) -> list[MaskedColumn]:
+    period = 10.0**stars.log_period
     columns = [
         text_column("ID", stars.star, "star"),
-        digits_column("P", 10.0**stars.log_period, 10, "d", "period of pulsation"),
+        digits_column("P", period, 10, "d", "period of pulsation"),
         *photometry,
     ]
+    if stars.log_period_error is not None:
+        error = stars.log_period_error * period * np.log(10.0)
+        columns.append(digits_column("e_P", error, 10, "d", "error of P"))
     if ladder.choices.relation.metallicity != "none":
-        columns.append(digits_column("OH", stars.metallicity, 8, "dex", "metallicity"))
+        columns.append(digits_column("OH", metallicity, 8, "dex", "metallicity"))
+        if stars.metallicity_error is not None:
+            error = stars.metallicity_error
+            columns.append(digits_column("e_OH", error, 8, "dex", "error of OH"))
+    if stars.overtone is not None:
+        mode = np.where(stars.overtone, "1O", "F")
+        columns.append(text_column("Mode", mode, "F fundamental, 1O overtone"))
+    if stars.system is not None:
+        columns.append(text_column("System", stars.system, "photometric system"))
     return columns
 
 
 def _cepheids(ladder: Ladder, stars: StarSample, truth: Mapping[str, float], rng: Rng) -> Table:
-    mean = _host_moduli(ladder, truth)[stars.host] + absolute(ladder, stars, truth)
-    columns = _star_columns(ladder, stars, cepheids_again(ladder, stars, mean, truth, rng))
+    again = stars_again(ladder, stars, truth, rng)
+    mean = _host_moduli(ladder, truth)[stars.host] + again.mean
+    light = cepheids_again(ladder, stars, mean, truth, rng)
+    columns = _star_columns(ladder, stars, again.metallicity, light)
     galaxy = [ladder.hosts[number] for number in stars.host]
     return Table([columns[0], text_column("Galaxy", galaxy, "host galaxy"), *columns[1:]])
 
@@ -179,61 +191,51 @@ def _parallax_stars(
     truth: Mapping[str, float],
     rng: Rng,
     moduli: tuple[float, float] | None,
-) -> Table:
+) -> tuple[Table, dict[str, float]]:
     section = ladder.choices.anchors.parallaxes
     if section is None or stars.parallax_error is None:  # a ladder with such stars has both
         raise AssertionError
-    prior, mean = str(section.distance_prior), absolute(ladder, stars, truth)
-    if moduli is not None:
-        modulus = _moduli_between(prior, moduli, len(stars), rng)
-        light = shine_again(ladder, stars, modulus + mean, truth, rng)
-    elif ladder.choices.relation.reddening != "fixed":
-        modulus, light = free_moduli(ladder, stars, mean, truth, rng)
-    else:
-        modulus = _moduli_given_magnitudes(ladder, stars, truth, prior, rng)
-        light = Light({"W": stars.magnitude}, {"W": np.sqrt(stars.variance)})
-    columns = _star_columns(ladder, stars, band_columns(light))
-    true = 10.0 ** (2.0 - 0.2 * modulus) + truth["parallax_offset"]
-    measured = true + stars.parallax_error * rng.normal(size=len(stars))
+    found = parallaxes_again(ladder, stars, section, truth, rng, moduli)
+    columns = _star_columns(ladder, stars, found.metallicity, found.columns)
     columns += [
-        digits_column("plx", measured, 8, "mas", "parallax, simulated"),
+        digits_column("plx", found.parallax, 8, "mas", "parallax, simulated"),
         digits_column("e_plx", stars.parallax_error, 8, "mas", "error of plx"),
     ]
-    return Table(columns)
+    sky = stars.extras
+    if sky.longitude is not None and sky.latitude is not None:
+        columns.append(digits_column("l", sky.longitude, 10, "deg", "Galactic longitude"))
+        columns.append(digits_column("b", sky.latitude, 10, "deg", "Galactic latitude"))
+    if sky.cluster is not None:
+        names = [sky.clusters[place] if place >= 0 else "" for place in sky.cluster]
+        columns.append(text_column("Cluster", names, "cluster"))
+    return Table(columns), cluster_parallaxes(ladder, found.clusters, truth, rng)
 
 
-def _moduli_given_magnitudes(
-    ladder: Ladder, stars: StarSample, truth: Mapping[str, float], prior: str, rng: Rng
-) -> FloatArray:
-    """Moduli as prior and magnitude have them: normal, and farther where volume counts."""
-    tilt = 0.0 if prior == "flat in modulus" else 0.6 * np.log(10.0)
-    offset, extra = outliers_given_magnitudes(ladder, stars, truth, tilt, rng)
-    variance = stars.variance + truth["scatter"] ** 2 + extra
-    mean = stars.magnitude - absolute(ladder, stars, truth) - offset + tilt * variance
-    return np.asarray(mean + np.sqrt(variance) * rng.normal(size=len(stars)))
-
-
-def _moduli_between(prior: str, ends: tuple[float, float], size: int, rng: Rng) -> FloatArray:
-    """Moduli between two ends, by the distance prior: flat, or as the volume grows."""
-    if prior == "flat in modulus":
-        return rng.uniform(*ends, size)
-    smallest = 10.0 ** (0.6 * (ends[0] - ends[1]))
-    return np.asarray(ends[1] + np.log10(rng.uniform(smallest, 1.0, size)) / 0.6)
-
-
-def _peaks(ladder: Ladder, peaks: PeakSample, truth: Mapping[str, float], rng: Rng) -> Table:
+def _peaks(
+    ladder: Ladder,
+    peaks: PeakSample,
+    truth: Mapping[str, float],
+    shared: Mapping[str, FloatArray],
+    rng: Rng,
+) -> Table:
     mean = _host_moduli(ladder, truth)[peaks.host] + truth["peak_magnitude"]
     galaxy = [ladder.hosts[number] for number in peaks.host]
     return Table(
         [
             text_column("SN", peaks.name, "supernova"),
             text_column("Galaxy", galaxy, "host galaxy"),
-            *peaks_again(ladder.choices, peaks, "hosts", mean, truth, rng),
+            *peaks_again(ladder.choices, peaks, "hosts", mean, truth, rng, shared.get("hosts")),
         ]
     )
 
 
-def _flow(ladder: Ladder, flow: FlowSample, truth: Mapping[str, float], rng: Rng) -> Table:
+def _flow(
+    ladder: Ladder,
+    flow: FlowSample,
+    truth: Mapping[str, float],
+    shared: Mapping[str, FloatArray],
+    rng: Rng,
+) -> Table:
     expansion = ladder.choices.expansion
     if expansion is None:  # a ladder with a flow has one
         raise AssertionError
@@ -245,7 +247,9 @@ def _flow(ladder: Ladder, flow: FlowSample, truth: Mapping[str, float], rng: Rng
             text_column("SN", flow.name, "supernova"),
             digits_column("zcmb", flow.redshift, 10, None, "redshift, background at rest"),
             digits_column("zhel", flow.redshift_heliocentric, 10, None, "redshift, Sun at rest"),
-            *peaks_again(ladder.choices, flow, "expansion", mean, truth, rng),
+            *peaks_again(
+                ladder.choices, flow, "expansion", mean, truth, rng, shared.get("expansion")
+            ),
         ]
     )
 
