@@ -40,7 +40,7 @@ ORDER = """
     posterior.indices posterior.deviations
     posterior.supernovae posterior.coupled posterior.populations posterior.joint
     posterior.determined posterior
-    diagnostics result wording store
+    diagnostics result result_files wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
     sampling.ensemble sampling.chain_layout sampling.chain_reading sampling.chain_file
     sampling.run sampling.warm
@@ -70,7 +70,7 @@ ORDER = """
     draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves
     draft.jobs draft.entries
     draft.make draft.answers draft.asking draft.questions draft.settle draft.example draft
-    mock.tables mock.light_curves mock.contamination mock.plan mock.stars mock.peaks
+    mock.tables mock.light_curves mock.contamination mock.breakages mock.plan mock.stars mock.peaks
     mock.survey mock.parallax_survey mock.tripp mock.scenario
     mock.star_law mock.peak_redraw mock.photometry_redraw mock.parallax_redraw mock.restated mock.redraw mock.folder mock mock.__main__
     coverage.design coverage.ranks coverage.quantities coverage.outcome coverage.experiment

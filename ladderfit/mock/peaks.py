@@ -84,7 +84,7 @@ def flow_supernovae(plan: Plan, rng: np.random.Generator) -> Table:
     true = peak_in_flow(truth, redshift, heliocentric, velocity)
     true = true + plan.peak_scatter * rng.normal(size=n)
     stated = np.round(rng.uniform(0.05, 0.14, n), 3)
-    return Table(
+    table = Table(
         [
             text_column("SN", [f"EF-{number:03d}" for number in range(1, n + 1)], "supernova"),
             number_column("zcmb", redshift, 5, None, "redshift, background radiation at rest"),
@@ -92,6 +92,9 @@ def flow_supernovae(plan: Plan, rng: np.random.Generator) -> Table:
             *_measured_columns(plan, "expansion", true, stated, None, rng),
         ]
     )
+    if plan.light_curves is None:
+        return table
+    return table[plan.breakage.found(np.asarray(table["c"]))]
 
 
 def _measured_columns(

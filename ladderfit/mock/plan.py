@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from astropy.table import Table
 
+from ladderfit.mock.breakages import Breakage
 from ladderfit.mock.contamination import Contamination
 from ladderfit.mock.light_curves import LightCurves
 from ladderfit.names import with_group
@@ -90,6 +91,8 @@ class Plan:
         Widths and colours of the supernovae; None where peaks are standardised.
     contamination : Contamination or None
         Cepheids of hosts that do not follow the relation.
+    breakage : Breakage
+        What else is wrong.
     """
 
     hosts: tuple[Host, ...]
@@ -119,6 +122,7 @@ class Plan:
     missing_parallax_stars: int = 3
     light_curves: LightCurves | None = None
     contamination: Contamination | None = None
+    breakage: Breakage = field(default_factory=Breakage)
 
     def truth(self) -> dict[str, float]:
         """True values by parameter name, host moduli included."""

@@ -81,6 +81,8 @@ def shine(
     metallicity: FloatArray,
     modulus: FloatArray,
     reddening: float,
+    *,
+    in_anchor: bool = False,
 ) -> dict[str, FloatArray]:
     """Apparent magnitudes through dust, without noise.
 
@@ -93,21 +95,26 @@ def shine(
         Period [d], 12+log(O/H) and true distance modulus [mag].
     reddening : float
         Mean colour excess E(V-I) [mag].
+    in_anchor : bool
+        Whether they are parallax stars or in a geometric anchor.
 
     Returns
     -------
     dict of str to array, shape (n,)
         V, I and H [mag].
     """
-    n = len(fundamental)
+    n, wrong = len(fundamental), plan.breakage
     index = absolute_index(plan, fundamental, metallicity) + plan.scatter * rng.normal(size=n)
+    if in_anchor:
+        index = index + wrong.slope_in_anchors * np.log10(fundamental / plan.pivot)
     colour = _COLOUR + _COLOUR_SLOPE * np.log10(fundamental / 10.0)
     colour = colour + _COLOUR_WIDTH * rng.normal(size=n)
     excess = rng.exponential(reddening, n)
     h = index + plan.ratio * colour
     i = h + _COLOUR_RATIO * colour
     v = i + colour
-    dust = {"V": _INFRARED + 1.0, "I": _INFRARED, "H": plan.ratio}
+    dust = {"V": _INFRARED + 1.0, "I": _INFRARED, "H": plan.ratio + wrong.dust_ratio}
+    modulus = modulus - wrong.brightening(modulus)
     bare = {"V": v, "I": i, "H": h}
     return {band: modulus + bare[band] + dust[band] * excess for band in BANDS}
 
@@ -119,7 +126,16 @@ def host_stars(plan: Plan, rng: np.random.Generator, host: Host) -> Stars:
     radius = rng.random(n)
     metallicity = np.round(host.metallicity - host.gradient * radius, 3)
     modulus = np.full(n, host.modulus)
-    stars = _pulsate(plan, rng, fundamental, metallicity, modulus, host.reddening, host.overtones)
+    stars = _pulsate(
+        plan,
+        rng,
+        fundamental,
+        metallicity,
+        modulus,
+        host.reddening,
+        host.overtones,
+        in_anchor=host.geometric_error is not None,
+    )
     if plan.contamination is None:
         return stars
     off, shift = plan.contamination.draw(rng, stars.period)
@@ -133,7 +149,7 @@ def milky_way_stars(plan: Plan, rng: np.random.Generator) -> tuple[Stars, FloatA
     fundamental = periods(rng, n, 4.5, 45.0)
     metallicity = np.round(rng.normal(plan.reference + 0.04, 0.12, n), 3)
     modulus = rng.uniform(*plan.parallax_moduli, n)
-    stars = _pulsate(plan, rng, fundamental, metallicity, modulus, 0.45, 0.2)
+    stars = _pulsate(plan, rng, fundamental, metallicity, modulus, 0.45, 0.2, in_anchor=True)
     return stars, modulus
 
 
@@ -176,8 +192,10 @@ def _pulsate(
     modulus: FloatArray,
     reddening: float,
     overtones: float,
+    *,
+    in_anchor: bool,
 ) -> Stars:
     overtone = (rng.random(len(fundamental)) < overtones) & (fundamental < plan.overtone_limit)
     period = np.where(overtone, overtone_period(fundamental), fundamental)
-    magnitudes = shine(plan, rng, fundamental, metallicity, modulus, reddening)
+    magnitudes = shine(plan, rng, fundamental, metallicity, modulus, reddening, in_anchor=in_anchor)
     return Stars(period, fundamental, overtone, metallicity, magnitudes)
