@@ -18,10 +18,12 @@ from astropy.io import fits
 
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
+from ladderfit.packed import PackedError, check_packed, opened, unpacked
 from ladderfit.samples import FloatArray, frozen
 from ladderfit.tables import shown
 
 LARGEST = 20_000  # rows
+_SQUARE = "an image of N x N pixels"
 
 _ASYMMETRY = 1e-5  # of the two errors' product: rounding in a text file
 
@@ -159,15 +161,18 @@ def _values(path: Path, key: str) -> npt.NDArray[Any]:
             )
         )
     try:
+        check_packed(path)
         return _READERS[suffix](path, key)
     except InputError:
         raise
+    except PackedError as error:
+        raise _unreadable(str(path), key, str(error)) from None
     except Exception as error:  # readers raise anything on damaged files
         raise _unreadable(str(path), key, f"{type(error).__name__}: {error}") from error
 
 
 def _text(path: Path, key: str) -> npt.NDArray[Any]:
-    words = path.read_bytes().split()
+    words = unpacked(path).split()
     try:
         size = int(words[0]) if words else 0
     except ValueError:
@@ -200,13 +205,16 @@ def _is_number(word: bytes) -> bool:
 def _fits(path: Path, key: str) -> npt.NDArray[Any]:
     with fits.open(path, memmap=False) as units:
         for unit in units:
+            if unit.is_image and max(unit.shape, default=0) > LARGEST:  # may be compressed inside
+                raise _unreadable(str(path), key, f"{max(unit.shape):,} pixels in a row", _SQUARE)
             if unit.is_image and unit.data is not None:
                 return np.asarray(unit.data, dtype=float)
-    raise _unreadable(str(path), key, "no image", "an image of N x N pixels")
+    raise _unreadable(str(path), key, "no image", _SQUARE)
 
 
 def _npy(path: Path, key: str) -> npt.NDArray[Any]:
-    array = np.load(path, allow_pickle=False)
+    with opened(path) as stream:
+        array = np.load(stream, allow_pickle=False)
     if not isinstance(array, np.ndarray) or array.dtype.kind not in "fiu":
         raise _unreadable(str(path), key, "an array that does not hold numbers")
     return array.astype(float)

@@ -24,13 +24,14 @@ from astropy.table import Table
 
 from ladderfit.assembly import PATHS
 from ladderfit.choices import Choices
-from ladderfit.errors import InputError, Problem
+from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.names import base_name, group_of, parameter, with_group
 from ladderfit.ranges import Ranges, calibrated_ranges
 from ladderfit.result import Diagnostics, Result, ordered
+from ladderfit.result_files import changed_files, check_draws, check_stored, diagnostics_of
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -48,12 +49,15 @@ def write_result(result: Result, folder: Path, ladder_file: Path | None = None) 
         write_choices(_relocated(result, folder), folder / "ladder.toml")
     else:
         shutil.copyfile(ladder_file, folder / "ladder.toml")
-    provenance = provenance_of(result) | {"ladder_sha256": sha256_of(folder / "ladder.toml")}
+    write_netcdf(result, folder / "posterior.nc")
+    provenance = provenance_of(result) | {
+        "ladder_sha256": sha256_of(folder / "ladder.toml"),
+        "posterior_sha256": sha256_of(folder / "posterior.nc"),
+    }
     summary = {**summary_of(result), "provenance": provenance}
     _write_json(folder / "summary.json", summary)
     _write_json(folder / "provenance.json", provenance)
     write_ecsv(result, folder / "summary.ecsv")
-    write_netcdf(result, folder / "posterior.nc")
 
 
 def read_result(folder: str | Path) -> Result:
@@ -62,7 +66,8 @@ def read_result(folder: str | Path) -> Result:
     Raises
     ------
     InputError
-        If the folder holds no readable result.
+        If the folder holds no readable result, or the draws or the ladder file are not
+        those that were written.
     """
     folder = Path(folder)
     for name in ("posterior.nc", "summary.json", "ladder.toml"):
@@ -79,11 +84,10 @@ def read_result(folder: str | Path) -> Result:
     summary = _read_json(folder / "summary.json")
     draws = read_netcdf(folder / "posterior.nc")
     try:
-        diagnostics = Diagnostics(
-            **{**summary["diagnostics"], "notes": tuple(summary["diagnostics"]["notes"])}
-        )
+        diagnostics = diagnostics_of(summary["diagnostics"])
+        raise_if(list(changed_files(folder, summary["provenance"])))
         source = _ladder_if_unchanged(folder, summary["provenance"]["inputs"])
-    except (KeyError, TypeError) as error:
+    except (KeyError, TypeError, ValueError, AttributeError) as error:
         raise _unreadable(folder / "summary.json", error) from None
     return Result(choices, draws, diagnostics, source)
 
@@ -165,7 +169,8 @@ def read_netcdf(path: Path) -> dict[str, FloatArray]:
     """
     draws: dict[str, FloatArray] = {}
     try:
-        with xr.open_dataset(path, group="posterior", engine="h5netcdf") as data:
+        check_stored(path)
+        with xr.open_dataset(path, group="posterior", engine="h5netcdf", decode_cf=False) as data:
             for name, variable in data.data_vars.items():
                 values = np.asarray(variable.values, dtype=float)
                 flat = values.reshape(-1, *values.shape[2:])
@@ -174,8 +179,9 @@ def read_netcdf(path: Path) -> dict[str, FloatArray]:
                         draws[with_group("modulus", str(host))] = flat[:, place].copy()
                 else:
                     draws[str(name)] = flat
+        check_draws(draws)
         return ordered(draws)
-    except (OSError, KeyError, ValueError) as error:
+    except Exception as error:  # the libraries raise anything on damaged files
         raise _unreadable(path, error) from None
 
 
@@ -257,7 +263,7 @@ def _ladder_if_unchanged(folder: Path, inputs: Mapping[str, Any]) -> Ladder | No
 def _unreadable(path: Path, error: Exception) -> InputError:
     return InputError(
         Problem(
-            found=f"a file that cannot be read ({str(error)[:120]})",
+            found=f"a file that cannot be read ({' '.join(str(error).split())[:120]})",
             expected="a file written by ladderfit calibrate",
             remedy="repeat the calibration",
             file=str(path),
@@ -273,7 +279,7 @@ def _write_json(path: Path, content: Mapping[str, Any]) -> None:
 def _read_json(path: Path) -> dict[str, Any]:
     try:
         content = json.loads(path.read_text(encoding="utf-8"))
-    except (OSError, ValueError) as error:
+    except (OSError, ValueError, RecursionError) as error:
         raise _unreadable(path, error) from None
     if not isinstance(content, dict):
         raise _unreadable(path, TypeError("no object at the top"))

@@ -22,11 +22,15 @@ from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
+from ladderfit.packed import PackedError, check_packed, opened, packing, text_stream, unpacked
 from ladderfit.table_columns import ColumnsOnDemand
 from ladderfit.table_memory import from_astropy, from_series, parsed_unit
 from ladderfit.tables import Column, DataTable, shown
 
 _PIECE = 100_000  # rows of a text table parsed at once
+_ELSEWHERE = re.compile(  # an address in a STREAM, whatever stands in its other attributes
+    rb"""STREAM\b(?:[^>"']|"[^"]*"|'[^']*')*?\bhref"""
+)
 
 
 class _UnreadableError(Exception):
@@ -52,10 +56,11 @@ def read_table(path: Path, key: str) -> DataTable:
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always")
         try:
+            check_packed(path)
             table = reader(path)
         except InputError:
             raise
-        except _UnreadableError as error:
+        except (_UnreadableError, PackedError) as error:
             raise InputError(_damaged(path, key, str(error))) from None
         except Exception as error:  # readers raise anything on damaged files
             words = f"{type(error).__name__}: {error}"
@@ -134,6 +139,7 @@ def _read_csv(path: Path) -> DataTable:
             na_values=[""],
             skipinitialspace=True,
             encoding="utf-8-sig",
+            compression=packing(path),
             chunksize=_PIECE,
         )
         kind = pyarrow.schema([(name, pyarrow.large_string()) for name in header])
@@ -152,8 +158,8 @@ def _read_csv(path: Path) -> DataTable:
 
 def _csv_header(path: Path) -> tuple[int, str, list[str]]:
     """Lines before the header, the separator, and the column names."""
-    with path.open(encoding="utf-8-sig", newline="") as stream:
-        for number, line in enumerate(stream):
+    with opened(path) as stream:
+        for number, line in enumerate(text_stream(stream)):
             if line.strip() and not line.startswith("#"):
                 separator = next((mark for mark in "\t,;" if mark in line), ",")
                 names = next(csv.reader([line], delimiter=separator))
@@ -174,7 +180,7 @@ def _read_ecsv(path: Path) -> DataTable:
 
 def _ecsv_fault(path: Path) -> Problem | None:
     """The first cell of an ECSV file that does not fit its declared datatype."""
-    lines = path.read_text(encoding="utf-8").splitlines()
+    lines = unpacked(path).decode("utf-8").splitlines()
     head = [line[1:].removeprefix(" ") for line in lines if line.startswith("#")]
     declared = meta.get_header_from_yaml(head[1:])
     body = "\n".join(line for line in lines if line.strip() and not line.startswith("#"))
@@ -207,7 +213,12 @@ def _read_fits(path: Path) -> DataTable:
 
 
 def _read_votable(path: Path) -> DataTable:
-    if re.search(rb"<\s*(\w+:)?STREAM\b[^>]*\bhref", path.read_bytes()):
+    content = unpacked(path)
+    if b"\0" in content:  # UTF-16, in which nothing below would be found
+        raise _UnreadableError("XML that is not in UTF-8")
+    if b"<!ENTITY" in content:  # text that swells, or that is put together while it is read
+        raise _UnreadableError("XML that declares entities")
+    if _ELSEWHERE.search(content):
         raise _UnreadableError("data that lie in another file or on a server")
     table = Table.read(path, format="votable", table_id=0)
     return from_astropy(table, str(path), sha256_of(path))
@@ -215,7 +226,8 @@ def _read_votable(path: Path) -> DataTable:
 
 def _read_text(path: Path) -> DataTable:
     """Other text tables: fixed width, machine-readable with a byte-by-byte head, and so on."""
-    head = path.read_text(encoding="utf-8", errors="replace")[:20_000]
+    with opened(path) as stream:
+        head = stream.read(20_000).decode("utf-8", "replace")
     layout = "ascii.mrt" if "Byte-by-byte" in head else "ascii"
     table = Table.read(path, format=layout)
     return from_astropy(table, str(path), sha256_of(path), text=True, states_units=False)
