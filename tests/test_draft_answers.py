@@ -261,6 +261,19 @@ def test_what_is_no_number(example: Settling, typed: str, words: str) -> None:
     assert example.file.read_bytes() == before
 
 
+def test_without_its_table_an_anchor_is_asked_from_the_words_of_the_draft(
+    example: Settling,
+) -> None:
+    alone = Settling(example.file)
+    found = asked(alone, "modulus")
+    assert found.words == "What is the modulus of Tavin?"
+    assert [o.words for o in found.options[:-1]] == ["18.453 mag", "18.41 mag"]
+    answer(alone, "modulus", "18.41")
+    answer(alone, "error", "0.06")
+    assert file_of(alone)["anchors"]["geometric"]["Tavin"] == {"modulus": 18.41, "error": 0.06}
+    assert told(alone)["modulus"] == "18.41 mag"  # asked on, to be changed
+
+
 def test_a_file_of_other_tables(example: Settling, tmp_path: Path) -> None:
     others = [path for path in sorted(tmp_path.glob("tables/*.csv")) if path.stem != "flow"]
     with pytest.raises(InputError, match=r"names another table, .*flow\.csv; expected one of"):

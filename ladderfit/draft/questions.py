@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -95,6 +96,8 @@ def questions_of(draft: Draft) -> list[Question]:
 
 def unknown(place: Place, text: str) -> Question:
     """A question for an open key that no draft of these tables explains."""
+    if place[:2] == ("anchors", "geometric") and place[3:] in (("modulus",), ("error",)):
+        return _number_of(place, re.findall(r"(-?[\d.]+) \(", text), _sentence(text))
     key = ".".join(place)
     return Question(place, f"What is {key}?", _sentence(text), matters(place[-1]), typed=ANY)
 
@@ -234,7 +237,6 @@ def _anchors(base: Question, entry: Entry, draft: Draft) -> Question:
 def _anchor(entry: Entry, draft: Draft) -> Question:
     section, galaxy = entry.section, entry.section[-1]
     pair = {e.key: e.choice for e in draft.undecided if e.section == section}
-    out = Option("leave this galaxy out of the anchors", ((section, None),))
     values = [pair[key].offers for key in ("modulus", "error") if key in pair]
     saw, place = _sentence(_text(entry.choice)), (*section, entry.key)
     if len(values) == 2 and len(values[0]) == len(values[1]) > 1:
@@ -250,13 +252,23 @@ def _anchor(entry: Entry, draft: Draft) -> Question:
         path = draft.sources[GEOMETRIC][0]
         saw = f"{path.name} has {len(options)} rows of {galaxy}."
         words = f"Which modulus of {galaxy} is the anchor's?"
-        return Question(places[0], words, saw, matters("modulus"), (*options, out), asks=places)
-    what = "modulus" if entry.key == "modulus" else "error of the modulus"
-    words = f"What is the {what} of {galaxy}?"
-    options = [_set(f"{value} mag", place, float(value)) for value in entry.choice.offers]
-    return Question(
-        place, words, saw, matters(entry.key), (*options, out), typed=NUMBER, unit="mag"
-    )
+        return Question(
+            places[0], words, saw, matters("modulus"), (*options, _without(section)), asks=places
+        )
+    return _number_of(place, entry.choice.offers, saw)
+
+
+def _number_of(place: Place, values: Sequence[str], saw: str) -> Question:
+    """The modulus of a galaxy, or its error, alone."""
+    galaxy, what = place[2], "modulus" if place[3] == "modulus" else "error of the modulus"
+    options = [_set(f"{value} mag", place, float(value)) for value in values]
+    words, why = f"What is the {what} of {galaxy}?", matters(place[3])
+    every = (*options, _without(place[:3]))
+    return Question(place, words, saw, why, every, typed=NUMBER, unit="mag")
+
+
+def _without(section: Place) -> Option:
+    return Option("leave this galaxy out of the anchors", ((section, None),))
 
 
 def _rows_of(draft: Draft, galaxy: str) -> dict[int, str]:

@@ -27,9 +27,9 @@ from ladderfit.workbench.state import in_words
 
 
 class _Style(anywidget.AnyWidget):
-    """Nothing to see; brings the page's style along."""
+    """Nothing to see; brings the page's style and the grouping of its answers along."""
 
-    _esm = "export default { render() {} };"
+    _esm = ASSETS / "draft.js"
     _css = ASSETS / "draft.css"
 
 
