@@ -61,6 +61,8 @@ def test_answers_go_into_the_file_and_the_boxes_stay(page: DraftPage) -> None:
     ratio.options.value = ratio.question.options[0]
     assert ratio.field.value == ""
     assert ratio.reason.value == "measured by us"
+    page.title.value = "Our survey"
+    assert in_file()["title"] == "Our survey"
     settle(page)
     assert [id(one) for one in page.boxes] == [id(one) for one in boxes]
     assert not page.go.disabled
@@ -149,4 +151,4 @@ def test_names_from_tables_are_text(tmp_path: Path, monkeypatch: pytest.MonkeyPa
     assert isinstance(page, DraftPage)
     for part in (page.head, page.said, *(one.words for one in page.boxes)):
         assert SCRIPT not in part.value
-    assert SCRIPT not in str(page.widget.children[0].children[2].value)
+    assert SCRIPT not in str(page.widget.children[0].children[3].value)

@@ -82,6 +82,13 @@ class DraftPage:
         self.bench: Workbench | None = None
         self.boxes: list[QuestionBox] = []
         self.head = widgets.HTML(layout=widgets.Layout(margin="0"))
+        self.title = widgets.Text(
+            description="Title",
+            continuous_update=False,
+            style={"description_width": "48px"},
+            layout=widgets.Layout(width="600px", max_width="100%"),
+        )
+        self.title.observe(self._titled, "value")
         self.listed = widgets.VBox([], layout=widgets.Layout(width="100%"))
         self.go = button("Open the workbench", "On this ladder file", self._go, "172px")
         self.again = button("Read the file again", "If it was edited by hand", self._again, "152px")
@@ -93,7 +100,7 @@ class DraftPage:
         foot.add_class("lf-ready")
         self.slot = widgets.VBox([], layout=widgets.Layout(width="100%"))
         page = widgets.VBox(
-            [_Style(), self.head, _guessed(settling.draft), self.listed, foot],
+            [_Style(), self.head, self.title, _guessed(settling.draft), self.listed, foot],
             layout=widgets.Layout(width="100%", max_width="1000px"),
         )
         page.add_class("lf-draft")
@@ -129,6 +136,15 @@ class DraftPage:
 
     def _note(self, box: QuestionBox, words: str) -> None:
         self._do(box, lambda: self.settling.note(box.question, words))
+
+    def _titled(self, change: Any) -> None:
+        if change["new"].strip() and change["new"] != self._title():
+            changes = [(("title",), change["new"].strip())]
+            self._do(None, lambda: self.settling.pages.set(changes))
+
+    def _title(self) -> str:
+        found = self.settling.pages.value(("title",))
+        return found if isinstance(found, str) else ""
 
     def _again(self, _: Any = None) -> None:
         self._do(None, self.settling.pages.read)
@@ -202,6 +218,7 @@ class DraftPage:
         for box in self.boxes:
             box.show(self.settling)
             box.say("")
+        self.title.value = self._title()
         left = sum(self.settling.is_open(question) for question in questions)
         self.head.value = _head(self.settling.file, len(questions), left)
         self.go.disabled = left > 0

@@ -163,7 +163,7 @@ class Workbench:
 
     def _put_together(self) -> Any:
         reason = widgets.HBox(
-            [self.why, self.bar.board, self.bar.numbers],
+            [self.why, self.bar.columns, self.bar.board, self.bar.numbers],
             layout=widgets.Layout(height="32px", flex="0 0 auto", align_items="center"),
         )
         reason.add_class("lf-bar-of-views")

@@ -39,6 +39,7 @@ class ViewBar:
         self.more = widgets.Dropdown(layout=widgets.Layout(width="130px", order="9"))
         self.more.tooltip = "More views"
         self.more.observe(self._other, "value")
+        # a row above, as four views and a column leave no room for Table and PNG
         self.columns = widgets.Dropdown(
             layout=widgets.Layout(width="96px", display="none", order="10")
         )
@@ -56,7 +57,7 @@ class ViewBar:
         self.save.on_click(lambda _: save())
         spring = widgets.Box(layout=widgets.Layout(flex="1 1 auto", order="11"))
         self.widget = widgets.HBox(
-            [*self._views.values(), self.more, self.columns, spring, self.table, self.save],
+            [*self._views.values(), self.more, spring, self.table, self.save],
             layout=widgets.Layout(height="30px", flex="0 0 auto"),
         )
         self.widget.add_class("lf-bar-of-views")
