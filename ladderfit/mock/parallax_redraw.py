@@ -281,9 +281,9 @@ def _from_prior(
     width = np.sqrt(stars.variance + scatter**2 + softness**2)
     far = np.asarray(ends + _REACH * width)
     first = _first(stars)
-    deepest = np.full(n, -np.inf)
-    np.maximum.at(deepest, first, far)
-    return np.asarray(deepest[first] + np.log(rng.uniform(size=n)) / _TILT)
+    nearest = np.full(n, np.inf)  # all stars of a cluster have to pass
+    np.minimum.at(nearest, first, far)
+    return np.asarray(nearest[first] + np.log(rng.uniform(size=n)) / _TILT)
 
 
 def _in_disc(stars: StarSample, section: Parallaxes, rng: Rng) -> FloatArray:

@@ -79,9 +79,9 @@ def rank_panel(experiment: Experiment, name: str, axes: Axes, *, theme: Theme = 
     )  # fmt: skip
     axes.axhline(0.0, color=theme.muted, linewidth=0.7)
     axes.step(share, 100.0 * off, where="mid", color=accent.colour, linestyle=accent.line,
-              linewidth=1.2, label="ranks")  # fmt: skip
+              linewidth=1.2, label="ranks (dashed where outside)")  # fmt: skip
     inside = " / ".join(f"{100 * covered(ranks, level):.0f}" for level in LEVELS)
-    title = f"{plain(_title(name))}\n{inside} % covered" + (" - outside" if out else "")
+    title = f"{plain(_title(name))}\n{inside} %" + (", outside" if out else " covered")
     axes.set_title(title, fontsize=7.2, loc="left")
     axes.set_xlim(0.0, 1.0)
     axes.set_xticks([0.0, 0.5, 1.0], ["0", "0.5", "1"])

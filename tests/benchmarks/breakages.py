@@ -1,6 +1,7 @@
 """Which checks notice which departure from the model, at which size, in surveys like the sample.
 
-``python tests/benchmarks/breakages.py [SURVEYS [WORKERS]]``
+``python tests/benchmarks/breakages.py [SURVEYS [WORKERS [FILE]]]``; outcomes stream to
+FILE, from which a killed run goes on.
 
 A check notices where its p-value is under 0.01.  The first row has no departure: what
 is noticed there is false alarm.
@@ -12,6 +13,7 @@ import sys
 from collections import defaultdict
 from collections.abc import Mapping
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -25,11 +27,11 @@ from ladderfit.mock.breakages import Breakage
 from ladderfit.mock.light_curves import LightCurves
 from ladderfit.sampling.run import draw
 from ladderfit.shipped import sample_ladder
-from ladderfit.sweep import Job, Task, sweep
+from ladderfit.sweep import Job, Outcome, Task, sweep
 
 SEED = 1517
 LEVEL = 0.01
-DRAWS = 1000
+DRAWS = 600
 SIZES: dict[str, dict[str, Any]] = {
     "none": {},
     "slope larger by 0.2 in anchors": {"slope_in_anchors": 0.2},
@@ -81,13 +83,22 @@ def examine(_: None, arguments: Mapping[str, Any]) -> dict[str, Any]:
     return {"p": found, "pulls": pulls}
 
 
-def main(surveys: int, workers: int) -> None:
-    """Run and print, a row as soon as it is there."""
+def main(surveys: int, workers: int, file: Path | None) -> None:
+    """Run and print; every kind is examined once before any is examined again."""
+    tasks = [
+        Task(f"{name} {k}", {"name": name, "number": k}) for k in range(surveys) for name in SIZES
+    ]
+    outcomes = sweep(Job(examine), tasks, workers=workers, file=file)
+    show({task.key: outcome for task, outcome in zip(tasks, outcomes, strict=True)})
+
+
+def show(outcomes: Mapping[str, Outcome]) -> None:
+    """A row for each kind: pulls, and the checks that notice most often."""
     for name in SIZES:
-        tasks = [Task(f"{name} {k}", {"name": name, "number": k}) for k in range(surveys)]
-        outcomes = sweep(Job(examine), tasks, workers=workers)
-        done = [outcome.values for outcome in outcomes if outcome.status == "done"]
-        told = [outcome.message for outcome in outcomes if outcome.status != "done"]
+        mine = [each for key, each in outcomes.items() if key.rpartition(" ")[0] == name]
+        done = [outcome.values for outcome in mine if outcome.status == "done"]
+        if not done:
+            continue
         share: dict[str, list[bool]] = defaultdict(list)
         for each in done:
             for check, p in each["p"].items():
@@ -95,13 +106,16 @@ def main(surveys: int, workers: int) -> None:
         rates = {check: float(np.mean(noticed)) for check, noticed in share.items()}
         best = sorted(rates, key=lambda check: -rates[check])[:5]
         pulls = {key: np.mean([each["pulls"][key] for each in done]) for key in done[0]["pulls"]}
-        seconds = sum(outcome.seconds for outcome in outcomes)
-        print(f"{name} ({len(done)} surveys, {len(rates)} checks, {seconds:.0f} s)")
+        seconds = sum(outcome.seconds for outcome in mine)
+        print(f"{name} ({len(done)} of {len(mine)} surveys, {len(rates)} checks, {seconds:.0f} s)")
         print("   pulls: " + ", ".join(f"{key} {pull:+.2f}" for key, pull in pulls.items()))
         print("   " + "; ".join(f"{check} {100 * rates[check]:.0f} %" for check in best))
-        print("   ".join(["", *told[:1]]), flush=True)
 
 
 if __name__ == "__main__":
-    asked = [int(word) for word in sys.argv[1:]]
-    main(*(*asked, *(20, 2)[len(asked) :]))
+    asked = sys.argv[1:]
+    main(
+        int(asked[0]) if asked else 20,
+        int(asked[1]) if len(asked) > 1 else 2,
+        Path(asked[2]) if len(asked) > 2 else None,
+    )
