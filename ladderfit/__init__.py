@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from ladderfit.checks import predictive_checks
     from ladderfit.compare import compare_results
     from ladderfit.completeness import propose_period_cuts
+    from ladderfit.coverage import run_coverage
     from ladderfit.distances import distances_of
     from ladderfit.influence import leave_one_out
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
@@ -52,6 +53,7 @@ _HOME = {
     "compare_fits": "ladderfit.predictive",
     "prior_sensitivity": "ladderfit.power_scaling",
     "run_alternatives": "ladderfit.alternatives",
+    "run_coverage": "ladderfit.coverage",
 }
 
 __all__ = [
@@ -75,6 +77,7 @@ __all__ = [
     "compare_fits",
     "prior_sensitivity",
     "run_alternatives",
+    "run_coverage",
 ]
 
 
