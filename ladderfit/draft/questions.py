@@ -297,9 +297,12 @@ def _metallicity(entry: Entry, base: Question, draft: Draft) -> Question:
     if entry.key == "scale":
         options = (*(_set(scale, base.place, scale) for scale in _SCALES), none)
         words = "On which scale are the metallicities?"
-        columns = [sketch.roles.decided("metallicity") for _, sketch in draft.sources.values()]
-        held = dict.fromkeys(f"{c.name} is {_holds(c)}" for c in columns if c is not None)
-        saw = f"{'; '.join(held)}: neither name nor values tell."
+        columns = [
+            (path.name, sketch.roles.decided("metallicity"))
+            for path, sketch in draft.sources.values()
+        ]
+        held = [f"{c.name} of {name} is {_holds(c)}" for name, c in columns if c is not None]
+        saw = f"{'; '.join(held)}. Neither name nor values tell."
         saw = base.saw if "bring them" in base.saw or not held else saw
         return replace(base, words=words, saw=saw, options=options)
     words = "At which metallicity is the zero point stated?"

@@ -20,7 +20,8 @@ function keep(event) {
 }
 
 function render({ el }) {
-  window.addEventListener("keydown", keep, true);
+  const kept = (event) => keep(event); // its own, as a view may be made anew before the old one goes
+  window.addEventListener("keydown", kept, true);
   let watcher = null;
   let frame = 0;
   const start = () => {
@@ -35,7 +36,7 @@ function render({ el }) {
   };
   start();
   return () => {
-    window.removeEventListener("keydown", keep, true);
+    window.removeEventListener("keydown", kept, true);
     cancelAnimationFrame(frame);
     watcher?.disconnect();
   };
