@@ -72,8 +72,8 @@ ORDER = """
     draft.make draft.answers draft.asking draft.questions draft.settle draft.example draft
     mock.tables mock.light_curves mock.contamination mock.breakages mock.plan mock.stars mock.peaks
     mock.survey mock.parallax_survey mock.tripp mock.scenario
-    mock.star_law mock.peak_redraw mock.photometry_redraw mock.parallax_redraw mock.restated mock.redraw
-    mock.folder mock mock.__main__
+    mock.star_law mock.peak_redraw mock.photometry_redraw mock.parallax_redraw mock.restated
+    mock.redraw mock.folder mock mock.__main__
     coverage.design coverage.ranks coverage.quantities coverage.outcome coverage.experiment
     coverage.words coverage.folder coverage
     plots.theme plots.density plots.relation plots.outliers plots.corner plots.parallax plots.moduli
