@@ -52,14 +52,15 @@ def write_text_atomically(path: str | Path, text: str) -> None:
             stream.write(text)
             stream.flush()
             os.fsync(stream.fileno())
-        temporary.chmod(_mode_for(target))
+        temporary.chmod(mode_for(target))
         temporary.replace(target)
     except BaseException:
         temporary.unlink(missing_ok=True)
         raise
 
 
-def _mode_for(target: Path) -> int:
+def mode_for(target: Path) -> int:
+    """The permissions of a file that is replaced, or those that this user's new files have."""
     if target.exists():
         return target.stat().st_mode & 0o777
     return 0o666 & ~_umask()
@@ -95,7 +96,11 @@ def new_folder(target: str | Path) -> Iterator[Path]:
         temporary.chmod(0o777 & ~_umask())
         yield temporary
         _refuse_existing(target)
-        temporary.rename(target)
+        try:
+            temporary.rename(target)
+        except OSError:
+            _refuse_existing(target)  # somebody else was quicker
+            raise
     except BaseException:
         shutil.rmtree(temporary, ignore_errors=True)
         raise

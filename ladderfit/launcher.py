@@ -86,7 +86,8 @@ def with_file(notebook: str, path: str) -> str:
     if len(lines) != 1:
         raise ValueError(f"found {len(lines)} lines {_NO_FILE!r}, expected one")
     source, place = lines[0]
-    source[place] = source[place].replace(_NO_FILE, f"FILE = {json.dumps(path)}", 1)
+    literal = json.dumps(path, ensure_ascii=False) if path.isprintable() else repr(path)
+    source[place] = source[place].replace(_NO_FILE, f"FILE = {literal}", 1)
     return json.dumps(content, indent=1, ensure_ascii=False) + "\n"
 
 

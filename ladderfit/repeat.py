@@ -19,6 +19,7 @@ from ladderfit.errors import InputError, LadderfitError, Problem, raise_if
 from ladderfit.files import sha256_of
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.result import Result
+from ladderfit.result_files import check_provenance
 from ladderfit.sampling.chain_reading import read_commit
 from ladderfit.sampling.direct import Progress
 from ladderfit.sampling.live import start
@@ -111,11 +112,18 @@ def compare(before: Result, after: Result, versions: Mapping[str, str]) -> Compa
 
 def _versions(then: Mapping[str, str]) -> list[str]:
     now = {"python": platform.python_version()}
-    now |= {name: metadata.version(name) for name in then if name != "python"}
+    now |= {name: _version(name) for name in then if name != "python"}
     moved = [f"{name} {then[name]} -> {now[name]}" for name in then if then[name] != now[name]]
     if moved:
         return [f"Versions differ: {', '.join(moved)}."]
     return ["The versions are the same: another processor may round differently."]
+
+
+def _version(name: str) -> str:
+    try:
+        return metadata.version(name)
+    except (metadata.PackageNotFoundError, ValueError):
+        return "none"
 
 
 def _provenance(folder: Path) -> dict[str, Any]:
@@ -123,7 +131,9 @@ def _provenance(folder: Path) -> dict[str, Any]:
     try:
         content = json.loads(path.read_text(encoding="utf-8"))
         absent = [name for name in _NEEDED if name not in content]
-    except (OSError, ValueError, TypeError):
+        if not absent:
+            check_provenance(content)
+    except (OSError, ValueError, TypeError, AttributeError, RecursionError):
         absent = ["readable contents"]
         content = {}
     if absent or content["sampler"] not in ("direct", "ensemble"):

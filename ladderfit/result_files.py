@@ -20,6 +20,18 @@ FloatArray = npt.NDArray[np.float64]
 
 _MAPPINGS = ("ess", "rhat", "informed")
 _SINGLE = ("pareto_k", "efficiency", "log_evidence", "log_evidence_error")
+_KINDS = {
+    "title": str,
+    "sampler": str,
+    "written": str,
+    "ladder_sha256": str,
+    "posterior_sha256": str,
+    "seed": int,
+    "draws": int,
+    "inputs": dict,
+    "versions": dict,
+}
+_WORDS = {str: "text", int: "whole number", dict: "object"}
 _HASHED = {"posterior_sha256": "posterior.nc", "ladder_sha256": "ladder.toml"}
 
 
@@ -37,6 +49,29 @@ def changed_files(folder: Path, provenance: Mapping[str, Any]) -> Iterator[Probl
                 remedy="restore the file, or calibrate anew",
                 file=str(folder / name),
             )
+
+
+def check_provenance(content: Mapping[str, Any]) -> None:
+    """Refuse a provenance in which something is of the wrong kind; what is absent passes.
+
+    Raises
+    ------
+    ValueError
+        Saying what is wrong.
+    """
+    for name, kind in _KINDS.items():
+        if name in content and type(content[name]) is not kind:
+            raise ValueError(f"{name} is no {_WORDS[kind]}")
+    if content.get("draws", 1) < 1:
+        raise ValueError(f"{content['draws']} draws")
+    if not all(isinstance(value, str) for value in content.get("versions", {}).values()):
+        raise ValueError("a version that is no text")
+    for section, entry in content.get("inputs", {}).items():
+        kinds = {"table": str, "sha256": str, "rows": int}
+        if not isinstance(entry, dict) or any(
+            type(entry.get(k)) is not v for k, v in kinds.items()
+        ):
+            raise ValueError(f"the input {section!r} lacks its table, SHA-256 or rows")
 
 
 def check_stored(path: Path) -> None:

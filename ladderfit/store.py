@@ -7,6 +7,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 import os
 import platform
@@ -17,10 +18,12 @@ from importlib import metadata
 from pathlib import Path
 from typing import Any
 
+import h5netcdf
 import numpy as np
 import numpy.typing as npt
 import xarray as xr
 from astropy.table import Table
+from xarray.backends import H5NetCDFStore
 
 from ladderfit.assembly import PATHS
 from ladderfit.choices import Choices
@@ -31,7 +34,13 @@ from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.names import base_name, group_of, parameter, with_group
 from ladderfit.ranges import Ranges, calibrated_ranges
 from ladderfit.result import Diagnostics, Result, ordered
-from ladderfit.result_files import changed_files, check_draws, check_stored, diagnostics_of
+from ladderfit.result_files import (
+    changed_files,
+    check_draws,
+    check_provenance,
+    check_stored,
+    diagnostics_of,
+)
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -85,6 +94,7 @@ def read_result(folder: str | Path) -> Result:
     draws = read_netcdf(folder / "posterior.nc")
     try:
         diagnostics = diagnostics_of(summary["diagnostics"])
+        check_provenance(summary["provenance"])
         raise_if(list(changed_files(folder, summary["provenance"])))
         source = _ladder_if_unchanged(folder, summary["provenance"]["inputs"])
     except (KeyError, TypeError, ValueError, AttributeError) as error:
@@ -155,8 +165,11 @@ def write_netcdf(result: Result, path: Path) -> None:
     posterior = xr.Dataset(variables, coordinates)
     posterior.attrs.update(inference_library="ladderfit", sampler=result.diagnostics.sampler)
     stats = xr.Dataset(attrs=_numbers(result.diagnostics))
-    posterior.to_netcdf(path, mode="w", group="posterior", engine="h5netcdf")
-    stats.to_netcdf(path, mode="a", group="sample_stats", engine="h5netcdf")
+    content = io.BytesIO()  # HDF5 itself may crash the process where the disk is full
+    with h5netcdf.File(content, "w") as file:
+        posterior.dump_to_store(H5NetCDFStore(file, group="posterior"))
+        stats.dump_to_store(H5NetCDFStore(file, group="sample_stats"))
+    path.write_bytes(content.getbuffer())
 
 
 def read_netcdf(path: Path) -> dict[str, FloatArray]:

@@ -155,7 +155,7 @@ def test_killed_at_random_moments(
     dice = random.Random(9)
     run_ = start(ladder, tmp_path / "run", seed=5, total=200 * PER_ROW)
     kills, rows = 0, 0
-    while kills < (20 if in_full else 2):
+    while kills < (50 if in_full else 2):
         time.sleep(dice.uniform(0.0, 4.0 if in_full else 2.0))
         lock = run_.path / "run.lock"
         if run_.state == "finished" or not lock.exists():

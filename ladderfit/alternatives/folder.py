@@ -16,6 +16,7 @@ from ladderfit.error_budget import budgeted
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import write_text_atomically
 from ladderfit.names import parameter
+from ladderfit.report.machine import harmless
 from ladderfit.store import provenance_of
 
 OUTCOMES = "outcomes.jsonl"
@@ -89,5 +90,17 @@ def _write(frame: pd.DataFrame, units: dict[str, str], title: str, stem: Path) -
             table[name].unit = _one_slash(units[name])
     for suffix, format_ in ((".ecsv", "ascii.ecsv"), (".csv", "ascii.csv")):
         text = io.StringIO()
+        if suffix == ".csv":  # for spreadsheets, which take some words for formulas
+            for name in table.colnames:
+                if table[name].dtype.kind == "U":
+                    table[name] = [_spread(cell) for cell in table[name]]
         table.write(text, format=format_)
         write_text_atomically(stem.with_suffix(suffix), text.getvalue())
+
+
+def _spread(cell: str) -> str:
+    try:
+        float(cell)
+    except ValueError:
+        return harmless(cell)
+    return cell

@@ -14,6 +14,7 @@ from ladderfit.commands.terminal import (
     progress_on,
     say,
     seed,
+    tell_outside,
     terminable,
 )
 
@@ -70,6 +71,7 @@ def _alternatives(chosen: argparse.Namespace) -> int:
 
     path = sample_ladder() if chosen.file is None else Path(chosen.file)
     ladder = read_ladder(path)
+    tell_outside(ladder)
     if chosen.draws is not None:
         ladder = ladder.change({"sampling.draws": chosen.draws})  # refuses what makes no sense
     free = first_free(Path(f"{path.stem}-alternatives"))

@@ -14,6 +14,7 @@ from ladderfit.commands.terminal import (
     refuse_besides,
     say,
     seed,
+    tell_outside,
     terminable,
 )
 
@@ -73,6 +74,7 @@ def _calibrate_anew(chosen: argparse.Namespace) -> int:
 
     path = sample_ladder() if chosen.file is None else Path(chosen.file)
     ladder = read_ladder(path)
+    tell_outside(ladder)
     stated = {
         "sampling.seed": chosen.seed,
         "sampling.draws": chosen.draws,

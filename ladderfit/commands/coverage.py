@@ -14,6 +14,7 @@ from ladderfit.commands.terminal import (
     progress_on,
     say,
     seed,
+    tell_outside,
     terminable,
 )
 
@@ -68,6 +69,7 @@ def _coverage(chosen: argparse.Namespace) -> int:
 
     path = sample_ladder() if chosen.file is None else Path(chosen.file)
     ladder = read_ladder(path)
+    tell_outside(ladder)
     free = first_free(Path(f"{path.stem}-coverage"))
     folder = free if chosen.out is None else Path(chosen.out)
     try:

@@ -6,7 +6,7 @@ import argparse
 import sys
 from pathlib import Path
 
-from ladderfit.commands.terminal import Add, progress_on, say, seed, terminable
+from ladderfit.commands.terminal import Add, progress_on, say, seed, tell_outside, terminable
 
 
 def add(add_parser: Add) -> None:
@@ -37,6 +37,7 @@ def _review(chosen: argparse.Namespace) -> int:
     path = Path(chosen.file)
     claims = read_claims(chosen.claims)
     ladder = read_ladder(path)
+    tell_outside(ladder)
     free = first_free(Path(f"{path.stem}-review"))
     folder = free if chosen.out is None else Path(chosen.out)
     with terminable(), progress_on(sys.stderr) as report:

@@ -6,11 +6,15 @@ import argparse
 import contextlib
 import os
 import signal
+import sys
 import threading
 from collections.abc import Callable, Iterator, Sequence
-from typing import TextIO
+from typing import TYPE_CHECKING, TextIO
 
 from ladderfit.errors import InputError, Problem
+
+if TYPE_CHECKING:
+    from ladderfit.ladder import Ladder
 
 EXIT_FAILED = 1
 EXIT_INTERRUPTED = 130
@@ -30,6 +34,18 @@ def say(text: str, stream: TextIO) -> None:
         print(text, file=stream, flush=True)
     except BrokenPipeError:  # whoever read a pipe has gone; what was asked for is done
         os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
+
+
+def tell_outside(ladder: Ladder) -> None:
+    """Say on standard error which inputs lie outside the folder of the ladder file."""
+    if ladder.path is None:
+        return
+    base = ladder.path.parent.resolve()
+    found = [source.path for source in ladder.sources.values()]
+    outside = [path for path in found if not (base / path).resolve().is_relative_to(base)]
+    if outside:
+        words = ", ".join(dict.fromkeys(" ".join(path.split()) for path in outside))
+        say(f"ladderfit: outside the folder of the ladder file: {words}", sys.stderr)
 
 
 @contextlib.contextmanager

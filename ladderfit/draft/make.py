@@ -25,6 +25,7 @@ from ladderfit.draft.jobs import (
 from ladderfit.draft.roles import Roles
 from ladderfit.draft.text import Entry, file_text
 from ladderfit.errors import InputError, Problem, raise_if
+from ladderfit.files import mode_for
 from ladderfit.schema import UNDECIDED
 from ladderfit.table_files import read_table
 from ladderfit.tables import DataTable
@@ -104,7 +105,7 @@ def _write_new(path: Path, text: str) -> None:
     try:
         with os.fdopen(handle, "w", encoding="utf-8", newline="") as stream:
             stream.write(text)
-        Path(name).chmod(0o644)
+        Path(name).chmod(mode_for(path))
         path.hardlink_to(name)
     except FileExistsError:
         raise InputError(_taken(path)) from None

@@ -9,11 +9,12 @@ from collections.abc import Sequence
 from pathlib import Path
 
 from ladderfit.errors import InputError, Problem
-from ladderfit.files import write_text_atomically
+from ladderfit.files import lock, write_text_atomically
 from ladderfit.report.cells import PaperTable
 from ladderfit.report.files import tables_of, write_tables
 from ladderfit.report.page import report_page
 from ladderfit.result import Result
+from ladderfit.result_files import check_provenance
 
 PAGE, TABLES, FIGURES = "report.html", "tables", "figures"
 _ORDER = ("relation", "outliers", "moduli", "parallaxes", "hubble", "peaks", "corner")
@@ -63,33 +64,59 @@ def renew_report(result: Result, folder: Path, *, more: Sequence[PaperTable] = (
     ------
     InputError
         If the provenance cannot be read.
+    LadderfitError
+        If another process is at it.
     OSError
         If a file cannot be written; the old ones are then as they were.
     """
     folder = folder.resolve()
-    temporary = Path(tempfile.mkdtemp(prefix=".report.", suffix=".tmp", dir=folder))
-    try:
-        write_report(result, folder, into=temporary, more=more)
-        move_report(temporary, folder)
-    finally:
-        shutil.rmtree(temporary, ignore_errors=True)
+    with lock(folder / "report.lock", "a report is being written"):
+        for leftover in folder.glob(".report.*.tmp"):  # of a process that was killed
+            shutil.rmtree(leftover, ignore_errors=True)
+        temporary = Path(tempfile.mkdtemp(prefix=".report.", suffix=".tmp", dir=folder))
+        try:
+            write_report(result, folder, into=temporary, more=more)
+            move_report(temporary, folder)
+        finally:
+            shutil.rmtree(temporary, ignore_errors=True)
 
 
 def move_report(temporary: Path, folder: Path) -> None:
-    """Put a finished report, its tables and figures in the place of older ones."""
-    for name in (FIGURES, TABLES):
-        if (temporary / name).is_dir():
-            if (folder / name).exists():
-                (folder / name).rename(temporary / f"old-{name}")
-            (temporary / name).rename(folder / name)
-    (temporary / PAGE).replace(folder / PAGE)
+    """Put a finished report, its tables and figures in the place of older ones.
+
+    Raises
+    ------
+    OSError
+        If a file cannot be moved; what was there is then put back.
+    """
+    moved: list[tuple[Path, Path]] = []
+    try:
+        for name in (FIGURES, TABLES):
+            if (temporary / name).is_dir():
+                if (folder / name).exists():
+                    moved.append(_move(folder / name, temporary / f"old-{name}"))
+                moved.append(_move(temporary / name, folder / name))
+        (temporary / PAGE).replace(folder / PAGE)
+    except OSError:
+        for before, after in reversed(moved):
+            after.rename(before)
+        raise
+
+
+def _move(before: Path, after: Path) -> tuple[Path, Path]:
+    before.rename(after)
+    return before, after
 
 
 def _provenance(folder: Path) -> dict[str, object]:
     path = folder / "provenance.json"
     try:
-        return dict(json.loads(path.read_text(encoding="utf-8")))
-    except (OSError, ValueError, TypeError):
+        content = json.loads(path.read_text(encoding="utf-8"))
+        if not isinstance(content, dict):
+            raise TypeError("no object at the top")
+        check_provenance(content)
+        return content
+    except (OSError, ValueError, TypeError, RecursionError):
         raise InputError(
             Problem(
                 found="a provenance that cannot be read",

@@ -22,6 +22,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.errors import InputError
+from ladderfit.files import mode_for
 from ladderfit.sampling.chain_layout import (
     FLOAT,
     Commit,
@@ -216,7 +217,7 @@ def _moved_into_place(path: Path) -> Iterator[Path]:
         yield temporary
         with temporary.open("r+b") as stream:
             os.fsync(stream.fileno())
-        temporary.chmod(path.stat().st_mode & 0o777 if path.exists() else 0o644)
+        temporary.chmod(mode_for(path))
         temporary.replace(path)
     except BaseException:
         temporary.unlink(missing_ok=True)

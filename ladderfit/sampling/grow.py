@@ -52,6 +52,9 @@ def grow(
     every : float
         Seconds between commits.
     """
+    if _looks_at_warm_up(file.rows) and file.commit.warm_up is None and settled(file):
+        # whoever drew this row died before the end of the warm-up was put down
+        file.write_commit(file.commit.seconds, warm_up=file.commit.rows)
     if _at_the_end(file, enough, most()):
         return
     began, before = time.monotonic(), file.commit.seconds
@@ -60,7 +63,7 @@ def grow(
         file.append(states)
         warming = file.commit.warm_up is None
         kept = 0 if file.commit.warm_up is None else file.rows - file.commit.warm_up
-        look = file.rows % _WARM_UP_EVERY == 0 if warming else is_look(kept)
+        look = _looks_at_warm_up(file.rows) if warming else is_look(kept)
         full = not warming and _reached(kept, most())
         now = time.monotonic()
         if not (look or full or now - last >= every):
@@ -72,6 +75,10 @@ def grow(
         yield commit
         if not warming and _at_the_end(file, enough, most()):
             return
+
+
+def _looks_at_warm_up(rows: int) -> bool:
+    return rows % _WARM_UP_EVERY == 0
 
 
 def is_look(kept: int) -> bool:

@@ -107,7 +107,8 @@ class RunFolder:
         """Whether somebody launched a worker a moment ago that has not reported yet."""
         if self.status().state != "starting":
             return False
-        return time.time() - (self.path / "status.json").stat().st_mtime < _LAUNCH
+        since = time.time() - (self.path / "status.json").stat().st_mtime
+        return abs(since) < _LAUNCH  # below zero: the clock was set back meanwhile
 
     def settings(self) -> Settings:
         """What was asked for.

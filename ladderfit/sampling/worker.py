@@ -62,7 +62,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         with lock(folder.lock, "a run is under way in this folder"):
             return _work(folder, stopper)
-    except LadderfitError as error:  # somebody else is at work
+    except (LadderfitError, OSError) as error:  # somebody else is at work, or no place
         print(error, file=sys.stderr, flush=True)
         return EXIT_FAILED
 

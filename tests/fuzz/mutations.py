@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import gzip
 from collections.abc import Callable
 
@@ -144,6 +145,16 @@ def entities(data: bytes, rng: Rng) -> bytes:
     return head + mark + b"<!DOCTYPE x [" + declared + b"]>" + body.replace(b">", b">&e8;", 3)
 
 
+def bomb(data: bytes, rng: Rng) -> bytes:
+    """Compressed data that go on for 3 GB, as spaces, zeros or lines."""
+    return gzip.compress(data) + _swelling(int(rng.integers(3))) * 30
+
+
+@functools.cache
+def _swelling(kind: int) -> bytes:
+    return gzip.compress((b" ", b"\x00", b"1,2,3\n")[kind] * (100_000_000 // (1, 1, 6)[kind]), 1)
+
+
 def other(data: bytes, rng: Rng) -> bytes:
     """Something else altogether."""
     size = int(rng.integers(0, 4000))
@@ -176,8 +187,18 @@ _XML: tuple[tuple[Mutation, float], ...] = (*_TEXT, (entities, 2.0))
 
 def spoilt(data: bytes, suffix: str, rng: Rng) -> tuple[bytes, str]:
     """The data after one to three mutations, and the names of these."""
+    if suffix == ".gz" and rng.uniform() < 0.8:  # what is inside
+        inside, how = _mutated(gzip.decompress(data), _TEXT, rng)
+        packed = bomb(inside, rng) if rng.uniform() < 0.05 else gzip.compress(inside)
+        return packed, f"{how}, inside"
     kinds = {".fits": _BINARY, ".parquet": _BINARY, ".npy": _BINARY, ".vot": _XML}
-    choices = kinds.get(suffix, _TEXT)
+    kinds |= {".gz": _BINARY, ".nc": _BINARY}
+    return _mutated(data, kinds.get(suffix, _TEXT), rng)
+
+
+def _mutated(
+    data: bytes, choices: tuple[tuple[Mutation, float], ...], rng: Rng
+) -> tuple[bytes, str]:
     weight = np.array([w for _, w in choices])
     names = []
     for _ in range(int(rng.choice([1, 1, 1, 2, 3]))):
