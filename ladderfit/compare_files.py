@@ -105,9 +105,7 @@ def method(found: ResultComparison) -> str:
 
 def _shift_rows(found: ResultComparison, place: int) -> list[tuple[str, ...]]:
     resampled = not found.reason
-    rows: list[tuple[str, ...]] = [
-        ("", "shift", "in its errors" if resampled else "its error", "")
-    ]
+    rows: list[tuple[str, ...]] = [("", "shift", "in its errors" if resampled else "its error", "")]
     for name, row in headline_shifts(found, place).iterrows():
         error = row["error"] if resampled else row["most"]
         value = _rounded(row["shift"], error)
