@@ -13,6 +13,10 @@ from contextlib import contextmanager
 from pathlib import Path
 from typing import IO, Any, Literal
 
+import pyarrow
+import pyarrow.compute
+import pyarrow.parquet
+
 Packing = Literal["gzip", "bz2", "xz", "zip"]
 
 LARGEST = 200_000_000  # bytes that a compressed file may unpack to
@@ -131,6 +135,49 @@ def _check_archive(path: Path) -> None:
         raise PackedError(f"an archive that is damaged ({error})") from None
     except (RuntimeError, NotImplementedError, ValueError) as error:
         raise PackedError(f"an archive that cannot be read ({error})") from None
+
+
+def check_parquet(path: Path) -> None:
+    """Refuse a Parquet file that says the same number, or the same long text, far too often.
+
+    Raises
+    ------
+    PackedError
+        If a column swells beyond `LARGEST` bytes and `STEEPEST` times the file's size.
+    Exception
+        Whatever pyarrow raises on a damaged file.
+    """
+    limit = max(LARGEST, STEEPEST * path.stat().st_size)
+    with pyarrow.parquet.ParquetFile(path) as file:
+        about, schema = file.metadata, file.schema_arrow
+        groups = [about.row_group(place) for place in range(about.num_row_groups)]
+        for column in range(about.num_columns):
+            values = sum(group.column(column).num_values for group in groups)
+            _refuse_column(8.0 * max(values, about.num_rows), limit)
+    for field in schema:
+        if pyarrow.types.is_string(field.type) or pyarrow.types.is_large_string(field.type):
+            _refuse_column(_text_size(path, field.name, limit), limit)
+
+
+def _refuse_column(size: float, limit: float) -> None:
+    if size > limit:
+        raise PackedError(f"a column that unpacks to more than {limit / 1e6:.0f} MB")
+
+
+def _text_size(path: Path, name: str, limit: float) -> float:
+    """Bytes of a column of text, each word of its dictionary read once."""
+    size = 0.0
+    with pyarrow.parquet.ParquetFile(path, read_dictionary=[name]) as file:
+        for place in range(file.metadata.num_row_groups):
+            for chunk in file.read_row_group(place, columns=[name])[name].chunks:
+                if pyarrow.types.is_dictionary(chunk.type):
+                    lengths = pyarrow.compute.binary_length(chunk.dictionary).take(chunk.indices)
+                else:
+                    lengths = pyarrow.compute.binary_length(chunk)
+                size += float(pyarrow.compute.sum(lengths).as_py() or 0)
+            if size > limit:
+                break
+    return size
 
 
 def text_stream(stream: IO[bytes]) -> io.TextIOWrapper:

@@ -22,7 +22,15 @@ from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
 from ladderfit.files import sha256_of
-from ladderfit.packed import PackedError, check_packed, opened, packing, text_stream, unpacked
+from ladderfit.packed import (
+    PackedError,
+    check_packed,
+    check_parquet,
+    opened,
+    packing,
+    text_stream,
+    unpacked,
+)
 from ladderfit.table_columns import ColumnsOnDemand
 from ladderfit.table_memory import from_astropy, from_series, parsed_unit
 from ladderfit.tables import Column, DataTable, shown
@@ -235,6 +243,7 @@ def _read_text(path: Path) -> DataTable:
 
 def _read_parquet(path: Path) -> DataTable:
     """Through pyarrow, whose empty cells stay empty; units as astropy stores them."""
+    check_parquet(path)
     file = pyarrow.parquet.ParquetFile(path)  # stays open: columns follow when they are used
     schema, rows = file.schema_arrow, file.metadata.num_rows
     described = (schema.metadata or {}).get(b"table_meta_yaml")
