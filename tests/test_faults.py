@@ -223,7 +223,7 @@ def test_a_folder_that_cannot_be_written(
     file = str(result.ladder.path)
     for arguments in (
         ["calibrate", file, "--out", str(tmp_path / "no" / "out")],
-        ["alternatives", file, "--out", str(tmp_path / "no" / "sweep")],
+        ["coverage", file, "--out", str(tmp_path / "no" / "sweep")],
         ["report", str(folder)],
         ["draft", file.replace("small.toml", "flow.csv"), "--out", str(tmp_path / "no.toml")],
     ):
