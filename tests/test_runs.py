@@ -19,6 +19,7 @@ from small_ladders import small_ladder
 import ladderfit as lf
 import ladderfit.shipped
 from ladderfit.errors import InputError, LadderfitError
+from ladderfit.files import first_free
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.sampling.chain_reading import Chain, read_chain, read_commit
 from ladderfit.sampling.convergence import Goal
@@ -161,7 +162,7 @@ def test_killed_at_random_moments(
         if run_.state == "finished" or not lock.exists():
             if run_.state == "finished":  # begin again, kills are what counts
                 assert_same_chain(read_chain(run_.path / "chain.h5"), read_chain(reference.chain))
-                run_ = start(ladder, tmp_path / f"run-{kills}", seed=5, total=200 * PER_ROW)
+                run_ = start(ladder, first_free(tmp_path / "run"), seed=5, total=200 * PER_ROW)
                 rows = 0
             continue
         os.kill(worker_of(run_.path), signal.SIGKILL)
