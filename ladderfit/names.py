@@ -76,9 +76,7 @@ _ALL = (
         2,
         LogNormal(1.0, 1.5),
     ),
-    Parameter(
-        "outlier_offset", "mag", r"$\delta_o$", "mean deviation of outliers", 2, Fixed(0.0)
-    ),
+    Parameter("outlier_offset", "mag", r"$\delta_o$", "mean deviation of outliers", 2, Fixed(0.0)),
     Parameter(
         "degrees_of_freedom",
         "",

@@ -18,8 +18,28 @@ settings.register_profile("ladderfit", deadline=None, derandomize=IN_CI)
 settings.load_profile("ladderfit")
 
 
+# Files of few long tests: begun first, so that two workers end together.
+LONG = (
+    "test_browser_own_tables",
+    "test_browser_runs",
+    "test_browser_workbench",
+    "test_browser_readers",
+    "test_runs",
+    "test_quality",
+    "test_launcher",
+    "test_faults",
+    "test_workbench_board",
+    "test_parallax_coverage",
+    "test_cli",
+    "test_published_review",
+    "test_fuzz",
+)
+
+
 def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
-    """Skip comparisons with large published tables where these are absent, and say so."""
+    """Long files first; comparisons with large published tables skipped where these are absent."""
+    place = {name: number for number, name in enumerate(LONG)}
+    items.sort(key=lambda item: place.get(item.path.stem, len(place)))
     folder = os.environ.get(TABLES)
     if folder is not None:
         if not Path(folder).is_dir():

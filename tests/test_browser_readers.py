@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import re
 import subprocess
 import sys
@@ -118,6 +119,8 @@ def test_a_reviewer_with_one_rung_and_a_slope_in_print(lab: Lab, tmp_path: Path)
     page.wait_for_function(f"document.images.length >= 2 && {broken} === 0")
     page.close()
 
+    if os.environ.get("LADDERFIT_FULL") != "1":
+        return  # the notebook runs to its end in test_launcher.py
     lab.run("03_review.ipynb")
     outputs = lab.page.locator(".jp-OutputArea-output")
     expect(outputs.filter(has_text="as described").first).to_be_visible()

@@ -184,7 +184,9 @@ PLANTED = [
 ]
 
 
-@pytest.mark.parametrize(("fault", "about"), PLANTED, ids=lambda value: getattr(value, "__name__", value))
+@pytest.mark.parametrize(
+    ("fault", "about"), PLANTED, ids=lambda value: getattr(value, "__name__", value)
+)
 def test_planted_faults_are_caught(fault: Any, about: str) -> None:
     caught = faulty(fault).table().set_index("about")["p"]
     assert caught[about] <= 0.01, caught

@@ -162,9 +162,7 @@ class ParallaxTerms:
         total, chance = np.logaddexp(*logs), np.logaddexp(*chances)
         return Mixed(total - chance, logs[1] - logs[0])
 
-    def measured(
-        self, values: Values
-    ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+    def measured(self, values: Values) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
         """What each star says of its modulus: by its magnitude and by its parallax.
 
         Returns
