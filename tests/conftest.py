@@ -18,15 +18,16 @@ settings.register_profile("ladderfit", deadline=None, derandomize=IN_CI)
 settings.load_profile("ladderfit")
 
 
-# Files of few long tests: begun first, so that two workers end together.
+# Files of few long tests: begun first, so that two workers end together, and in an
+# order in which no two browsers are likely to be open at once.
 LONG = (
     "test_browser_own_tables",
+    "test_runs",
     "test_browser_runs",
     "test_browser_workbench",
-    "test_browser_readers",
-    "test_runs",
     "test_quality",
     "test_launcher",
+    "test_browser_readers",
     "test_faults",
     "test_workbench_board",
     "test_parallax_coverage",

@@ -146,7 +146,7 @@ def test_a_slow_view_does_not_hold_the_page(lab: Lab) -> None:
     moved = page.locator(".lf-number[data-name=zero_point] .lf-value")
     expect(moved).not_to_have_text(zero_point)
     expect(busy).to_have_count(0, timeout=120_000)
-    assert lab.rested()[1] > 3000  # drawn
+    lab.until(lambda picture: picture[1] > 3000)  # drawn
     button(lab, "Table").click()
     rows = page.locator(".lf-scroll table tbody tr")
     expect(rows).to_have_count(3)  # a disc needs positions
