@@ -9,13 +9,13 @@ from typing import Any
 import pandas as pd
 
 from ladderfit.alternatives import Comparison, alternatives_of, run_alternatives
-from ladderfit.alternatives.folder import OUTCOMES, sweep_folder, write_comparison
+from ladderfit.alternatives.folder import write_comparison
 from ladderfit.error_budget import error_budget
 from ladderfit.ladder import Ladder
-from ladderfit.plots import DOTS_PER_INCH
+from ladderfit.plots import save_figure
 from ladderfit.plots.alternatives import comparison_figures
-from ladderfit.plots.theme import LIGHT
 from ladderfit.sampling.direct import Progress
+from ladderfit.sweep.folder import OUTCOMES, sweep_folder
 
 
 def alternatives_in_folder(
@@ -79,11 +79,5 @@ def save_comparison_figures(
     folder.mkdir(parents=True, exist_ok=True)
     written = []
     for name, figure in comparison_figures(comparison, budget):
-        with LIGHT.applied():
-            for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
-                path = folder / f"{name}{suffix}"
-                figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
-                figure.set_layout_engine("none")  # laid out once, for both files
-                written.append(path)
-        figure.clear()
+        written += save_figure(figure, [folder / f"{name}{suffix}" for suffix in (".pdf", ".png")])
     return written

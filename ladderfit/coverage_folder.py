@@ -8,9 +8,8 @@ from typing import Any
 from ladderfit.coverage.folder import coverage_in_folder
 from ladderfit.coverage.outcome import Experiment
 from ladderfit.ladder import Ladder
-from ladderfit.plots import DOTS_PER_INCH
+from ladderfit.plots import save_figure
 from ladderfit.plots.coverage import coverage_figure
-from ladderfit.plots.theme import LIGHT
 from ladderfit.sampling.direct import Progress
 
 
@@ -44,12 +43,5 @@ def coverage_with_figure(
 
 def save_coverage_figure(experiment: Experiment, folder: Path) -> list[Path]:
     """Write the chart as PDF and PNG; gives the files written."""
-    figure, written = coverage_figure(experiment), []
-    with LIGHT.applied():
-        for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
-            path = folder / f"coverage{suffix}"
-            figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
-            figure.set_layout_engine("none")  # laid out once, for both files
-            written.append(path)
-    figure.clear()
-    return written
+    paths = [folder / f"coverage{suffix}" for suffix in (".pdf", ".png")]
+    return save_figure(coverage_figure(experiment), paths)

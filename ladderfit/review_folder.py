@@ -8,14 +8,12 @@ from typing import Any
 
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
+from ladderfit.plots import save_figure
 from ladderfit.plots.review import review_figure
-from ladderfit.plots.theme import LIGHT
 from ladderfit.review import ClaimReview, Claims, Review
 from ladderfit.review import review as review_claims
 from ladderfit.review.page import html_page, markdown_page
 from ladderfit.review.whole import Progress
-
-_DOTS_PER_INCH = 200
 
 
 def write_review(review: Review, folder: str | Path) -> Path:
@@ -83,12 +81,7 @@ def _figures(review: Review, folder: Path) -> dict[int, str]:
         if figure is None:
             continue
         stem = folder / f"claim-{number:02d}"
-        with LIGHT.applied():
-            for suffix, metadata in ((".pdf", {"CreationDate": None}), (".png", None)):
-                path = stem.with_suffix(suffix)
-                figure.savefig(path, dpi=_DOTS_PER_INCH, metadata=metadata)
-                figure.set_layout_engine("none")  # laid out once, for both files
-        figure.clear()
+        save_figure(figure, [stem.with_suffix(suffix) for suffix in (".pdf", ".png")])
         names[number] = f"{stem.name}.png"
     return names
 

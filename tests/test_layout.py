@@ -59,7 +59,7 @@ ORDER = """
     power_scaling
     anchors.weights anchors.tension anchors.comparison anchors
     redshift_cuts distance_priors error_budget
-    sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep
+    sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep.folder sweep
     alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
     alternatives.run alternatives.words alternatives.folder alternatives
     review.claims review.claims_file review.selection review.system review.fits

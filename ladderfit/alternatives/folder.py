@@ -13,36 +13,10 @@ from astropy.table import MaskedColumn, Table
 from ladderfit.alternatives.comparison import Comparison
 from ladderfit.alternatives.systematics import systematics
 from ladderfit.error_budget import budgeted
-from ladderfit.errors import InputError, Problem
 from ladderfit.files import write_text_atomically
 from ladderfit.names import parameter
 from ladderfit.report.machine import harmless
 from ladderfit.store import provenance_of
-
-OUTCOMES = "outcomes.jsonl"
-
-
-def sweep_folder(path: Path) -> Path:
-    """A folder for a comparison: new, or one in which a sweep has begun.
-
-    Raises
-    ------
-    InputError
-        If something else is there.
-    """
-    if path.exists() and not (path / OUTCOMES).is_file():
-        empty = path.is_dir() and not any(path.iterdir())
-        if not empty:
-            raise InputError(
-                Problem(
-                    found="a file or folder without outcomes of a sweep",
-                    expected="a name that is free, or the folder of a sweep to go on with",
-                    remedy="choose another name, or move it away",
-                    file=str(path),
-                )
-            )
-    path.mkdir(parents=True, exist_ok=True)
-    return path
 
 
 def write_comparison(comparison: Comparison, budget: pd.DataFrame, folder: Path) -> None:

@@ -10,7 +10,7 @@ from ladderfit.commands.terminal import (
     EXIT_FAILED,
     EXIT_INTERRUPTED,
     Add,
-    count,
+    add_crew,
     progress_on,
     say,
     seed,
@@ -49,16 +49,7 @@ def add(add_parser: Add) -> None:
     command.add_argument(
         "--seed", type=seed, metavar="N", help="seed in place of the ladder's sampling.seed"
     )
-    where = command.add_mutually_exclusive_group()
-    where.add_argument(
-        "--workers",
-        type=count,
-        metavar="N",
-        help="processes (default: as many as there are cores, fewer for few fits)",
-    )
-    where.add_argument(
-        "--dask", metavar="ADDRESS", help="work on a Dask cluster, by its scheduler's address"
-    )
+    add_crew(command)
     command.set_defaults(run=_alternatives)
 
 

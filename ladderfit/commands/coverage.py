@@ -10,6 +10,7 @@ from ladderfit.commands.terminal import (
     EXIT_FAILED,
     EXIT_INTERRUPTED,
     Add,
+    add_crew,
     count,
     progress_on,
     say,
@@ -50,13 +51,7 @@ def add(add_parser: Add) -> None:
         "first free name NAME-coverage-01, ... here",
     )
     command.add_argument("--seed", type=seed, default=1, metavar="N", help="seed (default: 1)")
-    where = command.add_mutually_exclusive_group()
-    where.add_argument(
-        "--workers", type=count, metavar="N", help="processes (default: as many as there are cores)"
-    )
-    where.add_argument(
-        "--dask", metavar="ADDRESS", help="work on a Dask cluster, by its scheduler's address"
-    )
+    add_crew(command)
     command.set_defaults(run=_coverage)
 
 

@@ -98,6 +98,20 @@ def count(text: str) -> int:
     return int(text)
 
 
+def add_crew(command: argparse.ArgumentParser) -> None:
+    """Add the options that say who works on many fits."""
+    where = command.add_mutually_exclusive_group()
+    where.add_argument(
+        "--workers",
+        type=count,
+        metavar="N",
+        help="processes (default: as many as there are cores, fewer for few fits)",
+    )
+    where.add_argument(
+        "--dask", metavar="ADDRESS", help="work on a Dask cluster, by its scheduler's address"
+    )
+
+
 def refuse_besides(option: str, chosen: argparse.Namespace, others: Sequence[str]) -> None:
     """Refuse options that say what `option` already says."""
     given = [name for name in others if getattr(chosen, name) is not None]

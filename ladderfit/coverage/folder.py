@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 from pathlib import Path
 from typing import Any
@@ -9,13 +10,13 @@ from typing import Any
 import pandas as pd
 from astropy.table import Table
 
-from ladderfit.alternatives.folder import OUTCOMES, sweep_folder
 from ladderfit.coverage.experiment import run_coverage
 from ladderfit.coverage.outcome import Experiment
 from ladderfit.coverage.words import statement
 from ladderfit.files import write_text_atomically
 from ladderfit.ladder import Ladder
 from ladderfit.sampling.direct import Progress
+from ladderfit.sweep.folder import OUTCOMES, sweep_folder
 
 
 def coverage_in_folder(
@@ -73,6 +74,6 @@ def _write(frame: pd.DataFrame, path: Path) -> None:
     for name in table.colnames:
         if table[name].dtype.kind == "O":
             table[name] = [str(cell) for cell in table[name]]
-    temporary = path.with_name(f".{path.name}.part")
-    table.write(temporary, format="ascii.ecsv", overwrite=True)
-    temporary.replace(path)
+    text = io.StringIO()
+    table.write(text, format="ascii.ecsv")
+    write_text_atomically(path, text.getvalue())

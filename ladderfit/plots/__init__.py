@@ -78,18 +78,25 @@ def save_figures(result: Result, folder: Path, *, theme: Theme = LIGHT) -> list[
     for width, end, suffixes in ((WIDTH, "", (".pdf", ".png")), (COLUMN, "_column", (".pdf",))):
         for name, figure in _made(result, theme, width):
             paths = [folder / f"{name}{end}{suffix}" for suffix in suffixes]
-            _save(figure, paths, theme)
-            written += paths
-            figure.clear()
+            written += save_figure(figure, paths, theme)
     return written
 
 
-def _save(figure: Figure, paths: list[Path], theme: Theme) -> None:
+def save_figure(figure: Figure, paths: list[Path], theme: Theme = LIGHT) -> list[Path]:
+    """Write one figure under each path, by its suffix, and free it; gives the paths back.
+
+    Raises
+    ------
+    OSError
+        If a file cannot be written.
+    """
     with theme.applied():
         for path in paths:
             metadata = {"CreationDate": None} if path.suffix == ".pdf" else None
             figure.savefig(path, dpi=DOTS_PER_INCH, metadata=metadata)
             figure.set_layout_engine("none")  # laid out once, for all files
+    figure.clear()
+    return paths
 
 
 def _made(result: Result, theme: Theme, width: float) -> Iterator[tuple[str, Figure]]:
