@@ -18,18 +18,18 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from ladderfit.alternatives import run_alternatives
     from ladderfit.anchors import compare_anchors
-    from ladderfit.checks import predictive_checks
-    from ladderfit.compare import compare_results
-    from ladderfit.completeness import propose_period_cuts
+    from ladderfit.checks.completeness import propose_period_cuts
+    from ladderfit.checks.predictive import predictive_checks
+    from ladderfit.comparison.results import compare_results
     from ladderfit.coverage import run_coverage
-    from ladderfit.distances import distances_of
+    from ladderfit.distances.moduli import distances_of
     from ladderfit.influence import leave_one_out
     from ladderfit.ladder import Ladder, build_ladder, read_ladder
-    from ladderfit.power_scaling import prior_sensitivity
-    from ladderfit.predictive import compare_fits, predictive_fit
+    from ladderfit.predictive.fit import compare_fits, predictive_fit
     from ladderfit.result import Result
     from ladderfit.sampling.live import Run, open_run, start
     from ladderfit.sampling.run import draw
+    from ladderfit.sensitivity.power_scaling import prior_sensitivity
     from ladderfit.store import read_result
 
 _HOME = {
@@ -43,15 +43,15 @@ _HOME = {
     "start": "ladderfit.sampling.live",
     "read_result": "ladderfit.store",
     "compare_anchors": "ladderfit.anchors",
-    "compare_results": "ladderfit.compare",
-    "distances_of": "ladderfit.distances",
+    "compare_results": "ladderfit.comparison.results",
+    "distances_of": "ladderfit.distances.moduli",
     "leave_one_out": "ladderfit.influence",
-    "outlier_table": "ladderfit.outliers",
-    "predictive_checks": "ladderfit.checks",
-    "propose_period_cuts": "ladderfit.completeness",
-    "predictive_fit": "ladderfit.predictive",
-    "compare_fits": "ladderfit.predictive",
-    "prior_sensitivity": "ladderfit.power_scaling",
+    "outlier_table": "ladderfit.checks.outliers",
+    "predictive_checks": "ladderfit.checks.predictive",
+    "propose_period_cuts": "ladderfit.checks.completeness",
+    "predictive_fit": "ladderfit.predictive.fit",
+    "compare_fits": "ladderfit.predictive.fit",
+    "prior_sensitivity": "ladderfit.sensitivity.power_scaling",
     "run_alternatives": "ladderfit.alternatives",
     "run_coverage": "ladderfit.coverage",
 }

@@ -11,24 +11,24 @@ import numpy as np
 
 from ladderfit.choices import Choices, Covariance, Outliers, Parallaxes, PeakRelation
 from ladderfit.clipping import clipped
-from ladderfit.correlated import Given, Supernovae, anchors_together, supernovae_together
-from ladderfit.covariances import Matrix, read_covariance
 from ladderfit.errors import InputError, Problem
-from ladderfit.samples import FloatArray
-from ladderfit.select_stars import (
+from ladderfit.inputs.correlated import Given, Supernovae, anchors_together, supernovae_together
+from ladderfit.inputs.covariances import Matrix, read_covariance
+from ladderfit.inputs.select_stars import (
     CepheidSelection,
     ParallaxSelection,
     select_cepheids,
     select_parallax_stars,
 )
-from ladderfit.select_supernovae import (
+from ladderfit.inputs.select_supernovae import (
     ExpansionSelection,
     PeakSelection,
     select_expansion,
     select_peaks,
 )
-from ladderfit.table_files import read_table
-from ladderfit.tables import DataTable
+from ladderfit.inputs.table_files import read_table
+from ladderfit.inputs.tables import DataTable
+from ladderfit.samples import FloatArray
 
 T = TypeVar("T")
 

@@ -16,10 +16,10 @@ from ladderfit.choices import Choices
 from ladderfit.choices.outliers import CLIPPING
 from ladderfit.classical.least_squares import clipped_least_squares
 from ladderfit.errors import InputError, LadderfitError, Problem
+from ladderfit.inputs.select_stars import CepheidSelection
 from ladderfit.relations import design
 from ladderfit.sample_arrays import taken
 from ladderfit.samples import BoolArray, FloatArray, StarSample
-from ladderfit.select_stars import CepheidSelection
 
 _NAMED = 12  # stars named in the note
 _INDEPENDENT = 1e-8  # of a column's size

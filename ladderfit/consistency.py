@@ -9,9 +9,9 @@ import numpy as np
 from ladderfit import schema
 from ladderfit.choices import Choices, Group
 from ladderfit.errors import Problem, nearest
+from ladderfit.inputs.rows import nearest_few
 from ladderfit.photometry_notes import photometry_notes
 from ladderfit.relations import break_position, members
-from ladderfit.rows import nearest_few
 from ladderfit.samples import StarSample
 
 

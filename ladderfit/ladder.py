@@ -22,16 +22,16 @@ from ladderfit.assembly import (
 )
 from ladderfit.choices import Choices
 from ladderfit.consistency import star_notes, star_problems
-from ladderfit.correlated import repeated_notes
-from ladderfit.covariances import covariance_in_memory
 from ladderfit.errors import InputError, Problem, nearest, raise_if
+from ladderfit.inputs.correlated import repeated_notes
+from ladderfit.inputs.covariances import covariance_in_memory
+from ladderfit.inputs.peaks import peak_notes, peak_problems
+from ladderfit.inputs.select_stars import CepheidSelection
+from ladderfit.inputs.select_supernovae import PeakSelection
+from ladderfit.inputs.table_memory import table_in_memory
+from ladderfit.inputs.tables import DataTable
 from ladderfit.ladder_file import as_written, read_choices
-from ladderfit.peak_inputs import peak_notes, peak_problems
 from ladderfit.samples import FloatArray, FlowSample, Kept, PeakSample, StarSample, VelocitySample
-from ladderfit.select_stars import CepheidSelection
-from ladderfit.select_supernovae import PeakSelection
-from ladderfit.table_memory import table_in_memory
-from ladderfit.tables import DataTable
 
 __all__ = ["AnchorInUse", "Ladder", "Source", "build_ladder", "read_ladder"]
 

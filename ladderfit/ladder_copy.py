@@ -14,9 +14,9 @@ from astropy.table import MaskedColumn, Table
 
 from ladderfit.assembly import IN_MEMORY, SECTIONS, file_key
 from ladderfit.errors import InputError, LadderfitError, Problem
+from ladderfit.inputs.tables import Column, DataTable
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import write_choices
-from ladderfit.tables import Column, DataTable
 
 LADDER = "ladder.toml"
 _SAMPLES = ("cepheids", "parallax_stars", "peaks", "flow", "velocities")

@@ -17,8 +17,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from ladderfit.choices import Choices, PeakRelation
+from ladderfit.inputs.peaks import error_blocks
 from ladderfit.names import with_group
-from ladderfit.peak_inputs import error_blocks
 from ladderfit.samples import FloatArray, FlowSample, PeakSample
 
 NamedColumn = tuple[str, FloatArray]

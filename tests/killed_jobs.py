@@ -20,13 +20,13 @@ from pathlib import Path
 import numpy as np
 from builders import choices, write_tables
 
-import ladderfit.alternatives_folder
-import ladderfit.calibration
-import ladderfit.coverage_folder
-from ladderfit.alternatives_folder import alternatives_in_folder
-from ladderfit.calibration import calibrate
+import ladderfit.jobs.alternatives
+import ladderfit.jobs.calibration
+import ladderfit.jobs.coverage
 from ladderfit.choices import Choices
-from ladderfit.coverage_folder import coverage_with_figure
+from ladderfit.jobs.alternatives import alternatives_in_folder
+from ladderfit.jobs.calibration import calibrate
+from ladderfit.jobs.coverage import coverage_with_figure
 from ladderfit.ladder import Ladder, read_ladder
 from ladderfit.ladder_file import write_choices
 from ladderfit.store import read_result
@@ -113,9 +113,9 @@ def without_figures() -> None:
         for number in range(20):
             (folder / f"{number}.png").write_bytes(bytes(1000))
 
-    ladderfit.calibration.save_figures = stand_in
-    ladderfit.alternatives_folder.save_comparison_figures = stand_in
-    ladderfit.coverage_folder.save_coverage_figure = stand_in
+    ladderfit.jobs.calibration.save_figures = stand_in
+    ladderfit.jobs.alternatives.save_comparison_figures = stand_in
+    ladderfit.jobs.coverage.save_coverage_figure = stand_in
 
 
 def main() -> None:

@@ -17,9 +17,9 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.choices.outliers import CLIPPING, MIXTURE, STUDENT
 from ladderfit.ladder import Ladder, read_ladder
-from ladderfit.outliers import outlier_table
 from ladderfit.sampling.run import draw
 from ladderfit.shipped import sample_ladder
 

@@ -16,9 +16,9 @@ from ladderfit.alternatives import Comparison, alternatives_of, run_alternatives
 from ladderfit.alternatives.folder import write_comparison
 from ladderfit.alternatives.words import comparison_text
 from ladderfit.choices import Choices
-from ladderfit.error_budget import error_budget
 from ladderfit.errors import InputError, UndeterminedError
 from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.sensitivity.error_budget import error_budget
 
 AXES: dict[str, list[Any]] = {
     "cepheids.periods": [[5.0, 100.0], [8.0, 100.0], [8, 100], [9.0, 60.0]],  # two are new

@@ -11,7 +11,7 @@ from photometry_ladders import MODULI, TRUTH, choices, ladder, tables
 from scipy.stats import kstest
 
 import ladderfit as lf
-from ladderfit.checks import Checks, _statistics, predictive_checks
+from ladderfit.checks.predictive import Checks, _statistics, predictive_checks
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock import mock_from_ladder
 from ladderfit.posterior.deviations import cepheid_deviations, parallax_deviations

@@ -18,7 +18,7 @@ import numpy as np
 import pytest
 import tomlkit
 
-import ladderfit.calibration
+import ladderfit.jobs.calibration
 from ladderfit.cli import main
 from ladderfit.commands.terminal import progress_on
 from ladderfit.errors import SamplingError
@@ -117,7 +117,7 @@ def test_a_second_run_takes_the_next_name_and_repeats(
 ) -> None:
     assert done.returncode == 0
     monkeypatch.chdir(folder)
-    monkeypatch.setattr(ladderfit.calibration, "save_figures", lambda *_: [])
+    monkeypatch.setattr(ladderfit.jobs.calibration, "save_figures", lambda *_: [])
     assert main(["calibrate", "small.toml"]) == 0
     assert main(["calibrate", "small.toml", "--seed", "8", "--draws", "500"]) == 0
     first, same, other = (read_result(folder / f"small-0{n}") for n in (1, 2, 3))
@@ -148,7 +148,7 @@ def test_without_a_file_the_sample_is_fitted(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
     monkeypatch.chdir(tmp_path)
-    monkeypatch.setattr(ladderfit.calibration, "save_figures", lambda *_: [])
+    monkeypatch.setattr(ladderfit.jobs.calibration, "save_figures", lambda *_: [])
     assert main(["calibrate", "--draws", "200"]) == 0
     assert capsys.readouterr().out.startswith("Sample ladder\n")
     summary = json.loads((tmp_path / "sample-01" / "summary.json").read_text(encoding="utf-8"))
@@ -239,7 +239,7 @@ def test_a_posterior_that_cannot_be_drawn(
     def fail(*_: object, **__: object) -> None:
         raise SamplingError("no mode was found;\nnarrow the priors")
 
-    monkeypatch.setattr(ladderfit.calibration, "draw", fail)
+    monkeypatch.setattr(ladderfit.jobs.calibration, "draw", fail)
     out = folder / "never"
     assert main(["calibrate", str(folder / "small.toml"), "--out", str(out)]) == 1
     assert capsys.readouterr().err == "ladderfit: no mode was found; narrow the priors\n"
@@ -285,7 +285,7 @@ def test_interrupted_while_writing(
     def stop(*_: object) -> None:
         raise KeyboardInterrupt
 
-    monkeypatch.setattr(ladderfit.calibration, "save_figures", stop)
+    monkeypatch.setattr(ladderfit.jobs.calibration, "save_figures", stop)
     before = sorted(folder.iterdir())
     code = main(["calibrate", str(folder / "small.toml"), "--out", str(folder / "stopped")])
     assert code == 130
@@ -326,7 +326,7 @@ def test_plain_letters_where_the_output_knows_no_others(
     written = io.BytesIO()
     plain = io.TextIOWrapper(written, encoding="ascii")
     monkeypatch.setattr(sys, "stdout", plain)
-    monkeypatch.setattr(ladderfit.calibration, "save_figures", lambda *_: [])
+    monkeypatch.setattr(ladderfit.jobs.calibration, "save_figures", lambda *_: [])
     out = folder / "plain"
     assert main(["calibrate", str(folder / "small.toml"), "--out", str(out)]) == 0
     text = written.getvalue().decode("ascii")

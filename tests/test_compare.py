@@ -11,11 +11,11 @@ import pytest
 from small_ladders import small_ladder
 
 from ladderfit.cli import main
-from ladderfit.compare import ResultComparison, compare_results
-from ladderfit.compare_files import comparison_text, shift_table, write_comparison
+from ladderfit.comparison.files import comparison_text, shift_table, write_comparison
+from ladderfit.comparison.resampling import Together, objects_of, resample_together
+from ladderfit.comparison.results import ResultComparison, compare_results
 from ladderfit.errors import InputError
 from ladderfit.ladder import Ladder, build_ladder, read_ladder
-from ladderfit.resampling import Together, objects_of, resample_together
 from ladderfit.result import Result
 from ladderfit.sample_arrays import joined, taken
 from ladderfit.sampling.run import draw

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from photometry_ladders import MODULI, TRUTH, ladder
 
-from ladderfit.completeness import propose_period_cuts
+from ladderfit.checks.completeness import propose_period_cuts
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
 from ladderfit.mock import mock_from_ladder

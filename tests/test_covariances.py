@@ -10,8 +10,8 @@ import pytest
 from astropy.io import fits
 from small_ladders import SMALL, TRUTH
 
-from ladderfit.covariances import read_covariance
 from ladderfit.errors import InputError
+from ladderfit.inputs.covariances import read_covariance
 from ladderfit.ladder import Ladder, build_ladder, read_ladder
 from ladderfit.ladder_copy import copy_ladder
 

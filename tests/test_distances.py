@@ -14,10 +14,10 @@ from astropy.table import Table
 from small_ladders import small_ladder
 
 from ladderfit.cli import main
-from ladderfit.distance_files import distance_table, distances_text, write_distances
-from ladderfit.distances import Distances, distances_of, megaparsecs
+from ladderfit.distances.files import distance_table, distances_text, write_distances
+from ladderfit.distances.joined_ladders import together
+from ladderfit.distances.moduli import Distances, distances_of, megaparsecs
 from ladderfit.errors import InputError, LadderfitError
-from ladderfit.joined_ladders import together
 from ladderfit.ladder import build_ladder, read_ladder
 from ladderfit.names import with_group
 from ladderfit.ranges import Ranges, calibrated_ranges
@@ -93,7 +93,7 @@ def test_drawn_anew_it_is_the_same(base: Result, survey: held_out.Survey, joint:
 
 
 def _new_ladder(base: Result, survey: held_out.Survey):  # type: ignore[no-untyped-def]
-    from ladderfit.new_objects import new_objects
+    from ladderfit.distances.new_objects import new_objects
 
     return new_objects(base.choices, [survey.cepheids, survey.supernovae]).ladder
 

@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 from scipy.stats import chi2, kstest
 
-from ladderfit.distances import Distances, distances_of
+from ladderfit.distances.moduli import Distances, distances_of
 from ladderfit.sampling.run import draw
 
 DRAWS = 1500

@@ -22,10 +22,10 @@ from ladderfit.draft import draft_ladder, draft_of, write_draft
 from ladderfit.draft.facts import stem_of
 from ladderfit.draft.magnitudes import label_of
 from ladderfit.errors import InputError
+from ladderfit.inputs.table_memory import table_in_memory
 from ladderfit.ladder import Ladder
 from ladderfit.schema import split
 from ladderfit.shipped import sample_ladder
-from ladderfit.table_memory import table_in_memory
 
 SAMPLE = ("cepheids", "parallax_stars", "supernovae", "flow")
 OTHER_NAMES = {

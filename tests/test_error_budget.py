@@ -10,8 +10,8 @@ import pandas as pd
 import pytest
 
 import ladderfit as lf
-from ladderfit.error_budget import TOTAL, error_budget
 from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.sensitivity.error_budget import TOTAL, error_budget
 
 FIXED = {"scatter": {"fixed": 0.07}, "peak_scatter": {"fixed": 0.1}}
 DRAWS = 20_000

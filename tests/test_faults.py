@@ -26,11 +26,11 @@ from samplers import worked
 from small_ladders import small_ladder
 from sweep_jobs import job, tasks
 
-import ladderfit.calibration
-from ladderfit.calibration import calibrate
+import ladderfit.jobs.calibration
 from ladderfit.cli import main
 from ladderfit.errors import InputError
 from ladderfit.files import lock, write_text_atomically
+from ladderfit.jobs.calibration import calibrate
 from ladderfit.report.write import renew_report, write_report
 from ladderfit.result import Result
 from ladderfit.sampling.chain_reading import read_chain
@@ -59,8 +59,8 @@ def quick(result: Result, monkeypatch: pytest.MonkeyPatch) -> None:
         folder.mkdir()
         (folder / "relation.png").write_bytes(b"\x89PNG")
 
-    monkeypatch.setattr(ladderfit.calibration, "draw", lambda *_, **__: result)
-    monkeypatch.setattr(ladderfit.calibration, "save_figures", figures)
+    monkeypatch.setattr(ladderfit.jobs.calibration, "draw", lambda *_, **__: result)
+    monkeypatch.setattr(ladderfit.jobs.calibration, "save_figures", figures)
 
 
 def operations(count: int, in_full: bool, sample: int = 5) -> list[int]:
@@ -259,7 +259,7 @@ def test_two_calibrations_into_one_folder(
         together.wait(30.0)
         return result
 
-    monkeypatch.setattr(ladderfit.calibration, "draw", both)
+    monkeypatch.setattr(ladderfit.jobs.calibration, "draw", both)
 
     def one(_: int) -> str:
         try:

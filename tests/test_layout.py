@@ -20,14 +20,13 @@ ORDER = """
     choices.anchors choices.photometry_checks choices.outlier_checks
     choices.peak_relation choices.third_rung choices.sampling choices.whole choices samples
     physics.photometry physics.zero_point physics.sky physics.expansion physics.overtones physics
-    kinds tables table_columns table_memory table_files rows star_values parallax_inputs host_inputs
-    select_stars
-    peak_inputs select_supernovae
-    covariances covariance_rows correlated
+    inputs.kinds inputs.tables inputs.table_columns inputs.table_memory inputs.table_files
+    inputs.rows inputs.star_values inputs.parallaxes inputs.hosts inputs.select_stars
+    inputs.peaks inputs.select_supernovae
+    inputs.covariances inputs.covariance_rows inputs.correlated inputs
     sample_arrays classical.least_squares classical.lines classical.parallaxes classical
     relations clipping peak_terms ladder_file assembly photometry_notes consistency ladder
     ladder_copy ranges
-    joined_ladders new_objects
     kernels.compiling kernels.narrow kernels.quadrature kernels.sightlines kernels.detection
     kernels.elimination kernels.sums kernels.arrow kernels.tridiagonal kernels.reduced
     kernels.coupled kernels.star_sums kernels.shared kernels.truncation kernels.populations
@@ -47,18 +46,19 @@ ORDER = """
     sampling.grow sampling.run_folder sampling.ensemble_result sampling.worker
     sampling.progress sampling.launch sampling.live
     sampling
-    checks completeness
-    peak_predictions residuals running peak_views outliers
+    checks.peak_predictions checks.residuals checks.running checks.peak_views checks.outliers
+    checks.predictive checks.completeness checks
     report.cells report.machine report.latex_text report.latex report.parameters
     report.objects report.choices
     report.html report.budget report.files report.sections report.page report.write report
     influence.without influence.given influence.parallaxes influence.rebuilding influence.sets
     influence.blocks influence.correlated influence.populations influence.hosts influence.outliers
     influence.objects
-    influence.reweighting influence.words influence.table influence likelihood predictive
-    power_scaling
+    influence.reweighting influence.words influence.table influence
+    predictive.likelihood predictive.fit predictive
     anchors.weights anchors.tension anchors.comparison anchors
-    redshift_cuts distance_priors error_budget
+    sensitivity.power_scaling sensitivity.redshift_cuts sensitivity.distance_priors
+    sensitivity.error_budget sensitivity
     sweep.job sweep.records sweep.crews sweep.cluster sweep.run sweep.folder sweep
     alternatives.axes alternatives.fit alternatives.comparison alternatives.systematics
     alternatives.run alternatives.words alternatives.folder alternatives
@@ -66,7 +66,9 @@ ORDER = """
     review.resampling review.joint review.bench review.refits review.unstated review.reliance
     review.checks review.judged review.verdicts
     review.whole review.words review.page review
-    draw_weights distances distance_files resampling compare compare_files
+    distances.new_objects distances.joined_ladders distances.weights distances.moduli
+    distances.files distances
+    comparison.resampling comparison.results comparison.files comparison
     draft.facts draft.clues draft.roles draft.magnitudes draft.text draft.light_curves
     draft.jobs draft.entries
     draft.make draft.answers draft.asking draft.questions draft.settle draft.example draft
@@ -79,7 +81,7 @@ ORDER = """
     plots.theme plots.density plots.relation plots.outliers plots.corner plots.parallax plots.moduli
     plots.hubble plots.peaks plots.cuts plots.checks plots.alternatives plots.review plots.anchors
     plots.influence plots.priors plots.coverage plots
-    alternatives_folder coverage_folder calibration repeat review_folder
+    jobs.calibration jobs.repeat jobs.alternatives jobs.coverage jobs.review jobs
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
     workbench.points workbench.shown workbench.slow workbench.works
     workbench.pins workbench.keeping workbench.long_runs
@@ -217,7 +219,7 @@ def test_one_direction_of_imports(code: dict[str, str]) -> None:
         ("errors", "from ladderfit.cli import main", "against the direction"),
         ("posterior.split", "from ladderfit.posterior import joint", "against the direction"),
         ("result", "def f():\n    import ladderfit.store", "against the direction"),
-        ("tables", "from .errors import Problem", "relative"),
+        ("inputs.tables", "from .errors import Problem", "relative"),
         ("ladder", "import matplotlib.pyplot as plt", "only in plots"),
         ("plots.theme", "import ipywidgets", "only in workbench"),
         ("mock.survey", "from ladderfit.relations import design", "must not know"),

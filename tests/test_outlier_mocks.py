@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 from contaminated import MIXTURE, PLAN, clean, survey
 
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.mock import mock_from_ladder
-from ladderfit.outliers import outlier_table
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw
 

@@ -9,12 +9,12 @@ import pytest
 from contaminated import clean, survey
 from small_ladders import MODULI, TRUTH, small_ladder
 
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.choices.outliers import CLIPPING
 from ladderfit.errors import InputError
 from ladderfit.ladder import Ladder
 from ladderfit.ladder_file import read_choices, write_choices
 from ladderfit.mock import mock_from_ladder
-from ladderfit.outliers import outlier_table
 from ladderfit.plots import figures
 from ladderfit.plots.outliers import outlier_figure
 from ladderfit.posterior.joint import posterior

@@ -9,9 +9,10 @@ from matplotlib.figure import Figure
 from peak_ladders import EVERYTHING, RATE, TRIPP, ladder_with
 
 import ladderfit as lf
+from ladderfit.checks.peak_predictions import expected
+from ladderfit.checks.peak_views import measured_line, peak_view, term_draws, views_of
+from ladderfit.checks.residuals import flow_residuals, peak_residuals
 from ladderfit.ladder import Ladder
-from ladderfit.peak_predictions import expected
-from ladderfit.peak_views import measured_line, peak_view, term_draws, views_of
 from ladderfit.plots import figures
 from ladderfit.plots.peaks import (
     colour_panel,
@@ -22,7 +23,6 @@ from ladderfit.plots.peaks import (
 )
 from ladderfit.plots.theme import COLUMN, DARK, WIDTH
 from ladderfit.posterior.joint import posterior
-from ladderfit.residuals import flow_residuals, peak_residuals
 from ladderfit.result import Diagnostics, Result, ordered
 from ladderfit.shipped import shipped
 

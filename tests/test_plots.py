@@ -22,13 +22,13 @@ from matplotlib.figure import Figure
 from matplotlib.text import Text
 
 from ladderfit import plots
+from ladderfit.checks.residuals import cepheid_residuals
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import build_ladder
 from ladderfit.names import with_group
 from ladderfit.plots import corner, moduli, relation
 from ladderfit.plots.density import Density
 from ladderfit.plots.theme import DARK, LIGHT, symbol
-from ladderfit.residuals import cepheid_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
 

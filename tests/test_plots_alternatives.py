@@ -8,7 +8,6 @@ import pytest
 from matplotlib.figure import Figure
 
 from ladderfit.alternatives import Comparison, run_alternatives
-from ladderfit.error_budget import error_budget
 from ladderfit.ladder import build_ladder
 from ladderfit.plots.alternatives import (
     MOST_ROWS,
@@ -17,6 +16,7 @@ from ladderfit.plots.alternatives import (
     comparison_figures,
 )
 from ladderfit.plots.theme import DARK
+from ladderfit.sensitivity.error_budget import error_budget
 
 AXES = {
     "cepheids.periods": [[8.0, 100.0], [5.0, 50.0]],

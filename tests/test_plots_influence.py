@@ -15,9 +15,9 @@ from ladderfit.plots.anchors import anchors_figure
 from ladderfit.plots.influence import influence_figure
 from ladderfit.plots.priors import priors_figure
 from ladderfit.plots.theme import DARK, LIGHT
-from ladderfit.power_scaling import prior_sensitivity
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw
+from ladderfit.sensitivity.power_scaling import prior_sensitivity
 
 
 @cache

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from small_ladders import SMALL, small_ladder
 
-from ladderfit.distance_priors import along_distance_priors, comparison
 from ladderfit.plots.parallax import distance_prior_figure
+from ladderfit.sensitivity.distance_priors import along_distance_priors, comparison
 
 
 def test_every_prior_has_its_row_and_both_numbers_their_panel() -> None:

@@ -18,9 +18,11 @@ from test_input_errors import METALS
 
 import ladderfit as lf
 from ladderfit.errors import LadderfitError
-from ladderfit.likelihood import log_terms
 from ladderfit.posterior.joint import Posterior, posterior
-from ladderfit.power_scaling import (
+from ladderfit.predictive.likelihood import log_terms
+from ladderfit.result import Result
+from ladderfit.sampling.run import draw
+from ladderfit.sensitivity.power_scaling import (
     BY_BOTH,
     BY_DATA,
     BY_NEITHER,
@@ -32,8 +34,6 @@ from ladderfit.power_scaling import (
     shift,
     verdict,
 )
-from ladderfit.result import Result
-from ladderfit.sampling.run import draw
 
 TIGHT = {"priors.slope": {"normal": [-3.1, 0.03]}}
 
@@ -207,7 +207,7 @@ def test_limits_are_part_of_the_likelihood() -> None:
 
 def _unchecked(result: Result) -> np.ndarray:
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr("ladderfit.likelihood._check", lambda square, freedom: None)
+        patch.setattr("ladderfit.predictive.likelihood._check", lambda square, freedom: None)
         return log_terms(result).likelihood
 
 

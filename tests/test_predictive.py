@@ -14,7 +14,7 @@ from small_ladders import small_ladder
 import ladderfit as lf
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.posterior.joint import posterior
-from ladderfit.predictive import (
+from ladderfit.predictive.fit import (
     DifferentDataError,
     PredictiveDifference,
     PredictiveFit,

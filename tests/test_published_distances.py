@@ -16,7 +16,7 @@ import pandas as pd
 import pytest
 from test_published_parallaxes import BOTH_FREE, ladder
 
-from ladderfit.distances import Distances, distances_of
+from ladderfit.distances.moduli import Distances, distances_of
 from ladderfit.sampling.run import draw
 
 pytestmark = pytest.mark.published

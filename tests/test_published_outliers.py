@@ -12,8 +12,8 @@ from outlier_treatments import riess_2016, treatments
 from published_lines import HOGG_2010
 
 import ladderfit as lf
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.classical import line_with_outliers
-from ladderfit.outliers import outlier_table
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw
 

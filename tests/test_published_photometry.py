@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 from benchmarks.photometry import plain_ladder, treatments
 
-from ladderfit.checks import predictive_checks
+from ladderfit.checks.predictive import predictive_checks
 from ladderfit.ladder import Ladder
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw

@@ -14,7 +14,7 @@ import pytest
 from test_published_parallaxes import CHOICES, METALLICITY, SCATTER, SLOPE
 
 import ladderfit as lf
-from ladderfit.distance_priors import along_distance_priors, comparison
+from ladderfit.sensitivity.distance_priors import along_distance_priors, comparison
 
 pytestmark = pytest.mark.published
 

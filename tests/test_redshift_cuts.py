@@ -10,14 +10,14 @@ from handmade import ladder as handmade_ladder
 from handmade import result as handmade_result
 from small_ladders import small_ladder
 
+from ladderfit.checks.residuals import Residuals
+from ladderfit.checks.running import running_mean
 from ladderfit.errors import LadderfitError
 from ladderfit.plots.cuts import cuts_figure
 from ladderfit.plots.hubble import hubble_figure
 from ladderfit.plots.theme import DARK
-from ladderfit.redshift_cuts import RedshiftCuts, hubble_along_cuts
-from ladderfit.residuals import Residuals
-from ladderfit.running import running_mean
 from ladderfit.sampling.run import draw
+from ladderfit.sensitivity.redshift_cuts import RedshiftCuts, hubble_along_cuts
 
 DRAWS = 2000
 

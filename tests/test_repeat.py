@@ -16,9 +16,9 @@ from ladderfit.choices import Choices
 from ladderfit.cli import main
 from ladderfit.errors import InputError
 from ladderfit.files import new_folder
+from ladderfit.jobs.repeat import compare, repeat
 from ladderfit.ladder import read_ladder
 from ladderfit.ladder_file import write_choices
-from ladderfit.repeat import compare, repeat
 from ladderfit.result import Result
 from ladderfit.sampling.convergence import Goal
 from ladderfit.sampling.run import draw

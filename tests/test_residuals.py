@@ -9,7 +9,7 @@ import handmade
 import numpy as np
 import pytest
 
-from ladderfit import residuals
+from ladderfit.checks import residuals
 from ladderfit.ladder import build_ladder
 from ladderfit.result import Diagnostics, Result
 

@@ -7,10 +7,10 @@ import pytest
 from gibbs import Gibbs
 from small_ladders import MODULI, TRUTH, small_ladder
 
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.diagnostics import ess_of_mean, rhat
 from ladderfit.ladder import Ladder
 from ladderfit.mock import mock_from_ladder
-from ladderfit.outliers import outlier_table
 from ladderfit.sampling.run import draw
 
 LAWS = {

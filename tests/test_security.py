@@ -30,13 +30,13 @@ import ladderfit as lf
 from ladderfit.alternatives.folder import write_comparison
 from ladderfit.alternatives.run import run_alternatives
 from ladderfit.cli import main
-from ladderfit.covariances import read_covariance
-from ladderfit.error_budget import error_budget
 from ladderfit.errors import InputError
+from ladderfit.inputs.covariances import read_covariance
+from ladderfit.inputs.table_files import read_table
 from ladderfit.launcher import command, environment, with_file
 from ladderfit.report.write import write_report
+from ladderfit.sensitivity.error_budget import error_budget
 from ladderfit.store import write_result
-from ladderfit.table_files import read_table
 
 ADDRESS = b'href="http://127.0.0.1:9/x"'
 HEAD = b'<?xml version="1.0"?>'
@@ -126,7 +126,7 @@ _READ = """
 import json, resource, sys, time
 from pathlib import Path
 from ladderfit.errors import InputError
-from ladderfit.table_files import read_table
+from ladderfit.inputs.table_files import read_table
 resource.setrlimit(resource.RLIMIT_AS, (6 * 10**9,) * 2)
 for name in sys.argv[1:]:
     start = time.process_time()

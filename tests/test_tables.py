@@ -13,11 +13,11 @@ import pandas as pd
 import pytest
 from astropy.table import MaskedColumn, QTable, Table
 
-from ladderfit import kinds
 from ladderfit.errors import InputError
-from ladderfit.table_files import read_table
-from ladderfit.table_memory import table_in_memory
-from ladderfit.tables import DataTable
+from ladderfit.inputs import kinds
+from ladderfit.inputs.table_files import read_table
+from ladderfit.inputs.table_memory import table_in_memory
+from ladderfit.inputs.tables import DataTable
 
 PERIODS = [5.25, 10.125, 31.5]
 PARALLAXES = [0.5, float("nan"), -0.125]

@@ -12,10 +12,10 @@ from astropy.table import MaskedColumn, Table
 
 from ladderfit.alternatives.comparison import Comparison
 from ladderfit.alternatives.systematics import systematics
-from ladderfit.error_budget import budgeted
 from ladderfit.files import write_text_atomically
 from ladderfit.names import parameter
 from ladderfit.report.machine import harmless
+from ladderfit.sensitivity.error_budget import budgeted
 from ladderfit.store import provenance_of
 
 

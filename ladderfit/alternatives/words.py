@@ -10,9 +10,9 @@ import pandas as pd
 from ladderfit.alternatives.comparison import Comparison, Fit
 from ladderfit.alternatives.systematics import ALL, systematics
 from ladderfit.diagnostics import TRUSTED_K
-from ladderfit.error_budget import TOTAL, budgeted
 from ladderfit.names import parameter
 from ladderfit.rounding import rounded, to_place
+from ladderfit.sensitivity.error_budget import TOTAL, budgeted
 from ladderfit.wording import printable
 
 MOST_ROWS = 60
@@ -26,7 +26,7 @@ def comparison_text(comparison: Comparison, budget: pd.DataFrame) -> str:
     ----------
     comparison : Comparison
     budget : DataFrame
-        Of the baseline, from `ladderfit.error_budget.error_budget`.
+        Of the baseline, from `ladderfit.sensitivity.error_budget.error_budget`.
 
     Returns
     -------

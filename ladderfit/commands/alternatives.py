@@ -55,8 +55,8 @@ def add(add_parser: Add) -> None:
 
 def _alternatives(chosen: argparse.Namespace) -> int:
     from ladderfit.alternatives.words import comparison_text
-    from ladderfit.alternatives_folder import alternatives_in_folder
     from ladderfit.files import first_free
+    from ladderfit.jobs.alternatives import alternatives_in_folder
     from ladderfit.ladder import read_ladder
     from ladderfit.shipped import sample_ladder
 

@@ -66,8 +66,8 @@ def _calibrate(chosen: argparse.Namespace) -> int:
 
 
 def _calibrate_anew(chosen: argparse.Namespace) -> int:
-    from ladderfit.calibration import StoppedError, calibrate
     from ladderfit.files import first_free
+    from ladderfit.jobs.calibration import StoppedError, calibrate
     from ladderfit.ladder import read_ladder
     from ladderfit.shipped import sample_ladder
     from ladderfit.wording import summary_text
@@ -93,7 +93,7 @@ def _calibrate_anew(chosen: argparse.Namespace) -> int:
 
 
 def _again(chosen: argparse.Namespace) -> int:
-    from ladderfit.repeat import repeat
+    from ladderfit.jobs.repeat import repeat
 
     refuse_besides("--again", chosen, ("file", "seed", "draws", "sampler"))
     with progress_on(sys.stderr) as report:
@@ -103,7 +103,7 @@ def _again(chosen: argparse.Namespace) -> int:
 
 
 def _resume(chosen: argparse.Namespace) -> int:
-    from ladderfit.calibration import StoppedError, finish
+    from ladderfit.jobs.calibration import StoppedError, finish
     from ladderfit.sampling.live import open_run
     from ladderfit.wording import summary_text
 

@@ -30,8 +30,8 @@ def add(add_parser: Add) -> None:
 
 
 def _compare(chosen: argparse.Namespace) -> int:
-    from ladderfit.compare import compare_results
-    from ladderfit.compare_files import comparison_text, write_comparison
+    from ladderfit.comparison.files import comparison_text, write_comparison
+    from ladderfit.comparison.results import compare_results
     from ladderfit.files import new_folder
     from ladderfit.store import read_result
 

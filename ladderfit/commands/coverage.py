@@ -57,8 +57,8 @@ def add(add_parser: Add) -> None:
 
 def _coverage(chosen: argparse.Namespace) -> int:
     from ladderfit.coverage.words import statement
-    from ladderfit.coverage_folder import coverage_with_figure
     from ladderfit.files import first_free
+    from ladderfit.jobs.coverage import coverage_with_figure
     from ladderfit.ladder import read_ladder
     from ladderfit.shipped import sample_ladder
 

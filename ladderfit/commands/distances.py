@@ -43,8 +43,8 @@ def add(add_parser: Add) -> None:
 
 
 def _distances(chosen: argparse.Namespace) -> int:
-    from ladderfit.distance_files import distances_text, write_distances
-    from ladderfit.distances import distances_of
+    from ladderfit.distances.files import distances_text, write_distances
+    from ladderfit.distances.moduli import distances_of
     from ladderfit.files import new_folder
     from ladderfit.store import read_ranges, read_result
 

@@ -30,9 +30,9 @@ def add(add_parser: Add) -> None:
 
 def _review(chosen: argparse.Namespace) -> int:
     from ladderfit.files import first_free
+    from ladderfit.jobs.review import review_into
     from ladderfit.ladder import read_ladder
     from ladderfit.review import read_claims
-    from ladderfit.review_folder import review_into
 
     path = Path(chosen.file)
     claims = read_claims(chosen.claims)

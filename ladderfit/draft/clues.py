@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ladderfit.draft.facts import Facts
-from ladderfit.kinds import (
+from ladderfit.inputs.kinds import (
     DISTANCE,
     LOG_PERIOD,
     MAGNITUDE,
@@ -25,8 +25,8 @@ from ladderfit.kinds import (
     VELOCITY,
     Kind,
 )
+from ladderfit.inputs.star_values import FUNDAMENTAL, OVERTONE
 from ladderfit.samples import FloatArray
-from ladderfit.star_values import FUNDAMENTAL, OVERTONE
 
 SURE = 3.0  # score from which a column is taken for granted
 LEAD = 1.5  # by which it has to lead the next

@@ -21,10 +21,10 @@ from ladderfit.draft.light_curves import peak_relation_entries
 from ladderfit.draft.magnitudes import Photometry
 from ladderfit.draft.roles import Choice
 from ladderfit.draft.text import Entry
-from ladderfit.kinds import MAGNITUDE
+from ladderfit.inputs.kinds import MAGNITUDE
+from ladderfit.inputs.tables import DataTable
 from ladderfit.samples import IntArray
 from ladderfit.schema import UNDECIDED
-from ladderfit.tables import DataTable
 
 Found = Mapping[str, tuple[Path, Sketch]]
 

@@ -6,9 +6,9 @@ import csv
 from collections.abc import Iterable, Sequence
 from pathlib import Path
 
+from ladderfit.inputs.table_files import read_table
+from ladderfit.inputs.tables import DataTable
 from ladderfit.shipped import shipped
-from ladderfit.table_files import read_table
-from ladderfit.tables import DataTable
 
 _STARS = {"ID": "star", "Galaxy": "galaxy", "P": "period"}
 _BANDS = {f"{b}mag": b for b in "VIH"} | {f"e_{b}": f"{b}_err" for b in "VIH"}

@@ -9,9 +9,9 @@ from typing import Any
 import astropy.units as u
 import numpy as np
 
-from ladderfit.kinds import Kind, conversion
+from ladderfit.inputs.kinds import Kind, conversion
+from ladderfit.inputs.tables import DataTable
 from ladderfit.samples import FloatArray, IntArray
-from ladderfit.tables import DataTable
 
 _NUMBER = Kind("a number", "")
 _MOST_TEXT = 0.05  # share of cells that are no numbers, up to which a column still holds numbers

@@ -9,7 +9,7 @@ from ladderfit.draft.clues import SURVEY
 from ladderfit.draft.facts import Facts
 from ladderfit.draft.roles import Choice, Roles
 from ladderfit.draft.text import Entry
-from ladderfit.peak_inputs import KINDS
+from ladderfit.inputs.peaks import KINDS
 from ladderfit.schema import UNDECIDED
 
 _SHAPE = {"width": "x1|w|width|stretch|s", "decline_rate": "dm15b?|dmb15|deltam15b?|declinerate"}

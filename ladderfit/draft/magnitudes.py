@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 from ladderfit.draft.clues import spread_of
 from ladderfit.draft.facts import Facts
 from ladderfit.draft.roles import Choice, Roles, open_choice
-from ladderfit.kinds import MAGNITUDE
+from ladderfit.inputs.kinds import MAGNITUDE
 from ladderfit.schema import UNDECIDED
 
 _FAINTEST, _BRIGHTEST = 40.0, -15.0  # mag

@@ -26,9 +26,9 @@ from ladderfit.draft.roles import Roles
 from ladderfit.draft.text import Entry, file_text
 from ladderfit.errors import InputError, Problem, raise_if
 from ladderfit.files import mode_for
+from ladderfit.inputs.table_files import read_table
+from ladderfit.inputs.tables import DataTable
 from ladderfit.schema import UNDECIDED
-from ladderfit.table_files import read_table
-from ladderfit.tables import DataTable
 from ladderfit.wording import printable
 
 _ORDER = (CEPHEIDS, PARALLAXES, GEOMETRIC, SUPERNOVAE, EXPANSION)

@@ -20,8 +20,8 @@ from ladderfit.draft.magnitudes import recipes
 from ladderfit.draft.make import Draft
 from ladderfit.draft.roles import Choice
 from ladderfit.draft.text import Entry
+from ladderfit.inputs.table_files import read_table
 from ladderfit.schema import UNDECIDED
-from ladderfit.table_files import read_table
 
 NUMBER, INDEX, ANY = "a number", "an index such as H - 0.386 (V - I)", "a value"
 _NONE = "no metallicity term"

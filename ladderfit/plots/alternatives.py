@@ -12,9 +12,9 @@ from matplotlib.figure import Figure
 from ladderfit.alternatives import Comparison, Fit
 from ladderfit.alternatives.systematics import changes_along
 from ladderfit.alternatives.words import short
-from ladderfit.error_budget import TOTAL, budgeted
 from ladderfit.names import label, parameter
 from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, plain
+from ladderfit.sensitivity.error_budget import TOTAL, budgeted
 
 MOST_ROWS = 40  # fits that are shown one by one
 _LETTERS = 46
@@ -143,7 +143,7 @@ def budget_figure(budget: pd.DataFrame, *, theme: Theme = LIGHT) -> Figure | Non
     Parameters
     ----------
     budget : DataFrame
-        From `ladderfit.error_budget.error_budget`.
+        From `ladderfit.sensitivity.error_budget.error_budget`.
     theme : Theme
 
     Returns

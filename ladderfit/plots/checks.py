@@ -6,7 +6,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from ladderfit.checks import Check, Checks, Sample
+from ladderfit.checks.predictive import Check, Checks, Sample
 from ladderfit.plots.theme import LIGHT, WIDTH, Theme, new_figure, plain, plain_log_axis
 from ladderfit.samples import FloatArray
 
@@ -28,7 +28,7 @@ def checks_figure(checks: Checks, *, theme: Theme = LIGHT) -> Figure:
     Parameters
     ----------
     checks : Checks
-        Of `ladderfit.checks.predictive_checks`.
+        Of `ladderfit.checks.predictive.predictive_checks`.
     theme : Theme
 
     Returns

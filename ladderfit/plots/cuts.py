@@ -7,7 +7,7 @@ from matplotlib.figure import Figure
 
 from ladderfit.names import parameter
 from ladderfit.plots.theme import LIGHT, Accent, Theme, new_figure, plain_log_axis, series_of_ticks
-from ladderfit.redshift_cuts import CutLine, RedshiftCuts
+from ladderfit.sensitivity.redshift_cuts import CutLine, RedshiftCuts
 
 
 def cuts_figure(cuts: RedshiftCuts, *, theme: Theme = LIGHT) -> Figure:
@@ -16,7 +16,7 @@ def cuts_figure(cuts: RedshiftCuts, *, theme: Theme = LIGHT) -> Figure:
     Parameters
     ----------
     cuts : RedshiftCuts
-        Of `ladderfit.redshift_cuts.hubble_along_cuts`.
+        Of `ladderfit.sensitivity.redshift_cuts.hubble_along_cuts`.
     theme : Theme
 
     Returns

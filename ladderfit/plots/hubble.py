@@ -6,6 +6,15 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from ladderfit.checks.residuals import (
+    Residuals,
+    at_mean,
+    flow_model,
+    flow_residuals,
+    peak_residuals,
+    velocity_residuals,
+)
+from ladderfit.checks.running import running_mean
 from ladderfit.names import parameter
 from ladderfit.plots.theme import (
     CHANCES,
@@ -22,17 +31,8 @@ from ladderfit.plots.theme import (
     symbol,
     symmetric,
 )
-from ladderfit.residuals import (
-    Residuals,
-    at_mean,
-    flow_model,
-    flow_residuals,
-    peak_residuals,
-    velocity_residuals,
-)
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval
-from ladderfit.running import running_mean
 from ladderfit.samples import FloatArray
 
 

@@ -9,9 +9,9 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.transforms import blended_transform_factory
 
+from ladderfit.checks.residuals import peak_residuals
 from ladderfit.names import with_group
 from ladderfit.plots.theme import COLUMN, LIGHT, WIDTH, Theme, figure_of, new_figure, plain
-from ladderfit.residuals import peak_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
 from ladderfit.samples import FloatArray

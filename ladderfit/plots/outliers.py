@@ -11,7 +11,8 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patheffects import withStroke
 
-from ladderfit.outliers import outlier_table
+from ladderfit.checks.outliers import outlier_table
+from ladderfit.checks.residuals import Residuals, cepheid_residuals, line_draws, parallax_magnitudes
 from ladderfit.plots.relation import PERIOD_TICKS
 from ladderfit.plots.theme import (
     COLUMN,
@@ -24,7 +25,6 @@ from ladderfit.plots.theme import (
     plain,
     plain_log_axis,
 )
-from ladderfit.residuals import Residuals, cepheid_residuals, line_draws, parallax_magnitudes
 from ladderfit.result import Result
 from ladderfit.samples import BoolArray, FloatArray, IntArray
 

@@ -8,6 +8,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from ladderfit.checks.residuals import Residuals, parallax_offsets, parallax_residuals
 from ladderfit.plots.corner import joint_panel
 from ladderfit.plots.theme import (
     COLUMN,
@@ -20,7 +21,6 @@ from ladderfit.plots.theme import (
     symbol,
     symmetric,
 )
-from ladderfit.residuals import Residuals, parallax_offsets, parallax_residuals
 from ladderfit.result import Result
 from ladderfit.rounding import Interval
 from ladderfit.samples import FloatArray
@@ -191,7 +191,7 @@ def distance_prior_panel(
     Parameters
     ----------
     results : mapping of str to Result
-        From `ladderfit.distance_priors.along_distance_priors`.
+        From `ladderfit.sensitivity.distance_priors.along_distance_priors`.
     name : str
         Of the parameter.
     axes : Axes
@@ -237,7 +237,7 @@ def distance_prior_figure(results: Mapping[str, Result], *, theme: Theme = LIGHT
     Parameters
     ----------
     results : mapping of str to Result
-        From `ladderfit.distance_priors.along_distance_priors`; at least one.
+        From `ladderfit.sensitivity.distance_priors.along_distance_priors`; at least one.
     theme : Theme
 
     Returns

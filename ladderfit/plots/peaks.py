@@ -8,9 +8,10 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from ladderfit.checks.peak_views import PeakView, measured_line, peak_view, term_draws, views_of
+from ladderfit.checks.running import running_mean
 from ladderfit.names import parameter
 from ladderfit.peak_terms import powers_of
-from ladderfit.peak_views import PeakView, measured_line, peak_view, term_draws, views_of
 from ladderfit.plots.theme import (
     CHANCES,
     COLUMN,
@@ -24,7 +25,6 @@ from ladderfit.plots.theme import (
 )
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval
-from ladderfit.running import running_mean
 from ladderfit.samples import BoolArray, FloatArray
 
 _PANEL = 3.0  # inches
@@ -64,7 +64,7 @@ def term_panel(result: Result, axes: Axes, term: str, *, theme: Theme = LIGHT) -
     axes : Axes
         Drawn into.
     term : str
-        One of `ladderfit.peak_views.views_of(result)`.
+        One of `ladderfit.checks.peak_views.views_of(result)`.
     theme : Theme
 
     Returns

@@ -7,8 +7,8 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from ladderfit.plots.theme import LIGHT, Theme, figure_of, new_figure, symbol
-from ladderfit.power_scaling import SENSITIVE, PriorSensitivity
 from ladderfit.rounding import MINUS
+from ladderfit.sensitivity.power_scaling import SENSITIVE, PriorSensitivity
 
 MOST_PRIORS = 7
 _ROW = 0.26  # inches

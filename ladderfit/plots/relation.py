@@ -8,6 +8,16 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from ladderfit.checks.residuals import (
+    LINE,
+    HostResiduals,
+    Residuals,
+    at_mean,
+    cepheid_residuals,
+    line_draws,
+    parallax_magnitudes,
+    parallax_residuals,
+)
 from ladderfit.names import base_name, parameter
 from ladderfit.plots.theme import (
     CHANCES,
@@ -23,16 +33,6 @@ from ladderfit.plots.theme import (
     plain_log_axis,
     symbol,
     symmetric,
-)
-from ladderfit.residuals import (
-    LINE,
-    HostResiduals,
-    Residuals,
-    at_mean,
-    cepheid_residuals,
-    line_draws,
-    parallax_magnitudes,
-    parallax_residuals,
 )
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES, Interval

@@ -4,14 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from ladderfit.report.cells import (
-    Cell,
-    PaperTable,
-    Words,
-    number_column,
-    text_column,
-)
-from ladderfit.residuals import (
+from ladderfit.checks.residuals import (
     HostResiduals,
     Residuals,
     cepheid_residuals,
@@ -19,6 +12,13 @@ from ladderfit.residuals import (
     parallax_residuals,
     peak_residuals,
     velocity_residuals,
+)
+from ladderfit.report.cells import (
+    Cell,
+    PaperTable,
+    Words,
+    number_column,
+    text_column,
 )
 from ladderfit.result import Result
 from ladderfit.rounding import to_place

@@ -8,10 +8,10 @@ from typing import Any
 
 import numpy as np
 
+from ladderfit.checks.residuals import HostResiduals, cepheid_residuals
 from ladderfit.choices import Choices, SetAside
 from ladderfit.errors import InputError
 from ladderfit.ladder import Ladder
-from ladderfit.residuals import HostResiduals, cepheid_residuals
 from ladderfit.result import Result
 
 BY_HAND = "set aside by hand"

@@ -6,8 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ladderfit.ladder import Ladder
-from ladderfit.residuals import (
+from ladderfit.checks.residuals import (
     Residuals,
     cepheid_residuals,
     flow_residuals,
@@ -15,6 +14,7 @@ from ladderfit.residuals import (
     peak_residuals,
     velocity_residuals,
 )
+from ladderfit.ladder import Ladder
 from ladderfit.result import Result
 from ladderfit.samples import FloatArray, IntArray
 

@@ -8,8 +8,8 @@ from typing import Any
 
 import ipywidgets as widgets
 
+from ladderfit.checks.residuals import HostResiduals
 from ladderfit.errors import LadderfitError
-from ladderfit.residuals import HostResiduals
 from ladderfit.workbench.aside import aside_residuals
 from ladderfit.workbench.canvas import Picture
 from ladderfit.workbench.canvas.view import View

@@ -8,10 +8,10 @@ from typing import Any
 
 import numpy as np
 
+from ladderfit.checks.residuals import at_mean
 from ladderfit.errors import InputError
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
-from ladderfit.residuals import at_mean
 from ladderfit.result import Result
 from ladderfit.samples import FloatArray
 

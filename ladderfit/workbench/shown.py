@@ -6,7 +6,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
-from ladderfit.residuals import HostResiduals
+from ladderfit.checks.residuals import HostResiduals
 from ladderfit.result import Result
 
 Tell = Callable[[float], None]

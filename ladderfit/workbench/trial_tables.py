@@ -9,14 +9,14 @@ from collections.abc import Sequence
 from ladderfit.alternatives import Comparison
 from ladderfit.alternatives.words import number, short
 from ladderfit.anchors import AnchorComparison
-from ladderfit.checks import Checks
+from ladderfit.checks.outliers import outlier_table
+from ladderfit.checks.peak_views import peak_view, views_of
+from ladderfit.checks.predictive import Checks
 from ladderfit.influence import Influence
 from ladderfit.names import parameter
-from ladderfit.outliers import outlier_table
-from ladderfit.peak_views import peak_view, views_of
-from ladderfit.power_scaling import PriorSensitivity
 from ladderfit.result import Result
 from ladderfit.rounding import Interval, rounded, to_place
+from ladderfit.sensitivity.power_scaling import PriorSensitivity
 from ladderfit.workbench.shown import Shown
 from ladderfit.workbench.tables import table
 from ladderfit.workbench.view_tables import farthest, signed_at

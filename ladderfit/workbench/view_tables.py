@@ -4,10 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from ladderfit.plots.moduli import host_moduli
-from ladderfit.plots.relation import binned
-from ladderfit.redshift_cuts import RedshiftCuts
-from ladderfit.residuals import (
+from ladderfit.checks.residuals import (
     Residuals,
     cepheid_residuals,
     flow_residuals,
@@ -16,9 +13,12 @@ from ladderfit.residuals import (
     peak_residuals,
     velocity_residuals,
 )
+from ladderfit.plots.moduli import host_moduli
+from ladderfit.plots.relation import binned
 from ladderfit.result import Result
 from ladderfit.rounding import MINUS, Interval, rounded
 from ladderfit.samples import FloatArray
+from ladderfit.sensitivity.redshift_cuts import RedshiftCuts
 from ladderfit.workbench.columns import against_column
 from ladderfit.workbench.shown import Shown
 from ladderfit.workbench.tables import table

@@ -7,8 +7,8 @@ stand under "more".
 from __future__ import annotations
 
 from ladderfit.anchors import anchor_names
+from ladderfit.checks.peak_views import VIEWS as TERMS_SEEN
 from ladderfit.ladder import Ladder
-from ladderfit.peak_views import VIEWS as TERMS_SEEN
 from ladderfit.workbench import trial_tables, works
 from ladderfit.workbench import view_tables as tables
 from ladderfit.workbench.canvas import checks, hubble, panels, parallaxes, trials

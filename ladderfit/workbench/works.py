@@ -7,15 +7,15 @@ from typing import Any
 
 from ladderfit.alternatives import Comparison, run_alternatives
 from ladderfit.anchors import AnchorComparison, compare_anchors
-from ladderfit.checks import Checks, predictive_checks
-from ladderfit.distance_priors import PRIORS, along_distance_priors
+from ladderfit.checks.predictive import Checks, predictive_checks
 from ladderfit.influence import Influence, leave_one_out
 from ladderfit.ladder import Ladder
-from ladderfit.power_scaling import PriorSensitivity, prior_sensitivity
 from ladderfit.priors import Fixed
-from ladderfit.redshift_cuts import RedshiftCuts, hubble_along_cuts
 from ladderfit.result import Result
 from ladderfit.schema import written
+from ladderfit.sensitivity.distance_priors import PRIORS, along_distance_priors
+from ladderfit.sensitivity.power_scaling import PriorSensitivity, prior_sensitivity
+from ladderfit.sensitivity.redshift_cuts import RedshiftCuts, hubble_along_cuts
 from ladderfit.workbench.shown import Tell
 
 CUT_DRAWS = 1000

@@ -20,7 +20,7 @@ import numpy as np
 
 import ladderfit as lf
 from ladderfit.anchors import PARALLAXES, tension
-from ladderfit.checks import predictive_checks
+from ladderfit.checks.predictive import predictive_checks
 from ladderfit.ladder_file import read_choices
 from ladderfit.mock import PLAN, simulate
 from ladderfit.mock.breakages import Breakage

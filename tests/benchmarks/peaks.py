@@ -25,11 +25,11 @@ import numpyro.distributions as dist
 from numpyro.diagnostics import effective_sample_size
 from numpyro.infer import MCMC, NUTS
 
+from ladderfit.inputs.peaks import error_blocks
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock.light_curves import LightCurves
 from ladderfit.mock.peaks import flow_supernovae, host_supernovae
 from ladderfit.mock.plan import Host, Plan
-from ladderfit.peak_inputs import error_blocks
 from ladderfit.physics.expansion import distance_term, peculiar_variance
 from ladderfit.posterior.joint import posterior
 from ladderfit.sampling.run import drawn, target

@@ -27,8 +27,8 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 from test_published_ladder import CHOICES, WESENHEIT_RATIO, peaks
 
 import ladderfit as lf
-from ladderfit.checks import predictive_checks
-from ladderfit.completeness import propose_period_cuts
+from ladderfit.checks.completeness import propose_period_cuts
+from ladderfit.checks.predictive import predictive_checks
 from ladderfit.ladder import Ladder
 from ladderfit.result import Result
 from ladderfit.sampling.run import draw

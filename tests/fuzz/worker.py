@@ -20,7 +20,7 @@ from corpus import Case, write_corpus
 from mutations import spoilt
 
 import ladderfit as lf
-from ladderfit.distances import distances_of
+from ladderfit.distances.moduli import distances_of
 from ladderfit.errors import InputError, LadderfitError
 from ladderfit.files import sha256_of
 from ladderfit.report.write import renew_report

@@ -7,9 +7,9 @@ from typing import Any
 import numpy as np
 from matplotlib.figure import Figure
 
-from ladderfit.checks import Checks
+from ladderfit.checks.peak_views import peak_view, views_of
+from ladderfit.checks.predictive import Checks
 from ladderfit.names import label
-from ladderfit.peak_views import peak_view, views_of
 from ladderfit.plots.checks import along_panel, distribution_panel, list_panel
 from ladderfit.plots.peaks import term_panel
 from ladderfit.plots.theme import Theme

@@ -9,12 +9,12 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
+from ladderfit.checks.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
+from ladderfit.checks.running import running_mean
 from ladderfit.names import parameter
 from ladderfit.plots.cuts import cut_panel
 from ladderfit.plots.hubble import flow_panel, peak_panel, velocity_panel
 from ladderfit.plots.theme import Accent, Theme, brighter_up, symmetric
-from ladderfit.residuals import Residuals, flow_residuals, peak_residuals, velocity_residuals
-from ladderfit.running import running_mean
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown

@@ -7,10 +7,10 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
+from ladderfit.checks.residuals import parallax_offsets, parallax_residuals
 from ladderfit.plots.corner import joint_panel
 from ladderfit.plots.parallax import distance_prior_panel, measured_panel, offset_panel
 from ladderfit.plots.theme import Theme, symbol
-from ladderfit.residuals import parallax_offsets, parallax_residuals
 from ladderfit.result import Result
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points

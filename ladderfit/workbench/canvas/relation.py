@@ -9,9 +9,7 @@ from matplotlib.axes import Axes
 from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
 
-from ladderfit.plots.relation import PERIOD_TICKS, binned, groups
-from ladderfit.plots.theme import Theme, brighter_up, plain, plain_log_axis
-from ladderfit.residuals import (
+from ladderfit.checks.residuals import (
     HostResiduals,
     at_mean,
     cepheid_residuals,
@@ -19,6 +17,8 @@ from ladderfit.residuals import (
     parallax_magnitudes,
     parallax_residuals,
 )
+from ladderfit.plots.relation import PERIOD_TICKS, binned, groups
+from ladderfit.plots.theme import Theme, brighter_up, plain, plain_log_axis
 from ladderfit.result import Result
 from ladderfit.rounding import PROBABILITIES
 from ladderfit.samples import FloatArray

@@ -17,7 +17,7 @@ from ladderfit.plots.anchors import alone_panel, tension_panel
 from ladderfit.plots.influence import ranked_panel
 from ladderfit.plots.priors import components_panel, sensitivity_panel
 from ladderfit.plots.theme import Theme
-from ladderfit.power_scaling import PriorSensitivity
+from ladderfit.sensitivity.power_scaling import PriorSensitivity
 from ladderfit.workbench.canvas.margins import margins
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown

@@ -1,0 +1,1 @@
+"""What a fit leaves over: residuals, predictive checks, completeness, suspected outliers."""

@@ -1,0 +1,1 @@
+"""Results side by side, and ladders resampled together."""

@@ -1,0 +1,1 @@
+"""A saved calibration applied to new objects."""

@@ -1,0 +1,1 @@
+"""What the user hands in: tables read, checked row by row, cut, and their covariances."""

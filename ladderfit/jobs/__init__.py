@@ -1,0 +1,1 @@
+"""Whole jobs that leave a folder, as the commands call them."""

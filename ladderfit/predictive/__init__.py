@@ -1,0 +1,1 @@
+"""How well a fit predicts what it has not seen."""

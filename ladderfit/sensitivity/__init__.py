@@ -1,0 +1,1 @@
+"""What a number rests on: priors, cuts, and the data of each rung."""
