@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from typing import Any
 
@@ -57,6 +57,35 @@ def with_reason(choices: Choices, section: str, found: SetAside, reason: str) ->
     new = replace(found, reason=reason.strip() or BY_HAND)
     known = entries(choices, section)
     return {f"{section}.set_aside": [_plain(new if entry is found else entry) for entry in known]}
+
+
+def shown_as(entry: SetAside) -> tuple[str, str]:
+    """What an entry is in a list of objects and whole hosts."""
+    if entry.whole_host:
+        return "host", entry.host or ""
+    return "name", entry.star or entry.name or ""
+
+
+def with_chosen(
+    choices: Choices,
+    section: str,
+    offered: Sequence[tuple[str, str]],
+    chosen: Sequence[tuple[str, str]],
+) -> Mapping[str, Any]:
+    """Changes that set aside what is chosen of a list of supernovae and whole hosts.
+
+    Entries that stay keep their place, reason and host; those that the list does not
+    offer stay as they are.
+    """
+    known = entries(choices, section)
+    kept = [e for e in known if shown_as(e) in chosen or shown_as(e) not in offered]
+    there = {shown_as(entry) for entry in known}
+    new = [
+        SetAside(reason=BY_HAND, **{key: value})
+        for key, value in offered
+        if (key, value) in chosen and (key, value) not in there
+    ]
+    return {f"{section}.set_aside": [_plain(entry) for entry in (*kept, *new)]}
 
 
 def _plain(entry: SetAside) -> dict[str, str]:

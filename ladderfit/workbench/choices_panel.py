@@ -14,6 +14,7 @@ from ladderfit import schema
 from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
 from ladderfit.priors import HalfNormal, LogNormal, Normal, Prior
+from ladderfit.workbench.aside import entries, shown_as, with_chosen
 from ladderfit.workbench.controls import (
     Asked,
     Changes,
@@ -276,26 +277,21 @@ def _of_supernovae(ladder: Ladder, every: Ladder) -> Iterator[Control]:
     yield from _width(choices, "peak_scatter", "Prior width, scatter", (0.01, 1.0))
     yield from _width(choices, "peak_magnitude", "Prior width, peak magnitude", (0.02, 5.0))
     if every.peaks is not None:
-        yield _set_aside("supernovae", sorted(map(str, every.peaks.name)))
+        yield _set_aside("supernovae", sorted({*map(str, every.peaks.name)}), choices)
 
 
-def _set_aside(section: str, names: list[str]) -> Control:
-    def known(choices: Choices) -> Any:
-        return getattr(choices, section).set_aside
-
-    def write(chosen: tuple[str, ...], choices: Choices) -> Changes:
-        before = {entry.name: entry.reason for entry in known(choices)}
-        entries = [
-            {"name": name, "reason": before.get(name, "set aside in the workbench")}
-            for name in chosen
-        ]
-        return {f"{section}.set_aside": entries}
-
+def _set_aside(section: str, names: list[str], choices: Choices) -> Control:
+    """Objects and whole hosts to be set aside; other entries of the file are left as they are."""
+    hosts = dict.fromkeys(e.host for e in entries(choices, section) if e.whole_host and e.host)
+    options = [(name, ("name", name)) for name in names]
+    options += [(f"all of {host}", ("host", host)) for host in hosts]
     return several(
         "Set aside (Ctrl + click)",
-        names,
-        lambda c: tuple(name for name in names if name in {entry.name for entry in known(c)}),
-        write,
+        options,
+        lambda c: tuple(
+            one for _, one in options if one in set(map(shown_as, entries(c, section)))
+        ),
+        lambda chosen, c: with_chosen(c, section, [one for _, one in options], chosen),
     )
 
 

@@ -132,11 +132,11 @@ def menu(
 
 def several(
     words: str,
-    options: Sequence[str],
-    read: Callable[[Choices], tuple[str, ...]],
-    write: Callable[[tuple[str, ...], Choices], Changes],
+    options: Sequence[Any],
+    read: Callable[[Choices], tuple[Any, ...]],
+    write: Callable[[tuple[Any, ...], Choices], Changes],
 ) -> Control:
-    """A list of which several can be chosen."""
+    """A list of which several can be chosen; an option is its value, or words and a value."""
     layout = widgets.Layout(width=_WIDE, height="96px")
     box = widgets.SelectMultiple(
         options=list(options), description=words, style=_NAMED, layout=layout
