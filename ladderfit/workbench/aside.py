@@ -66,6 +66,14 @@ def shown_as(entry: SetAside) -> tuple[str, str]:
     return "name", entry.star or entry.name or ""
 
 
+def in_list(
+    choices: Choices, section: str, offered: Sequence[tuple[str, str]]
+) -> tuple[tuple[str, str], ...]:
+    """Which of a list's objects and whole hosts are set aside, in the list's order."""
+    known = {shown_as(entry) for entry in entries(choices, section)}
+    return tuple(one for one in offered if one in known)
+
+
 def with_chosen(
     choices: Choices,
     section: str,

@@ -14,7 +14,7 @@ from ladderfit import schema
 from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
 from ladderfit.priors import HalfNormal, LogNormal, Normal, Prior
-from ladderfit.workbench.aside import entries, shown_as, with_chosen
+from ladderfit.workbench.aside import entries, in_list, with_chosen
 from ladderfit.workbench.controls import (
     Asked,
     Changes,
@@ -285,13 +285,12 @@ def _set_aside(section: str, names: list[str], choices: Choices) -> Control:
     hosts = dict.fromkeys(e.host for e in entries(choices, section) if e.whole_host and e.host)
     options = [(name, ("name", name)) for name in names]
     options += [(f"all of {host}", ("host", host)) for host in hosts]
+    offered = [one for _, one in options]
     return several(
         "Set aside (Ctrl + click)",
         options,
-        lambda c: tuple(
-            one for _, one in options if one in set(map(shown_as, entries(c, section)))
-        ),
-        lambda chosen, c: with_chosen(c, section, [one for _, one in options], chosen),
+        lambda c: in_list(c, section, offered),
+        lambda chosen, c: with_chosen(c, section, offered, chosen),
     )
 
 
