@@ -10,18 +10,22 @@ import numpy as np
 
 from ladderfit.errors import LadderfitError
 from ladderfit.ladder import Ladder
-from ladderfit.names import base_name, with_group
-from ladderfit.relations import design
 from ladderfit.result import Result
 from ladderfit.review.claims import OF_THE_RELATION, Claim, Method
 from ladderfit.review.fits import Fit, Treatment, fit
-from ladderfit.review.joint import NO_THIRD_RUNG, joint_changes, posterior_values
+from ladderfit.review.joint import (
+    NO_THIRD_RUNG,
+    joint_changes,
+    number_claimed,
+    posterior_values,
+)
 from ladderfit.review.resampling import Estimate, Resampling, Wanted
 from ladderfit.review.selection import EVERY_PERIOD, Selection, terms
-from ladderfit.review.system import HUBBLE, STARS, System, linear_system, objects
+from ladderfit.review.system import STARS, System, linear_system, objects
 from ladderfit.samples import BoolArray, StarSample
 from ladderfit.sampling.run import draw
 
+_ON_THE_LINE = ("slope", "zero_point")  # which depend on the terms of the relation
 _THIRD_RUNG = ("peak_magnitude", "hubble_constant")
 
 
@@ -167,42 +171,14 @@ class Bench:
 
     def wanted(self, claim: Claim, chosen: Selection, pivot: float | None = None) -> Wanted:
         """What a claim is about, as a sum of coefficients; `pivot` in place of its own."""
-        if claim.quantity == "scatter":
-            return Wanted(scatter=True, intrinsic=claim.intrinsic)
-        if claim.quantity == "hubble_constant":
-            return Wanted({HUBBLE: 1.0})
-        if claim.quantity == "modulus":
-            return Wanted({with_group("modulus", str(claim.host)): 1.0})
-        own = self.opened.choices.relation.pivot
-        if claim.quantity == "slope":
-            steeper = self.line(chosen, 10.0 * own)
-            parts = {n: c for n, c in steeper.items() if base_name(n) == "slope_offset"}
-            return Wanted({"slope": 1.0, **parts})
-        if claim.quantity != "zero_point":
-            return Wanted({claim.quantity: 1.0})
-        sums = self.line(chosen, pivot or claim.pivot or own)
-        if claim.apparent:
-            host = claim.host or self.opened.hosts[0]
-            sums[with_group("modulus", host)] = 1.0
-        return Wanted(sums)
-
-    def line(self, chosen: Selection, period: float) -> dict[str, float]:
-        """The relation at a period [d] and the reference metallicity, as a sum of coefficients."""
-        ladder = self._with_terms(chosen)
-        metallicity = ladder.choices.relation.metallicity
-        zero = np.zeros(1)
-        star = StarSample(
-            star=np.array([""]),
-            host=np.array([-1]),
-            log_period=np.array([float(np.log10(period))]),
-            magnitude=zero,
-            variance=zero,
-            metallicity=zero if metallicity == "none" else np.array([metallicity.reference]),
-            row=np.zeros(1, dtype=np.int64),
-            overtone=np.array([chosen.mode == "overtone"]),
+        choices = self._with_terms(chosen).choices if claim.quantity in _ON_THE_LINE else None
+        return number_claimed(
+            claim,
+            choices or self.opened.choices,
+            self.opened.hosts,
+            overtone=chosen.mode == "overtone",
+            pivot=pivot,
         )
-        columns = design(ladder.choices, star, ())
-        return {name: float(column[0]) for name, column in columns.items() if column[0] != 0.0}
 
     def joint(self, chosen: Selection, clip: float | None, *, alone: bool = False) -> Result:
         """The joint posterior of a selection, stars beyond the clip of least squares set aside.

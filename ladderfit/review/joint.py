@@ -1,4 +1,4 @@
-"""The hierarchical fit of a selection: which choices it changes, and the number claimed."""
+"""The hierarchical fit of a selection: which choices it changes; the number a claim is about."""
 
 from __future__ import annotations
 
@@ -7,9 +7,12 @@ from typing import Any
 import numpy as np
 
 from ladderfit import schema
+from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
-from ladderfit.relations import scatters
+from ladderfit.names import base_name, with_group
+from ladderfit.relations import design, scatters
 from ladderfit.result import Result
+from ladderfit.review.claims import Claim
 from ladderfit.review.resampling import Wanted
 from ladderfit.review.selection import EVERY_PERIOD, Selection, terms
 from ladderfit.review.system import HUBBLE
@@ -85,6 +88,65 @@ def _stand_in(
         schema.join("anchors.geometric", host): {"modulus": _STAND_IN, "error": 1e-4},
         "priors.zero_point": {"normal": [level, 100.0]},
     }
+
+
+def line_at(choices: Choices, period: float, *, overtone: bool = False) -> dict[str, float]:
+    """The relation at a period [d] and the reference metallicity, as a sum of coefficients."""
+    metallicity = choices.relation.metallicity
+    zero = np.zeros(1)
+    star = StarSample(
+        star=np.array([""]),
+        host=np.array([-1]),
+        log_period=np.array([float(np.log10(period))]),
+        magnitude=zero,
+        variance=zero,
+        metallicity=zero if metallicity == "none" else np.array([metallicity.reference]),
+        row=np.zeros(1, dtype=np.int64),
+        overtone=np.array([overtone]),
+    )
+    columns = design(choices, star, ())
+    return {name: float(column[0]) for name, column in columns.items() if column[0] != 0.0}
+
+
+def number_claimed(
+    claim: Claim,
+    choices: Choices,
+    hosts: tuple[str, ...],
+    *,
+    overtone: bool = False,
+    pivot: float | None = None,
+) -> Wanted:
+    """What a claim is about, as a sum of coefficients.
+
+    Parameters
+    ----------
+    claim : Claim
+    choices : Choices
+        Whose terms the relation has.
+    hosts : tuple of str
+        An apparent magnitude without a host is that of the first.
+    overtone : bool
+        Whether the relation is that of overtone pulsators.
+    pivot : float, optional
+        Period of a zero point [d], in place of the claim's own.
+    """
+    if claim.quantity == "scatter":
+        return Wanted(scatter=True, intrinsic=claim.intrinsic)
+    if claim.quantity == "hubble_constant":
+        return Wanted({HUBBLE: 1.0})
+    if claim.quantity == "modulus":
+        return Wanted({with_group("modulus", str(claim.host)): 1.0})
+    own = choices.relation.pivot
+    if claim.quantity == "slope":
+        steeper = line_at(choices, 10.0 * own, overtone=overtone)
+        parts = {n: c for n, c in steeper.items() if base_name(n) == "slope_offset"}
+        return Wanted({"slope": 1.0, **parts})
+    if claim.quantity != "zero_point":
+        return Wanted({claim.quantity: 1.0})
+    sums = line_at(choices, pivot or claim.pivot or own, overtone=overtone)
+    if claim.apparent:
+        sums[with_group("modulus", claim.host or hosts[0])] = 1.0
+    return Wanted(sums)
 
 
 def posterior_values(result: Result, wanted: Wanted) -> FloatArray | None:
