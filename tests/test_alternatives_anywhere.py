@@ -15,8 +15,10 @@ from distributed import Client, LocalCluster
 from sweep_jobs import job, tasks
 
 from ladderfit.alternatives import Comparison, run_alternatives
+from ladderfit.choices import Choices
 from ladderfit.errors import InputError
-from ladderfit.ladder import Ladder, build_ladder
+from ladderfit.ladder import Ladder, read_ladder
+from ladderfit.ladder_file import write_choices
 from ladderfit.sweep import read_records, sweep
 from ladderfit.sweep.job import _STATES
 
@@ -33,8 +35,12 @@ ROWS = 1 + sum(map(len, AXES.values()))
 
 
 @pytest.fixture(scope="module")
-def ladder() -> Ladder:
-    return build_ladder(builders.choices(), builders.tables())
+def ladder(tmp_path_factory: pytest.TempPathFactory) -> Ladder:
+    """Read from CSV, whose columns are decoded at their first use."""
+    folder = tmp_path_factory.mktemp("ladder")
+    builders.write_tables(folder)
+    write_choices(Choices.from_mapping(builders.choices(tables=True)), folder / "small.toml")
+    return read_ladder(folder / "small.toml")
 
 
 @pytest.fixture(scope="module")

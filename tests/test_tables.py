@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pickle
 import warnings
 from collections.abc import Callable
 from pathlib import Path
@@ -83,6 +84,13 @@ def test_every_format_gives_the_same(table: DataTable) -> None:
     assert not parallax.faulty.size
     assert list(table.texts("ID").values) == NAMES
     assert list(table.texts("big").values) == [str(number) for number in BIG]
+
+
+def test_another_process_needs_no_file(table: DataTable) -> None:
+    """What a sweep hands to its workers, which may be on another machine."""
+    handed = pickle.dumps(table)
+    Path(table.name).unlink()
+    test_every_format_gives_the_same(pickle.loads(handed))
 
 
 def test_hash_is_that_of_the_file(table: DataTable) -> None:

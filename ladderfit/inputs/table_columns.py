@@ -40,3 +40,7 @@ class ColumnsOnDemand(Mapping[str, Column]):
 
     def __len__(self) -> int:
         return len(self._names)
+
+    def __reduce__(self) -> tuple[type[dict[str, Column]], tuple[dict[str, Column]]]:
+        """All columns, decoded: another process may be without the file."""
+        return dict, (dict(self),)
