@@ -37,7 +37,8 @@ ORDER = """
     posterior.offsets posterior.families posterior.parallaxes
     posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust
     posterior.indices posterior.deviations
-    posterior.supernovae posterior.coupled posterior.populations posterior.joint
+    posterior.supernovae posterior.coupled posterior.populations posterior.known_rows
+    posterior.joint
     posterior.determined posterior
     diagnostics result result_files wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
@@ -83,14 +84,15 @@ ORDER = """
     plots.influence plots.priors plots.coverage plots
     jobs.calibration jobs.repeat jobs.alternatives jobs.coverage jobs.review jobs
     workbench.why workbench.state workbench.rungs workbench.columns workbench.aside
-    workbench.points workbench.shown workbench.slow workbench.works
+    workbench.claims workbench.points workbench.shown workbench.slow workbench.works
     workbench.pins workbench.keeping workbench.long_runs
     workbench.tables workbench.comparing workbench.view_tables workbench.trial_tables
     workbench.axis workbench.pulse workbench.range workbench.controls workbench.selection_controls
     workbench.parallax_controls workbench.choices_panel
     workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
-    workbench.canvas.parallaxes workbench.canvas.trials workbench.canvas.checks workbench.canvas
+    workbench.canvas.parallaxes workbench.canvas.trials workbench.canvas.checks
+    workbench.canvas.published workbench.canvas
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.board_panel workbench.shelf workbench.frame workbench.screen
     workbench.question_box workbench.draft_page workbench

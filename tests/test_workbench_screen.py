@@ -273,3 +273,17 @@ def test_parallax_stars_alone() -> None:
     assert bench.bar.view == "relation"
     move(control(bench, "cepheids", "Periods"), [7.0, 60.0], settled=True)
     assert bench.session.trouble is None
+
+
+def test_a_section_that_goes_takes_its_choices_along(bench: Workbench) -> None:
+    """As when a pin is gone back to that lacks a rung; undo brings it back."""
+    for change in ({"supernovae": None, "expansion": None}, {"anchors.parallaxes": None}):
+        bench.change(change)
+        assert "went wrong" not in bench.foot.trust.value, bench.foot.trust.value
+        assert bench.session.trouble is None
+        for rung in bench.panel.rungs:
+            bench.open(rung)
+            assert "went wrong" not in bench.foot.trust.value, rung
+        bench.foot.undo.click()
+        bench.open("expansion")
+        assert control(bench, "expansion", "Redshifts").widget.value == [0.023, 0.15]

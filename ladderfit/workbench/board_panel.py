@@ -79,8 +79,8 @@ class BoardPanel:
         self.goal.value = str(session.ladder.choices.sampling.draws)
         self.beside = widgets.Dropdown(
             description="Compare with",
-            style={"description_width": "84px"},
-            layout=widgets.Layout(width="210px"),
+            style={"description_width": "94px"},
+            layout=widgets.Layout(width="224px"),
         )
         self.beside.tooltip = "Compare it with"
         self.details = widgets.HTML(layout=widgets.Layout(margin="0"))
@@ -92,6 +92,7 @@ class BoardPanel:
         doing = [self.back, self.against, self.remove, self.stop, self.resume]
         above = _row([*doing, self.goal, goal_words])
         below = _row([self.beside, self.label])
+        self._with_entries = [self.entries, self.back, below]
         self.widget = widgets.VBox(
             [self.entries, above, below, self.details], layout=widgets.Layout(flex="0 0 auto")
         )
@@ -154,6 +155,8 @@ class BoardPanel:
             item.layout.display = "" if pin is not None else "none"
         for item in self._of_run:
             item.layout.display = "" if run is not None else "none"
+        for item in self._with_entries:
+            item.layout.display = "" if self.entries.options else "none"
         self.back.disabled = self._choices(name) is None
         self.beside.disabled = not name
         if pin is not None and self.label.value != pin.label:

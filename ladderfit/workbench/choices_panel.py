@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import html
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from typing import Any
 
 import ipywidgets as widgets
@@ -132,7 +132,19 @@ def _controls(key: str, ladder: Ladder, every: Ladder) -> Iterator[Control]:
         "supernovae": _of_supernovae,
         "expansion": _of_expansion,
     }
-    return makers[key](ladder, every)
+    for control in makers[key](ladder, every):
+        yield control if key == "anchors" else control.only_where(_section(key, ladder.choices))
+
+
+def _section(key: str, choices: Choices) -> Callable[[Choices], bool]:
+    """Whether choices have the section that a rung's controls read; it may be taken out."""
+    if key == "cepheids" and choices.cepheids is None:
+        return _has_parallaxes
+    return lambda now: getattr(now, key) is not None
+
+
+def _has_parallaxes(choices: Choices) -> bool:
+    return choices.anchors.parallaxes is not None
 
 
 def _of_anchors(ladder: Ladder, every: Ladder) -> Iterator[Control]:
@@ -150,7 +162,8 @@ def _of_anchors(ladder: Ladder, every: Ladder) -> Iterator[Control]:
             lambda c: tuple(n for n, anchor in c.anchors.geometric.items() if anchor.use),
             lambda chosen, _: {_use(name): name in chosen for name in names},
         )
-    yield from parallax_controls(ladder)
+    for control in parallax_controls(ladder):
+        yield control.only_where(_has_parallaxes)
 
 
 def _use(name: str) -> str:

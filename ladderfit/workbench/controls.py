@@ -71,6 +71,13 @@ class Control:
         for control in self.under:
             yield from control.all()
 
+    def only_where(self, there: Callable[[Choices], bool]) -> Control:
+        """Have the control exist only where `there` holds too; returns it."""
+        for control in self.all():
+            own = control.when
+            control.when = _both(there, own) if own is not None else there
+        return self
+
     def when_asked(self, asked: Asked) -> None:
         """Call `asked` with this control, its changes, and whether they are settled."""
         self._asked = asked
@@ -107,6 +114,10 @@ class Control:
     def _ask(self, value: Any, *, settled: bool) -> None:
         if not self._quiet and self._asked is not None and self._choices is not None:
             self._asked(self, self.write(value, self._choices), settled)
+
+
+def _both(one: Callable[[Choices], bool], two: Callable[[Choices], bool]) -> Any:
+    return lambda choices: one(choices) and two(choices)
 
 
 def switch(words: str, key: str, read: Callable[[Choices], bool]) -> Control:

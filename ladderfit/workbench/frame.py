@@ -10,9 +10,11 @@ import ipywidgets as widgets
 
 from ladderfit.checks.residuals import HostResiduals
 from ladderfit.errors import LadderfitError
+from ladderfit.result import Result
 from ladderfit.workbench.aside import aside_residuals
 from ladderfit.workbench.canvas import Picture
 from ladderfit.workbench.canvas.view import View
+from ladderfit.workbench.claims import Beside, ClaimsFiles
 from ladderfit.workbench.published import Published
 from ladderfit.workbench.shelf import Shelf
 from ladderfit.workbench.shown import Shown
@@ -55,6 +57,7 @@ class Frame:
     ) -> None:
         self.session, self.bar, self.picture, self.stars = session, bar, picture, stars
         self.entry, self.published, self.shelf = entry, published, shelf
+        self.claims = ClaimsFiles(session.ladder)
         self.slow = Slow(background=shelf.runs.background)
         self._aside: tuple[object, HostResiduals | None] | None = None
         self._drawn = ""
@@ -79,9 +82,12 @@ class Frame:
         if result is None:
             return
         drawn = bar.shows == "view"
+        self.claims.chosen = bar.claims.value or ""
         self._scroll.layout.display = "none" if drawn else ""
         self.picture.canvas.layout.display = "" if drawn else "none"
         entered = bar.shows == "numbers" or (bar.view == "published" and bar.shows == "table")
+        if entered:
+            self.entry.offer(result)
         self.entry.widget.layout.display = "" if entered else "none"
         self.table.layout.display = "none" if bar.shows == "board" else ""
         self.shelf.panel.widget.layout.display = "" if bar.shows == "board" else "none"
@@ -191,8 +197,14 @@ class Frame:
         if result is None:
             raise LadderfitError("there is no posterior to show")
         aside = self._aside_stars() if self.bar.view == "relation" else None
-        full = self.shelf.full()
-        return Shown(result, self.bar.rung, self.bar.column, aside, worked, full, self.published)
+        full, bar = self.shelf.full(), self.bar
+        claims = self._beside(result) if bar.view == "published" else Beside()
+        return Shown(result, bar.rung, bar.column, aside, worked, full, self.published, claims)
+
+    def _beside(self, result: Result) -> Beside:
+        """The claims of the file picked, held against a posterior."""
+        self.bar.offer_claims(self.claims.offered(), self.claims.chosen)
+        return self.claims.beside(result)
 
     def _aside_stars(self) -> HostResiduals | None:
         """Stars set aside, worked out once per posterior."""

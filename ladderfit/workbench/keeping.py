@@ -35,6 +35,8 @@ class Left:
     published : mapping of str to float
     rung, view : str
         What was open.
+    claims : str
+        The claims file picked; "" for none.
     restarted : bool
         Whether its kernel is gone while its page's server still runs.
     """
@@ -44,6 +46,7 @@ class Left:
     published: Mapping[str, float] = field(default_factory=dict)
     rung: str = ""
     view: str = ""
+    claims: str = ""
     restarted: bool = False
 
 
@@ -74,10 +77,11 @@ class Keeper:
             texts = (str(content[key]) for key in ("baseline", "rung", "view"))
             choices = Choices.from_mapping(content["now"])
             baseline, rung, view = texts
+            claims = str(content.get("claims", ""))
             gone = content["server"] == _server() and not _lives(int(content["kernel"]))
         except (OSError, ValueError, KeyError, TypeError, AttributeError, InputError):
             return None
-        return Left(choices, baseline, published, rung, view, bool(_server()) and gone)
+        return Left(choices, baseline, published, rung, view, claims, bool(_server()) and gone)
 
     def keep(self, left: Left) -> None:
         """Write down where the session is; the page does not wait for it."""
@@ -99,8 +103,9 @@ class Keeper:
             "published": dict(left.published),
             "rung": left.rung,
             "view": left.view,
+            "claims": left.claims,
         }
-        untouched = now == self._start and not left.baseline and not left.published
+        untouched = now == self._start and not (left.baseline or left.published or left.claims)
         if untouched and not self.path.exists():
             return
         with suppress(OSError):  # a folder that may not be written keeps no session

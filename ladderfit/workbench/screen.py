@@ -57,7 +57,7 @@ def _guarded(
                 self._say(f"This went wrong inside ladderfit: {error!r}", good=False)
             finally:
                 self._set_pulse()
-                self.shelf.keep(self.bar.rung, self.bar.view)
+                self.shelf.keep(self.bar.rung, self.bar.view, self.bar.claims.value or "")
 
     return guarded
 
@@ -122,6 +122,7 @@ class Workbench:
         self._open(left.rung if left is not None and left.rung in self.panel.rungs else usual)
         if left is not None:
             self.bar.prefer(left.view)
+            self.bar.offer_claims([left.claims] if left.claims else [], left.claims)
         self.axis.observe(self._opened, "rung")
         self.axis.observe(self._recoloured, ["dark", "rgb"])
         self.axis.observe(self._resized, "width")
@@ -163,7 +164,7 @@ class Workbench:
 
     def _put_together(self) -> Any:
         reason = widgets.HBox(
-            [self.why, self.bar.columns, self.bar.board, self.bar.numbers],
+            [self.why, self.bar.columns, self.bar.claims, self.bar.board, self.bar.numbers],
             layout=widgets.Layout(height="32px", flex="0 0 auto", align_items="center"),
         )
         reason.add_class("lf-bar-of-views")
@@ -359,6 +360,8 @@ class Workbench:
         else:
             self.published[name] = value
         self._show_numbers()
+        if self.bar.view == "published":
+            self.frame.show()
 
     def _set_pulse(self) -> None:
         """Have the page ask for news while something is under way."""

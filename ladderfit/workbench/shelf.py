@@ -50,7 +50,7 @@ class Shelf:
     ) -> None:
         self.session, self.published = session, published
         self._start = session.ladder.choices
-        self._kept: tuple[Ladder, str, dict[str, float], str, str] | None = None
+        self._kept: tuple[Ladder, str, dict[str, float], str, str, str] | None = None
         self.board = PinBoard(session.ladder)
         self.runs = LongRuns(session.ladder, self.board.folder, background=background)
         self.keeper = Keeper(self.board.folder, self._start)
@@ -83,10 +83,10 @@ class Shelf:
             words.insert(0, "its choices are in force, and Undo gives those of the ladder file")
         return f"Took up the session before the kernel was restarted: {'; '.join(words)}."
 
-    def keep(self, rung: str, view: str) -> None:
+    def keep(self, rung: str, view: str, claims: str) -> None:
         """Write down where the session stands."""
         session = self.session
-        now = (session.settled, session.pinned_name, dict(self.published), rung, view)
+        now = (session.settled, session.pinned_name, dict(self.published), rung, view, claims)
         if now != self._kept:
             self._kept = now
             self.keeper.keep(Left(now[0].choices, *now[1:]))

@@ -8,6 +8,7 @@ from typing import Any
 
 from ladderfit.checks.residuals import HostResiduals
 from ladderfit.result import Result
+from ladderfit.workbench.claims import Beside
 
 Tell = Callable[[float], None]
 
@@ -30,6 +31,8 @@ class Shown:
         A finished ensemble run of the same choices.
     published : mapping of str to float
         Published values, by parameter.
+    claims : Beside
+        The claims of a claims file; empty where none is picked.
     """
 
     result: Result
@@ -39,3 +42,4 @@ class Shown:
     worked: Any = None
     full: Result | None = None
     published: Mapping[str, float] = field(default_factory=dict)
+    claims: Beside = field(default_factory=Beside)

@@ -15,7 +15,7 @@ from ladderfit.checks.predictive import Checks
 from ladderfit.influence import Influence
 from ladderfit.names import parameter
 from ladderfit.result import Result
-from ladderfit.rounding import Interval, rounded, to_place
+from ladderfit.rounding import MINUS, Interval, rounded, to_place
 from ladderfit.sensitivity.power_scaling import PriorSensitivity
 from ladderfit.workbench.shown import Shown
 from ladderfit.workbench.tables import table
@@ -24,6 +24,11 @@ from ladderfit.workbench.why import SHORT, signed
 
 MOST_ROWS = 60
 _LONGEST = 60
+_SHIFT = (
+    "<p>Shift: published minus posterior mean, in the root of both squared errors, as if the two "
+    "were independent; without a published error, in the posterior's. Claims are held against the "
+    "choices in force, whatever the paper did: <b>ladderfit review</b> refits as it describes.</p>"
+)
 
 
 def anchors(shown: Shown) -> str:
@@ -129,24 +134,51 @@ def peaks(shown: Shown) -> str:
     text = ""
     for term in views_of(shown.result):
         view = peak_view(shown.result, term)
-        text += f"<h4>{html.escape(term.replace('_', ' '))}</h4>"
-        text += farthest(view, view.x, term.replace("_", " "), "mag")
+        words = term.replace("_", " ")
+        text += farthest(view, view.x, words, "mag", heading=f"Residuals against {words}")
     return text
 
 
 def published(shown: Shown) -> str:
-    """Published values, the posterior's, and the difference in its errors."""
-    rows = []
+    """Published values and claims, the posterior's numbers, and the shift in combined errors."""
+    beside, rows = shown.claims, []
     for name, value in shown.published.items():
         if name in shown.result.draws:
             interval = Interval.of(shown.result.draws[name])
             off = (value - interval.mean) / interval.sd if interval.sd > 0.0 else math.nan
+            words = f"{value:g}".replace("-", MINUS)
+            rows.append((_title(name), "entered here", words, str(interval), _shift(off)))
+    for one in beside.rows:
+        if not one.reason:
+            claim = one.claim
             rows.append(
-                (_title(name), f"{value:g}", str(interval), signed(off) if off == off else "")
+                (
+                    claim.name or claim.words,
+                    claim.paper,
+                    claim.printed,
+                    str(rounded(one.mean, one.sd)) if one.sd > 0.0 else f"{one.mean:.6g} (fixed)",
+                    _shift(one.shift),
+                )
             )
-    if not rows:
-        return "<p>No published value yet: enter one under <b>All numbers</b>.</p>"
-    return table(("parameter", "published", "posterior", "published minus it [sd]"), rows)
+    left = [
+        f"{one.claim.name or one.claim.words}{', ' if one.claim.paper else ''}{one.claim.paper}, "
+        f"{one.claim.printed}: {one.reason}."
+        for one in beside.rows
+        if one.reason
+    ]
+    text = "".join(f'<p class="lf-bad">{html.escape(line)}</p>' for line in beside.trouble)
+    if beside.title:
+        text += f"<h4>{html.escape(beside.title)}</h4>"
+    if rows:
+        text += table(("number", "paper", "published", "posterior", "shift"), rows)
+        text += _SHIFT
+    if left:
+        text += "<h4>Not compared</h4>" + _sentences(left)
+    return text or "<p>No published value yet: enter one here, or pick a claims file above.</p>"
+
+
+def _shift(off: float) -> str:
+    return signed(off) if math.isfinite(off) else ""
 
 
 def _short(name: str) -> str:

@@ -13,10 +13,11 @@ from ladderfit.workbench.columns import numeric_columns
 from ladderfit.workbench.views import BY_KEY, VIEWS, offered
 
 _MORE = "more ..."
+_NO_CLAIMS = ("claims file ...", "")
 
 
 class ViewBar:
-    """Buttons of the views, the others' menu, the column's menu, the table, PNG and PDF.
+    """Buttons of the views, menus of the others, of columns and claims files; table, PNG and PDF.
 
     Attributes
     ----------
@@ -45,6 +46,11 @@ class ViewBar:
         )
         self.columns.tooltip = "Column of the table"
         self.columns.observe(self._picked, "value")
+        self.claims = widgets.Dropdown(
+            options=[_NO_CLAIMS], layout=widgets.Layout(width="150px", display="none", order="10")
+        )
+        self.claims.tooltip = "Claims file beside the ladder file"
+        self.claims.observe(self._claimed, "value")
         self.table = self._toggle("Table", "The view's numbers as a table", "table", "50px")
         self.numbers = self._toggle("All numbers", "Every parameter", "numbers", "88px")
         self.board = self._toggle("Pins, runs", "The board of pins and long runs", "board", "84px")
@@ -138,6 +144,21 @@ class ViewBar:
         self._mark()
         self._changed()
 
+    def offer_claims(self, names: list[str], chosen: str) -> None:
+        """Offer the claims files that there are now."""
+        options = (_NO_CLAIMS, *((name, name) for name in names))
+        self._quiet = True
+        if options != tuple(self.claims.options):
+            self.claims.options = options
+        self.claims.value = chosen
+        self._quiet = False
+        shown = self.view == "published" and self.shows in ("view", "table") and bool(names)
+        self.claims.layout.display = "" if shown else "none"
+
+    def _claimed(self, _: Any) -> None:
+        if not self._quiet:
+            self._changed()
+
     def _picked(self, _: Any) -> None:
         if not self._quiet and self.view == "column":
             self._changed()
@@ -154,5 +175,6 @@ class ViewBar:
         self.numbers.value = self.shows == "numbers"
         self.board.value = self.shows == "board"
         self.columns.layout.display = "" if self.view == "column" else "none"
+        self.claims.layout.display = "none"  # until its files are offered
         self.save.disabled = not on_show
         self._quiet = False

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import html
+
 import numpy as np
 
 from ladderfit.checks.residuals import (
@@ -152,13 +154,15 @@ def _number(result: Result, name: str) -> str:
     return str(Interval.of(result.draws[name])) if name in result.draws else ""
 
 
-def farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
+def farthest(
+    data: Residuals, x: FloatArray, words: str, unit: str, heading: str = "Residuals"
+) -> str:
     """Objects by how far they are off, the farthest first."""
     order = np.argsort(-np.abs(data.standardised))[:MOST_ROWS]
     rows = [
         (
             str(data.name[i]),
-            f"{x[i]:.4g}",
+            f"{x[i]:.4g}".replace("-", MINUS),
             *_pair(float(data.residual[i]), float(data.sd[i])),
             signed(float(data.standardised[i])),
         )
@@ -166,7 +170,7 @@ def farthest(data: Residuals, x: FloatArray, words: str, unit: str) -> str:
     ]
     shown = f"the {len(order)} farthest off of {len(data):,}" if len(order) < len(data) else "all"
     head = ("name", words, f"residual [{unit}]", f"spread [{unit}]", "in spreads")
-    return f"<h4>Residuals: {shown}</h4>" + table(head, rows)
+    return f"<h4>{html.escape(heading)}: {shown}</h4>" + table(head, rows)
 
 
 def _pair(value: float, error: float) -> tuple[str, str]:

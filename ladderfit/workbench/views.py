@@ -13,6 +13,7 @@ from ladderfit.workbench import trial_tables, works
 from ladderfit.workbench import view_tables as tables
 from ladderfit.workbench.canvas import checks, hubble, panels, parallaxes, trials
 from ladderfit.workbench.canvas.corner import CornerView
+from ladderfit.workbench.canvas.published import published
 from ladderfit.workbench.canvas.relation import RelationView
 from ladderfit.workbench.canvas.view import View
 from ladderfit.workbench.columns import numeric_columns
@@ -181,11 +182,11 @@ VIEWS: tuple[View, ...] = (
     View(
         "published",
         "Published",
-        "Published values beside the posterior",
+        "Published values, and the claims of a claims file, beside the posterior",
         EVERY,
         lambda ladder, rung: True,
         trial_tables.published,
-        draw=checks.published,
+        draw=published,
     ),
     View(
         "corner",

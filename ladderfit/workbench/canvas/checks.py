@@ -1,4 +1,4 @@
-"""Predictive checks, terms of the peak-magnitude relation, and published values."""
+"""Predictive checks, and the terms of the peak-magnitude relation."""
 
 from __future__ import annotations
 
@@ -9,15 +9,14 @@ from matplotlib.figure import Figure
 
 from ladderfit.checks.peak_views import peak_view, views_of
 from ladderfit.checks.predictive import Checks
-from ladderfit.names import label
 from ladderfit.plots.checks import along_panel, distribution_panel, list_panel
 from ladderfit.plots.peaks import term_panel
 from ladderfit.plots.theme import Theme
-from ladderfit.rounding import Interval
 from ladderfit.workbench.canvas.margins import margins, place_label
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown
 
+_WIDE = 6.0  # inches from which a legend has three columns
 _ALONG = ("period", "colour", "metallicity", "distance", "stated error")
 
 
@@ -34,6 +33,10 @@ def checks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
     panels = np.ravel(figure.subplots(2, 3))
     margins(figure, 58, 10, 32, 40, hspace=0.72, wspace=0.3)
     distribution_panel(sample, panels[0], theme=theme)
+    panels[0].legend(
+        loc="upper center", ncols=2, columnspacing=0.6, handlelength=1.0, handletextpad=0.3,
+        borderaxespad=0.0, fontsize=6.0,
+    )  # fmt: skip
     for name, axes in zip(names, panels[1:], strict=False):
         along_panel(found, sample, name, axes, theme=theme)
     for axes in panels[1 + len(names) :]:
@@ -51,12 +54,14 @@ def peaks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
     if not terms:
         return []
     panels = figure.subplots(1, len(terms), squeeze=False, sharey=True)[0]
-    margins(figure, 64, 10, 56, 44, wspace=0.08)
+    wide = figure.get_figwidth() >= _WIDE
+    margins(figure, 64, 12, 56 if wide else 72, 44, wspace=0.12)
     found = []
     for term, axes in zip(terms, panels, strict=True):
         term_panel(result, axes, term, theme=theme)
         axes.xaxis.labelpad = 1
         axes.xaxis.label.set_fontsize(7.5)
+        axes.title.set_fontsize(7.5)
         view = peak_view(result, term)
         for section, chosen in (("supernovae", view.in_hosts), ("expansion", ~view.in_hosts)):
             nobody = [""] * int(chosen.sum())
@@ -73,47 +78,7 @@ def peaks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
         for handle, words in zip(*axes.get_legend_handles_labels(), strict=True):
             handles.setdefault(words, handle)
     figure.legend(
-        list(handles.values()), list(handles), loc="upper right", ncols=2,
+        list(handles.values()), list(handles), loc="upper right", ncols=3 if wide else 2,
         bbox_to_anchor=(0.995, 1.0), borderaxespad=0.2, columnspacing=1.0, fontsize=7.0,
     )  # fmt: skip
     return found
-
-
-def published(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
-    """Published values beside the posterior, each in errors of the latter."""
-    rows = [(n, v) for n, v in shown.published.items() if n in shown.result.draws]
-    axes = figure.subplots()
-    margins(figure, 130, 120, 24, 44)
-    if not rows:
-        axes.set_axis_off()
-        words = "No published value yet: enter one under All numbers"
-        axes.text(0.5, 0.5, words, ha="center", va="center", transform=axes.transAxes)
-        return []
-    ours, theirs = theme.accent(0), theme.accent(1)
-    for row, (name, value) in enumerate(rows):
-        interval = Interval.of(shown.result.draws[name])
-        sd = interval.sd or 1.0
-        axes.errorbar(
-            0.0, row, xerr=1.0 if interval.sd > 0.0 else 0.0, marker=ours.marker, markersize=4.0,
-            color=ours.colour, elinewidth=1.2, label="" if row else "posterior, one error",
-        )  # fmt: skip
-        off = (value - interval.mean) / sd
-        axes.plot(
-            off, row, marker=theirs.marker, color=theirs.colour, linestyle="none", markersize=5.0,
-            label="" if row else "published",
-        )  # fmt: skip
-        axes.annotate(
-            f"{interval}",
-            (1.02, row),
-            xycoords=("axes fraction", "data"),
-            va="center",
-            fontsize=7.5,
-        )
-    axes.axvline(0.0, color=theme.muted, linewidth=0.9)
-    axes.set_yticks(range(len(rows)), [label(name) for name, _ in rows])
-    axes.set_ylim(len(rows) - 0.4, -0.6)
-    reach = 1.15 * max(2.5, float(np.max(np.abs(axes.dataLim.intervalx))))
-    axes.set_xlim(-reach, reach)
-    axes.set_xlabel("Difference from the posterior mean [errors]", labelpad=1)
-    figure.legend(*axes.get_legend_handles_labels(), loc="upper right", ncols=2, borderaxespad=0.2)
-    return []
