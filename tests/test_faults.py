@@ -41,6 +41,7 @@ from ladderfit.sampling.run_folder import RunFolder, Status
 from ladderfit.sampling.worker import Stopper, run
 from ladderfit.store import read_result, write_netcdf, write_result
 from ladderfit.sweep import read_records, sweep
+from ladderfit.sweep.folder import OUTCOMES, sweep_folder
 
 PER_ROW = 160  # draws of a row of an ensemble run
 
@@ -193,6 +194,23 @@ def test_a_sweep_on_a_failing_disk(tmp_path: Path) -> None:
             base = 100.0 if outcome.key in kept else 0.0
             assert outcome.values["sum"] == base + place
     assert not [path for path in tmp_path.iterdir() if path.suffix != ".jsonl"]
+
+
+def test_a_sweep_killed_before_its_first_line(tmp_path: Path) -> None:
+    """Its folder holds a lock and half a file, and is taken up; with anything else it is not."""
+    out = tmp_path / "sweep"
+    out.mkdir()
+    (out / "outcomes.jsonl.lock").write_text("0\n", encoding="utf-8")
+    (out / ".outcomes.jsonl.lock.k3x9a_0z").touch()
+    (out / ".outcomes.jsonl.pxi2c4q7.tmp").write_text('{"format": "la', encoding="utf-8")
+    assert sweep_folder(out) == out
+    (out / "outcomes.jsonl.lock").unlink()
+    sweep(job(), tasks(2), workers=1, file=out / OUTCOMES)
+    assert not list(out.glob("*.tmp"))
+    assert len(read_records(out / OUTCOMES)[1]) == 2
+    (out / OUTCOMES).rename(out / "notes.txt")
+    with pytest.raises(InputError, match="without outcomes of a sweep"):
+        sweep_folder(out)
 
 
 @pytest.fixture

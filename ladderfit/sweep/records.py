@@ -76,6 +76,8 @@ def open_records(path: Path | None, identity: Mapping[str, Any]) -> Iterator[Rec
         yield Records({})
         return
     with lock(path.with_name(f"{path.name}.lock"), "a sweep is under way"):
+        for torn in path.parent.glob(f".{path.name}.????????.tmp"):  # its writer was killed
+            torn.unlink()
         if not path.exists():
             write_text_atomically(path, _line({"format": FORMAT, "identity": identity}))
         found, outcomes, end = _read(path)
