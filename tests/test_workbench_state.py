@@ -207,12 +207,12 @@ def test_trust_and_a_prior_that_does_the_work(session: Session) -> None:
         {
             "anchors.parallaxes.use": False,
             "anchors.geometric.Tavin.use": False,
-            "priors.hubble_constant": {"log_normal": [70.0, 0.5]},
+            "priors.hubble_constant": {"log_normal": [70.0, 0.2]},
         }
     )
     good, words = trust(session.result)
     assert not good
-    assert words == "The data add nothing to the prior of the Hubble constant log-normal(70, 0.5)."
+    assert words == "The data add nothing to the prior of the Hubble constant log-normal(70, 0.2)."
 
 
 def test_a_saved_ladder_reads_back(session: Session, tmp_path: Path) -> None:

@@ -17,12 +17,12 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
-from functools import cache
+from functools import cache, cached_property, partial
 
 import numpy as np
 import numpy.typing as npt
 
-from ladderfit.kernels.compiling import in_halves
+from ladderfit.kernels.compiling import in_halves, side_by_side
 from ladderfit.kernels.elimination import draw_coupled, eliminate
 from ladderfit.kernels.sums import add_rows
 
@@ -33,6 +33,7 @@ LOG_2PI = math.log(2.0 * math.pi)
 
 _FEW = 200  # rows up to which a plain loop is faster than matrix products
 _BLOCK = 16_384  # rows summed at once
+_WORTH_HALVING = 500_000  # elements above which two threads share them
 _CHUNK = 4_000_000  # elements of a (draws, rows) array held at once
 
 
@@ -98,6 +99,12 @@ def upper_triangle(width: int) -> tuple[IntArray, IntArray]:
     return row, column
 
 
+@cache
+def _all_but(count: int, taken: bytes) -> IntArray:
+    """The numbers below `count` that an array of integers does not hold."""
+    return np.setdiff1d(np.arange(count), np.frombuffer(taken, dtype=np.int64))
+
+
 def no_moments(batch: int, hosts: int, width: int, coupled: IntArray | None = None) -> Moments:
     """Moments of no rows, for `width` coefficients; `coupled` hosts, if any, shape (m,)."""
     some = coupled is not None and len(coupled) > 0
@@ -145,23 +152,29 @@ class Rows:
         """Add the rows' sums to `total`, in place."""
         if len(self.variance) < _FEW:
             sums = (total.local, total.cross, total.square, total.constant)
-            add_rows(*sums, self.host, self.columns, self.variance, extra)
+            add_rows(*sums, self.host, self.columns, self._products, self.variance, extra)
             return
         for first in range(0, len(self.variance), _BLOCK):
             columns = self.columns[first : first + _BLOCK]
             upper = upper_triangle(columns.shape[1])
             products = columns[:, upper[0]] * columns[:, upper[1]]
             step = max(1, _CHUNK // len(columns))
-            for start in range(0, len(extra), step):
-                part = slice(start, start + step)
-                self._add_part(total, part, first, extra[part], products)
+            if len(extra) * len(columns) > _WORTH_HALVING:
+                step = min(step, -(-len(extra) // 2))
+            parts = [slice(start, start + step) for start in range(0, len(extra), step)]
+            side_by_side(partial(self._add_part, total, first, extra, products), parts)
+
+    @cached_property
+    def _products(self) -> FloatArray:
+        upper = upper_triangle(self.columns.shape[1])
+        return np.ascontiguousarray(self.columns[:, upper[0]] * self.columns[:, upper[1]])
 
     def _add_part(
-        self, total: Moments, part: slice, first: int, extra: FloatArray, products: FloatArray
+        self, total: Moments, first: int, extra: FloatArray, products: FloatArray, part: slice
     ) -> None:
         """Add a block of rows, from `first` on, for some of the draws."""
         last = first + len(products)
-        variance = self.variance[first:last] + extra[:, None]
+        variance = self.variance[first:last] + extra[part, None]
         weight = 1.0 / variance
         for host, start, stop in self.slices:
             if stop > first and start < last:
@@ -170,11 +183,22 @@ class Rows:
                 total.local[part, host] += here.sum(axis=1)
                 total.cross[part, host] += here @ self.columns[inside]
         upper = upper_triangle(self.columns.shape[1])
-        square = np.empty((len(extra), *total.square.shape[1:]))
+        square = np.empty((len(variance), *total.square.shape[1:]))
         square[:, upper[0], upper[1]] = square[:, upper[1], upper[0]] = weight @ products
         total.square[part] += square
-        np.log(variance, out=variance)
-        total.constant[part] -= 0.5 * (variance.sum(axis=1) + len(products) * LOG_2PI)
+        logs = _sum_of_logs(variance)
+        total.constant[part] -= 0.5 * (logs + len(products) * LOG_2PI)
+
+
+def _sum_of_logs(values: FloatArray) -> FloatArray:
+    """Sum of logs along the last axis, one logarithm for four values."""
+    quarter = values.shape[-1] // 4
+    four = [values[..., place * quarter : (place + 1) * quarter] for place in range(4)]
+    product = four[0] * four[1]
+    product *= four[2]
+    product *= four[3]
+    rest = np.log(values[..., 4 * quarter :]).sum(axis=-1)
+    return np.asarray(np.log(product, out=product).sum(axis=-1) + rest)
 
 
 def rows(
@@ -286,7 +310,7 @@ def solve(
     batch, width = len(moments.constant), moments.square.shape[-1]
     known = np.empty(0, dtype=np.int64) if known is None else known.astype(np.int64)
     values = np.empty((batch, 0)) if values is None else np.ascontiguousarray(values)
-    free = np.setdiff1d(np.arange(width - 1), known)
+    free = _all_but(width - 1, known.tobytes())
     log_evidence = np.empty(batch)
     mean = np.empty((batch, len(free)))
     factor = np.zeros((batch, len(free), len(free)))
@@ -294,7 +318,7 @@ def solve(
     coupled, coupling = moments.coupled, moments.coupling
     if coupled is None or coupling is None:
         coupled, coupling = np.empty(0, dtype=np.int64), np.empty((batch, 0, 0))
-    alone = np.setdiff1d(np.arange(hosts), coupled)
+    alone = _all_but(hosts, coupled.tobytes())
 
     def part(start: int, stop: int) -> None:
         chosen = slice(start, stop)

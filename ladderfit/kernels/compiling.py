@@ -25,7 +25,7 @@ R = TypeVar("R")
 
 WORDS_WHEN_COLD = "compiling the kernels (once after installing; takes 5 to 15 s)"
 
-_WORTH_SHARING = 20_000  # elements of work below which a second thread does not pay
+_WORTH_SHARING = 100_000  # elements of work below which a second thread does not pay
 _KERNELS: list[Any] = []
 _ALWAYS_USED = "elimination.eliminate"
 
@@ -80,8 +80,13 @@ def threads() -> int:
     The environment variable ``LADDERFIT_THREADS`` sets 1 or 2.
     """
     asked = os.environ.get("LADDERFIT_THREADS", "")
-    cores = os.cpu_count() or 1
-    return max(1, min(int(asked) if asked.isdigit() else 2, cores, 2))
+    return max(1, min(int(asked) if asked.isdigit() else 2, _cores(), 2))
+
+
+@cache
+def _cores() -> int:
+    """Looked up once: that takes longer than a small kernel."""
+    return os.cpu_count() or 1
 
 
 @cache

@@ -13,6 +13,7 @@ FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 LOG_2PI = math.log(2.0 * math.pi)
+_TOGETHER = 4  # weights of which one logarithm is taken: a product of four stays finite
 
 
 @compiled
@@ -42,14 +43,18 @@ def eliminate(
     dense = np.empty((m, m + k + 1))
     for draw in range(batch):
         _move_known(square[draw], known, values[draw], free, work)
-        logs = 0.0
+        logs, weights = 0.0, 1.0
         for place in range(len(alone)):
             host = alone[place]
             weight = local[draw, host]
-            logs += math.log(weight)
+            weights *= weight
+            if place % _TOGETHER == _TOGETHER - 1 or place == len(alone) - 1:
+                logs += math.log(weights)
+                weights = 1.0
             _free_columns(cross[draw, host], known, values[draw], free, column)
+            inverse = 1.0 / weight
             for i in range(k + 1):
-                part = column[i] / weight
+                part = column[i] * inverse
                 for j in range(i + 1):
                     work[i, j] -= part * column[j]
         if m > 0:

@@ -22,7 +22,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.arrow import Moments, Rows, no_moments, solve, upper_triangle
-from ladderfit.kernels.sums import add_packed
+from ladderfit.kernels.sums import add_packed, chebyshev
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -78,7 +78,7 @@ class SumTable:
         """All sums at the given extra variances, packed, shape (b, q)."""
         low, high = np.log(self.low + self.shift), np.log(self.high + self.shift)
         x = (2.0 * np.log(extra + self.shift) - low - high) / (high - low)
-        return np.asarray(_chebyshev(x, len(self.coefficients)) @ self.coefficients)
+        return np.asarray(chebyshev(x, len(self.coefficients)) @ self.coefficients)
 
     def covers(self, low: float, high: float) -> bool:
         """Whether the table holds this range without being much wider."""
@@ -242,19 +242,10 @@ def _extra(points: FloatArray, ends: tuple[float, float], shift: float) -> Float
     return np.maximum(np.exp(middle + half * points) - shift, 0.0)
 
 
-def _chebyshev(x: FloatArray, count: int) -> FloatArray:
-    """Chebyshev polynomials 0 to count - 1 at x, shape (b, count)."""
-    basis = np.empty((count, len(x)))
-    basis[0], basis[1] = 1.0, x
-    for order in range(2, count):
-        basis[order] = 2.0 * x * basis[order - 1] - basis[order - 2]
-    return basis.T
-
-
 def _coefficients(values: FloatArray) -> FloatArray:
     """Chebyshev coefficients from values at the Clenshaw-Curtis points."""
     count = len(values)
-    basis = _chebyshev(_points(count), count)
+    basis = chebyshev(_points(count), count)
     weight = np.ones(count)
     weight[[0, -1]] = 0.5
     scaled = 2.0 / (count - 1) * weight[:, None] * (basis * weight[:, None]).T

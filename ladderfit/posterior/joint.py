@@ -9,9 +9,8 @@ from typing import Protocol
 
 import numpy as np
 
-from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, rows, solve
+from ladderfit.kernels.arrow import Moments, Rows, Solution, no_moments, solve
 from ladderfit.kernels.compiling import side_by_side
-from ladderfit.kernels.coupled import CoupledData, coupled_rows
 from ladderfit.kernels.reduced import reduced
 from ladderfit.ladder import Ladder
 from ladderfit.names import with_group
@@ -25,8 +24,8 @@ from ladderfit.posterior.coupled import (
 )
 from ladderfit.posterior.errors_in_inputs import input_errors
 from ladderfit.posterior.frame import Frame, host_frame
+from ladderfit.posterior.known_rows import known_rows
 from ladderfit.posterior.limits import Limits, limits_of
-from ladderfit.posterior.moduli import log_modulus_norm, tilt_of
 from ladderfit.posterior.parallaxes import ParallaxTerms, parallax_terms
 from ladderfit.posterior.populations import population_blocks
 from ladderfit.posterior.robust import RobustHosts, robust_hosts
@@ -37,7 +36,10 @@ from ladderfit.posterior.supernovae import correlated_samples, ladder_rows
 from ladderfit.samples import FloatArray
 
 _CHUNK = 512  # draws evaluated at once: their sums stay in the processor's cache
+_WORTH_HALVING = 256  # draws below which a second thread does not pay
 _FARTHEST = 8.0  # prior widths up to which a scatter's sums are tabulated
+
+_Piece = tuple[FloatArray, np.random.Generator]  # some phi, and what draws theta for them
 
 
 class Tabulated(Protocol):
@@ -99,6 +101,37 @@ class Posterior:
         parts = side_by_side(self._log_density, _chunks(z))
         return np.concatenate(parts) if parts else np.empty(0)
 
+    @property
+    def theta_is_cheap(self) -> bool:
+        """Whether a draw of theta costs little beside the density of phi."""
+        return self.robust is None and self.limits is None
+
+    def weighed(self, z: FloatArray, rng: np.random.Generator) -> tuple[FloatArray, FloatArray]:
+        """Log densities, shape (b,), and a draw of theta given each phi, as `theta` has it."""
+
+        def part(piece: _Piece) -> tuple[FloatArray, FloatArray]:
+            solution = self.solution(piece[0])
+            return self._log_density(piece[0], solution), self._theta(piece, solution)
+
+        density, theta = zip(*side_by_side(part, _with_generators(z, rng)), strict=True)
+        return np.concatenate(density), np.concatenate(theta)
+
+    def theta(self, z: FloatArray, rng: np.random.Generator) -> FloatArray:
+        """Exact draws of all coefficients and moduli given phi.
+
+        Parameters
+        ----------
+        z : array, shape (b, d)
+            Draws of phi, in coordinates.
+        rng : numpy Generator
+
+        Returns
+        -------
+        array, shape (b, k + h)
+            Coefficients in the order of `Split.coefficients`, then host moduli.
+        """
+        return np.concatenate(side_by_side(self._theta, _with_generators(z, rng)))
+
     def draw(self, z: FloatArray, rng: np.random.Generator) -> dict[str, FloatArray]:
         """Exact draws of everything given phi, in the parameters' own units.
 
@@ -113,10 +146,7 @@ class Posterior:
         dict
             One array of shape (b,) per parameter and host modulus.
         """
-        white = rng.standard_normal((len(z), len(self.split.theta) + self.frame.hosts))
-        parts = list(zip(_chunks(z), _chunks(white), strict=True))
-        pieces = side_by_side(lambda part: self._draw(*part), parts)
-        return {name: np.concatenate([piece[name] for piece in pieces]) for name in pieces[0]}
+        return self.named(z, self.theta(z, rng))
 
     def focus(self, low: FloatArray, high: FloatArray) -> None:
         """Tabulate star sums more finely where scatters lie between two points of phi.
@@ -153,8 +183,8 @@ class Posterior:
             return self.robust.solution(total, self.split.known, given, values)
         return solve(total, self.split.known, self.split.known_values(z))
 
-    def _log_density(self, z: FloatArray) -> FloatArray:
-        solution = self.solution(z)
+    def _log_density(self, z: FloatArray, solution: Solution | None = None) -> FloatArray:
+        solution = self.solution(z) if solution is None else solution
         total = solution.log_evidence + self.split.log_prior(z)
         if self.limits is not None:
             values = partial(self.split.value, z=z)
@@ -169,8 +199,10 @@ class Posterior:
             return np.empty((len(z), 0))
         return self.parallaxes.log_density(partial(self.split.value, z=z))
 
-    def _draw(self, z: FloatArray, white: FloatArray) -> dict[str, FloatArray]:
-        solution = self.solution(z)
+    def _theta(self, piece: _Piece, solution: Solution | None = None) -> FloatArray:
+        z, rng = piece
+        white = rng.standard_normal((len(z), len(self.split.theta) + self.frame.hosts))
+        solution = self.solution(z) if solution is None else solution
         if self.robust is not None:
             values = partial(self.split.value, z=z)
             coefficients, local = self.robust.draw(solution, values, white)
@@ -179,16 +211,27 @@ class Posterior:
         if self.limits is not None:
             values = partial(self.split.value, z=z)
             self.limits.redraw(solution, values, local, white[:, -self.frame.hosts :])
+        moduli = self.frame.modulus(local, coefficients)
+        return np.concatenate([coefficients, moduli], axis=1)
+
+    def named(self, z: FloatArray, theta: FloatArray) -> dict[str, FloatArray]:
+        """Draws of phi, shape (b, d), and `theta` in the parameters' own units.
+
+        Returns
+        -------
+        dict
+            One array of shape (b,) per parameter and host modulus.
+        """
+        columns = np.ascontiguousarray(theta.T)
+        coefficients = columns[: len(self.split.coefficients)]
         draws: dict[str, FloatArray] = {}
-        for place, name in enumerate(self.split.coefficients):
-            value = coefficients[:, place]
+        for name, value in zip(self.split.coefficients, coefficients, strict=True):
             draws[name] = 10.0 ** (0.2 * value) if name in self.split.logarithmic else value
         draws |= _derived(self.split, coefficients)
         for name in (*self.split.phi_names, *self.split.fixed):
             draws.setdefault(name, self.split.value(name, z))
-        moduli = self.frame.modulus(local, coefficients)
-        for place, host in enumerate(self.ladder.hosts):
-            draws[with_group("modulus", host)] = moduli[:, place]
+        for host, modulus in zip(self.ladder.hosts, columns[len(coefficients) :], strict=True):
+            draws[with_group("modulus", host)] = modulus
         return draws
 
     def coordinates(self, values: Mapping[str, float]) -> FloatArray:
@@ -210,8 +253,7 @@ def posterior(ladder: Ladder, before: Posterior | None = None) -> Posterior:
     names = parts.coefficients
     frame = host_frame(ladder, len(names))
     constant = no_moments(1, frame.hosts, len(names), coupled_hosts(ladder))
-    constant = constant + _anchors(ladder, frame, names) + _theta_prior(parts, frame)
-    constant = constant + _distances(ladder, frame)
+    constant = constant + known_rows(ladder, frame, parts)
     blocks: list[Block] = []
     earlier = () if before is None else before.blocks
     integrated = population_blocks(ladder, frame, names, earlier)
@@ -260,8 +302,17 @@ def _star_block(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Block |
     return None
 
 
+def _with_generators(z: FloatArray, rng: np.random.Generator) -> list[_Piece]:
+    """Pieces with a generator each, so that threads draw the same numbers as one would."""
+    parts = _chunks(z)
+    return list(zip(parts, rng.spawn(len(parts)), strict=True))
+
+
 def _chunks(values: FloatArray) -> list[FloatArray]:
-    return [values[start : start + _CHUNK] for start in range(0, len(values), _CHUNK)]
+    """Pieces for two threads to share: the same whether there is one or two."""
+    pairs = -(-len(values) // (2 * _CHUNK))
+    size = _CHUNK if len(values) < _WORTH_HALVING else -(-len(values) // (2 * pairs))
+    return [values[start : start + size] for start in range(0, len(values), size)]
 
 
 def _kept(
@@ -286,58 +337,11 @@ def _derived(parts: Split, coefficients: FloatArray) -> dict[str, FloatArray]:
         return {}
     if "hubble_constant" not in places:
         return {}
-    rate = coefficients[:, places["hubble_constant"]]
-    return {"intercept": 0.2 * (rate - coefficients[:, places["peak_magnitude"]]) - 5.0}
+    rate = coefficients[places["hubble_constant"]]
+    return {"intercept": 0.2 * (rate - coefficients[places["peak_magnitude"]]) - 5.0}
 
 
 def _largest(ladder: Ladder, scatter: str) -> float:
     """A variance that the scatter's prior makes very unlikely to be exceeded."""
     prior = ladder.choices.prior(scatter)
     return min(prior.bounds[1], prior.centre + _FARTHEST * prior.sd) ** 2
-
-
-def _anchors(ladder: Ladder, frame: Frame, names: tuple[str, ...]) -> Moments:
-    """Geometric moduli; what several have in common is a coefficient of its own."""
-    anchors = ladder.geometric
-    host = np.array([anchor.host for anchor in anchors], dtype=int)
-    modulus = np.array([anchor.modulus for anchor in anchors], dtype=float)
-    variance = np.array([anchor.error**2 for anchor in anchors], dtype=float)
-    columns = np.zeros((len(anchors), len(names)))
-    for name, shared in ladder.choices.anchors.shared_errors.items():
-        place = with_group("shared_error", name)
-        if place in names:
-            loads = [shared.loads.get(anchor.name, 0.0) for anchor in anchors]
-            columns[:, names.index(place)] = shared.error * np.array(loads)
-    if ladder.anchor_covariance is None:
-        return frame.modulus_rows(host, columns, modulus, variance).moments(np.zeros(1))
-    whole, coupled = frame.columns(host, columns, modulus), coupled_hosts(ladder)
-    data = CoupledData(host, whole, ladder.anchor_covariance, frame.hosts, coupled)
-    return coupled_rows(data, None).moments(np.zeros(1))
-
-
-def _theta_prior(parts: Split, frame: Frame) -> Moments:
-    columns = np.zeros((len(parts.theta), len(parts.coefficients)))
-    for row, name in enumerate(parts.theta):
-        columns[row, parts.coefficients.index(name)] = 1.0
-    mean = np.array([prior.mean for prior in parts.theta_prior], dtype=float)
-    variance = np.array([prior.deviation**2 for prior in parts.theta_prior], dtype=float)
-    nowhere = np.full(len(parts.theta), -1)
-    return rows(nowhere, columns, mean, variance, frame.hosts).moments(np.zeros(1))
-
-
-def _distances(ladder: Ladder, frame: Frame) -> Moments:
-    """The prior of the moduli, exp(tilt mu) from 0 to the largest modulus.
-
-    The closed form integrates over the whole line; moduli within the bounds by
-    many of their errors make the difference nil.
-    """
-    width = frame.centroid.shape[1]
-    prior = ladder.choices.hosts.distance_prior
-    tilt, hosts = tilt_of(prior), frame.hosts
-    empty = no_moments(1, hosts, width)
-    cross, square = empty.cross, empty.square
-    cross[:, :, -1] = tilt
-    pull = -tilt * frame.centroid.sum(axis=0)
-    square[:, :-1, -1] = square[:, -1, :-1] = pull
-    constant = np.array([tilt * frame.origin.sum() - hosts * log_modulus_norm(prior)])
-    return Moments(empty.local, cross, square, constant)

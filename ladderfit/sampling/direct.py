@@ -21,6 +21,7 @@ from ladderfit.sampling.mode import LogDensity, Mode, find_modes_from
 from ladderfit.sampling.proposal import Component, Proposal, component
 
 FloatArray = npt.NDArray[np.float64]
+WithTheta = Callable[[FloatArray, np.random.Generator], tuple[FloatArray, FloatArray]]
 Progress = Callable[[str, float], None]
 
 _FREEDOM = 12.0
@@ -53,6 +54,9 @@ class Target:
     ----------
     log_density : callable
         Maps shape (b, d) to (b,).
+    with_theta : callable, optional
+        Maps z, shape (b, d), and a generator to log densities, shape (b,), and one draw of
+        all that z leaves open for each, shape (b, q): for targets where that costs little.
     start, scale : array, shape (d,)
         A starting point, and the width of the prior in each coordinate.
     folded : array of bool, shape (d,)
@@ -73,6 +77,7 @@ class Target:
     focus: Callable[[FloatArray, FloatArray], None] | None = None
     near: Near | None = None
     pool: int | None = None
+    with_theta: WithTheta | None = None
 
 
 @dataclass(frozen=True)
@@ -93,6 +98,8 @@ class DirectDraws:
         Every separate mode found, by mass.
     pool : int
         How many draws had weights.
+    theta : array, shape (n, q), or None
+        What was drawn along with each, if the target does that.
     """
 
     z: FloatArray
@@ -103,6 +110,7 @@ class DirectDraws:
     log_evidence_error: float
     modes: tuple[Mode, ...]
     pool: int = 0
+    theta: FloatArray | None = None
 
     @property
     def trusted(self) -> bool:
@@ -140,12 +148,13 @@ def draw_direct(
     tell("drawing", 0.2)
     proposal = _first_proposal(modes, target.folded)
     for left in reversed(range(_ROUNDS)):
-        z, log_weight, good = _pool(target, proposal, draws, rng, last=left == 0)
+        pool, good = _pool(target, proposal, draws, rng, last=left == 0)
         if good:
             break
-        proposal = _adapted(proposal, z, smoothed_weights(log_weight)[0], target.folded)
+        weights, _ = smoothed_weights(pool.log_weight)
+        proposal = _adapted(proposal, pool.z, weights, target.folded)
     tell("drawing", 1.0)
-    return _resampled(z, log_weight, draws, rng, modes)
+    return _resampled(pool, draws, rng, modes)
 
 
 def find_modes(target: Target, rng: np.random.Generator, others: int = 2) -> tuple[Mode, ...]:
@@ -157,6 +166,7 @@ def find_modes(target: Target, rng: np.random.Generator, others: int = 2) -> tup
             return (_fold(mode, target.folded),)
     spread = 0.7 * target.scale * rng.standard_normal((others, len(target.start)))
     starts = np.array([target.start, *(target.start + spread)])
+    starts[:, target.folded] = np.abs(starts[:, target.folded])
     usable = np.isfinite(target.log_density(starts))
     if not usable.any():
         raise SamplingError(
@@ -214,13 +224,35 @@ def _first_proposal(modes: tuple[Mode, ...], folded: npt.NDArray[np.bool_]) -> P
     return Proposal(tuple(components), folded)
 
 
+@dataclass(frozen=True)
+class _Pool:
+    """Draws of the proposal, their log weights, and theta where it came along."""
+
+    z: FloatArray
+    log_weight: FloatArray
+    theta: FloatArray | None
+
+    def __add__(self, other: _Pool) -> _Pool:
+        both = self.theta is not None and other.theta is not None
+        return _Pool(
+            np.concatenate([self.z, other.z]),
+            np.concatenate([self.log_weight, other.log_weight]),
+            np.concatenate([self.theta, other.theta]) if both else None,
+        )
+
+
 def _weigh(
-    target: Target, proposal: Proposal, size: int, rng: np.random.Generator
-) -> tuple[FloatArray, FloatArray]:
+    target: Target, proposal: Proposal, size: int, rng: np.random.Generator, *, along: bool = True
+) -> _Pool:
     z = proposal.draw(rng, size)
-    log_weight = target.log_density(z) - proposal.log_density(z)
+    theta = None
+    if along and target.with_theta is not None:
+        log_density, theta = target.with_theta(z, rng)
+    else:
+        log_density = target.log_density(z)
+    log_weight = log_density - proposal.log_density(z)
     _need_finite(float(np.max(log_weight)))
-    return z, log_weight
+    return _Pool(z, log_weight, theta)
 
 
 def _need_finite(value: float) -> None:
@@ -233,21 +265,21 @@ def _need_finite(value: float) -> None:
 
 def _pool(
     target: Target, proposal: Proposal, draws: int, rng: np.random.Generator, *, last: bool
-) -> tuple[FloatArray, FloatArray, bool]:
+) -> tuple[_Pool, bool]:
     """Weighted draws, and whether they are good: a pilot, and where it is good or the last, all."""
-    z, log_weight = _weigh(target, proposal, _PILOT, rng)
-    weights, k = smoothed_weights(log_weight)
-    efficiency = weights_ess(weights) / len(z)
+    found = _weigh(target, proposal, _PILOT, rng)
+    weights, k = smoothed_weights(found.log_weight)
+    efficiency = weights_ess(weights) / len(found.z)
     _need_finite(efficiency)
     if not last and (efficiency < _GOOD_EFFICIENCY or k > _GOOD_K):
-        return z, log_weight, False
+        return found, False
     pool = int(np.ceil(_OVERSAMPLE * draws / max(efficiency, 0.1)))
     if target.pool is not None and abs(pool - target.pool) <= _NEARLY * pool:
         pool = target.pool
     if pool > _PILOT:
-        more, log_more = _weigh(target, proposal, pool - _PILOT, rng)
-        z, log_weight = np.concatenate([z, more]), np.concatenate([log_weight, log_more])
-    return z, log_weight, last or smoothed_weights(log_weight)[1] < _GOOD_K
+        along = efficiency >= _GOOD_EFFICIENCY  # else most of theta would be thrown away
+        found = found + _weigh(target, proposal, pool - _PILOT, rng, along=along)
+    return found, last or smoothed_weights(found.log_weight)[1] < _GOOD_K
 
 
 def _adapted(
@@ -275,30 +307,28 @@ def _adapted(
 
 
 def _resampled(
-    z: FloatArray,
-    log_weight: FloatArray,
-    draws: int,
-    rng: np.random.Generator,
-    modes: tuple[Mode, ...],
+    pool: _Pool, draws: int, rng: np.random.Generator, modes: tuple[Mode, ...]
 ) -> DirectDraws:
     """Resample the weights away (systematic resampling, Kitagawa 1996) and take stock."""
-    weights, k = smoothed_weights(log_weight)
-    pool_ess = weights_ess(weights)
-    top = float(np.max(log_weight))
-    ratio = np.exp(log_weight - top)
+    weights, k = smoothed_weights(pool.log_weight)
+    pool_ess, size = weights_ess(weights), len(weights)
+    top = float(np.max(pool.log_weight))
+    ratio = np.exp(pool.log_weight - top)
     mean = float(ratio.mean())
     relative_error = float(ratio.std() / (mean * np.sqrt(len(ratio))))
     points = (rng.uniform() + np.arange(draws)) / draws
-    chosen = np.minimum(np.searchsorted(np.cumsum(weights), points), len(z) - 1)
-    count = np.bincount(chosen, minlength=len(z))
+    chosen = np.minimum(np.searchsorted(np.cumsum(weights), points), size - 1)
+    count = np.bincount(chosen, minlength=size)
     kish = draws**2 / float(np.sum(count.astype(float) ** 2))
+    chosen = rng.permutation(chosen)
     return DirectDraws(
-        z=rng.permutation(z[chosen]),
+        z=pool.z[chosen],
         pareto_k=k,
-        efficiency=pool_ess / len(z),
+        efficiency=pool_ess / size,
         ess=min(kish, pool_ess),
         log_evidence=top + float(np.log(mean)),
         log_evidence_error=relative_error,
         modes=modes,
-        pool=len(z),
+        pool=size,
+        theta=None if pool.theta is None else pool.theta[chosen],
     )

@@ -19,6 +19,7 @@ LogDensity = Callable[[FloatArray], FloatArray]
 
 _FAN = np.array([0.02, 0.1, 0.3, 0.6, 1.0, 1.5])
 _LONGEST = 10.0  # of the scale given, for one step in any direction
+_MEETING = 1.0  # widths between two ascents, by the curvature at both, that have met
 _DIFFERENCE = 0.05  # of the current width, for central differences
 
 
@@ -53,6 +54,8 @@ def find_modes_from(
 ) -> list[Mode]:
     """Climb from each start to a local maximum, all of them in the same calls.
 
+    Of two climbs that meet, the lower one ends there; every other one returns a mode.
+
     Parameters
     ----------
     log_density : callable
@@ -76,6 +79,7 @@ def find_modes_from(
         fans = [climb.fan(found) for climb, found in zip(left, stencils, strict=True)]
         for climb, fan, found in zip(left, fans, _apart(log_density, fans), strict=True):
             climb.move(fan, found)
+        climbs = _parted(climbs)
     return [Mode(c.point, c.value, c.covariance, c.converged) for c in climbs]
 
 
@@ -118,6 +122,23 @@ class _Climb:
         settled = bool(np.all(np.abs(width / self.width - 1.0) < 0.3))
         self.width = width
         self.converged = self.length < 0.02 and settled
+
+
+def _parted(climbs: list[_Climb]) -> list[_Climb]:
+    """The climbs, the highest of those that have met alone."""
+    kept: list[_Climb] = []
+    for climb in sorted(climbs, key=lambda climb: -climb.value):
+        if not any(_met(climb, other) for other in kept):
+            kept.append(climb)
+    return kept
+
+
+def _met(one: _Climb, other: _Climb) -> bool:
+    if abs(one.value - other.value) > 1.0:
+        return False
+    gap = one.point - other.point
+    square = [float(gap @ np.linalg.solve(c.covariance, gap)) for c in (one, other)]
+    return max(square) < _MEETING**2
 
 
 def _apart(log_density: LogDensity, groups: list[FloatArray]) -> list[FloatArray]:

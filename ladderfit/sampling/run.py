@@ -55,9 +55,10 @@ def draw(
     """
     seed = ladder.choices.sampling.seed if seed is None else seed
     draws = ladder.choices.sampling.draws if draws is None else draws
-    joint = posterior(ladder)
-    check_determined(joint)
-    return drawn(joint, target(joint), seed, draws, progress)[0]
+    with one_blas_thread():
+        joint = posterior(ladder)
+        check_determined(joint)
+        return drawn(joint, target(joint), seed, draws, progress)[0]
 
 
 def drawn(
@@ -69,7 +70,8 @@ def drawn(
     rng = np.random.default_rng(seed)
     with one_blas_thread():
         found = draw_direct(aim, draws, rng, progress)
-        values = ordered(joint.draw(found.z, rng))
+        theta = found.theta if found.theta is not None else joint.theta(found.z, rng)
+        values = ordered(joint.named(found.z, theta))
     diagnostics = _diagnostics(joint, found, values, seed)
     return Result(joint.ladder.choices, values, diagnostics, joint.ladder), found
 
@@ -91,6 +93,7 @@ def target(joint: Posterior) -> Target:
         np.array([coordinate.scale for coordinate in phi]),
         np.array([coordinate.kind == "folded" for coordinate in phi], dtype=bool),
         joint.focus,
+        with_theta=joint.weighed if joint.theta_is_cheap else None,
     )
 
 

@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 
+from ladderfit.kernels.compiling import one_blas_thread
 from ladderfit.kernels.reduced import SumTable
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.determined import check_determined
@@ -56,16 +57,17 @@ class WarmDrawer:
         self, ladder: Ladder, draws: int | None, seed: int | None, pool: int | None
     ) -> Result:
         sampling = ladder.choices.sampling
-        joint = posterior(ladder, self._last)
-        check_determined(joint)
-        aim = target(joint)
-        near = self._near(joint, aim)
-        result, found = drawn(
-            joint,
-            aim if near is None else replace(aim, near=near, pool=pool),
-            sampling.seed if seed is None else seed,
-            sampling.draws if draws is None else draws,
-        )
+        with one_blas_thread():
+            joint = posterior(ladder, self._last)
+            check_determined(joint)
+            aim = target(joint)
+            near = self._near(joint, aim)
+            result, found = drawn(
+                joint,
+                aim if near is None else replace(aim, near=near, pool=pool),
+                sampling.seed if seed is None else seed,
+                sampling.draws if draws is None else draws,
+            )
         self._last, self._phi, self._pool = joint, found.z, found.pool
         self._mode = found.modes[0] if len(found.modes) == 1 else None
         return result
