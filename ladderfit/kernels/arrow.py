@@ -23,7 +23,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import in_halves, side_by_side
-from ladderfit.kernels.elimination import draw_coupled, eliminate
+from ladderfit.kernels.elimination import draw_coupled, draw_each, eliminate
 from ladderfit.kernels.sums import add_rows
 
 FloatArray = npt.NDArray[np.float64]
@@ -262,26 +262,20 @@ class Solution:
         white : array, shape (b, f + h)
             Standard normal numbers.
         """
-        count = len(self.free)
-        globals_ = self.coefficients.copy()
-        upper = np.swapaxes(self.factor, 1, 2)
-        globals_[:, self.free] += np.linalg.solve(upper, white[:, :count, None])[..., 0]
         cross, local = self.moments.cross, self.moments.local
-        expected = np.einsum("bhk,bk->bh", cross[:, :, :-1], globals_)
-        linear = cross[:, :, -1] - expected
-        noise = white[:, count:]
+        globals_, drawn = self.coefficients.copy(), np.empty(local.shape)
+        inputs = [np.ascontiguousarray(each) for each in (self.factor, cross, local)]
+        draw_each(*inputs, self.free, np.ascontiguousarray(white), globals_, drawn)
         coupled = self.moments.coupled
         if coupled is None or self.moments.coupling is None:
-            return globals_, linear / local + noise / np.sqrt(local)
-        drawn = np.empty(local.shape)
-        alone = np.setdiff1d(np.arange(local.shape[1]), coupled)
-        weight = local[:, alone]
-        drawn[:, alone] = linear[:, alone] / weight + noise[:, alone] / np.sqrt(weight)
+            return globals_, drawn
         precision = self.moments.coupling.copy()
         places = np.arange(len(coupled))
         precision[:, places, places] += local[:, coupled]
-        together = np.ascontiguousarray(linear[:, coupled])
-        draw_coupled(precision, together, np.ascontiguousarray(noise[:, coupled]))
+        expected = np.einsum("bhk,bk->bh", cross[:, coupled, :-1], globals_)
+        together = np.ascontiguousarray(cross[:, coupled, -1] - expected)
+        noise = white[:, len(self.free) + coupled]
+        draw_coupled(precision, together, np.ascontiguousarray(noise))
         drawn[:, coupled] = together
         return globals_, drawn
 

@@ -118,6 +118,38 @@ def eliminate_coupled(dense: FloatArray, m: int, work: FloatArray) -> float:
 
 
 @compiled
+def draw_each(
+    factor: FloatArray,
+    cross: FloatArray,
+    local: FloatArray,
+    free: IntArray,
+    white: FloatArray,
+    globals_: FloatArray,
+    locals_: FloatArray,
+) -> None:
+    """Draws of the free globals, added to their means in `globals_`, and of every local.
+
+    `factor` (b, f, f) is the lower Cholesky factor of the globals' precision, `white`
+    (b, f + h) is standard normal; fills `globals_` (b, k) and `locals_` (b, h).
+    """
+    k, hosts = len(free), local.shape[1]
+    last = cross.shape[2] - 1
+    off = np.empty(k)
+    for draw in range(len(local)):
+        for i in range(k - 1, -1, -1):
+            value = white[draw, i]
+            for j in range(i + 1, k):
+                value -= factor[draw, j, i] * off[j]
+            off[i] = value / factor[draw, i, i]
+            globals_[draw, free[i]] += off[i]
+        for host in range(hosts):
+            linear, weight = cross[draw, host, last], local[draw, host]
+            for i in range(last):
+                linear -= cross[draw, host, i] * globals_[draw, i]
+            locals_[draw, host] = linear / weight + white[draw, k + host] / math.sqrt(weight)
+
+
+@compiled
 def draw_coupled(precision: FloatArray, linear: FloatArray, noise: FloatArray) -> None:
     """Replace `linear` (b, m) by draws; `precision` (b, m, m) is overwritten."""
     batch, m = linear.shape
