@@ -264,8 +264,15 @@ class Solution:
         """
         cross, local = self.moments.cross, self.moments.local
         globals_, drawn = self.coefficients.copy(), np.empty(local.shape)
-        inputs = [np.ascontiguousarray(each) for each in (self.factor, cross, local)]
-        draw_each(*inputs, self.free, np.ascontiguousarray(white), globals_, drawn)
+        draw_each(
+            np.ascontiguousarray(self.factor),
+            np.ascontiguousarray(cross),
+            np.ascontiguousarray(local),
+            self.free,
+            np.ascontiguousarray(white),
+            globals_,
+            drawn,
+        )
         coupled = self.moments.coupled
         if coupled is None or self.moments.coupling is None:
             return globals_, drawn
