@@ -74,7 +74,7 @@ class BoardPanel:
         self.stop = button("Stop", "Stop, and keep what is drawn", self._stop, "52px")
         self.resume = button("Resume", "Go on until so many effective draws", self._resume, "62px")
         self.goal = widgets.Text(
-            tooltip="Effective draws of the worst parameter", layout=widgets.Layout(width="64px")
+            tooltip="Effective draws of the worst parameter", layout=widgets.Layout(width="84px")
         )
         self.goal.value = str(session.ladder.choices.sampling.draws)
         self.beside = widgets.Dropdown(

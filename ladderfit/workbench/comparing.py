@@ -85,8 +85,9 @@ def _numbers(one: Side, other: Side) -> str:
         (_words(name), "" if d is None else signed(d), _pair(before, error), _pair(mean, sd))
         for name, before, error, mean, sd, d in rows
     ]
-    head = ("parameter", "change [sd]", other.words, one.words)
-    return "<h4>Numbers, those that moved most first</h4>" + table(head, body)
+    head = ("parameter", "change", other.words, one.words)
+    words = f"Numbers, those that moved most first; change in errors of {other.words}"
+    return f"<h4>{html.escape(words)}</h4>" + table(head, body)
 
 
 def _words(name: str) -> str:

@@ -201,6 +201,14 @@ class Frame:
         claims = self._beside(result) if bar.view == "published" else Beside()
         return Shown(result, bar.rung, bar.column, aside, worked, full, self.published, claims)
 
+    @property
+    def trouble(self) -> str:
+        """What is wrong with the claims file, where the view on show is of claims."""
+        result = self.session.result
+        if result is None or self.bar.view != "published" or self.bar.shows in ("numbers", "board"):
+            return ""
+        return " ".join(f"{line}." for line in self.claims.beside(result).trouble)
+
     def _beside(self, result: Result) -> Beside:
         """The claims of the file picked, held against a posterior."""
         self.bar.offer_claims(self.claims.offered(), self.claims.chosen)

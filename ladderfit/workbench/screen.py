@@ -276,6 +276,9 @@ class Workbench:
     @_guarded
     def _view(self) -> None:
         self.frame.show()
+        if self.session.trouble is None and self.session.result is not None:
+            good, words = trust(self.session.result)
+            self._say(self.frame.trouble or words, good=good and not self.frame.trouble)
 
     @_guarded
     def _beat(self, _: Any) -> None:

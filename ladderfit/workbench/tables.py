@@ -127,13 +127,15 @@ def all_numbers(
                 "" if change is None else signed(change),
                 rounded(interval.low, interval.sd).value,
                 rounded(interval.high, interval.sd).value,
+                *(("" if told is None else f"{told:g}".replace("-", MINUS),) if published else ()),
                 parameter(name).unit,
-                "" if told is None else f"{told:g}",
             )
         )
     more = ("in full",) if full is not None else ()
-    head = ("parameter", "mean", "sd", *more, "change [sd]", "16 %", "84 %", "unit", "published")
-    return table(head, rows)
+    also = ("published",) if published else ()
+    head = ("parameter", "mean", "sd", *more, "change", "16 %", "84 %", *also, "unit")
+    words = "" if pinned is None else "<p>Change: in errors of the baseline.</p>"
+    return words + table(head, rows)
 
 
 def _of_run(full: Result, name: str) -> tuple[str]:

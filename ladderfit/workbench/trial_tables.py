@@ -147,17 +147,17 @@ def published(shown: Shown) -> str:
             interval = Interval.of(shown.result.draws[name])
             off = (value - interval.mean) / interval.sd if interval.sd > 0.0 else math.nan
             words = f"{value:g}".replace("-", MINUS)
-            rows.append((_title(name), "entered here", words, str(interval), _shift(off)))
+            rows.append((_title(name), _shift(off), words, str(interval), "entered here"))
     for one in beside.rows:
         if not one.reason:
             claim = one.claim
             rows.append(
                 (
-                    claim.name or claim.words,
-                    claim.paper,
-                    claim.printed,
-                    str(rounded(one.mean, one.sd)) if one.sd > 0.0 else f"{one.mean:.6g} (fixed)",
+                    f"{claim.name or claim.words} [{claim.unit}]",
                     _shift(one.shift),
+                    claim.printed.removesuffix(f" {claim.unit}"),
+                    str(rounded(one.mean, one.sd)) if one.sd > 0.0 else f"{one.mean:.6g} (fixed)",
+                    claim.paper,
                 )
             )
     left = [
@@ -170,7 +170,7 @@ def published(shown: Shown) -> str:
     if beside.title:
         text += f"<h4>{html.escape(beside.title)}</h4>"
     if rows:
-        text += table(("number", "paper", "published", "posterior", "shift"), rows)
+        text += table(("number", "shift", "published", "posterior", "paper"), rows)
         text += _SHIFT
     if left:
         text += "<h4>Not compared</h4>" + _sentences(left)

@@ -59,7 +59,8 @@ function drawRung(svg, rung, row, open) {
   add(segment, "rect", { class: "lf-target", x: low - 8, y: y - ROW / 2 + 1, width: high - low + 16, height: ROW - 2, rx: 4 });
   add(segment, "line", { class: "lf-line", x1: low, x2: high, y1: y, y2: y });
   const name = add(segment, "text", { class: "lf-name", y: y + 4 }, rung.words);
-  const room = high + 16 + (name.getComputedTextLength() || 7.2 * rung.words.length) < width;
+  const wide = Math.max(name.getComputedTextLength(), 7.2 * rung.words.length); // as if it were bold
+  const room = high + 15 + wide < width;
   name.setAttribute("x", room ? high + 13 : low - 13);
   name.setAttribute("text-anchor", room ? "start" : "end");
   for (const mark of rung.marks) {

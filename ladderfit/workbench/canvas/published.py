@@ -17,11 +17,12 @@ from ladderfit.workbench.canvas.margins import margins
 from ladderfit.workbench.claims import Compared
 from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown
+from ladderfit.workbench.why import signed
 
 MOST_ROWS = 16
 _TWO_LINES = 9  # rows up to which there is room for two lines each
 _FARTHEST = 6.0  # combined errors, beyond which an arrow points outwards
-_LETTERS = 31
+_LETTERS = 36
 _WIDE = 6.0  # inches
 
 
@@ -60,7 +61,7 @@ def published(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
         _draw(axes, place, row, theme)
     axes.axvline(0.0, color=theme.muted, linewidth=0.9, zorder=1.0)
     axes.set_yticks(range(len(rows[:MOST_ROWS])), [row.words for row in rows[:MOST_ROWS]])
-    axes.tick_params(axis="y", labelsize=7.0)
+    axes.tick_params(axis="y", labelsize=6.6)
     axes.set_ylim(len(rows[:MOST_ROWS]) - 0.4, -0.6)
     reach = 1.15 * float(np.clip(np.max(np.abs(axes.dataLim.intervalx)), 2.5, _FARTHEST))
     axes.set_xlim(-reach, reach)
@@ -135,6 +136,13 @@ def _draw(axes: Axes, place: int, row: _Row, theme: Theme) -> None:
             at, place, xerr=None if beyond or not row.theirs else row.theirs, marker=marker,
             markersize=5.0, color=theirs.colour, elinewidth=1.0, linestyle="none",
         )  # fmt: skip
+        if beyond:
+            side = 1.0 if row.shift > 0.0 else -1.0
+            axes.annotate(
+                signed(row.shift), (at, place), xytext=(-6.0 * side, 0.0),
+                textcoords="offset points", ha="right" if side > 0.0 else "left", va="center",
+                fontsize=6.6, color=theme.ink,
+            )  # fmt: skip
     axes.annotate(
         row.value, (1.02, place), xycoords=("axes fraction", "data"), va="center", fontsize=7.5
     )
