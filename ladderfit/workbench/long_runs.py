@@ -132,6 +132,8 @@ class LongRuns:
 
     def refresh(self) -> bool:
         """Have every run read again, also those of other sessions; as `look`."""
+        for path in self.folder.glob("*/run.json"):  # listed at once, read beside the page
+            self._known.setdefault(path.parent.name, LongRun(path.parent.name))
         self._wanted = True
         return self.look()
 
