@@ -11,7 +11,8 @@ from photometry_ladders import MODULI, TRUTH, choices, ladder, tables
 from scipy.stats import kstest
 
 import ladderfit as lf
-from ladderfit.checks.predictive import Checks, _statistics, predictive_checks
+from ladderfit.checks.predictive import Checks, predictive_checks
+from ladderfit.checks.statistics import statistics_of
 from ladderfit.ladder import Ladder, build_ladder
 from ladderfit.mock import mock_from_ladder
 from ladderfit.posterior.deviations import cepheid_deviations, parallax_deviations
@@ -109,7 +110,7 @@ def test_at_a_single_draw_they_are_uniform(in_full: bool) -> None:
         truth["metallicity"] += 0.5 * rng.normal()
         result = draw(mock_from_ladder(base, truth, rng), seed=seed, draws=200)
         (sample,) = predictive_checks(result, seed=seed, draws=1).samples
-        for about, z, statistic in _statistics(sample):
+        for about, z, statistic in statistics_of(sample):
             if "colour" in about:  # the colour belongs to one draw
                 continue
             again = statistic(rng.standard_normal((400, z.shape[1])))

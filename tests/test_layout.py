@@ -37,7 +37,7 @@ ORDER = """
     posterior.offsets posterior.families posterior.parallaxes
     posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust
     posterior.indices posterior.deviations
-    posterior.supernovae posterior.coupled posterior.populations posterior.known_rows
+    posterior.supernovae posterior.peak_deviations posterior.coupled posterior.populations posterior.known_rows
     posterior.joint
     posterior.determined posterior
     diagnostics result result_files wording store
@@ -48,6 +48,7 @@ ORDER = """
     sampling.progress sampling.launch sampling.live
     sampling
     checks.peak_predictions checks.residuals checks.running checks.peak_views checks.outliers
+    checks.statistics checks.supernovae
     checks.predictive checks.completeness checks
     report.cells report.machine report.latex_text report.latex report.parameters
     report.objects report.choices

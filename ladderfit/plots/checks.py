@@ -6,7 +6,8 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from ladderfit.checks.predictive import Check, Checks, Sample
+from ladderfit.checks.predictive import Check, Checks
+from ladderfit.checks.statistics import Sample
 from ladderfit.plots.theme import LIGHT, WIDTH, Theme, new_figure, plain, plain_log_axis
 from ladderfit.samples import FloatArray
 
