@@ -93,7 +93,7 @@ ORDER = """
     workbench.canvas.margins workbench.canvas.view workbench.canvas.relation
     workbench.canvas.corner workbench.canvas.panels workbench.canvas.hubble
     workbench.canvas.parallaxes workbench.canvas.trials workbench.canvas.checks
-    workbench.canvas.published workbench.canvas
+    workbench.canvas.outliers workbench.canvas.published workbench.canvas
     workbench.views workbench.view_bar workbench.star_line workbench.published workbench.foot
     workbench.board_panel workbench.shelf workbench.frame workbench.screen
     workbench.question_box workbench.draft_page workbench

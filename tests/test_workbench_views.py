@@ -215,6 +215,31 @@ def test_terms_of_the_peaks() -> None:
     assert bench.frame.table.value.count("<table") == 3
 
 
+@pytest.mark.parametrize("treatment", ["mixture", "Student-t"])
+def test_stars_taken_for_outliers(bench: Workbench, treatment: str) -> None:
+    """Offered once outliers are modelled; one that was put off the line comes first."""
+    keys = [key for _, key in bench.bar.more.options]
+    assert "outliers" not in keys
+    tables = builders.tables()
+    tables["cepheids"].loc[20, "Hmag"] -= 1.5
+    odd = str(tables["cepheids"].loc[20, "ID"])
+    made = build_ladder(builders.choices(), tables)
+    made = made.change({"sampling.draws": 600, "cepheids.outliers.treatment": treatment})
+    bench = Workbench(made)
+    bench.bar.more.value = "outliers"
+    assert len(bench.picture.figure.axes) == 2
+    assert odd in [text.get_text() for text in bench.picture.figure.axes[1].texts]
+    points = next(p for p in bench.picture.points if odd in p.names)
+    assert (points.section, points.hosts[list(points.names).index(odd)]) == ("cepheids", "Orrel")
+    bench.bar.table.value = True
+    first = bench.frame.table.value.split("<tbody>")[1].split("</td>")[0]
+    assert first.endswith(f">{odd}")
+    bench.bar.table.value = False
+    bench._pointed(points, list(points.names).index(odd), True)
+    assert [e.star for e in bench.ladder.choices.cepheids.set_aside] == [odd]  # type: ignore[union-attr]
+    assert bench.session.trouble is None, bench.foot.trust.value
+
+
 def test_a_newer_change_ends_slow_work(bench: Workbench) -> None:
     bench.frame.slow.background = True
     bench.bar.choose("priors")

@@ -53,7 +53,7 @@ def outlier_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH
     table = outlier_table(result)
     if table is None:
         return None
-    stars = list(_samples(result, table))
+    stars = list(marked(result, table))
     if not stars:
         return None
     with theme.applied():
@@ -74,7 +74,7 @@ def outlier_figure(result: Result, *, theme: Theme = LIGHT, width: float = WIDTH
 Marked = tuple[Residuals, pd.DataFrame]
 
 
-def _samples(result: Result, table: pd.DataFrame) -> Iterator[Marked]:
+def marked(result: Result, table: pd.DataFrame) -> Iterator[Marked]:
     """Residuals of each sample with the rows of the table that belong to them."""
     by_sample = dict(tuple(table.groupby("sample")))
     hosts = cepheid_residuals(result)

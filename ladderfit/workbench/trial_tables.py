@@ -5,6 +5,7 @@ from __future__ import annotations
 import html
 import math
 from collections.abc import Sequence
+from typing import Any
 
 from ladderfit.alternatives import Comparison
 from ladderfit.alternatives.words import number, short
@@ -108,17 +109,21 @@ def checks(shown: Shown) -> str:
     ]
     words = [f"{name}: no checks, as {why}" for name, why in found.left_out.items()]
     text = _sentences(words) + table(("sample", "what of it", "p-value", "objects"), rows)
-    return _outliers(shown.result) + text
+    return _outliers(outlier_table(shown.result), 20) + text
 
 
-def _outliers(result: Result) -> str:
+def outliers(shown: Shown) -> str:
+    """The stars that follow the relation least."""
+    return _outliers(shown.worked, MOST_ROWS) or table((), [])
+
+
+def _outliers(found: Any, most: int) -> str:
     """Stars by their probability of being outliers, or by their weight."""
-    found = outlier_table(result)
     if found is None:
         return ""
     mixed = bool(found["probability"].notna().any())
     column = "probability" if mixed else "weight"
-    ranked = found.sort_values(column, ascending=not mixed).head(20)
+    ranked = found.sort_values(column, ascending=not mixed).head(most)
     rows = [
         (str(line["star"]), str(line["host"]), f"{float(line[column]):.3f}")
         for _, line in ranked.iterrows()

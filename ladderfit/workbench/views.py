@@ -9,10 +9,12 @@ from __future__ import annotations
 from ladderfit.anchors import anchor_names
 from ladderfit.checks.peak_views import VIEWS as TERMS_SEEN
 from ladderfit.ladder import Ladder
+from ladderfit.posterior.families import CEPHEIDS, PARALLAXES, outliers_of
 from ladderfit.workbench import trial_tables, works
 from ladderfit.workbench import view_tables as tables
 from ladderfit.workbench.canvas import checks, hubble, panels, parallaxes, trials
 from ladderfit.workbench.canvas.corner import CornerView
+from ladderfit.workbench.canvas.outliers import outliers
 from ladderfit.workbench.canvas.published import published
 from ladderfit.workbench.canvas.relation import RelationView
 from ladderfit.workbench.canvas.view import View
@@ -169,6 +171,17 @@ VIEWS: tuple[View, ...] = (
         draw=checks.checks,
         work=works.checks,
         doing="checking against replications",
+    ),
+    View(
+        "outliers",
+        "Outliers",
+        "Stars by how likely they are outliers, or by their weight in the fit",
+        STARS,
+        lambda ladder, _: any(outliers_of(ladder.choices, key) for key in (CEPHEIDS, PARALLAXES)),
+        trial_tables.outliers,
+        draw=outliers,
+        work=works.outliers,
+        doing="looking what each star is taken for",
     ),
     View(
         "peaks",

@@ -7,6 +7,7 @@ from typing import Any
 
 from ladderfit.alternatives import Comparison, run_alternatives
 from ladderfit.anchors import AnchorComparison, compare_anchors
+from ladderfit.checks.outliers import outlier_table
 from ladderfit.checks.predictive import Checks, predictive_checks
 from ladderfit.influence import Influence, leave_one_out
 from ladderfit.ladder import Ladder
@@ -91,6 +92,12 @@ def alternatives(result: Result, tell: Tell) -> Comparison:
     """The ladder file's alternatives to the choices in force, one after another."""
     ladder = result.ladder
     return run_alternatives(ladder, workers=1, progress=lambda _, share: tell(share))
+
+
+def outliers(result: Result, tell: Tell) -> Any:
+    """What each star of a sample whose outliers are modelled is taken for."""
+    tell(0.1)
+    return outlier_table(result)
 
 
 def checks(result: Result, tell: Tell) -> Checks:

@@ -63,12 +63,7 @@ def _column_points(axes: Axes, found: ColumnResiduals, theme: Theme) -> Points:
         found.x,
         data.residual,
         yerr=data.sd if few else None,
-        linestyle="none",
-        marker=accent.marker,
-        markersize=3.4 if few else 2.6,
-        markeredgewidth=0.0,
-        elinewidth=0.7,
-        color=accent.colour,
+        **accent.points(3.4 if few else 2.6, 0.7),
     )
     x, mean, error = _binned(found)
     axes.errorbar(
