@@ -168,13 +168,29 @@ def killed(work: Callable[[], None], after: float) -> int:
     if child == 0:
         code = 1
         try:
+            os.setsid()
             work()
             code = 0
         finally:
             os._exit(code)
     time.sleep(after)
     os.kill(child, signal.SIGKILL)
-    return os.waitpid(child, 0)[1]
+    status = os.waitpid(child, 0)[1]
+    until = time.monotonic() + 120.0
+    while alive(child):  # its workers follow it, once they have started
+        if time.monotonic() > until:
+            raise RuntimeError("a worker outlives its sweep")
+        time.sleep(0.02)
+    return status
+
+
+def alive(group: int) -> bool:
+    """Whether a process of a group is left."""
+    try:
+        os.killpg(group, 0)
+    except ProcessLookupError:
+        return False
+    return True
 
 
 def main() -> None:
