@@ -44,13 +44,8 @@ def _points(
         data.x,
         y,
         yerr=data.sd if bars else None,
-        linestyle="none",
-        marker=accent.marker,
-        markersize=2.4 if many else 3.5,
-        markeredgewidth=0.0,
-        elinewidth=0.8,
+        **accent.points(2.4 if many else 3.5, 0.8),
         ecolor=theme.tint(accent.colour, 0.45) if many else accent.colour,
-        color=accent.colour,
     )
 
 

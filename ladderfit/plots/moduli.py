@@ -154,12 +154,7 @@ def _marks(
         known[:, 0],
         np.array(rows) + shift,
         xerr=known[:, 1],
-        linestyle="none",
-        marker=accent.marker,
-        markersize=3.5,
-        markeredgewidth=0.0,
-        elinewidth=1.0,
-        color=accent.colour,
+        **accent.points(3.5, 1.0),
         label=words,
     )
 

@@ -110,12 +110,7 @@ def _stars(axes: Axes, x: FloatArray, y: FloatArray, sd: FloatArray, theme: Them
         x,
         y,
         yerr=sd if len(x) <= _FEW else None,
-        linestyle="none",
-        marker=accent.marker,
-        markersize=3.0,
-        markeredgewidth=0.0,
-        elinewidth=0.7,
-        color=accent.colour,
+        **accent.points(3.0, 0.7),
         label=f"{len(x)} stars, expected spread",
     )
 

@@ -36,6 +36,17 @@ class Accent:
     marker: str
     line: Any
 
+    def points(self, size: float, bar: float = 0.8) -> dict[str, Any]:
+        """Keywords for points of a size without a line, their error bars of a width [points]."""
+        return {
+            "linestyle": "none",
+            "marker": self.marker,
+            "markersize": size,
+            "markeredgewidth": 0.0,
+            "elinewidth": bar,
+            "color": self.colour,
+        }
+
 
 @dataclass(frozen=True)
 class Theme:
