@@ -89,6 +89,13 @@ def test_a_student_switches_anchors_and_reads_why(lab: Lab) -> None:
     expect(anchor(lab, "Tavin")).to_be_checked()
     expect(moved).to_have_text("as pinned")
 
+    # a claims file beside the ladder
+    menus = page.locator(".lf-bar-of-views select:visible")
+    menus.filter(has_text="Published").select_option("Published")
+    menus.filter(has_text="claims.toml").select_option("claims.toml")
+    page.locator(".lf-workbench").get_by_role("button", name="Table", exact=True).click()
+    expect(page.locator(".lf-scroll")).to_contain_text("Four papers on the Cepheids of Tavin")
+
 
 def test_a_reviewer_with_one_rung_and_a_slope_in_print(lab: Lab, tmp_path: Path) -> None:
     """The command's page says which slope holds and which does not; the notebook does so too."""

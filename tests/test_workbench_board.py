@@ -353,6 +353,7 @@ def test_stopped_by_one_kernel_and_resumed_by_another(small: Workbench, ladder: 
     other.bar.show_board()
     panel.choose("run-01")
     assert not panel.resume.disabled
+    assert panel.goal.value == "1000000"  # the run's own, not that of a new run
     panel.goal.value = "many"
     panel.resume.click()
     assert "expected a number of draws" in panel.details.value
@@ -374,6 +375,7 @@ def test_a_run_that_fails_says_why(small: Workbench, ladder: Ladder) -> None:
     until(other, lambda: other.shelf.runs.find("run-01").state == "failed")
     other.bar.show_board()
     assert "SHA-256" in other.shelf.panel.details.value
+    assert "lf-bad" in other.shelf.panel.details.value
     assert not other.shelf.runs.waits
     (Path("mine.pins") / "run-02").mkdir()
     (Path("mine.pins") / "run-02" / "run.json").write_text("{}")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import html
+import re
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -28,6 +29,7 @@ from ladderfit.workbench.state import Session
 NOW, BASE, LEFT = "now", "baseline", "left"
 _HEADLINE = (("hubble_constant", "H0"), ("zero_point", "zero point"))
 _OFF, _SURE = "Take off", "Really?"
+_SENTENCES = re.compile(r"(?:^|(?<=\. ))[a-z]")  # their first letters
 _LABEL = widgets.Layout(width="196px")
 
 
@@ -60,6 +62,7 @@ class BoardPanel:
         self._asks = asks
         self._start = session.ladder.choices
         self._quiet = False
+        self._goal_of: str | None = None  # the run whose goal the field shows
         self._doubted: str | None = None  # the pin that is about to go
         self.entries = widgets.Select(
             options=[], rows=4, layout=widgets.Layout(width="99%", height="80px")
@@ -83,6 +86,7 @@ class BoardPanel:
             layout=widgets.Layout(width="224px"),
         )
         self.beside.tooltip = "Compare it with"
+        self._new_goal = self.goal.value
         self.details = widgets.HTML(layout=widgets.Layout(margin="0"))
         goal_words = widgets.HTML(
             '<span style="white-space:nowrap; font-size:12px">effective draws</span>'
@@ -163,10 +167,22 @@ class BoardPanel:
             self._quiet = True
             self.label.value = pin.label
             self._quiet = False
+        self._show_goal(run)
         if run is not None:
             self.stop.disabled = not run.going
             self.resume.disabled = run.state not in ("stopped", "finished", "failed")
         self.details.value = self._details(name)
+
+    def _show_goal(self, run: LongRun | None) -> None:
+        """The goal of the run chosen, until another is typed; else that of a new run."""
+        name = None if run is None or run.progress is None else run.name
+        if name == self._goal_of:
+            return
+        if self._goal_of is None:
+            self._new_goal = self.goal.value
+        self._goal_of = name
+        known = None if run is None or run.progress is None else run.progress.goal.ess
+        self.goal.value = self._new_goal if known is None else f"{known:.0f}"
 
     def _details(self, name: str | None) -> str:
         if not name:
@@ -291,9 +307,10 @@ def _told(run: LongRun) -> str:
     progress = run.progress
     if progress is None:
         return f"<p>{html.escape(run.words or 'Being read ...')}</p>"
-    words = str(progress)
+    words = _SENTENCES.sub(lambda found: found[0].upper(), str(progress))
     text = bar(progress.fraction, f"{100.0 * progress.fraction:.0f} % of the goal")
-    text += f'<p role="status">{html.escape(words[:1].upper() + words[1:])}</p>'
+    bad = ' class="lf-bad"' if run.state == "failed" else ""
+    text += f'<p role="status"{bad}>{html.escape(words)}</p>'
     if run.words:
         text += f"<p>{html.escape(run.words)}</p>"
     return text

@@ -117,6 +117,7 @@ def all_numbers(
         group = group_of(name)
         known = parameter(name).words
         words = known if group is None else f"{known}, {group}"
+        words += f" [{parameter(name).unit}]" if parameter(name).unit else ""
         told = published.get(name)
         rows.append(
             (
@@ -128,12 +129,11 @@ def all_numbers(
                 rounded(interval.low, interval.sd).value,
                 rounded(interval.high, interval.sd).value,
                 *(("" if told is None else f"{told:g}".replace("-", MINUS),) if published else ()),
-                parameter(name).unit,
             )
         )
     more = ("in full",) if full is not None else ()
     also = ("published",) if published else ()
-    head = ("parameter", "mean", "sd", *more, "change", "16 %", "84 %", *also, "unit")
+    head = ("parameter", "mean", "sd", *more, "change", "16 %", "84 %", *also)
     words = "" if pinned is None else "<p>Change: in errors of the baseline.</p>"
     return words + table(head, rows)
 
