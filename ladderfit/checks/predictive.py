@@ -92,9 +92,8 @@ class Checks:
         worst, count = self.smallest, len(self.checks)
         wide = max(20, *(len(c.sample) for c in self.checks))
         chance = 1.0 - (1.0 - worst.p) ** count
-        lines = [
-            f"{c.sample:<{wide}}  {c.about:<34}  p = {c.p:.3f}  ({c.size:,})" for c in self.checks
-        ]
+        form = f"{{:<{wide}}}  {{:<34}}  p = {{:<6}} ({{:,}})"
+        lines = [form.format(c.sample, c.about, c.p_words, c.size) for c in self.checks]
         lines += [f"{name}: no checks, as {why}" for name, why in self.left_out.items()]
         return "\n".join(
             [

@@ -62,7 +62,7 @@ def _of(
         alone = PLAIN if plain else _PEAKS
         yield Sample(_NAMES[group], found.peak, where | inputs | mass, None, bent, alone)
     for name, deviations in found.inputs.items():
-        along = where | mass | _stated(sample, name)
+        along = where | _before(found.inputs, name, sample) | mass | _stated(sample, name)
         kinds = {key: ("scatter",) if key == "stated error" else ("trend",) for key in along}
         yield Sample(f"{_INPUTS[name]}, {group}", deviations, along, None, kinds, _ENDS)
 
@@ -72,6 +72,14 @@ def _where(result: Result, sample: Supernovae) -> dict[str, FloatArray]:
     if isinstance(sample, PeakSample):
         return {"distance": moduli(result)[sample.host]}
     return {"redshift": np.log(sample.redshift)}
+
+
+def _before(
+    inputs: Mapping[str, FloatArray], name: str, sample: Supernovae
+) -> dict[str, FloatArray]:
+    """The measured inputs that an input is conditioned on: of the colour, none."""
+    names = tuple(inputs)
+    return {other: sample.inputs.values[other] for other in names[: names.index(name)]}
 
 
 def _stated(sample: Supernovae, name: str) -> dict[str, FloatArray]:

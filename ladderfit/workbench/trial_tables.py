@@ -104,7 +104,7 @@ def checks(shown: Shown) -> str:
     """Every check with its p-value; stars that are probably outliers."""
     found: Checks = shown.worked
     rows = [
-        (check.sample, check.about, f"{check.p:.3f}", f"{check.size:,}")
+        (check.sample, check.about, check.p_words, f"{check.size:,}")
         for check in sorted(found.checks, key=lambda check: check.p)
     ]
     words = [f"{name}: no checks, as {why}" for name, why in found.left_out.items()]
@@ -130,7 +130,7 @@ def _outliers(found: Any, most: int) -> str:
         if math.isfinite(float(line[column]))
     ]
     words = "probability of being an outlier" if mixed else "weight in the fit"
-    heading = "Stars that are most probably outliers" if mixed else "Stars that weigh least"
+    heading = "The likeliest outliers" if mixed else "Stars that weigh least"
     return f"<h4>{heading}</h4>" + table(("star", "host", words), rows)
 
 

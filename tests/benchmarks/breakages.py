@@ -1,7 +1,7 @@
 """Which checks notice which departure from the model, at which size, in surveys like the sample.
 
-``python tests/benchmarks/breakages.py [SURVEYS [WORKERS [FILE]]]``; outcomes stream to
-FILE, from which a killed run goes on.
+``python tests/benchmarks/breakages.py [SURVEYS [WORKERS [FILE [WORDS]]]]``; outcomes stream to
+FILE, from which a killed run goes on.  With WORDS, only rows whose names start with them.
 
 A check notices where its p-value is under 0.01.  The first row has no departure: what
 is noticed there is false alarm.
@@ -83,10 +83,11 @@ def examine(_: None, arguments: Mapping[str, Any]) -> dict[str, Any]:
     return {"p": found, "pulls": pulls}
 
 
-def main(surveys: int, workers: int, file: Path | None) -> None:
+def main(surveys: int, workers: int, file: Path | None, words: str) -> None:
     """Run and print; every kind is examined once before any is examined again."""
+    names = [name for name in SIZES if name.startswith(words)]
     tasks = [
-        Task(f"{name} {k}", {"name": name, "number": k}) for k in range(surveys) for name in SIZES
+        Task(f"{name} {k}", {"name": name, "number": k}) for k in range(surveys) for name in names
     ]
     outcomes = sweep(Job(examine), tasks, workers=workers, file=file)
     show({task.key: outcome for task, outcome in zip(tasks, outcomes, strict=True)})
@@ -118,4 +119,5 @@ if __name__ == "__main__":
         int(asked[0]) if asked else 20,
         int(asked[1]) if len(asked) > 1 else 2,
         Path(asked[2]) if len(asked) > 2 else None,
+        asked[3] if len(asked) > 3 else "",
     )
