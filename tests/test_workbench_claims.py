@@ -43,6 +43,9 @@ quantity = "scatter"
 value = 0.07
 intrinsic = true
 [[claim]]
+quantity = "scatter"
+value = 0.12
+[[claim]]
 quantity = "modulus"
 value = 31.2
 host = "Merrow"
@@ -135,6 +138,7 @@ def test_claims_of_what_the_ladder_does_not_have_say_so(bench: Workbench) -> Non
     assert "<b>papers" not in bench.frame.table.value  # escaped
     left = text.split("Not compared")[1]
     assert "distance modulus of Merrow, 31.2 mag: the ladder has no host Merrow." in left
+    assert "scatter, 0.12 mag: it has the errors of the paper's own stars in it" in left
     assert "Hallowin" in left
     assert "the claim has the Wesenheit ratio 0.41, the ladder file 0.386" in left
     assert "overtone pulsators, which have no line of their own in the ladder" in left

@@ -180,17 +180,24 @@ function render({ model, el }) {
   svg.addEventListener("mouseover", tell);
   svg.addEventListener("mouseleave", () => { hint.textContent = ""; });
   for (const name of ["rungs", "overlaps", "rung"]) model.on(`change:${name}`, draw);
-  const fit = new ResizeObserver(() => {
+  const refit = () => {
     const room = Math.floor(Math.min(el.clientWidth, WIDEST));
     if (room < 200 || room === shown) return;
     shown = room;
     draw();
     model.set("width", room);
     model.save_changes();
+  };
+  // while a theme is loaded the page has other widths for a moment: only one that lasts is taken
+  let settling = null;
+  const fit = new ResizeObserver(() => {
+    if (settling === null) refit();
+    clearTimeout(settling);
+    settling = setTimeout(refit, 250);
   });
   fit.observe(el);
   draw();
-  const stops = [watchPage(el, model), openFigures(el, model), () => fit.disconnect()];
+  const stops = [watchPage(el, model), openFigures(el, model), () => { fit.disconnect(); clearTimeout(settling); }];
   return () => stops.forEach((stop) => stop());
 }
 
