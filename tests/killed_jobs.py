@@ -1,9 +1,9 @@
 """Run by itself: does a job in child processes and kills them at random moments.
 
-Usage: python killed_jobs.py JOB FOLDER KILLS SEED, where JOB is a name in `JOBS`.  Prints
-one line of JSON: kills; how many of them left something unfinished on disk; jobs that
-reached their end nevertheless; outcomes or draws lost; and whatever differs from a job
-that nobody disturbed.
+Usage: python -c "import killed_jobs; killed_jobs.main()" JOB FOLDER KILLS SEED, where JOB
+is a name in `JOBS`.  Prints one line of JSON: kills; how many of them left something
+unfinished on disk; jobs that reached their end nevertheless; outcomes or draws lost; and
+whatever differs from a job that nobody disturbed.
 """
 
 from __future__ import annotations
@@ -224,7 +224,3 @@ def main() -> None:
     JOBS[job](ladder, out)
     faults.add(fault(job, out, reference, True))
     print(json.dumps({**count, "faults": sorted(faults - {""})}))
-
-
-if __name__ == "__main__":
-    main()

@@ -149,6 +149,8 @@ def test_stopped_and_resumed(ladder: Ladder, reference: RunFolder, tmp_path: Pat
     np.testing.assert_array_equal(chain.z[:shared], whole.z[:shared])
 
 
+@pytest.mark.full
+@pytest.mark.timeout(7200)
 def test_killed_at_random_moments(
     ladder: Ladder, reference: RunFolder, tmp_path: Path, in_full: bool
 ) -> None:
