@@ -206,7 +206,7 @@ def main() -> None:
     count = dict.fromkeys(("kills", "halfway", "ends", "lost"), 0)
     faults, before = set(), dict[str, object]()
     while count["kills"] < kills:
-        status = killed(lambda: JOBS[job](ladder, out), dice.uniform(0.0, lasting))
+        status = killed(lambda: JOBS[job](ladder, out), dice.uniform(0.0, 1.5 * lasting))
         ended = status == 0
         count["kills"] += os.WIFSIGNALED(status)
         count["ends"] += ended
