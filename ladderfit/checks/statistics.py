@@ -42,6 +42,8 @@ class Sample:
         where nothing is said.
     alone : tuple of str
         What is checked of the deviations by themselves: names in `ALONE`.
+    group : str
+        Of supernovae, their population, "hosts" or "expansion"; else empty.
     """
 
     name: str
@@ -50,6 +52,7 @@ class Sample:
     host: IntArray | None = None
     kinds: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     alone: tuple[str, ...] = PLAIN
+    group: str = ""
 
 
 def statistics_of(sample: Sample) -> Iterator[tuple[str, FloatArray, Statistic]]:

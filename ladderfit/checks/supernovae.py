@@ -60,11 +60,12 @@ def _of(
         inputs = {name.replace("_", " "): values[name] for name in relation.inputs}
         bent = dict.fromkeys([*inputs, "redshift"], _BENT)
         alone = PLAIN if plain else _PEAKS
-        yield Sample(_NAMES[group], found.peak, where | inputs | mass, None, bent, alone)
+        yield Sample(_NAMES[group], found.peak, where | inputs | mass, None, bent, alone, group)
     for name, deviations in found.inputs.items():
         along = where | _before(found.inputs, name, sample) | mass | _stated(sample, name)
         kinds = {key: ("scatter",) if key == "stated error" else ("trend",) for key in along}
-        yield Sample(f"{_INPUTS[name]}, {group}", deviations, along, None, kinds, _ENDS)
+        words = f"{_INPUTS[name]}, {group}"
+        yield Sample(words, deviations, along, None, kinds, _ENDS, group)
 
 
 def _where(result: Result, sample: Supernovae) -> dict[str, FloatArray]:

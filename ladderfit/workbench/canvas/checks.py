@@ -5,11 +5,18 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 from matplotlib.figure import Figure
 
 from ladderfit.checks.peak_views import peak_view, views_of
 from ladderfit.checks.predictive import Checks
-from ladderfit.plots.checks import along_panel, distribution_panel, list_panel
+from ladderfit.plots.checks import (
+    along_panel,
+    distribution_panel,
+    list_panel,
+    peaks_have_terms,
+    supernova_panels,
+)
 from ladderfit.plots.peaks import term_panel
 from ladderfit.plots.theme import Theme
 from ladderfit.workbench.canvas.margins import margins, place_label
@@ -17,13 +24,23 @@ from ladderfit.workbench.points import Points
 from ladderfit.workbench.shown import Shown
 
 _WIDE = 6.0  # inches from which a legend has three columns
+_PEAKS = ("supernovae", "expansion")  # rungs
 _ALONG = ("period", "colour", "metallicity", "distance", "stated error")
 
 
 def checks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
-    """Deviations of the Cepheids: whether normal, and along what may matter; else p-values."""
+    """Deviations: whether normal, and along what may matter; else p-values.
+
+    They are those of the Cepheids, and on the supernovae's rungs those of supernovae.
+    """
     found: Checks = shown.worked
     sample = next((one for one in found.samples if one.name == "Cepheids"), None)
+    if peaks_have_terms(found) and (sample is None or shown.rung in _PEAKS):
+        panels = np.ravel(figure.subplots(2, 3))
+        margins(figure, 58, 10, 32, 40, hspace=0.72, wspace=0.3)
+        supernova_panels(found, list(panels), theme=theme)
+        _small(panels)
+        return []
     if sample is None:
         axes = figure.subplots()
         margins(figure, 190, 14, 10, 44)
@@ -41,10 +58,14 @@ def checks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
         along_panel(found, sample, name, axes, theme=theme)
     for axes in panels[1 + len(names) :]:
         axes.set_axis_off()
+    _small(panels)
+    return []
+
+
+def _small(panels: npt.NDArray[Any]) -> None:
     for axes in panels:
         axes.xaxis.labelpad = 1
         axes.xaxis.label.set_fontsize(7.5)
-    return []
 
 
 def peaks(figure: Figure, shown: Shown, theme: Theme) -> list[Points]:
