@@ -343,7 +343,7 @@ def test_stopped_by_one_kernel_and_resumed_by_another(small: Workbench, ladder: 
     until(small, lambda: "effective of" in panel.details.value)
     assert _draws(small) > 0
     panel.stop.click()
-    assert "stopping" in panel.details.value
+    assert "Stopping" in panel.details.value
     until(small, lambda: small.shelf.runs.find("run-01").state == "stopped")
     kept = small.shelf.runs.find("run-01").progress.draws
     other = Workbench(small.ladder)

@@ -138,7 +138,7 @@ def test_claims_of_what_the_ladder_does_not_have_say_so(bench: Workbench) -> Non
     assert "<b>papers" not in bench.frame.table.value  # escaped
     left = text.split("Not compared")[1]
     assert "distance modulus of Merrow, 31.2 mag: the ladder has no host Merrow." in left
-    assert "scatter, 0.12 mag: it has the errors of the paper's own stars in it" in left
+    assert "scatter, 0.12 mag: a scatter with errors in it is of the paper's own stars" in left
     assert "Hallowin" in left
     assert "the claim has the Wesenheit ratio 0.41, the ladder file 0.386" in left
     assert "overtone pulsators, which have no line of their own in the ladder" in left

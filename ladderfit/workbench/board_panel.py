@@ -30,6 +30,7 @@ NOW, BASE, LEFT = "now", "baseline", "left"
 _HEADLINE = (("hubble_constant", "H0"), ("zero_point", "zero point"))
 _OFF, _SURE = "Take off", "Really?"
 _SENTENCES = re.compile(r"(?:^|(?<=\. ))[a-z]")  # their first letters
+_WORST = re.compile(r"\w+(?=(?:\[[^\]]*\])? is worst)")  # the parameter's name
 _LABEL = widgets.Layout(width="196px")
 
 
@@ -307,10 +308,11 @@ def _told(run: LongRun) -> str:
     progress = run.progress
     if progress is None:
         return f"<p>{html.escape(run.words or 'Being read ...')}</p>"
-    words = _SENTENCES.sub(lambda found: found[0].upper(), str(progress))
+    told = _WORST.sub(lambda found: found[0].replace("_", " "), str(progress))
+    words = _SENTENCES.sub(lambda found: found[0].upper(), told)
     text = bar(progress.fraction, f"{100.0 * progress.fraction:.0f} % of the goal")
     bad = ' class="lf-bad"' if run.state == "failed" else ""
     text += f'<p role="status"{bad}>{html.escape(words)}</p>'
     if run.words:
-        text += f"<p>{html.escape(run.words)}</p>"
+        text += f"<p>{html.escape(run.words[:1].upper() + run.words[1:])}</p>"
     return text

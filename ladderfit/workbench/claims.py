@@ -171,7 +171,7 @@ def _reasons(ladder: Ladder, claim: Claim, table_system: str | None) -> Iterator
     if claim.quantity in OF_THE_RELATION and section is None:
         yield f"the ladder has no {_LACKS[claim.quantity]}"
     if claim.quantity == "scatter" and not claim.intrinsic:
-        yield "it has the errors of the paper's own stars in it, and is no parameter of the ladder"
+        yield "a scatter with errors in it is of the paper's own stars; the ladder's is intrinsic"
     if claim.transformation is None:
         yield from filter(None, (refusal(ladder, claim, table_system),))
     if claim.host is not None and claim.host not in ladder.hosts:

@@ -47,7 +47,7 @@ class ViewBar:
         self.columns.tooltip = "Column of the table"
         self.columns.observe(self._picked, "value")
         self.claims = widgets.Dropdown(
-            options=[_NO_CLAIMS], layout=widgets.Layout(width="150px", display="none", order="10")
+            options=[_NO_CLAIMS], layout=widgets.Layout(width="176px", display="none", order="10")
         )
         self.claims.tooltip = "Claims file beside the ladder file"
         self.claims.observe(self._claimed, "value")
