@@ -90,7 +90,7 @@ class BoardPanel:
         self._new_goal = self.goal.value
         self.details = widgets.HTML(layout=widgets.Layout(margin="0"))
         goal_words = widgets.HTML(
-            '<span style="white-space:nowrap; font-size:12px">effective draws</span>'
+            '<span style="white-space:nowrap; font-size:12px">effective draws wanted</span>'
         )
         self._of_run = [self.stop, self.resume]
         self._of_pin = [self.against, self.remove, self.label]
