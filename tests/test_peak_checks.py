@@ -18,6 +18,8 @@ from ladderfit.physics.expansion import peculiar_variance, term_of
 from ladderfit.posterior.peak_deviations import peak_deviations
 from ladderfit.sampling.run import draw
 
+pytestmark = pytest.mark.timeout(1500)  # at full length
+
 GROUPS = ("hosts", "expansion")
 SAMPLES = ["supernovae in hosts", "expansion"]
 INPUTS = [f"{name}, {group}" for name in ("colours", "widths") for group in GROUPS]
@@ -130,7 +132,7 @@ def test_at_a_single_draw_p_values_are_uniform(errors: bool, in_full: bool) -> N
     """Pivotal: one draw of the posterior against many replications (Johnson 2007)."""
     found: dict[tuple[str, str], list[float]] = {}
     base = survey(1, errors=errors, hosts=10, flow=40, priors=NARROW)
-    for seed in range(300 if in_full else 40):
+    for seed in range(300 if in_full else 30):
         rng = np.random.default_rng([8, seed])
         result = draw(again(base, rng)[0], seed=seed, draws=200)
         for sample in predictive_checks(result, seed=seed, draws=1).samples:
@@ -147,7 +149,7 @@ def test_at_a_single_draw_p_values_are_uniform(errors: bool, in_full: bool) -> N
 def test_small_p_values_are_no_more_frequent_than_they_say(in_full: bool) -> None:
     found: dict[tuple[str, str], list[float]] = {}
     base = survey(1, hosts=10, flow=40, priors=NARROW)
-    for seed in range(200 if in_full else 12):
+    for seed in range(200 if in_full else 8):
         result = draw(again(base, np.random.default_rng([9, seed]))[0], seed=seed, draws=200)
         for check in predictive_checks(result, seed=seed, draws=100).checks:
             found.setdefault((check.sample, check.about), []).append(check.p)
