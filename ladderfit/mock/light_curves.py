@@ -99,7 +99,7 @@ def light_curve_columns(
     mass = np.round(population.log_mass[0] + population.log_mass[1] * rng.normal(size=n), 2)
     if galaxies is not None:
         mass = mass[[galaxies.index(name) for name in galaxies]]
-    survey = rng.choice(list(plan.offsets), n)
+    survey = np.array(rng.choice(list(plan.offsets), n), dtype=np.str_)
     true = bare - plan.alpha * width + plan.beta * colour
     true += plan.mass_step * np.where(mass >= plan.step_at, 0.5, -0.5)
     true += np.array([plan.offsets[str(name)] for name in survey])

@@ -17,7 +17,7 @@ import numpy as np
 from ladderfit.choices import Choices
 from ladderfit.ladder import Ladder
 from ladderfit.relations import metallicity_sensitivity, period_sensitivity
-from ladderfit.samples import FloatArray, StarSample
+from ladderfit.samples import BoolArray, FloatArray, StarSample
 
 MEAN_SD = 1.0  # dex: prior sd of a host's mean metallicity about the reference
 
@@ -43,10 +43,10 @@ class InputErrors:
     population: bool
 
     @property
-    def sensitive(self) -> FloatArray:
-        """Which coefficients enter the variance, shape (k,), as booleans."""
+    def sensitive(self) -> BoolArray:
+        """Which coefficients enter the variance, shape (k,)."""
         parts = [s for s in (self.period_slope, self.metallicity_slope) if s is not None]
-        found: FloatArray = np.any([np.any(part != 0.0, axis=0) for part in parts], axis=0)
+        found: BoolArray = np.any([np.any(part != 0.0, axis=0) for part in parts], axis=0)
         return found
 
     def effect(self, coefficients: FloatArray, spread: FloatArray | None) -> Effect:

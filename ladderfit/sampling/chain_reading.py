@@ -86,7 +86,8 @@ class ChainView:
         before = b""
         for _ in range(_TRIES):
             content = self._bytes(self.places.records, 2 * kind.itemsize)
-            whole = [record for record in np.frombuffer(content, kind) if self._whole(record)]
+            records: Any = np.frombuffer(content, kind)
+            whole = [record for record in records if self._whole(record)]
             # One that is not whole may be changing just now, and the other be out of date.
             if len(whole) == 2 or (content == before and whole):
                 return max(whole, key=lambda record: int(record["number"]))
