@@ -1,12 +1,13 @@
 """Posterior predictive checks: whether the model leaves over what it should.
 
 At every draw the deviations of stars and supernovae are standard normal and
-independent if the model is true (`ladderfit.posterior.deviations` and
-`peak_deviations`).  A check is a number T of these deviations, such as their trend
-with the period; its p-value is the share of draws in which deviations drawn anew give a T as large (Gelman, Meng &
-Stern 1996, Statistica Sinica 6, 733).  Small p-values speak against the model.  The
-same data fitted the model, so that p-values crowd towards 0.5: under a true model
-they are small at most as often as they should be.  Every check is listed.
+independent if the model is true (`ladderfit.posterior.deviations`, and
+`peak_deviations` for supernovae).  A check is a number T of these deviations, such as
+their trend with the period; its p-value is the share of draws in which deviations
+drawn anew give a T as large (Gelman, Meng & Stern 1996, Statistica Sinica 6, 733).
+Small p-values speak against the model.  The same data fitted the model, so that
+p-values crowd towards 0.5: under a true model they are small at most as often as they
+should be.  Every check is listed.
 """
 
 from __future__ import annotations
