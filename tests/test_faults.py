@@ -31,7 +31,7 @@ from ladderfit.cli import main
 from ladderfit.errors import InputError
 from ladderfit.files import lock, write_text_atomically
 from ladderfit.jobs.calibration import calibrate
-from ladderfit.report.write import renew_report, write_report
+from ladderfit.report.write import clear_leftover, renew_report, write_report
 from ladderfit.result import Result
 from ladderfit.sampling.chain_reading import read_chain
 from ladderfit.sampling.convergence import Goal
@@ -238,7 +238,10 @@ def contents(folder: Path) -> dict[str, bytes]:
 def test_a_report_made_again_on_a_failing_disk(
     result: Result, folder: Path, in_full: bool, once: bool
 ) -> None:
-    """A disk that fails once, or does not move files either: the old report is not lost."""
+    """A disk that fails once, or does not move files either: the old report is not lost.
+
+    What such a disk does not put back is kept under a hidden name, and the next report does.
+    """
     before = contents(folder)
     with failing() as disk:
         renew_report(result, folder)
@@ -247,8 +250,21 @@ def test_a_report_made_again_on_a_failing_disk(
     for number in (
         operations(last, in_full) if not once else [1, 2, last // 2, *range(last - 5, last + 1)]
     ):
-        with failing(number, once=once), pytest.raises(OSError, match="No space"):
+        with failing(number, once=once), pytest.raises(OSError, match="No space") as caught:
             renew_report(result, folder)
+        found = contents(folder)
+        if found != before and not once:
+            assert "what was there is kept in" in str(caught.value), number
+            (hidden,) = folder.glob(".report.*.tmp")
+            kept = {
+                str(Path(name).relative_to(hidden.name)): data
+                for name, data in found.items()
+                if name.startswith(hidden.name)
+            }
+            assert {name: data for name, data in kept.items() if name.startswith("old-")} == {
+                f"old-{name}": data for name, data in before.items() if name.startswith("tables")
+            }
+            clear_leftover(hidden, folder)
         assert contents(folder) == before, number
 
 

@@ -9,7 +9,7 @@ from ladderfit.errors import LadderfitError
 from ladderfit.files import new_folder
 from ladderfit.ladder import Ladder
 from ladderfit.plots import save_figures
-from ladderfit.report.write import move_report, write_report
+from ladderfit.report.write import clear_leftover, move_report, write_report
 from ladderfit.result import Result
 from ladderfit.sampling.direct import Progress
 from ladderfit.sampling.live import Run, start
@@ -97,7 +97,7 @@ def finish(run: Run, progress: Progress | None = None) -> Result:
     if progress is not None:
         progress("drawing figures and writing the report", 0.0)
     temporary = run.path / ".report.tmp"
-    shutil.rmtree(temporary, ignore_errors=True)
+    clear_leftover(temporary, run.path)
     save_figures(result, temporary / "figures")
     shutil.copyfile(run.path / "provenance.json", temporary / "provenance.json")
     write_report(result, temporary, name=run.path.name)

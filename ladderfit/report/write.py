@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
 import shutil
 import tempfile
@@ -17,6 +18,7 @@ from ladderfit.result import Result
 from ladderfit.result_files import check_provenance
 
 PAGE, TABLES, FIGURES = "report.html", "tables", "figures"
+_OLD = "old-"  # before the name of a folder that a new one replaces
 _ORDER = ("relation", "outliers", "moduli", "parallaxes", "hubble", "peaks", "corner")
 
 
@@ -67,18 +69,40 @@ def renew_report(result: Result, folder: Path, *, more: Sequence[PaperTable] = (
     LadderfitError
         If another process is at it.
     OSError
-        If a file cannot be written; the old ones are then as they were.
+        If a file cannot be written; the old ones are then as they were, or are put back by
+        the next report where the disk does not move them either.
     """
     folder = folder.resolve()
     with lock(folder / "report.lock", "a report is being written"):
         for leftover in folder.glob(".report.*.tmp"):  # of a process that was killed
-            shutil.rmtree(leftover, ignore_errors=True)
+            clear_leftover(leftover, folder)
         temporary = Path(tempfile.mkdtemp(prefix=".report.", suffix=".tmp", dir=folder))
         try:
             write_report(result, folder, into=temporary, more=more)
             move_report(temporary, folder)
         finally:
-            shutil.rmtree(temporary, ignore_errors=True)
+            if not _kept(temporary):
+                shutil.rmtree(temporary, ignore_errors=True)
+
+
+def clear_leftover(temporary: Path, folder: Path) -> None:
+    """Remove the temporary folder of a report that failed; what it kept is put back first.
+
+    Raises
+    ------
+    OSError
+        If that cannot be moved.
+    """
+    for old in _kept(temporary):
+        place = folder / old.name.removeprefix(_OLD)
+        if not place.exists():
+            old.rename(place)
+    shutil.rmtree(temporary, ignore_errors=True)
+
+
+def _kept(temporary: Path) -> list[Path]:
+    """Folders of an older report that wait to be put back."""
+    return [path for path in (temporary / f"{_OLD}{n}" for n in (FIGURES, TABLES)) if path.exists()]
 
 
 def move_report(temporary: Path, folder: Path) -> None:
@@ -87,20 +111,27 @@ def move_report(temporary: Path, folder: Path) -> None:
     Raises
     ------
     OSError
-        If a file cannot be moved; what was there is then put back.
+        If a file cannot be moved; what was there is then put back, or kept in the
+        temporary folder where that fails as well, and the message says so.
     """
     moved: list[tuple[Path, Path]] = []
     try:
         for name in (FIGURES, TABLES):
             if (temporary / name).is_dir():
                 if (folder / name).exists():
-                    moved.append(_move(folder / name, temporary / f"old-{name}"))
+                    moved.append(_move(folder / name, temporary / f"{_OLD}{name}"))
                 moved.append(_move(temporary / name, folder / name))
         (temporary / PAGE).replace(folder / PAGE)
-    except OSError:
+    except OSError as error:
         for before, after in reversed(moved):
-            after.rename(before)
-        raise
+            with contextlib.suppress(OSError):
+                after.rename(before)
+        if not _kept(temporary):
+            raise
+        words = f"{error.strerror}; what was there is kept in {temporary}"
+        raise OSError(error.errno, words, error.filename) from error
+    for old in _kept(temporary):
+        shutil.rmtree(old, ignore_errors=True)
 
 
 def _move(before: Path, after: Path) -> tuple[Path, Path]:
