@@ -37,8 +37,8 @@ ORDER = """
     posterior.offsets posterior.families posterior.parallaxes
     posterior.split posterior.star_terms posterior.shared posterior.limits posterior.robust
     posterior.indices posterior.deviations
-    posterior.supernovae posterior.peak_deviations posterior.coupled posterior.populations posterior.known_rows
-    posterior.joint
+    posterior.supernovae posterior.peak_deviations posterior.coupled posterior.populations
+    posterior.known_rows posterior.joint
     posterior.determined posterior
     diagnostics result result_files wording store
     sampling.mode sampling.proposal sampling.direct sampling.moves sampling.convergence
