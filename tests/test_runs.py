@@ -201,28 +201,40 @@ def kept_rows(folder: Path) -> int:
     return read_commit(chain)[1].kept if chain.exists() else 0
 
 
+COMMAND = """
+import runpy, signal
+signal.signal(signal.SIGINT, signal.default_int_handler)  # a job in the background ignores it
+runpy.run_module("ladderfit", run_name="__main__")
+"""
+
+
 def interrupted(arguments: list[str], folder: Path, by: int) -> subprocess.CompletedProcess[str]:
     """Send a signal to a process once its run has kept some more draws."""
     before = kept_rows(folder)
     process = subprocess.Popen(
-        [sys.executable, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+        [sys.executable, "-c", COMMAND, *arguments],
+        stdout=subprocess.PIPE,
+        stderr=subprocess.PIPE,
+        text=True,
     )
     end = time.monotonic() + 120.0
     while time.monotonic() < end and process.poll() is None and kept_rows(folder) == before:
         time.sleep(0.05)
     process.send_signal(by)
-    out, err = process.communicate(timeout=120)
+    try:
+        out, err = process.communicate(timeout=120)
+    finally:
+        process.kill()
     return subprocess.CompletedProcess(arguments, process.returncode, out, err)
 
 
 def test_the_command_line_is_interrupted_and_resumed(from_files: Ladder, tmp_path: Path) -> None:
     folder = tmp_path / "run"
-    command = ["-m", "ladderfit", "calibrate"]
-    anew = [*command, str(from_files.path), "--out", str(folder), "--sampler", "ensemble"]
+    anew = ["calibrate", str(from_files.path), "--out", str(folder), "--sampler", "ensemble"]
     anew += ["--draws", str(LONG)]
     for arguments, by in (
         (anew, signal.SIGTERM),
-        ([*command, "--resume", str(folder)], signal.SIGINT),
+        (["calibrate", "--resume", str(folder)], signal.SIGINT),
     ):
         done = interrupted(arguments, folder, by)
         assert done.returncode == 130, done.stderr
