@@ -46,7 +46,7 @@ class Problem:
         place = [
             text
             for text, known in (
-                (self.file, self.file),
+                (_short(self.file or "", 400), self.file),
                 (f"row {self.row}", self.row),
                 (f"column {_short(repr(self.column))}", self.column),
                 (f"key {_short(self.key or '')}", self.key),

@@ -32,6 +32,16 @@ def sha256_of(path: str | Path) -> str:
         return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
+def why_no_file(path: Path) -> str | None:
+    """What stands in place of a file, in words; None where there is a file."""
+    try:
+        if path.is_file():
+            return None
+        return "a folder" if path.is_dir() else "no such file"
+    except OSError as error:  # a name too long, a folder that may not be looked into
+        return str(error.strerror or error)
+
+
 def write_text_atomically(path: str | Path, text: str) -> None:
     """Write `text` in UTF-8 under a temporary name, then move it to `path`.
 

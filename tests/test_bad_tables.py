@@ -153,6 +153,12 @@ def test_nan_or_infinite(workshop: Workshop, cell: str) -> None:
     ]
 
 
+def test_an_absurd_number(workshop: Workshop) -> None:
+    workshop.cell("cepheids", 7, "Hmag", "-2.1e227")
+    (line,) = workshop.complaints()
+    assert "found '-2.1e227'; expected a magnitude in mag, a number below 1e+30 in size" in line
+
+
 def test_nan_in_ecsv(workshop: Workshop) -> None:
     workshop.choices["expansion"]["table"] = "flow.ecsv"
     frame = Table.from_pandas(tables()["expansion"])

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 from small_ladders import SMALL, TRUTH, small_ladder
 
-from ladderfit.errors import UndeterminedError
+from ladderfit.errors import SamplingError, UndeterminedError
 from ladderfit.ladder import Ladder
 from ladderfit.posterior.determined import undetermined
 from ladderfit.posterior.joint import posterior
@@ -174,3 +174,10 @@ def test_informed_ladders_carry_no_note(name: str) -> None:
 def test_a_posterior_against_a_bound_is_said() -> None:
     (note,) = draw(small_ladder("slope at a bound"), seed=1).diagnostics.notes
     assert "presses against a bound of its prior uniform(-3.25, -2.9)" in note
+
+
+@pytest.mark.filterwarnings("ignore::RuntimeWarning")
+def test_sums_that_overflow_are_said() -> None:
+    ladder = small_ladder("anchors").change({"anchors.geometric.Tavin.error": 1e-170})
+    with pytest.raises(SamplingError, match="absurd numbers"):
+        draw(ladder, seed=1)

@@ -24,6 +24,14 @@ def test_sha256(tmp_path: Path) -> None:
     assert files.sha256_of(tmp_path / "a") == hashlib.sha256(b"abc").hexdigest()
 
 
+def test_why_there_is_no_file(tmp_path: Path) -> None:
+    (tmp_path / "a").write_text("a")
+    assert files.why_no_file(tmp_path / "a") is None
+    assert files.why_no_file(tmp_path) == "a folder"
+    assert files.why_no_file(tmp_path / "b") == "no such file"
+    assert files.why_no_file(tmp_path / ("c" * 5_000)) == "File name too long"
+
+
 def test_text_replaces_and_keeps_permissions(tmp_path: Path) -> None:
     path = tmp_path / "a.toml"
     path.write_text("old")

@@ -215,6 +215,15 @@ def test_parquet_keeps_the_units_astropy_wrote(tmp_path: Path) -> None:
     assert read.unit_problem("x", kinds.PARALLAX) is not None
 
 
+def test_parquet_with_text_that_is_none(tmp_path: Path) -> None:
+    path = tmp_path / "t.parquet"
+    frame = pd.DataFrame({"name": ["Q-01", "Q-02"], "P": [1.0, 2.0]})
+    frame.to_parquet(path, compression=None, index=False)
+    path.write_bytes(path.read_bytes().replace(b"Q-0", b"Q\xff0"))
+    with pytest.raises(InputError, match="expected a readable table"):
+        read_table(path, "cepheids.table").texts("name")
+
+
 def test_a_masked_quantity_survives_ecsv(tmp_path: Path) -> None:
     QTable(astropy_table()).write(tmp_path / "t.ecsv")
     read = read_table(tmp_path / "t.ecsv", "cepheids.table")

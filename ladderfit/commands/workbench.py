@@ -46,7 +46,9 @@ def _workbench(chosen: argparse.Namespace) -> int:
 
 def _undecided(file: Path) -> bool:
     """Whether a draft left something open in the file."""
-    if not file.is_file():
+    from ladderfit.files import why_no_file
+
+    if why_no_file(file) is not None:
         return False
     from ladderfit.draft.settle import open_keys
 

@@ -17,7 +17,7 @@ import numpy.typing as npt
 from astropy.io import fits
 
 from ladderfit.errors import InputError, Problem
-from ladderfit.files import sha256_of
+from ladderfit.files import sha256_of, why_no_file
 from ladderfit.inputs.tables import shown
 from ladderfit.packed import PackedError, check_packed, opened, unpacked
 from ladderfit.samples import FloatArray, frozen
@@ -135,10 +135,11 @@ def _unreadable(
 
 
 def _existing(path: Path, key: str, expected: str) -> None:
-    if not path.is_file():
+    found = why_no_file(path)
+    if found is not None:
         raise InputError(
             Problem(
-                found="a folder" if path.is_dir() else "no such file",
+                found=found,
                 expected=expected,
                 remedy="correct the path, which is relative to the ladder file's folder",
                 file=str(path),

@@ -21,7 +21,7 @@ import pyarrow.parquet
 from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
-from ladderfit.files import sha256_of
+from ladderfit.files import sha256_of, why_no_file
 from ladderfit.inputs.table_columns import ColumnsOnDemand
 from ladderfit.inputs.table_memory import from_astropy, from_series, parsed_unit
 from ladderfit.inputs.tables import Column, DataTable, shown
@@ -90,10 +90,11 @@ def read_table(path: Path, key: str) -> DataTable:
 
 
 def _reader(path: Path, key: str) -> Callable[[Path], DataTable]:
-    if not path.is_file():
+    found = why_no_file(path)
+    if found is not None:
         raise InputError(
             Problem(
-                found="a folder" if path.is_dir() else "no such file",
+                found=found,
                 expected="a table",
                 remedy="correct the path, which is relative to the ladder file's folder",
                 file=str(path),
@@ -258,10 +259,10 @@ def _read_parquet(path: Path) -> DataTable:
     def decode(name: str) -> Column:
         try:
             series = file.read(columns=[name])[name].to_pandas(integer_object_nulls=True)
+            return from_series(series, parsed_unit(units.get(name)))
         except Exception as error:  # damage shows only where it lies
             words = f"{type(error).__name__}: {error}"
             raise InputError(_damaged(path, "", words)) from error
-        return from_series(series, parsed_unit(units.get(name)))
 
     columns = ColumnsOnDemand(tuple(schema.names), decode)
     return DataTable(str(path), columns, rows, sha256_of(path), states_units=described is not None)

@@ -22,6 +22,8 @@ from ladderfit.samples import FloatArray, IntArray, TextArray
 
 BoolArray = npt.NDArray[np.bool_]
 
+_ABSURD = 1e30  # in any unit: sums over products of larger numbers overflow
+
 
 @dataclass(frozen=True, eq=False)
 class Column:
@@ -211,9 +213,11 @@ class DataTable:
         which = [i for i, row in enumerate(numbers.faulty) if judged[row]]
         if which:
             cell = numbers.cells[which[0]]
+            finite = np.isfinite(_float_or_nan(cell))
+            number = f"a number below {_ABSURD:g} in size" if finite else "a finite number"
             yield Problem(
                 found=shown(cell) + and_more(len(which) - 1),
-                expected=f"{kind.words}{f' in {kind.unit}' if kind.unit else ''}, a finite number",
+                expected=f"{kind.words}{f' in {kind.unit}' if kind.unit else ''}, {number}",
                 remedy="correct the cell, or leave it empty where the value is missing",
                 file=self.name,
                 row=int(numbers.faulty[which[0]]) + 1,
@@ -241,9 +245,10 @@ def _numbers(column: Column, *, typed: bool) -> Numbers:
         floats = _parsed(values, missing)
         if not typed:
             missing |= np.isnan(floats) & _spelt_nan(values)
-    faulty = np.flatnonzero(~np.isfinite(floats) & ~missing)
+    usable = np.abs(floats) < _ABSURD
+    faulty = np.flatnonzero(~usable & ~missing)
     cells = tuple(str(values[row]) for row in faulty)
-    floats = np.where(np.isfinite(floats), floats, np.nan)
+    floats = np.where(usable, floats, np.nan)
     for array in (floats, missing, faulty):
         array.setflags(write=False)
     return Numbers(floats, missing, faulty, cells)

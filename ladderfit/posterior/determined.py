@@ -11,7 +11,7 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
-from ladderfit.errors import Problem, UndeterminedError
+from ladderfit.errors import Problem, SamplingError, UndeterminedError
 from ladderfit.names import base_name, parameter, with_group
 from ladderfit.posterior.cepheids import plain_rows
 from ladderfit.posterior.joint import Posterior
@@ -28,8 +28,18 @@ _ROUNDING = 1e-10  # of a direction of unit length
 
 
 def undetermined(posterior: Posterior) -> tuple[str, ...]:
-    """Names of coefficients and moduli that neither data nor stated priors determine."""
+    """Names of coefficients and moduli that neither data nor stated priors determine.
+
+    Raises
+    ------
+    SamplingError
+        If a number in the tables is so absurd that sums over them overflow.
+    """
     information, names, forms = _information(posterior)
+    if not np.isfinite(information).all():
+        raise SamplingError(
+            "sums over the data overflow: look for absurd numbers in the tables and the priors"
+        )
     size = np.sqrt(np.diag(information))
     scale = np.where(size > 0.0, size, 1.0)
     values, vectors = np.linalg.eigh(information / np.outer(scale, scale))
