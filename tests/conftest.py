@@ -38,9 +38,14 @@ LONG = (
 
 
 def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
-    """Long files first; comparisons with large published tables skipped where these are absent."""
+    """Long files first; long tests and those of absent published tables are skipped."""
     place = {name: number for number, name in enumerate(LONG)}
     items.sort(key=lambda item: place.get(item.path.stem, len(place)))
+    brief = pytest.mark.skip(reason="long: runs with LADDERFIT_FULL=1")
+    if os.environ.get("LADDERFIT_FULL") != "1":
+        for item in items:
+            if item.get_closest_marker("long") is not None:
+                item.add_marker(brief)
     folder = os.environ.get(TABLES)
     if folder is not None:
         if not Path(folder).is_dir():

@@ -99,6 +99,7 @@ def test_draws_of_the_modulus_say_the_same(case: str) -> None:
     assert found.deviations == pytest.approx(exact.deviations, abs=0.1)
 
 
+@pytest.mark.long
 def test_an_anchor_that_the_outliers_do_not_touch() -> None:
     """Modelling outliers that are not there leaves the tension nearly as it is."""
     ladder = small_ladder("anchors")

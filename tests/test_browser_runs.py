@@ -130,6 +130,7 @@ def test_a_page_reloaded_and_a_kernel_killed_in_mid_run(lab: Lab, work: Path) ->
     assert beside.inner_text() == f"in full {shown}"
 
 
+@pytest.mark.long
 def test_a_slow_view_does_not_hold_the_page(lab: Lab) -> None:
     """Numbers follow a control while fits go on; the view comes when they are done."""
     from playwright.sync_api import expect

@@ -101,6 +101,7 @@ def test_a_session(lab: Lab, work: Path, tmp_path: Path) -> None:
     assert again == shown
 
 
+@pytest.mark.long
 def test_a_star_set_aside(lab: Lab) -> None:
     """By click, with its reason; back by the button; the same by keyboard alone."""
     from playwright.sync_api import expect
@@ -149,6 +150,7 @@ def test_a_star_set_aside(lab: Lab) -> None:
     expect(kept).to_contain_text("1,264 of 1,356 stars kept")
 
 
+@pytest.mark.long
 def test_the_last_anchor(lab: Lab) -> None:
     """Nothing sets the scale: controls live, the last posterior grey, words beside the control."""
     from playwright.sync_api import expect

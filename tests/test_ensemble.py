@@ -125,7 +125,7 @@ def test_effective_draws_match_the_scatter_of_the_mean(in_full: bool) -> None:
     target = normal_target(np.array([1.0, 1e-3, 50.0]))
     means, claims = [], []
     for seed in range(repeats):
-        z = drawn(target, rows + 15, seed, ensembles=2)[15:] / [1.0, 1e-3, 50.0]
+        z = drawn(target, rows + 40, seed, ensembles=2)[40:] / [1.0, 1e-3, 50.0]
         means.append(z.mean(axis=(0, 1, 2)))
         claims.append([ensemble_ess(z[..., k].swapaxes(0, 1)) for k in range(3)])
     achieved = 1.0 / np.mean(np.square(means))  # three directions alike
