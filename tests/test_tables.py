@@ -12,6 +12,7 @@ import astropy.units as u
 import numpy as np
 import pandas as pd
 import pytest
+from astropy.io import fits
 from astropy.table import MaskedColumn, QTable, Table
 
 from ladderfit.errors import InputError
@@ -213,6 +214,22 @@ def test_parquet_keeps_the_units_astropy_wrote(tmp_path: Path) -> None:
     read = read_table(tmp_path / "t.parquet", "cepheids.table")
     assert list(read.numbers("P", kinds.PERIOD).values) == [1.0]
     assert read.unit_problem("x", kinds.PARALLAX) is not None
+
+
+def test_fits_whose_parts_have_no_end(tmp_path: Path) -> None:
+    path = tmp_path / "t.fits"
+    Table({"P": np.arange(1.0, 361.0)}).write(path)  # 2,880 bytes, and a header of as many
+    whole = path.read_bytes()
+    before, _, after = whole.partition(b"PCOUNT  =                    0")
+    path.write_bytes(before + b"PCOUNT  =                -5760" + after)  # back to itself
+    assert read_table(path, "cepheids.table").rows == 360
+    path.write_bytes(b"SIMPLE  =          \xd7" + whole[20:])
+    with pytest.raises(InputError, match="a damaged header|no table in the file|readable table"):
+        read_table(path, "cepheids.table")
+    head = fits.PrimaryHDU()
+    head.writeto(tmp_path / "empty.fits")
+    with pytest.raises(InputError, match="no table in the file"):
+        read_table(tmp_path / "empty.fits", "cepheids.table")
 
 
 def test_parquet_with_text_that_is_none(tmp_path: Path) -> None:

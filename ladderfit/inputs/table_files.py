@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import csv
 import io
+import itertools
 import re
 import warnings
 from collections.abc import Callable
@@ -18,6 +19,7 @@ import numpy as np
 import pandas as pd
 import pyarrow
 import pyarrow.parquet
+from astropy.io import fits
 from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
@@ -217,8 +219,26 @@ def _ecsv_fault(path: Path) -> Problem | None:
 
 
 def _read_fits(path: Path) -> DataTable:
-    table = Table.read(path, format="fits", memmap=False)
+    with fits.open(path, memmap=False) as parts:
+        table = Table.read(_first_table(parts), format="fits")
     return from_astropy(table, str(path), sha256_of(path))
+
+
+def _first_table(parts: fits.HDUList) -> fits.BinTableHDU | fits.TableHDU:
+    """Part by part: a damaged size may lead from one part back to itself, without end."""
+    before = -1
+    for number in itertools.count():
+        try:
+            part = parts[number]
+        except IndexError:
+            break
+        place = part.fileinfo()["hdrLoc"] if hasattr(part, "fileinfo") else before
+        if place <= before:
+            raise _UnreadableError("a damaged header")
+        if isinstance(part, fits.BinTableHDU | fits.TableHDU):
+            return part
+        before = place
+    raise _UnreadableError("no table in the file")
 
 
 def _read_votable(path: Path) -> DataTable:
