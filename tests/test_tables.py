@@ -224,7 +224,7 @@ def test_fits_whose_parts_have_no_end(tmp_path: Path) -> None:
     path.write_bytes(before + b"PCOUNT  =                -5760" + after)  # back to itself
     assert read_table(path, "cepheids.table").rows == 360
     path.write_bytes(b"SIMPLE  =          \xd7" + whole[20:])
-    with pytest.raises(InputError, match="a damaged header|no table in the file|readable table"):
+    with pytest.raises(InputError, match="expected a readable table"):
         read_table(path, "cepheids.table")
     head = fits.PrimaryHDU()
     head.writeto(tmp_path / "empty.fits")
