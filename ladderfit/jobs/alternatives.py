@@ -50,9 +50,7 @@ def alternatives_in_folder(
     OSError
         If the folder cannot be written.
     """
-    alternatives_of(
-        ladder.choices, axes, grid=grid
-    )  # what is wrong is said before a folder is made
+    alternatives_of(ladder.choices, axes, grid=grid)  # raises before a folder is made
     folder = sweep_folder(Path(folder))
     comparison = run_alternatives(
         ladder,
