@@ -14,10 +14,13 @@ import shutil
 import socket
 import tempfile
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from pathlib import Path
+from typing import TypeVar
 
 from ladderfit.errors import InputError, LadderfitError, Problem
+
+T = TypeVar("T")
 
 
 def sha256_of(path: str | Path) -> str:
@@ -40,6 +43,50 @@ def why_no_file(path: Path) -> str | None:
         return "a folder" if path.is_dir() else "no such file"
     except OSError as error:  # a name too long, a folder that may not be looked into
         return str(error.strerror or error)
+
+
+def need_file(path: Path, expected: str, key: str | None = None) -> None:
+    """Raise if there is no file.
+
+    Parameters
+    ----------
+    path : Path
+    expected : str
+        What the file should be, for the message.
+    key : str, optional
+        Dotted key of the ladder file that names it.
+
+    Raises
+    ------
+    InputError
+    """
+    found = why_no_file(path)
+    if found is not None:
+        where = "" if key is None else ", which is relative to the ladder file's folder"
+        remedy = f"correct the path{where}"
+        raise InputError(Problem(found, expected, remedy, file=str(path), key=key))
+
+
+def by_suffix(path: Path, readers: Mapping[str, T], what: str, key: str) -> T:
+    """The reader for a file by its suffix, the one before ``.gz`` where that is last.
+
+    Raises
+    ------
+    InputError
+        If there is none; `what` is the kind of file, for the message.
+    """
+    suffix = Path(path.stem).suffix.lower() if path.suffix.lower() == ".gz" else path.suffix.lower()
+    if suffix not in readers:
+        raise InputError(
+            Problem(
+                found=f"the extension {path.suffix!r}",
+                expected="one of " + ", ".join(readers),
+                remedy=f"rename or convert the {what}",
+                file=str(path),
+                key=key,
+            )
+        )
+    return readers[suffix]
 
 
 def write_text_atomically(path: str | Path, text: str) -> None:

@@ -14,7 +14,7 @@ from tomlkit.items import Array, InlineTable, Item, Table
 from ladderfit import schema
 from ladderfit.choices import Choices
 from ladderfit.errors import InputError, LadderfitError, Problem
-from ladderfit.files import why_no_file, write_text_atomically
+from ladderfit.files import need_file, write_text_atomically
 from ladderfit.priors import Prior
 
 _LARGEST_FILE = 10_000_000  # bytes; a ladder file is a page of text
@@ -57,9 +57,7 @@ def _text_of(path: Path) -> str:
     def problem(found: str, remedy: str) -> InputError:
         return InputError(Problem(found, "a ladder file", remedy, file=str(path)))
 
-    found = why_no_file(path)
-    if found is not None:
-        raise problem(found, "correct the path")
+    need_file(path, "a ladder file")
     if path.stat().st_size > _LARGEST_FILE:
         raise problem(f"{path.stat().st_size:,} bytes", "name the ladder file, not a table")
     try:

@@ -17,7 +17,7 @@ import numpy.typing as npt
 from astropy.io import fits
 
 from ladderfit.errors import InputError, Problem
-from ladderfit.files import sha256_of, why_no_file
+from ladderfit.files import by_suffix, need_file, sha256_of
 from ladderfit.inputs.tables import shown
 from ladderfit.packed import PackedError, check_packed, opened, unpacked
 from ladderfit.samples import FloatArray, frozen
@@ -134,36 +134,12 @@ def _unreadable(
     )
 
 
-def _existing(path: Path, key: str, expected: str) -> None:
-    found = why_no_file(path)
-    if found is not None:
-        raise InputError(
-            Problem(
-                found=found,
-                expected=expected,
-                remedy="correct the path, which is relative to the ladder file's folder",
-                file=str(path),
-                key=key,
-            )
-        )
-
-
 def _values(path: Path, key: str) -> npt.NDArray[Any]:
-    _existing(path, f"{key}.file", "a covariance matrix")
-    suffix = Path(path.stem).suffix.lower() if path.suffix.lower() == ".gz" else path.suffix.lower()
-    if suffix not in _READERS:
-        raise InputError(
-            Problem(
-                found=f"the extension {path.suffix!r}",
-                expected="one of " + ", ".join(_READERS),
-                remedy="rename or convert the matrix",
-                file=str(path),
-                key=f"{key}.file",
-            )
-        )
+    need_file(path, "a covariance matrix", f"{key}.file")
+    reader = by_suffix(path, _READERS, "matrix", f"{key}.file")
     try:
         check_packed(path)
-        return _READERS[suffix](path, key)
+        return reader(path, key)
     except InputError:
         raise
     except PackedError as error:
@@ -239,7 +215,7 @@ def read_names(path: Path, key: str) -> tuple[str, ...]:
     InputError
         If the file is missing or no text.
     """
-    _existing(path, f"{key}.names", "a list of names")
+    need_file(path, "a list of names", f"{key}.names")
     try:
         lines = path.read_text(encoding="utf-8-sig").splitlines()
     except (OSError, UnicodeDecodeError):

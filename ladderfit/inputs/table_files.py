@@ -23,7 +23,7 @@ from astropy.io import fits
 from astropy.table import Table, meta
 
 from ladderfit.errors import InputError, Problem
-from ladderfit.files import sha256_of, why_no_file
+from ladderfit.files import by_suffix, need_file, sha256_of
 from ladderfit.inputs.table_columns import ColumnsOnDemand
 from ladderfit.inputs.table_memory import from_astropy, from_series, parsed_unit
 from ladderfit.inputs.tables import Column, DataTable, shown
@@ -92,31 +92,10 @@ def read_table(path: Path, key: str) -> DataTable:
 
 
 def _reader(path: Path, key: str) -> Callable[[Path], DataTable]:
-    found = why_no_file(path)
-    if found is not None:
-        raise InputError(
-            Problem(
-                found=found,
-                expected="a table",
-                remedy="correct the path, which is relative to the ladder file's folder",
-                file=str(path),
-                key=key,
-            )
-        )
+    need_file(path, "a table", key)
     if path.stat().st_size == 0:
         raise InputError(_damaged(path, key, "an empty file"))
-    suffix = Path(path.stem).suffix.lower() if path.suffix.lower() == ".gz" else path.suffix.lower()
-    if suffix not in _READERS:
-        raise InputError(
-            Problem(
-                found=f"the extension {path.suffix!r}",
-                expected="one of " + ", ".join(_READERS),
-                remedy="rename or convert the table",
-                file=str(path),
-                key=key,
-            )
-        )
-    return _READERS[suffix]
+    return by_suffix(path, _READERS, "table", key)
 
 
 def _damaged(path: Path, key: str, words: str) -> Problem:

@@ -13,7 +13,7 @@ FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 LOG_2PI = math.log(2.0 * math.pi)
-_TOGETHER = 4  # weights of which one logarithm is taken: a product of four stays finite
+TOGETHER = 4  # weights of which one logarithm is taken: a product of four stays finite
 
 
 @compiled
@@ -48,7 +48,7 @@ def eliminate(
             host = alone[place]
             weight = local[draw, host]
             weights *= weight
-            if place % _TOGETHER == _TOGETHER - 1 or place == len(alone) - 1:
+            if place % TOGETHER == TOGETHER - 1 or place == len(alone) - 1:
                 logs += math.log(weights)
                 weights = 1.0
             _free_columns(cross[draw, host], known, values[draw], free, column)

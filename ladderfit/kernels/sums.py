@@ -8,12 +8,12 @@ import numpy as np
 import numpy.typing as npt
 
 from ladderfit.kernels.compiling import compiled
+from ladderfit.kernels.elimination import TOGETHER
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 LOG_2PI = math.log(2.0 * math.pi)
-_TOGETHER = 4  # variances of which one logarithm is taken: a product of four stays finite
 
 
 @compiled
@@ -43,7 +43,7 @@ def add_rows(
             total = variance[row] + extra[draw]
             weight = 1.0 / total
             totals *= total
-            if row % _TOGETHER == _TOGETHER - 1 or row == n - 1:
+            if row % TOGETHER == TOGETHER - 1 or row == n - 1:
                 logs += math.log(totals)
                 totals = 1.0
             for i in range(len(whole)):

@@ -11,7 +11,7 @@ from typing import Any
 
 from ladderfit import schema
 from ladderfit.errors import InputError, Problem, raise_if
-from ladderfit.files import why_no_file
+from ladderfit.files import need_file
 from ladderfit.review.claims import Claim, ClaimedMagnitude, Claims, Method
 from ladderfit.schema import choice
 
@@ -68,9 +68,7 @@ def _text_of(path: Path) -> str:
     def problem(found: str, remedy: str) -> InputError:
         return InputError(Problem(found, "a claims file", remedy, file=str(path)))
 
-    found = why_no_file(path)
-    if found is not None:
-        raise problem(found, "correct the path")
+    need_file(path, "a claims file")
     if path.stat().st_size > _LARGEST_FILE:
         raise problem(f"{path.stat().st_size:,} bytes", "name the claims file, not a table")
     try:
